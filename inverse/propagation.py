@@ -1,4 +1,4 @@
-"""Propagation of uncertainty through any function: JCGM 100 (linear, second order) and JCGM 101 (Monte Carlo)."""
+"""Propagation of uncertainty: JCGM 100 (linear and second order) and JCGM 101 (Monte Carlo)."""
 
 from __future__ import annotations
 
@@ -31,7 +31,8 @@ class Propagated:
     covariance : numpy.ndarray
         Covariance of the outputs, shape () or (outputs, outputs).
     contributions : numpy.ndarray
-        Sensitivity coefficient times standard uncertainty of each input, signed, shape (inputs,) or (outputs, inputs).
+        Sensitivity coefficient times standard uncertainty of each input, signed, shape (inputs,) or
+        (outputs, inputs).
     degrees_of_freedom : numpy.ndarray
         Effective degrees of freedom by the Welch-Satterthwaite formula, shape () or (outputs,).
     shift : numpy.ndarray
@@ -170,8 +171,9 @@ def propagate(
     .. math:: u^2(y) = \sum_{ij} f_i f_j u(x_i, x_j)
        + \sum_{ij} \left[\tfrac12 f_{ij}^2 + f_i f_{ijj}\right] u^2(x_i) u^2(x_j)
 
-    The second sum is taken for ``order=2`` only, in the form for independent normal inputs; correlated ones are
-    first turned into independent ones. It holds where the function is close to a cubic over a few uncertainties.
+    The second sum is taken for ``order=2`` only, in the form for independent normal inputs; correlated ones
+    are first turned into independent ones. It holds where the function is close to a cubic over a few
+    uncertainties.
 
     Parameters
     ----------
@@ -232,10 +234,11 @@ def propagate_distributions(
     Parameters
     ----------
     function : callable
-        Takes the inputs as separate arguments, arrays of shape (draws,); returns an array or a sequence of arrays.
+        Takes the inputs as separate arguments, arrays of shape (draws,); returns an array or a sequence of
+        arrays.
     inputs : sequence
-        Frozen scipy.stats distributions and numbers. A multivariate one stands for as many arguments as it has
-        dimensions.
+        Frozen scipy.stats distributions and numbers. A multivariate one stands for as many arguments as it
+        has dimensions.
     seed : int
         Each input has its own stream, so that adding one leaves the others' draws as they were.
     draws : int
@@ -319,8 +322,8 @@ def _check_inputs(estimates: ArrayLike, covariance: ArrayLike) -> tuple[Array, A
     matrix = np.asarray(covariance, dtype=float)
     if centre.ndim != 1 or matrix.shape not in (centre.shape, centre.shape * 2):
         raise ValueError(
-            f"estimates of shape {centre.shape} and covariance of shape {matrix.shape} do not fit; expected (n,) and "
-            "either (n,) standard uncertainties or an (n, n) matrix."
+            f"estimates of shape {centre.shape} and covariance of shape {matrix.shape} do not fit; "
+            "expected (n,) and either (n,) standard uncertainties or an (n, n) matrix."
         )
     if matrix.ndim == 1:
         if np.any(matrix < 0):
@@ -349,8 +352,8 @@ def _check_degrees(degrees: ArrayLike | None, matrix: Array) -> Array:
         )
     if np.any(np.isfinite(dof)) and np.any(matrix != np.diag(np.diagonal(matrix))):
         raise ValueError(
-            "The Welch-Satterthwaite formula holds for independent inputs (JCGM 100, G.4.1), and these are correlated; "
-            "leave degrees_of_freedom out, or use propagate_distributions."
+            "The Welch-Satterthwaite formula holds for independent inputs (JCGM 100, G.4.1), and these are "
+            "correlated; leave degrees_of_freedom out, or use propagate_distributions."
         )
     return dof
 

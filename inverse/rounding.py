@@ -257,7 +257,7 @@ def _attach(number: str, unit: str, style: str) -> str:
 
 
 def _decimal(value: float) -> Decimal:
-    # repr gives the shortest figures that stand for this float, so 0.125 stays a tie and 0.15 is not 0.1499...
+    # repr gives the shortest figures that stand for this float, so 0.15 is not 0.1499...
     return Decimal(repr(float(value)))
 
 

@@ -50,13 +50,13 @@ def test_h1_value_and_combined_uncertainty(h1):
 
 
 def test_h1_budget(h1):
-    # JCGM 100 H.1 budget: 25, 16.599 (delta theta), 6.7, 5.8, 3.9, 2.88679 (delta alpha); nothing from alpha_s
+    # JCGM 100 H.1 budget: 25, 16.599 (delta theta), 6.7, 5.8, 3.9, 2.88679 (delta alpha); alpha_s none
     expected = [25, 5.8, 3.9, 6.7, 0, 2.88679, 16.599, 0, 0]
     np.testing.assert_allclose(np.abs(h1.contributions), expected, atol=1e-3)
 
 
 def test_h1_effective_degrees_of_freedom_and_expanded_uncertainty(h1):
-    # JCGM 100 H.1.6: nu_eff = 16.7, cut to 16; t_99 = 2.92; U_99 = 92.5 nm recomputed (93 in print, from memory)
+    # JCGM 100 H.1.6: nu_eff = 16.7, cut to 16; t_99 = 2.92; U_99 = 92.5 nm (93 in print, from memory)
     assert h1.degrees_of_freedom == pytest.approx(16.75, abs=0.005)
     assert h1.coverage_factor(0.99) == pytest.approx(2.921, abs=5e-4)
     assert h1.expanded_uncertainty(0.99) == pytest.approx(92.5, abs=0.05)
@@ -130,7 +130,7 @@ def test_additive_model_rectangular_inputs():
     # JCGM 101 9.2.3: u = 2.00, 95 % interval +/- 3.88; exactly 2 sqrt(3) (2 - 0.6^(1/4)) = 3.879407
     trials = propagate_distributions(lambda *x: sum(x), [stats.uniform(-SQRT3, 2 * SQRT3)] * 4, seed=2)
     assert trials.standard_uncertainty == pytest.approx(2.0, abs=6e-3)
-    # Density there is 0.1 / (4 sqrt(3) - 3.879), so the end-point of 10^6 draws has a standard error of 0.0048: four.
+    # Density there is 0.1 / (4 sqrt(3) - 3.879): the end-point of 10^6 draws has a standard error of 0.0048.
     np.testing.assert_allclose(trials.interval(), [-3.879407, 3.879407], atol=4 * 0.0048)
 
 
@@ -162,7 +162,7 @@ MASS_UNCERTAINTIES = [0.050, 0.020, 0.1 / SQRT3, 1000 / SQRT3, 50 / SQRT3]
     [(1, 0.05385, [1.1285, 1.3395]), (2, 0.07496, [1.0871, 1.3809])],
 )
 def test_mass_calibration_by_derivatives(order, uncertainty, interval):
-    # JCGM 101 9.3, table: 1.2340 mg, u = 0.0539 and [1.1285, 1.3395]; with second order 0.0750, [1.0870, 1.3810]
+    # JCGM 101 9.3: 1.2340 mg, u = 0.0539 and [1.1285, 1.3395]; with second order 0.0750, [1.0870, 1.3810]
     result = propagate(mass_difference, MASS_ESTIMATES, MASS_UNCERTAINTIES, order=order)
     assert result.value == pytest.approx(1.2340, abs=5e-5)
     assert result.standard_uncertainty == pytest.approx(uncertainty, abs=1e-5)
@@ -188,8 +188,8 @@ def test_mass_calibration_by_monte_carlo():
 
 
 def test_second_order_of_closed_forms():
-    # x1 x2 of independent normals: variance a2^2 u1^2 + a1^2 u2^2 + u1^2 u2^2 exactly; x^3 at 0: the law's cubic
-    # term only, so take x^2: variance 4 a^2 u^2 + 2 u^4, expectation shifted by u^2.
+    # Independent normals: x1 x2 has variance a2^2 u1^2 + a1^2 u2^2 + u1^2 u2^2 exactly;
+    # x^2 has 4 a^2 u^2 + 2 u^4, and its expectation is shifted by u^2.
     product = propagate(lambda a, b: a * b, [3.0, 2.0], [0.5, 0.4], order=2)
     assert float(product.covariance) == pytest.approx(4 * 0.25 + 9 * 0.16 + 0.25 * 0.16, rel=1e-9)
     square = propagate(lambda a: a**2, [1.5], [0.5], order=2)
@@ -236,11 +236,11 @@ def test_shortest_interval_of_exponential_starts_at_zero():
 
 
 def test_seed_fixes_draws_and_streams_stay_apart():
-    before = np.random.get_state()[1].copy()
+    before = np.random.get_state()[1].copy()  # noqa: NPY002
     one = propagate_distributions(lambda a, b: a, [stats.norm(), 2.0], seed=7, draws=1000)
     two = propagate_distributions(lambda a, b: a, [stats.norm(), stats.norm()], seed=7, draws=1000)
     np.testing.assert_array_equal(one.draws, two.draws)
-    np.testing.assert_array_equal(before, np.random.get_state()[1])
+    np.testing.assert_array_equal(before, np.random.get_state()[1])  # noqa: NPY002
     assert not np.array_equal(
         one.draws, propagate_distributions(lambda a, b: a, [stats.norm(), 2.0], seed=8, draws=1000).draws
     )
