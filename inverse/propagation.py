@@ -5,19 +5,16 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from typing import Any, cast
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from inverse.finite_differences import second_order, slopes
+
 __all__ = ["MonteCarlo", "Propagated", "linear_is_valid", "propagate", "propagate_distributions"]
 
 Array = NDArray[np.float64]
-_Along = Callable[[Array], Array]
-
-# Steps in units of the standard uncertainty. Truncation falls as step^4, rounding grows as 1/step^order.
-_FIRST_STEP = 1e-2
-_HIGHER_STEP = 1e-1
 
 
 @dataclass(frozen=True)
@@ -57,7 +54,7 @@ class Propagated:
     def correlation(self) -> Array:
         """Correlation matrix of the outputs, shape of `covariance`."""
         spread = self.standard_uncertainty
-        return cast(Array, self.covariance / (spread**2 if spread.ndim == 0 else np.outer(spread, spread)))
+        return self.covariance / (spread**2 if spread.ndim == 0 else np.outer(spread, spread))
 
     def coverage_factor(self, mass: float = 0.95) -> Array:
         """Return the coverage factor from Student's t, degrees of freedom cut to the next lower integer.
@@ -215,15 +212,15 @@ def propagate(
     spread = np.sqrt(np.diagonal(matrix))
     dof = _check_degrees(degrees_of_freedom, matrix)
     value = _evaluate(function, centre)
-    slopes = _slopes(lambda t: _evaluate(function, centre + spread * t), centre.size)
-    variance = np.asarray(slopes @ _correlation(matrix, spread) @ slopes.T)
+    parts = slopes(lambda t: _evaluate(function, centre + spread * t), centre.size)
+    variance = np.asarray(parts @ _correlation(matrix, spread) @ parts.T)
     shift = np.zeros_like(value)
-    effective = _welch_satterthwaite(slopes, variance, dof)
+    effective = _welch_satterthwaite(parts, variance, dof)
     if order == 2:
         root = _square_root(matrix, spread)
-        extra, shift = _second_order(lambda t: _evaluate(function, centre + root @ t), centre.size)
+        extra, shift = second_order(lambda t: _evaluate(function, centre + root @ t), centre.size)
         variance = variance + extra
-    return Propagated(value, variance, slopes, effective, shift, order)
+    return Propagated(value, variance, parts, effective, shift, order)
 
 
 def propagate_distributions(
@@ -376,71 +373,6 @@ def _square_root(matrix: Array, spread: Array) -> Array:
     """Return S with S S' = matrix; diagonal where the matrix is."""
     levels, vectors = np.linalg.eigh(_correlation(matrix, spread))
     return np.asarray(spread[:, None] * ((vectors * np.sqrt(np.maximum(levels, 0))) @ vectors.T))
-
-
-def _along(model: _Along, n: int, *axes: int) -> Callable[..., Array]:
-    """Return the model as a function of displacements along the given standardised axes only."""
-
-    def displaced(*steps: float) -> Array:
-        t = np.zeros(n)
-        for axis, step in zip(axes, steps, strict=True):
-            t[axis] += step
-        return model(t)
-
-    return displaced
-
-
-def _slopes(model: _Along, n: int) -> Array:
-    """First derivatives along each axis, last axis the inputs; error of fourth order in the step."""
-    h = _FIRST_STEP
-    columns = []
-    for i in range(n):
-        f = _along(model, n, i)
-        columns.append((8 * (f(h) - f(-h)) - (f(2 * h) - f(-2 * h))) / (12 * h))
-    return np.stack(columns, axis=-1)
-
-
-def _curvature(f: Callable[[float], Array]) -> Array:
-    h = _HIGHER_STEP
-    return np.asarray((16 * (f(h) + f(-h)) - (f(2 * h) + f(-2 * h)) - 30 * f(0.0)) / (12 * h**2))
-
-
-def _mixed(f: Callable[[float, float], Array]) -> Array:
-    """Mixed second derivative, the leading error removed by halving the step."""
-
-    def quotient(h: float) -> Array:
-        return np.asarray((f(h, h) - f(h, -h) - f(-h, h) + f(-h, -h)) / (4 * h**2))
-
-    return (4 * quotient(_HIGHER_STEP) - quotient(2 * _HIGHER_STEP)) / 3
-
-
-def _second_order(model: _Along, n: int) -> tuple[Array, Array]:
-    """Return the second-order part of the output covariance and the shift of the expectation."""
-    slopes = _slopes(model, n)
-    hessian = np.empty((*slopes.shape, n))
-    for i in range(n):
-        hessian[..., i, i] = _curvature(_along(model, n, i))
-        for j in range(i):
-            hessian[..., i, j] = hessian[..., j, i] = _mixed(_along(model, n, i, j))
-    third = _summed_thirds(model, n)
-    quadratic = 0.5 * np.einsum("...ij,kij->...k" if hessian.ndim == 3 else "ij,ij->", hessian, hessian)
-    cross = slopes @ third.T
-    extra = quadratic + (cross + cross.T) / 2
-    return np.asarray(extra), np.asarray(0.5 * np.trace(hessian, axis1=-2, axis2=-1))
-
-
-def _summed_thirds(model: _Along, n: int) -> Array:
-    """Return sum_j f_ijj for each i: the slope along i of the sum of curvatures."""
-
-    def laplacian(t: Array) -> Array:
-        return np.asarray(sum(_curvature(_along(lambda s: model(t + s), n, j)) for j in range(n)))
-
-    h = _HIGHER_STEP
-    columns = []
-    for i in range(n):
-        f = _along(laplacian, n, i)
-        columns.append((8 * (f(h) - f(-h)) - (f(2 * h) - f(-2 * h))) / (12 * h))
-    return np.stack(columns, axis=-1)
 
 
 def _welch_satterthwaite(contributions: Array, variance: Array, dof: Array) -> Array:

@@ -236,11 +236,11 @@ def test_shortest_interval_of_exponential_starts_at_zero():
 
 
 def test_seed_fixes_draws_and_streams_stay_apart():
-    before = np.random.get_state()[1].copy()  # noqa: NPY002
+    before = np.random.get_state()[1].copy()
     one = propagate_distributions(lambda a, b: a, [stats.norm(), 2.0], seed=7, draws=1000)
     two = propagate_distributions(lambda a, b: a, [stats.norm(), stats.norm()], seed=7, draws=1000)
     np.testing.assert_array_equal(one.draws, two.draws)
-    np.testing.assert_array_equal(before, np.random.get_state()[1])  # noqa: NPY002
+    np.testing.assert_array_equal(before, np.random.get_state()[1])
     assert not np.array_equal(
         one.draws, propagate_distributions(lambda a, b: a, [stats.norm(), 2.0], seed=8, draws=1000).draws
     )
