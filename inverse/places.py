@@ -1,0 +1,264 @@
+"""Places: which number or unknown stands where once a stack meets a measurement."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.materials import Material
+from inverse.pumpprobe import PumpProbe
+from inverse.quantities import QUANTITIES
+from inverse.stack import Layer, Stack, Substrate
+from inverse.unknowns import Unknown, is_unknown
+
+__all__ = ["BoundStack", "Slot", "bind"]
+
+Array = NDArray[np.float64]
+
+_REQUIRED = ("velocity", "heat_capacity", "conductivity")
+_ELECTRONS = ("electron_heat_capacity", "electron_phonon_coupling")
+_LOSS = ("attenuation_time", "attenuation_exponent", "quality_factor", "quality_frequency")
+_ABSENT = {
+    "electron_heat_capacity": 0.0,
+    "electron_phonon_coupling": np.inf,
+    "attenuation_time": 0.0,
+    "attenuation_exponent": 1.0,
+    "quality_factor": np.inf,
+    "quality_frequency": 0.01,
+}
+_INTERFACE = ("compliance", "boundary_conductance", "roughness")
+
+
+@dataclass(frozen=True)
+class Slot:
+    """A place in the model and what stands there.
+
+    Attributes
+    ----------
+    name : str
+        Name of the unknown, or of the place if it holds a number.
+    field : str
+        Quantity of the place.
+    value : float
+        The number, or nan if unknown.
+    prior : object
+        Frozen distribution, or None if known.
+    source : str
+        Where the number comes from.
+    spread : float
+        Standard uncertainty of a fixed constant, 0 where none is stated.
+    """
+
+    name: str
+    field: str
+    value: float
+    prior: Any = None
+    source: str = ""
+    spread: float = 0.0
+
+
+Slots = dict[str, Slot]
+
+
+@dataclass(frozen=True)
+class BoundStack:
+    """A stack bound to a measurement: every place filled by a number or an unknown.
+
+    Attributes
+    ----------
+    media : tuple of dict
+        Per layer, substrate last: field -> `Slot`.
+    interfaces : tuple of dict
+        Per interface: field -> `Slot`.
+    ambient : dict
+        Fields of a liquid above; empty for air and vacuum.
+    names : tuple of str
+        Place names of the media.
+    materials : tuple of str
+        Material (with orientation) of each medium: the key by which P and Q are shared.
+    """
+
+    media: tuple[Slots, ...]
+    interfaces: tuple[Slots, ...]
+    ambient: Slots
+    names: tuple[str, ...]
+    materials: tuple[str, ...]
+
+    @property
+    def slots(self) -> tuple[Slot, ...]:
+        """All places, top to bottom."""
+        groups = (self.ambient, *self.media, *self.interfaces)
+        return tuple(slot for group in groups for slot in group.values())
+
+    @property
+    def priors(self) -> dict[str, Any]:
+        """Priors of the unknowns by name, in order of appearance."""
+        return {slot.name: slot.prior for slot in self.slots if slot.prior is not None}
+
+    @property
+    def constants(self) -> list[dict[str, Any]]:
+        """Every number that was taken, with unit, source and spread."""
+        rows = [slot for slot in self.slots if slot.prior is None]
+        return [
+            {
+                "place": slot.name.rpartition(".")[0],
+                "field": slot.name.rpartition(".")[2],
+                "value": slot.value,
+                "unit": QUANTITIES[slot.field].unit,
+                "source": slot.source,
+                "spread": slot.spread,
+            }
+            for slot in rows
+        ]
+
+    def fill(self, group: Slots, values: Mapping[str, Array]) -> dict[str, Array | float]:
+        """Return field -> number or array (one entry per parameter set), in the public units."""
+        return {field: values.get(slot.name, slot.value) for field, slot in group.items()}
+
+
+def bind(stack: Stack, setup: PumpProbe) -> BoundStack:
+    """Bind a stack to a measurement.
+
+    Raises
+    ------
+    ValueError
+        If a constant the model needs is missing (named), or one unknown's name is used for two priors.
+    """
+    substrate = _medium_slots(stack.names[-1], stack.media[-1], setup, None)
+    layers = tuple(
+        _medium_slots(name, part, setup, substrate["density"])
+        for name, part in zip(stack.names[:-1], stack.media[:-1], strict=True)
+    )
+    interfaces = tuple(
+        {f: _slot(f, getattr(part, f), name, "given by the user", 0.0) for f in _INTERFACE}
+        for name, part in zip(stack.interface_names, stack.interfaces, strict=True)
+    )
+    ambient = {} if stack.ambient is None else _ambient_slots(stack.ambient, setup)
+    bound = BoundStack(
+        media=(*layers, substrate),
+        interfaces=interfaces,
+        ambient=ambient,
+        names=stack.names,
+        materials=tuple(part.material.name for part in stack.media),
+    )
+    _refuse_two_priors(bound)
+    return bound
+
+
+def _slot(field: str, value: Any, place: str, source: str, spread: float, suffix: str = "") -> Slot:
+    name = f"{place}.{field}{suffix}"
+    if isinstance(value, Unknown):
+        return Slot(value.name, field, np.nan, value.prior)
+    if is_unknown(value):
+        return Slot(name, field, np.nan, value)
+    return Slot(name, field, float(value), None, source, spread)
+
+
+def _field_slot(place: str, material: Material, field: str, value: Any) -> Slot:
+    source = material.sources.get(field, "given by the user")
+    return _slot(field, value, place, source, float(material.spread.get(field, 0.0)))
+
+
+def _need(place: str, material: Material, field: str) -> Any:
+    value = getattr(material, field)
+    if value is None:
+        raise ValueError(
+            f"{place} has no {field} ({QUANTITIES[field].unit}): the reference tables give none for "
+            f"'{material.name}'. Give it, for example Layer('{material.name}', ..., {field}=...) or in a Material."
+        )
+    return value
+
+
+def _medium_slots(place: str, part: Layer | Substrate, setup: PumpProbe, substrate_density: Slot | None) -> Slots:
+    material = part.material
+    slots: Slots = {}
+    if isinstance(part, Layer):
+        slots["thickness"] = _slot("thickness", part.thickness, place, "given by the user", 0.0)
+    if part.density_ratio is not None and substrate_density is not None:
+        slots["density_ratio"] = _slot("density_ratio", part.density_ratio, place, "given by the user", 0.0)
+        slots["substrate_density"] = substrate_density
+    else:
+        slots["density"] = _field_slot(place, material, "density", _need(place, material, "density"))
+    for field in _REQUIRED:
+        slots[field] = _field_slot(place, material, field, _need(place, material, field))
+    slots["thermal_stress_coefficient"] = _stress_slot(place, material)
+    _electron_pair(place, material)
+    for field in (*_ELECTRONS, *_LOSS):
+        value = getattr(material, field)
+        slots[field] = (
+            Slot(f"{place}.{field}", field, _ABSENT[field], None, "absent", 0.0)
+            if value is None
+            else _field_slot(place, material, field, value)
+        )
+    slots.update(_index_slots(place, material, "pump", setup.pump))
+    slots.update(_index_slots(place, material, "probe", setup.probe))
+    return slots
+
+
+def _stress_slot(place: str, material: Material) -> Slot:
+    field = "thermal_stress_coefficient"
+    return _field_slot(place, material, field, _need(place, material, field))
+
+
+def _electron_pair(place: str, material: Material) -> None:
+    given = [f for f in _ELECTRONS if getattr(material, f) is not None]
+    if len(given) == 1 and given[0] == "electron_heat_capacity":
+        raise ValueError(
+            f"{place} has electron_heat_capacity but no electron_phonon_coupling; two temperatures need both "
+            "(electron_phonon_coupling=inf asks for one temperature)."
+        )
+    if len(given) == 1 and material.electron_phonon_coupling != np.inf:
+        raise ValueError(f"{place} has electron_phonon_coupling but no electron_heat_capacity; give both or neither.")
+
+
+def _index_slots(place: str, material: Material, light: str, wavelength: float) -> Slots:
+    if material.n is None:
+        raise ValueError(f"{place} has no refractive index n; give n={{{wavelength:g}: complex}} or a table of it.")
+    real, imag = _index_parts(material, wavelength)
+    source = material.sources.get("n", "given by the user")
+    spread = material.spread
+    suffix = f"_{wavelength:g}"
+    return {
+        f"n_real_{light}": _slot("n_real", real, place, source, float(spread.get("n_real", 0.0)), suffix),
+        f"n_imag_{light}": _slot("n_imag", imag, place, source, float(spread.get("n_imag", 0.0)), suffix),
+    }
+
+
+def _index_parts(material: Material, wavelength: float) -> tuple[Any, Any]:
+    if isinstance(material.n, Mapping):
+        for key, value in material.n.items():
+            if abs(float(key) - wavelength) < 1e-9 and isinstance(value, Sequence):
+                return value[0], value[1]
+    elif isinstance(material.n, tuple):
+        return material.n[0], material.n[1]
+    value = complex(material.index_at(wavelength))
+    return value.real, value.imag
+
+
+def _ambient_slots(material: Material, setup: PumpProbe) -> Slots:
+    place = material.name
+    slots = {
+        field: _field_slot(place, material, field, _need(place, material, field))
+        for field in ("density", *_REQUIRED)
+    }
+    return {
+        **slots,
+        **_index_slots(place, material, "pump", setup.pump),
+        **_index_slots(place, material, "probe", setup.probe),
+    }
+
+
+def _refuse_two_priors(bound: BoundStack) -> None:
+    seen: dict[str, Any] = {}
+    for slot in bound.slots:
+        if slot.prior is None:
+            continue
+        if slot.name in seen and seen[slot.name] is not slot.prior and slot.field != "density":
+            raise ValueError(
+                f"The name '{slot.name}' stands for two different priors; use one Unknown object in both places."
+            )
+        seen[slot.name] = slot.prior

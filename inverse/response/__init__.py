@@ -1,0 +1,1 @@
+"""The forward model: pure functions from arrays to basis functions, nothing about fitting."""

@@ -1,0 +1,139 @@
+"""Basis functions of a trace: the trace is linear in fluence x P, fluence x Q and the fluence."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.response.detection import Detected, ambient_response, boundary_steps, medium_response
+from inverse.response.heat import HeatField, heat_field
+from inverse.response.inverse_laplace import TimeGrid, powers, to_delays
+from inverse.response.light import LightField, absorption, light_field
+from inverse.response.media import Sample
+from inverse.response.sound import SoundField, sound_field
+
+__all__ = ["CHANNELS", "Columns", "basis", "columns", "fields", "take"]
+
+Array = NDArray[np.float64]
+Complex = NDArray[np.complex128]
+
+CHANNELS = ("reflectance_change", "optical_phase")
+
+
+@dataclass(frozen=True)
+class Columns:
+    """What each basis function belongs to.
+
+    Attributes
+    ----------
+    groups : tuple of str
+        Key of each optical group (a material), in order of first appearance from the top.
+    of_medium : tuple of int
+        Group of each medium, top to bottom; the liquid above, if any, first.
+    names : tuple of str
+        Per basis function: ``P.real``, ``P.imag``, ``Q.real``, ``Q.imag`` per group, then displacement.
+    """
+
+    groups: tuple[str, ...]
+    of_medium: tuple[int, ...]
+    names: tuple[str, ...]
+
+
+def columns(groups: Sequence[str]) -> Columns:
+    """Lay out the basis functions for media that carry these group keys, top to bottom."""
+    order = tuple(dict.fromkeys(groups))
+    names = tuple(f"{g}.{c}" for g in order for c in ("P.real", "P.imag", "Q.real", "Q.imag"))
+    return Columns(order, tuple(order.index(g) for g in groups), (*names, "displacement"))
+
+
+@dataclass(frozen=True)
+class Fields:
+    """Everything the pump sets in motion, before detection."""
+
+    probe: LightField
+    heat: list[HeatField]
+    sound: list[SoundField]
+    detected: list[Detected]
+    steps: list[Complex]
+
+
+def fields(sample: Sample, wavelengths: tuple[float, float], grid: TimeGrid, time_zero: Array) -> Fields:
+    """Solve light, heat and sound and detect them medium by medium.
+
+    Parameters
+    ----------
+    sample : Sample
+        A batch of stacks.
+    wavelengths : tuple of float
+        Pump and probe, nm.
+    grid : TimeGrid
+    time_zero : array, shape (sets or 1, 1)
+        ps.
+    """
+    media = sample.media
+    thickness = [m.thickness for m in media[:-1]]
+    pump = light_field([m.n_pump for m in media], thickness, wavelengths[0], sample.ambient.n_pump)
+    probe = light_field([m.n_probe for m in media], thickness, wavelengths[1], sample.ambient.n_probe)
+    profiles = [absorption(pump, j) for j in range(len(media))]
+    source = grid.pulse * powers(grid, time_zero - grid.origin)
+    heat, liquid = heat_field(media, sample.resistance, sample.ambient, profiles, grid.s, source)
+    sound = sound_field(
+        media, sample.compliance, sample.ambient, profiles, heat, grid.s, lambda t: powers(grid, t)
+    )
+    detected = [
+        medium_response(probe, j, m.thickness, *trio)
+        for j, (m, trio) in enumerate(zip(media, zip(profiles, heat, sound, strict=True), strict=True))
+    ]
+    if liquid is not None:
+        detected.insert(0, ambient_response(probe, sample.ambient, grid.s, sound[0].u_top, liquid))
+    return Fields(probe, heat, sound, detected, boundary_steps(probe))
+
+
+def displaced(found: Fields) -> tuple[Complex, Complex]:
+    """Return the real and imaginary part of the boundaries' contribution, one term each, top to bottom."""
+    u = [found.sound[0].u_top]
+    for above, below in zip(found.sound, found.sound[1:], strict=False):
+        u.append((above.u_bottom + below.u_top) / 2)
+    real = [step.real * uj for step, uj in zip(found.steps, u, strict=True)]
+    imag = [step.imag * uj for step, uj in zip(found.steps, u, strict=True)]
+    return real, imag
+
+
+def basis(
+    sample: Sample, wavelengths: tuple[float, float], grid: TimeGrid, time_zero: Array, layout: Columns, sets: int
+) -> Array:
+    """Return real and imaginary parts of every complex response at the delays.
+
+    Returns
+    -------
+    array, shape (sets, 4 x groups + 2, delays)
+        Per group Re and Im of d(delta r / r)/dP, Re and Im of d(delta r / r)/dQ; then Re and Im of the
+        displacement's, all for an incident fluence of 1 J/m2.
+    """
+    found = fields(sample, wavelengths, grid, time_zero)
+    spectra = np.zeros((sets, 4 * len(layout.groups) + 2, grid.s.shape[1]), dtype=complex)
+    for part, group in zip(found.detected, layout.of_medium, strict=True):
+        for row, term in enumerate((part.strain_real, part.strain_imag, part.heat_real, part.heat_imag)):
+            spectra[:, 4 * group + row] += term
+    for real, imag in zip(*displaced(found), strict=True):
+        spectra[:, -2] += real
+        spectra[:, -1] += imag
+    return to_delays(grid, spectra)
+
+
+def take(parts: Array, channel: str) -> Array:
+    """Turn real and imaginary parts into the columns of a channel, one per name in `Columns`.
+
+    Reflectance change 2 Re(delta r / r): ``[2 Re h, -2 Im h]`` for the real and imaginary part of a coefficient,
+    ``2 Re h`` for the displacement. Optical phase Im(delta r / r): ``[Im h, Re h]`` and ``Im h``.
+    """
+    out = np.empty((parts.shape[0], parts.shape[1] - 1, parts.shape[2]))
+    real, imag = parts[:, 0:-2:2], parts[:, 1:-2:2]
+    if channel == "reflectance_change":
+        out[:, 0:-1:2], out[:, 1:-1:2], out[:, -1] = 2 * real, -2 * imag, 2 * parts[:, -2]
+    else:
+        out[:, 0:-1:2], out[:, 1:-1:2], out[:, -1] = imag, real, parts[:, -1]
+    return out

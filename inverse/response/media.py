@@ -1,0 +1,166 @@
+"""The door of the forward model: public units become the coherent system nm, ps, g/cm3, GPa, K."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.places import BoundStack, Slots
+from inverse.quantities import QUANTITIES
+from inverse.response.recursion import OPEN
+
+__all__ = ["Ambient", "Medium", "Sample", "sample"]
+
+Array = NDArray[np.float64]
+Complex = NDArray[np.complex128]
+
+
+@dataclass(frozen=True)
+class Medium:
+    """One layer or the half-space in coherent units; every array has shape (sets or 1, 1).
+
+    Attributes
+    ----------
+    thickness : array
+        nm; inf for the half-space.
+    density, velocity : array
+        g/cm3, nm/ps (velocity at low frequency).
+    n_pump, n_probe : complex array
+        Refractive index, time factor exp(-i w t), so Im n >= 0 absorbs.
+    heat_capacity, electron_heat_capacity : array
+        Of lattice and electrons, GPa/K.
+    conductivity : array
+        GPa nm2/ps/K.
+    inverse_coupling : array
+        Inverse electron-phonon coupling, ps K/GPa; 0 is one temperature.
+    stress : array
+        Thermal stress coefficient, GPa/K.
+    loss_time, loss_exponent : array
+        Power-law loss, ps and dimensionless.
+    inverse_quality, quality_frequency : array
+        1/Q and the angular frequency in rad/ps at which the modulus is stated.
+    """
+
+    thickness: Array
+    density: Array
+    velocity: Array
+    n_pump: Complex
+    n_probe: Complex
+    heat_capacity: Array
+    electron_heat_capacity: Array
+    conductivity: Array
+    inverse_coupling: Array
+    stress: Array
+    loss_time: Array
+    loss_exponent: Array
+    inverse_quality: Array
+    quality_frequency: Array
+
+
+@dataclass(frozen=True)
+class Ambient:
+    """What lies above: index, and for a liquid its acoustic and thermal constants (else None)."""
+
+    n_pump: Complex
+    n_probe: Complex
+    density: Array | None = None
+    velocity: Array | None = None
+    heat_capacity: Array | None = None
+    conductivity: Array | None = None
+
+    @property
+    def is_liquid(self) -> bool:
+        """Tell whether it carries sound and heat."""
+        return self.density is not None
+
+
+@dataclass(frozen=True)
+class Sample:
+    """A batch of stacks: media top to bottom (half-space last), interfaces, ambient."""
+
+    media: tuple[Medium, ...]
+    compliance: tuple[Array, ...]
+    resistance: tuple[Array, ...]
+    ambient: Ambient
+
+
+def sample(bound: BoundStack, values: Mapping[str, Array]) -> Sample:
+    """Convert a bound stack and the values of its unknowns into a batch of stacks.
+
+    Parameters
+    ----------
+    bound : BoundStack
+    values : mapping
+        Unknown name -> array of shape (sets,), public units.
+    """
+    return Sample(
+        media=tuple(_medium(bound, slots, values) for slots in bound.media),
+        compliance=tuple(_compliance(bound, slots, values) for slots in bound.interfaces),
+        resistance=tuple(_resistance(bound, slots, values) for slots in bound.interfaces),
+        ambient=_ambient(bound, values),
+    )
+
+
+def _coherent(field: str, value: Array | float) -> Array:
+    factor = QUANTITIES[field].to_coherent if field in QUANTITIES else 1.0
+    return np.atleast_1d(np.asarray(value, dtype=float))[:, None] * factor
+
+
+def _index(filled: Mapping[str, Array | float], light: str) -> Complex:
+    return _coherent("n_real", filled[f"n_real_{light}"]) + 1j * _coherent("n_imag", filled[f"n_imag_{light}"])
+
+
+def _medium(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Medium:
+    filled = bound.fill(slots, values)
+    if "density_ratio" in filled:
+        filled["density"] = np.asarray(filled["density_ratio"]) * np.asarray(filled["substrate_density"])
+    one = {name: _coherent(name, value) for name, value in filled.items()}
+    with np.errstate(divide="ignore"):
+        inverse_coupling, inverse_quality = (
+            1 / one["electron_phonon_coupling"],
+            1 / one["quality_factor"],
+        )
+    return Medium(
+        thickness=one.get("thickness", np.full((1, 1), np.inf)),
+        density=one["density"],
+        velocity=one["velocity"],
+        n_pump=_index(filled, "pump"),
+        n_probe=_index(filled, "probe"),
+        heat_capacity=one["heat_capacity"],
+        electron_heat_capacity=one["electron_heat_capacity"],
+        conductivity=one["conductivity"],
+        inverse_coupling=inverse_coupling,
+        stress=one["thermal_stress_coefficient"],
+        loss_time=one["attenuation_time"],
+        loss_exponent=one["attenuation_exponent"],
+        inverse_quality=inverse_quality,
+        quality_frequency=one["quality_frequency"],
+    )
+
+
+def _compliance(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Array:
+    return np.minimum(_coherent("compliance", bound.fill(slots, values)["compliance"]), OPEN)
+
+
+def _resistance(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Array:
+    conductance = _coherent("boundary_conductance", bound.fill(slots, values)["boundary_conductance"])
+    with np.errstate(divide="ignore"):
+        return np.minimum(1 / conductance, OPEN)
+
+
+def _ambient(bound: BoundStack, values: Mapping[str, Array]) -> Ambient:
+    if not bound.ambient:
+        vacuum = np.ones((1, 1), dtype=complex)
+        return Ambient(vacuum, vacuum)
+    filled = bound.fill(bound.ambient, values)
+    return Ambient(
+        n_pump=_index(filled, "pump"),
+        n_probe=_index(filled, "probe"),
+        density=_coherent("density", filled["density"]),
+        velocity=_coherent("velocity", filled["velocity"]),
+        heat_capacity=_coherent("heat_capacity", filled["heat_capacity"]),
+        conductivity=_coherent("conductivity", filled["conductivity"]),
+    )

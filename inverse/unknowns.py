@@ -1,0 +1,108 @@
+"""Unknowns: a property with a prior in place of a number."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from inverse.quantities import check, quantity
+
+__all__ = ["Unknown", "describe_prior", "is_distribution", "is_unknown", "rebuild_prior", "validate_prior"]
+
+
+@dataclass(frozen=True, eq=False)
+class Unknown:
+    """One unknown that may stand in several places; the same object is the same unknown.
+
+    Parameters
+    ----------
+    name : str
+        The name it goes by in every result.
+    prior : frozen scipy.stats distribution
+        Continuous, in the unit of the property it stands for.
+
+    Raises
+    ------
+    ValueError
+        If the name is empty or holds ``/``, or the prior is not a frozen continuous distribution.
+
+    Examples
+    --------
+    >>> from scipy import stats
+    >>> from inverse import Unknown
+    >>> Unknown("v_film", stats.norm(6.42, 0.10)).name
+    'v_film'
+    """
+
+    name: str
+    prior: Any
+
+    def __post_init__(self) -> None:
+        if not isinstance(self.name, str) or not self.name.strip() or "/" in self.name:
+            raise ValueError(f"Unknown name {self.name!r}: give a non-empty text without '/', such as 'v_film'.")
+        if not is_distribution(self.prior):
+            raise ValueError(
+                f"Unknown '{self.name}' got {self.prior!r} as its prior; give a frozen continuous "
+                "scipy.stats distribution, such as stats.norm(6.42, 0.10)."
+            )
+
+
+def is_distribution(value: object) -> bool:
+    """Tell whether `value` is a frozen continuous scipy.stats distribution."""
+    return hasattr(value, "logpdf") and hasattr(value, "ppf") and hasattr(value, "support")
+
+
+def is_unknown(value: object) -> bool:
+    """Tell whether `value` marks an unknown: a frozen distribution or an `Unknown`."""
+    return isinstance(value, Unknown) or is_distribution(value)
+
+
+def validate_prior(name: str, prior: Any, where: str = "") -> None:
+    """Check that the middle 98 % of a prior lies in the allowed range of quantity `name`.
+
+    Raises
+    ------
+    ValueError
+        If a quantile is not finite or outside the range. Tails outside the range have probability zero.
+    """
+    for probability in (0.01, 0.5, 0.99):
+        try:
+            check(name, float(prior.ppf(probability)), where)
+        except ValueError as error:
+            raise ValueError(f"The prior's {probability:.0%} quantile does not fit. {error}") from None
+
+
+def describe_prior(prior: Any) -> dict[str, Any]:
+    """Describe a frozen distribution as plain data: family, arguments, keywords.
+
+    Raises
+    ------
+    ValueError
+        If the distribution is not one of scipy.stats by name, so that no file could rebuild it.
+    """
+    from scipy import stats
+
+    family = getattr(getattr(prior, "dist", None), "name", None)
+    if family is None or not hasattr(stats, family):
+        raise ValueError(
+            f"The prior {prior!r} is not a named scipy.stats family, so a result could not be saved and rebuilt; "
+            "use a named family such as stats.norm, stats.uniform, stats.truncnorm or stats.loguniform."
+        )
+    plain = [float(np.asarray(a)) for a in prior.args]
+    keywords = {k: float(np.asarray(v)) for k, v in prior.kwds.items()}
+    return {"family": family, "args": plain, "kwds": keywords}
+
+
+def rebuild_prior(description: dict[str, Any]) -> Any:
+    """Rebuild the frozen distribution that `describe_prior` described."""
+    from scipy import stats
+
+    return getattr(stats, description["family"])(*description["args"], **description["kwds"])
+
+
+def label(name: str) -> str:
+    """Return an axis label with unit for an unknown or derived quantity."""
+    q = quantity(name)
+    return f"{name} ({q.unit})" if q.unit != "1" else name
