@@ -12,7 +12,7 @@ ROOMS = ("elastic", "description", "response", "inference", "study", "report")
 DESCRIPTION = {
     *("quantities", "unknowns", "materials", "reference_tables", "reference_values"),
     *("refractive_index", "stack", "pumpprobe", "places"),
-    *("traces", "trace_checks", "trace_columns", "text_tables"),
+    *("traces", "trace_checks", "arrivals", "trace_columns", "text_tables"),
 }
 REPORT = {"report", "plot", "rounding", "unit_text", "propagation", "__main__"}
 HEAVY = (
