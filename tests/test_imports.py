@@ -12,9 +12,12 @@ ROOMS = ("elastic", "description", "response", "inference", "study", "report")
 DESCRIPTION = {
     *("quantities", "unknowns", "materials", "reference_tables", "reference_values"),
     *("refractive_index", "stack", "pumpprobe", "places"),
-    *("traces", "trace_checks", "arrivals", "trace_columns", "text_tables"),
+    *("traces", "trace_checks", "arrivals", "rising_edge", "trace_columns", "text_tables"),
 }
-REPORT = {"report", "plot", "rounding", "unit_text", "propagation", "__main__"}
+REPORT = {
+    *("report", "report_header", "summary", "sheet", "plot", "plot_elastic", "__main__"),
+    *("rounding", "unit_text", "propagation", "finite_differences"),
+}
 HEAVY = (
     *("matplotlib", "corner", "arviz", "emcee", "xarray", "pandas", "h5netcdf", "h5py", "tqdm"),
     "scipy.stats",

@@ -87,6 +87,13 @@ def test_calls_in_the_table_exist(readme: str) -> None:
     assert missing == []
 
 
+def test_no_module_takes_the_name_of_a_public_call(readme: str, repository: Path) -> None:
+    """Importing `inverse/x.py` binds `inverse.x` to the module, over any lazily loaded function `x`."""
+    rows = re.findall(r"^\| `(\w+)\(", readme, re.MULTILINE)
+    assert "first_look" in rows
+    assert [row for row in rows if (repository / "inverse" / f"{row}.py").exists()] == []
+
+
 def _resolves(dotted: str) -> bool:
     target: object = inverse
     for name in dotted.replace("inversion.", "Inversion.").split("."):
