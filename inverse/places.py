@@ -51,6 +51,8 @@ class Slot:
         Where the number comes from.
     spread : float
         Standard uncertainty of a fixed constant, 0 where none is stated.
+    shared : bool
+        The unknown was given by an `Unknown` and keeps its name wherever it stands.
     """
 
     name: str
@@ -59,6 +61,7 @@ class Slot:
     prior: Any = None
     source: str = ""
     spread: float = 0.0
+    shared: bool = False
 
 
 Slots = dict[str, Slot]
@@ -152,7 +155,7 @@ def bind(stack: Stack, setup: PumpProbe) -> BoundStack:
 def _slot(field: str, value: Any, place: str, source: str, spread: float, suffix: str = "") -> Slot:
     name = f"{place}.{field}{suffix}"
     if isinstance(value, Unknown):
-        return Slot(value.name, field, np.nan, value.prior)
+        return Slot(value.name, field, np.nan, value.prior, shared=True)
     if is_unknown(value):
         return Slot(name, field, np.nan, value)
     return Slot(name, field, float(value), None, source, spread)

@@ -1,0 +1,51 @@
+"""Picosecond-ultrasonics traces to thickness, velocity, density and bonding, with intervals that hold up.
+
+The public names load on first use, so that importing the package costs little.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import Any
+
+__version__ = "0.1.0"
+
+_HOMES = {
+    "Material": "materials",
+    "material": "materials",
+    "film_prior": "materials",
+    "read_index": "refractive_index",
+    "Layer": "stack",
+    "Substrate": "stack",
+    "Interface": "stack",
+    "Stack": "stack",
+    "PumpProbe": "pumpprobe",
+    "Unknown": "unknowns",
+    "read_trace": "traces",
+    "make_trace": "traces",
+    "first_look": "first_look",
+    "simulate": "response.simulate",
+    "Inversion": "inference.inversion",
+    "save": "inference.result",
+    "load": "inference.result",
+    "table": "report",
+    "constants_table": "report",
+    "plot": "plot",
+    "elastic": "elastic",
+}
+_MODULES = ("plot", "elastic")
+
+__all__ = ["__version__", *_HOMES]
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOMES:
+        raise AttributeError(f"module 'inverse' has no attribute {name!r}; it has {', '.join(sorted(_HOMES))}.")
+    home = import_module(f"inverse.{_HOMES[name]}")
+    found = home if name in _MODULES else getattr(home, name)
+    globals()[name] = found
+    return found
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

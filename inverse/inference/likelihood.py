@@ -1,0 +1,210 @@
+"""The likelihood of one trace: forward model, noise and elimination put together."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.inference.elimination import Eliminated, eliminate
+from inverse.inference.noise import Noise
+from inverse.places import BoundStack
+from inverse.response.basis import Columns, basis, take
+from inverse.response.inverse_laplace import TimeGrid, time_grid
+from inverse.response.media import sample
+
+__all__ = ["Channel", "TraceModel"]
+
+Array = NDArray[np.float64]
+
+STRAIN_WIDTH = 5.0
+"""Prior width of real and imaginary part of dn/d(strain), dimensionless."""
+
+HEAT_WIDTH = 5e-4
+"""Prior width of real and imaginary part of dn/dT, 1/K."""
+
+SCALE_WIDTH = 3.0
+"""Prior width of the trace's scale over the scale that these widths predict at the prior's centre."""
+
+
+@dataclass(frozen=True)
+class Channel:
+    """Data of one channel.
+
+    Attributes
+    ----------
+    name : str
+        ``reflectance_change`` or ``optical_phase``.
+    unit : str
+    data : array, shape (delays,)
+        All points; the model's mask says which are fitted.
+    noise : Noise
+        On the fitted delays.
+    prefix : str
+        Of the noise unknowns, ``noise.`` or ``noise.optical_phase.``.
+    baseline : float
+        Prior width of the constant offset.
+    """
+
+    name: str
+    unit: str
+    data: Array
+    noise: Noise
+    prefix: str
+    baseline: float
+
+    def noise_values(self, values: Mapping[str, Array]) -> dict[str, Array]:
+        """Pick this channel's noise values out of all values."""
+        start = len(self.prefix)
+        return {name[start:]: v for name, v in values.items() if name.startswith(self.prefix)}
+
+
+@dataclass(frozen=True)
+class TraceModel:
+    """Everything needed to compute the likelihood of one trace; plain data, picklable.
+
+    Attributes
+    ----------
+    bound : BoundStack
+    wavelengths : tuple of float
+        Pump and probe, nm.
+    channels : tuple of Channel
+    delay : array
+        All delays, ps.
+    used : bool array
+        Which delays are fitted.
+    grid : TimeGrid
+        For the fitted delays.
+    layout : Columns
+    widths : array
+        Prior widths of the coefficients, in the order of ``layout.names``.
+    pulse_rms : float
+        ps.
+    earliest : float
+        Earliest time zero the grid admits, ps.
+    """
+
+    bound: BoundStack
+    wavelengths: tuple[float, float]
+    channels: tuple[Channel, ...]
+    delay: Array
+    used: NDArray[np.bool_]
+    grid: TimeGrid
+    layout: Columns
+    widths: Array
+    pulse_rms: float
+    earliest: float
+
+    @property
+    def coefficient_names(self) -> tuple[str, ...]:
+        """Names of the eliminated coefficients; one baseline per channel stands last."""
+        return (*self.layout.names, *(f"baseline.{c.name}" for c in self.channels))
+
+    @property
+    def coefficient_widths(self) -> Array:
+        """Prior widths in the order of `coefficient_names`."""
+        return np.concatenate([self.widths, [c.baseline for c in self.channels]])
+
+    @property
+    def count(self) -> int:
+        """Number of fitted data."""
+        return int(self.used.sum()) * len(self.channels)
+
+    def log_likelihood(self, values: Mapping[str, Array]) -> Array:
+        """Return the marginal log likelihood of a batch, shape (sets,)."""
+        return np.concatenate([self._eliminate(block).log_likelihood for block, _ in self._blocks(values)])
+
+    def eliminated(self, values: Mapping[str, Array]) -> Eliminated:
+        """Return likelihood and coefficients of a batch."""
+        parts = [self._eliminate(block) for block, _ in self._blocks(values)]
+        return Eliminated(
+            np.concatenate([p.log_likelihood for p in parts]),
+            np.concatenate([p.mean for p in parts]),
+            np.concatenate([p.factor for p in parts]),
+        )
+
+    def functions(self, values: Mapping[str, Array], grid: TimeGrid | None = None) -> dict[str, Array]:
+        """Return per channel the basis functions times their prior widths, baseline last.
+
+        Parameters
+        ----------
+        values : mapping
+            Unknown name -> array of shape (sets,).
+        grid : TimeGrid, optional
+            Other delays than the fitted ones.
+
+        Returns
+        -------
+        dict
+            Channel name -> array of shape (sets, coefficients of all channels, delays).
+        """
+        grid = grid or self.grid
+        sets = len(next(iter(values.values())))
+        parts = basis(
+            sample(self.bound, values), self.wavelengths, grid, values["time_zero"][:, None], self.layout, sets
+        )
+        scale = self.widths[:, None]
+        out = {}
+        for i, channel in enumerate(self.channels):
+            offsets = np.zeros((sets, len(self.channels), parts.shape[2]))
+            offsets[:, i] = channel.baseline
+            out[channel.name] = np.concatenate([take(parts, channel.name) * scale, offsets], axis=1)
+        return out
+
+    def at(self, delay: Array) -> TimeGrid:
+        """Return a grid for other delays."""
+        return time_grid(delay, self.pulse_rms, self.earliest)
+
+    def predict(self, values: Mapping[str, Array], coefficients: Array, delay: Array) -> dict[str, Array]:
+        """Return per channel the traces of given coefficients (in prior widths), shape (sets, delays)."""
+        grid = self.at(delay)
+        pieces: dict[str, list[Array]] = {c.name: [] for c in self.channels}
+        for block, rows in self._blocks(values):
+            for name, functions in self.functions(block, grid).items():
+                pieces[name].append(np.einsum("bc,bcn->bn", coefficients[rows], functions))
+        return {name: np.concatenate(p) for name, p in pieces.items()}
+
+    def whitened(self, values: Mapping[str, float], functions: Mapping[str, Array]) -> tuple[Array, Array]:
+        """Return whitened basis (data, coefficients) and data (data,) of one parameter set, prior rows last.
+
+        Parameters
+        ----------
+        values : mapping
+            Holds the noise values as scalars.
+        functions : mapping
+            Channel name -> (coefficients, fitted delays), one set out of `functions`.
+        """
+        size = len(self.coefficient_names)
+        rows = []
+        for channel in self.channels:
+            noise = {k: float(v) for k, v in channel.noise_values(values).items()}  # type: ignore[arg-type]
+            stacked = np.concatenate([functions[channel.name], channel.data[None, self.used]])
+            rows.append(channel.noise.whiten(stacked, noise))
+        white = np.concatenate(rows, axis=1)
+        prior = np.concatenate([np.eye(size), np.zeros((1, size))])
+        white = np.concatenate([white, prior], axis=1)
+        return white[:-1].T, white[-1]
+
+    def gram(self, functions: Mapping[str, Array], values: Mapping[str, Array]) -> tuple[Array, Array]:
+        """Return the Gram matrix of scaled basis and data, and log det K, summed over channels."""
+        total: Array | float = 0.0
+        log_det: Array | float = 0.0
+        for channel in self.channels:
+            rows = functions[channel.name]
+            data = np.broadcast_to(channel.data[self.used], (len(rows), 1, rows.shape[2]))
+            g, d = channel.noise.gram(np.concatenate([rows, data], axis=1), channel.noise_values(values))
+            total, log_det = total + g, log_det + d
+        return np.asarray(total), np.asarray(log_det)
+
+    def _eliminate(self, values: Mapping[str, Array]) -> Eliminated:
+        with np.errstate(all="ignore"):
+            gram, log_det = self.gram(self.functions(values), values)
+        return eliminate(gram, log_det, self.count)
+
+    def _blocks(self, values: Mapping[str, Array]) -> Iterator[tuple[dict[str, Array], slice]]:
+        sets = len(next(iter(values.values())))
+        for start in range(0, sets, self.grid.block):
+            rows = slice(start, start + self.grid.block)
+            yield {name: np.asarray(v)[rows] for name, v in values.items()}, rows

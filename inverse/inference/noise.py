@@ -1,0 +1,172 @@
+"""Noise of a channel: white, or white plus a correlated discrepancy with an exponential kernel.
+
+``K_ij = sigma^2 d_i^2 delta_ij + a^2 exp(-|t_i - t_j| / l)``; d is the relative noise per delay (ones, unless
+repeated scans tell it). The exponential kernel's inverse is tridiagonal (Ornstein-Uhlenbeck is Markov), so that
+``K^-1 = (1 - M^-1) / sigma^2``, ``M = 1 + (sigma/a)^2 T``, costs a tridiagonal solve: O(delays).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.linalg import lapack
+
+__all__ = ["NOISE_MODELS", "Noise", "noise_priors"]
+
+Array = NDArray[np.float64]
+
+NOISE_MODELS = ("correlated", "white")
+
+# Beyond this ratio of variances the smaller part is lost in rounding and means nothing.
+_RATIO = 1e12
+
+
+@dataclass(frozen=True)
+class Noise:
+    """Noise model of one channel.
+
+    Attributes
+    ----------
+    model : str
+        ``"correlated"`` or ``"white"``.
+    delay : array, shape (delays,)
+        ps, strictly increasing.
+    relative : array, shape (delays,)
+        Relative standard deviation of the white part per delay.
+    """
+
+    model: str
+    delay: Array
+    relative: Array
+
+    def gram(self, rows: Array, values: Mapping[str, Array]) -> tuple[Array, Array]:
+        """Return ``Z K^-1 Z'`` and log det K for a batch.
+
+        Parameters
+        ----------
+        rows : array, shape (sets, rows, delays)
+            Basis functions and data.
+        values : mapping
+            ``white`` and, if correlated, ``discrepancy`` and ``correlation_time``, each of shape (sets,).
+
+        Returns
+        -------
+        array, shape (sets, rows, rows)
+        array, shape (sets,)
+        """
+        sigma = values["white"]
+        scaled = rows / self.relative
+        log_det = 2 * self.delay.size * np.log(sigma) + 2 * np.log(self.relative).sum()
+        if self.model == "white":
+            return scaled @ scaled.swapaxes(1, 2) / sigma[:, None, None] ** 2, log_det
+        solved = np.empty_like(scaled)
+        extra = np.empty(len(sigma))
+        ratio = np.minimum((sigma / np.maximum(values["discrepancy"], 1e-300)) ** 2, _RATIO)
+        for b in range(len(sigma)):
+            diagonal, off, log_prior_det = self._precision(values["correlation_time"][b])
+            factor = lapack.dpttrf(1 + ratio[b] * diagonal, ratio[b] * off)
+            solved[b] = lapack.dpttrs(factor[0], factor[1], scaled[b].T)[0].T
+            extra[b] = np.log(factor[0]).sum() - log_prior_det - self.delay.size * np.log(ratio[b])
+        product = scaled @ (scaled - solved).swapaxes(1, 2)
+        return (product + product.swapaxes(1, 2)) / (2 * sigma[:, None, None] ** 2), log_det + extra
+
+    def whiten(self, rows: Array, values: Mapping[str, float]) -> Array:
+        """Return vectors whose scalar products are those of ``K^-1``, for one parameter set.
+
+        The correlated part contributes as many entries again: the best discrepancy f has cost
+        ``|r - f|^2 / sigma^2 + f' T f / a^2``, which is ``r' K^-1 r``.
+
+        Parameters
+        ----------
+        rows : array, shape (rows, delays)
+        values : mapping
+            As for `gram`, scalars.
+
+        Returns
+        -------
+        array, shape (rows, delays) or (rows, 2 x delays)
+        """
+        sigma = values["white"]
+        scaled = rows / self.relative
+        if self.model == "white":
+            return scaled / sigma
+        f = self.discrepancy(rows, values) / self.relative
+        rho = np.exp(-np.diff(self.delay) / values["correlation_time"])
+        g = f * self.relative / values["discrepancy"]
+        steps = (g[:, 1:] - rho * g[:, :-1]) / np.sqrt(-np.expm1(2 * np.log(rho)))
+        return np.concatenate([(scaled - f) / sigma, g[:, :1], steps], axis=1)
+
+    def discrepancy(self, rows: Array, values: Mapping[str, float]) -> Array:
+        """Return the posterior mean of the discrepancy under residual rows, shape (rows, delays)."""
+        if self.model == "white":
+            return np.zeros_like(rows)
+        ratio = min((values["white"] / max(values["discrepancy"], 1e-300)) ** 2, _RATIO)
+        diagonal, off, _ = self._precision(float(values["correlation_time"]))
+        factor = lapack.dpttrf(1 + ratio * diagonal, ratio * off)
+        scaled = rows / self.relative
+        return lapack.dpttrs(factor[0], factor[1], scaled.T)[0].T * self.relative
+
+    def draw(self, rng: np.random.Generator, values: Mapping[str, float], correlated: bool = True) -> Array:
+        """Draw one realisation, shape (delays,)."""
+        white = values["white"] * self.relative * rng.standard_normal(self.delay.size)
+        if self.model == "white" or not correlated:
+            return white
+        rho = np.exp(-np.diff(self.delay) / values["correlation_time"])
+        kicks = rng.standard_normal(self.delay.size)
+        path = np.empty(self.delay.size)
+        path[0] = kicks[0]
+        for i, (r, kick) in enumerate(zip(rho, kicks[1:], strict=True)):
+            path[i + 1] = r * path[i] + np.sqrt(1 - r * r) * kick
+        return white + values["discrepancy"] * path
+
+    def _precision(self, length: float) -> tuple[Array, Array, float]:
+        """Diagonal, off-diagonal and log det of the unit discrepancy's inverse covariance, scaled by d."""
+        rho = np.exp(-np.diff(self.delay) / length)
+        gap = -np.expm1(-2 * np.diff(self.delay) / length)
+        diagonal = np.ones(self.delay.size)
+        diagonal[1:] = 1 / gap
+        diagonal[:-1] += rho * rho / gap
+        d = self.relative
+        return diagonal * d * d, -rho / gap * d[1:] * d[:-1], 2 * np.log(d).sum() - np.log(gap).sum()
+
+
+def noise_priors(model: str, level: float, delay: Array) -> dict[str, Any]:
+    """Return the weak default priors of a channel's noise.
+
+    Parameters
+    ----------
+    model : str
+        One of `NOISE_MODELS`.
+    level : float
+        White noise per point, estimated from the trace (`first_look`), in its unit.
+    delay : array
+        ps.
+
+    Returns
+    -------
+    dict
+        ``white``: log-normal about the estimate, a factor of 2 at one standard deviation.
+        ``discrepancy``: half-Cauchy with the white level as its scale.
+        ``correlation_time``: log-uniform from three median steps to the trace's length.
+
+    Raises
+    ------
+    ValueError
+        If the model is not known or the level is not positive.
+    """
+    from scipy import stats
+
+    if model not in NOISE_MODELS:
+        raise ValueError(f"noise={model!r} is not known; choose one of {', '.join(NOISE_MODELS)}.")
+    if not (np.isfinite(level) and level > 0):
+        raise ValueError(f"The white noise level is {level!r}; it must be positive. Is the trace noise-free or constant?")
+    priors = {"white": stats.lognorm(np.log(2), scale=level)}
+    if model == "correlated":
+        step = float(np.median(np.diff(delay)))
+        priors["discrepancy"] = stats.halfcauchy(scale=level)
+        priors["correlation_time"] = stats.loguniform(3 * step, float(delay[-1] - delay[0]))
+    return priors
