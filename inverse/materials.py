@@ -75,7 +75,7 @@ class Material:
     sources : mapping of str to str
         Text of the source of each field.
     spread : mapping of str to float
-        Standard-deviation-like uncertainty of each field, in the field's unit. That of n is in the `IndexTable`.
+        Standard-deviation-like uncertainty of each field, in the field's unit; n's is in the `IndexTable`.
 
     Raises
     ------
@@ -159,9 +159,10 @@ class Material:
         if abs(near - wavelength) < 1e-9:
             return self.n[near]
         if any(isinstance(value, tuple) for value in self.n.values()):
+            given = ", ".join(f"{w:g}" for w in self.n)
             raise ValueError(
-                f"{self.name} has an unknown refractive index at {', '.join(f'{w:g}' for w in self.n)} nm and was "
-                f"asked at {wavelength:g} nm; unknowns are not interpolated. Add n at {wavelength:g} nm."
+                f"{self.name} has unknown refractive indices (given at {given} nm) and was asked at "
+                f"{wavelength:g} nm; unknowns are not interpolated. Add n at {wavelength:g} nm."
             )
         return IndexTable(tuple(self.n), tuple(self.n.values()), source=self._source("n")).at(wavelength)
 
@@ -239,8 +240,8 @@ def _thermal_stress(given: Material) -> Any:
         return check("thermal_stress_coefficient", product, given.name)
     if is_unknown(stated) or abs(stated - product) > 0.01 * abs(product):
         raise ValueError(
-            f"{given.name} got thermal_stress_coefficient = {stated} GPa/K and also expansion and bulk_modulus, "
-            f"whose 3 x bulk modulus x expansion is {product:g} GPa/K; give one or the other."
+            f"{given.name} got thermal_stress_coefficient = {stated} GPa/K and also expansion and "
+            f"bulk_modulus, whose 3 x bulk modulus x expansion is {product:g} GPa/K; give one or the other."
         )
     return stated
 
@@ -259,7 +260,7 @@ def material(name: str, orientation: str | None = None, *, index_series: str | N
         Direction of the depth in the crystal: ``"100"``, ``"110"`` or ``"111"`` in cubic ones, ``"c"`` in
         hexagonal and trigonal ones. Single crystals need it; metals are polycrystals without it.
     index_series : str, optional
-        Series of refractive index to take in place of the default (``reference_materials/optical_series.csv``).
+        Series of refractive index in place of the default (``reference_materials/optical_series.csv``).
 
     Returns
     -------
@@ -272,7 +273,7 @@ def material(name: str, orientation: str | None = None, *, index_series: str | N
     Raises
     ------
     ValueError
-        If the name is unknown (near ones are listed), or the orientation is missing or not one of the table's.
+        If the name is unknown (near ones are listed), or the orientation is missing or not in the table.
 
     Examples
     --------

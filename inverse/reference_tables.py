@@ -27,7 +27,7 @@ class Entry:
     kind : str
         ``metal``, ``crystal``, ``glass``, ``film``, ``polymer`` or ``liquid``.
     symmetry : str
-        ``cubic``, ``hexagonal``, ``trigonal`` or ``isotropic``.
+        ``cubic``, ``hexagonal``, ``trigonal_6`` or ``isotropic``.
     orientations : tuple of str
         Cuts along which a velocity is known.
     molar_mass : float
@@ -158,7 +158,12 @@ def number(table: str, material: str, quantity: str, *, axis: str = "") -> Numbe
     if not found or found[0]["default"] != "yes":
         return None
     values = [float(row["value"]) for row in found]
-    return Number(values[0], between(values), source_of(found[0]))
+    return Number(values[0], max(between(values), uncertainty(found[0])), source_of(found[0]))
+
+
+def uncertainty(row: Row) -> float:
+    """Return the uncertainty printed with a value, 0 where none is."""
+    return float(row["uncertainty"] or 0.0)
 
 
 def between(values: list[float]) -> float:

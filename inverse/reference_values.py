@@ -2,14 +2,25 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 import numpy as np
-from numpy.typing import NDArray
 
-from inverse.reference_tables import Entry, Number, between, index_table, number, rows, source_of
+from inverse.elastic.averages import averages
+from inverse.elastic.christoffel import longitudinal_velocity
+from inverse.elastic.symmetry import constant_names
+from inverse.elastic.tensor import StiffnessTensor
+from inverse.reference_tables import (
+    Entry,
+    Number,
+    Row,
+    between,
+    index_table,
+    number,
+    rows,
+    source_of,
+    uncertainty,
+)
 
-__all__ = ["DEFAULT_SPREAD", "longitudinal_velocity", "reference_values", "stiffness"]
+__all__ = ["CRYSTAL_SPREAD", "DEFAULT_SPREAD", "reference_values", "stiffness"]
 
 T0 = 300.0  # K, at which the electrons' heat capacity gamma T is taken
 
@@ -26,8 +37,8 @@ DEFAULT_SPREAD = {
     "electron_phonon_coupling": float(np.log(2.0)),
     "n": 0.03,
 }
-"""Least relative spread of a reference value, a choice of this project: 2 % for what differs between films and
-bulk, 5 % for the conductivity, a factor of two for the electron-phonon coupling."""
+"""Least relative spread of a reference value, a choice of this project: 2 % for what differs between films
+and bulk, 5 % for the conductivity, a factor of two for the electron-phonon coupling."""
 
 CRYSTAL_SPREAD = {
     "density": 0.002,
@@ -36,14 +47,6 @@ CRYSTAL_SPREAD = {
     "thermal_stress_coefficient": 0.05,
 }
 """The same for single crystals and liquids, which are what the tables describe."""
-
-_CONSTANTS = ("c11", "c12", "c13", "c14", "c33", "c44", "c66")
-
-
-@dataclass(frozen=True)
-class _Average:
-    bulk_modulus: float
-    shear_modulus: float
 
 
 def reference_values(entry: Entry, orientation: str | None) -> dict[str, Number]:
@@ -83,78 +86,26 @@ def _with_floor(entry: Entry, field: str, value: Number) -> Number:
 
 def stiffness(entry: Entry) -> dict[str, float]:
     """Return the default elastic constants in GPa, ``{"c11": ...}``; empty if there are none."""
-    found = {c: rows("mechanical", entry.name, c) for c in _CONSTANTS}
-    return {c: float(r[0]["value"]) for c, r in found.items() if r}
+    return next(iter(_stiffness_sets(entry)), {})
+
+
+def _constant_rows(entry: Entry) -> dict[str, list[Row]]:
+    """Return the rows of each independent elastic constant the tables hold, the default first."""
+    if entry.symmetry == "isotropic":
+        return {}
+    found = {c: rows("mechanical", entry.name, c) for c in constant_names(entry.symmetry)}
+    return found if all(found.values()) else {}
 
 
 def _stiffness_sets(entry: Entry) -> list[dict[str, float]]:
-    """Return all sets of elastic constants, the default first, one per source."""
-    found = {c: rows("mechanical", entry.name, c) for c in _CONSTANTS}
-    count = max((len(r) for r in found.values()), default=0)
-    sets = [{c: float(r[i]["value"]) for c, r in found.items() if len(r) > i} for i in range(count)]
-    return [s for s in sets if len(s) == len(sets[0])]
+    """Return all complete sets of elastic constants, the default first, one per source."""
+    found = _constant_rows(entry)
+    complete = min((len(r) for r in found.values()), default=0)
+    return [{c: float(r[i]["value"]) for c, r in found.items()} for i in range(complete)]
 
 
-def longitudinal_velocity(constants: dict[str, float], density: float, orientation: str) -> float:
-    """Return the velocity of the longitudinal wave along a pure direction, in nm/ps.
-
-    Cubic: rho v^2 = c11 along [100], (c11 + c12 + 2 c44) / 2 along [110], (c11 + 2 c12 + 4 c44) / 3 along
-    [111]; c33 along the c axis of hexagonal and trigonal crystals.
-
-    Parameters
-    ----------
-    constants : dict
-        Elastic constants in GPa.
-    density : float
-        In g/cm3.
-    orientation : {"100", "110", "111", "c"}
-        Direction.
-
-    Returns
-    -------
-    float
-        Velocity in nm/ps.
-
-    Raises
-    ------
-    ValueError
-        If the direction is another.
-    """
-    c = constants
-    moduli = {
-        "100": lambda: c["c11"],
-        "110": lambda: (c["c11"] + c["c12"] + 2 * c["c44"]) / 2,
-        "111": lambda: (c["c11"] + 2 * c["c12"] + 4 * c["c44"]) / 3,
-        "c": lambda: c["c33"],
-    }
-    if orientation not in moduli:
-        raise ValueError(f"orientation = {orientation!r}; known directions are {', '.join(moduli)}.")
-    return float(np.sqrt(moduli[orientation]() / density))
-
-
-def _matrix(constants: dict[str, float], symmetry: str) -> NDArray[np.float64]:
-    """Return the 6 x 6 stiffness in Voigt's notation."""
-    c = dict(constants)
-    if symmetry == "cubic":
-        c |= {"c13": c["c12"], "c33": c["c11"], "c66": c["c44"]}
-    c66 = c.get("c66", (c["c11"] - c["c12"]) / 2)
-    matrix = np.diag([c["c11"], c["c11"], c["c33"], c["c44"], c["c44"], c66])
-    matrix[0, 1] = matrix[1, 0] = c["c12"]
-    matrix[[0, 1, 2, 2], [2, 2, 0, 1]] = c["c13"]
-    for i, j, sign in ((0, 3, 1), (1, 3, -1), (4, 5, 1)):
-        matrix[i, j] = matrix[j, i] = sign * c.get("c14", 0.0)
-    return matrix
-
-
-def _voigt_reuss_hill(constants: dict[str, float], symmetry: str) -> _Average:
-    """Return the isotropic moduli of a polycrystal without texture (Hill's mean of Voigt's and Reuss's)."""
-    c = _matrix(constants, symmetry)
-    s = np.linalg.inv(c)
-    diagonal, off = np.trace(c[:3, :3]), c[0, 1] + c[0, 2] + c[1, 2]
-    voigt_k, voigt_g = (diagonal + 2 * off) / 9, (diagonal - off + 3 * np.trace(c[3:, 3:])) / 15
-    diagonal, off = np.trace(s[:3, :3]), s[0, 1] + s[0, 2] + s[1, 2]
-    reuss_k, reuss_g = 1 / (diagonal + 2 * off), 15 / (4 * diagonal - 4 * off + 3 * np.trace(s[3:, 3:]))
-    return _Average(float(voigt_k + reuss_k) / 2, float(voigt_g + reuss_g) / 2)
+def _tensor(entry: Entry, constants: dict[str, float]) -> StiffnessTensor:
+    return StiffnessTensor.from_constants(entry.symmetry, constants)
 
 
 def _crystal_density(entry: Entry) -> Number:
@@ -165,26 +116,24 @@ def _crystal_density(entry: Entry) -> Number:
 
 
 def _constants_source(entry: Entry) -> str:
-    return " and ".join(
-        dict.fromkeys(source_of(r[0]) for r in (rows("mechanical", entry.name, c) for c in _CONSTANTS) if r)
-    )
+    return " and ".join(dict.fromkeys(source_of(r[0]) for r in _constant_rows(entry).values()))
 
 
 def _velocity(entry: Entry, orientation: str | None) -> Number | None:
     if orientation is not None:
         return _crystal_velocity(entry, orientation)
-    averages = [
-        float(np.sqrt((a.bulk_modulus + 4 / 3 * a.shear_modulus) / _crystal_density(entry).value))
-        for a in (_voigt_reuss_hill(c, entry.symmetry) for c in _stiffness_sets(entry))
+    means = [
+        float(averages(_tensor(entry, c)).longitudinal_velocity(_crystal_density(entry).value))
+        for c in _stiffness_sets(entry)
     ]
     measured = rows("mechanical", entry.name, "velocity_longitudinal")
     values = [float(row["value"]) for row in measured]
     if measured and measured[0]["default"] == "yes":
-        return Number(values[0], between(values + averages[:1]), source_of(measured[0]))
-    if not averages:
+        return Number(values[0], between(values + means[:1]), source_of(measured[0]))
+    if not means:
         return None
     text = f"Voigt-Reuss-Hill average of single-crystal constants: {_constants_source(entry)}"
-    return Number(averages[0], between(averages + values), text)
+    return Number(means[0], between(means + values), text)
 
 
 def _crystal_velocity(entry: Entry, orientation: str) -> Number | None:
@@ -192,14 +141,30 @@ def _crystal_velocity(entry: Entry, orientation: str) -> Number | None:
     if not sets:
         return None
     density = _crystal_density(entry)
-    values = [longitudinal_velocity(c, density.value, orientation) for c in sets]
+    values = [_along(entry, c, density.value, orientation) for c in sets]
     direction = "the c axis" if orientation == "c" else f"[{orientation}]"
-    text = f"closed form along {direction} from elastic constants ({_constants_source(entry)}) and density ({density.source})"
-    return Number(values[0], between(values), text)
+    text = f"along {direction}: elastic constants, {_constants_source(entry)}; density, {density.source}"
+    return Number(values[0], max(between(values), _propagated(entry, density.value, orientation)), text)
+
+
+def _along(entry: Entry, constants: dict[str, float], density: float, orientation: str) -> float:
+    return float(longitudinal_velocity(_tensor(entry, constants), density, orientation))
+
+
+def _propagated(entry: Entry, density: float, orientation: str) -> float:
+    """Return the velocity's standard uncertainty from those printed with the elastic constants."""
+    constants = stiffness(entry)
+    centre = _along(entry, constants, density, orientation)
+    steps = [
+        _along(entry, constants | {c: constants[c] + printed}, density, orientation) - centre
+        for c, found in _constant_rows(entry).items()
+        if (printed := uncertainty(found[0]))
+    ]
+    return float(np.linalg.norm(steps))
 
 
 def _heat_capacity(entry: Entry, density: Number | None) -> Number | None:
-    """Return the volumetric heat capacity of the lattice: specific heat x density, less the electrons' share."""
+    """Return the lattice's volumetric heat capacity: specific heat x density, less the electrons' share."""
     specific = rows("thermal", entry.name, "specific_heat")
     molar = rows("thermal", entry.name, "molar_heat_capacity")
     if density is None or not specific + molar:
@@ -220,8 +185,8 @@ def _heat_capacity(entry: Entry, density: Number | None) -> Number | None:
 def _isotropic_bulk_modulus(entry: Entry) -> Number | None:
     sets = _stiffness_sets(entry)
     if sets:
-        averages = [_voigt_reuss_hill(c, entry.symmetry).bulk_modulus for c in sets]
-        return Number(averages[0], between(averages), f"from elastic constants: {_constants_source(entry)}")
+        moduli = [float(averages(_tensor(entry, c)).bulk) for c in sets]
+        return Number(moduli[0], between(moduli), f"from elastic constants: {_constants_source(entry)}")
     fast = number("mechanical", entry.name, "velocity_longitudinal")
     slow = number("mechanical", entry.name, "velocity_transverse")
     density = number("mechanical", entry.name, "density")

@@ -6,6 +6,7 @@ import re
 import warnings
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -62,10 +63,10 @@ class IndexTable:
         wavelength = tuple(check("wavelength", w, "index table") for w in self.wavelength)
         if not wavelength or len(wavelength) != len(self.n) or len(self.spread) not in (0, len(self.n)):
             raise ValueError(
-                f"An index table got {len(wavelength)} wavelengths, {len(self.n)} values and {len(self.spread)} "
-                "spreads; give one value (and at most one spread) per wavelength, at least one of each."
+                f"An index table got {len(wavelength)} wavelengths, {len(self.n)} values and "
+                f"{len(self.spread)} spreads; give a value (and a spread or none at all) for each wavelength."
             )
-        for before, after in zip(wavelength, wavelength[1:], strict=False):
+        for before, after in pairwise(wavelength):
             if not after > before:
                 raise ValueError(
                     f"Wavelengths of an index table must increase, but {after:g} nm follows {before:g} nm; "
@@ -127,20 +128,21 @@ class IndexTable:
         if not low - 1e-9 <= wavelength <= high + 1e-9:
             raise ValueError(
                 f"The refractive index ({self.source}) is known from {low:g} to {high:g} nm and was asked at "
-                f"{wavelength:g} nm; it is not extrapolated. Give n={{{wavelength:g}: complex}} or a wider table "
-                "(read_index)."
+                f"{wavelength:g} nm; it is not extrapolated. Give n={{{wavelength:g}: complex}} or a wider "
+                "table (read_index)."
             )
 
     def _warn_if_coarse(self, wavelength: float) -> None:
         after = int(np.searchsorted(self.wavelength, wavelength - 1e-9))
-        if after == 0 or abs(self.wavelength[min(after, len(self.n) - 1)] - wavelength) < 1e-9:
+        if after == 0 or self.wavelength[min(after, len(self.n) - 1)] <= wavelength + 1e-9:
             return
-        low, high = self.n[after - 1], self.n[after]
-        if abs(high - low) > 0.03 * abs(low):
+        low, high = self.wavelength[after - 1], self.wavelength[after]
+        change = abs(self.n[after] - self.n[after - 1]) / abs(self.n[after - 1])
+        if change > 0.03:
             warnings.warn(
-                f"The refractive index at {wavelength:g} nm is interpolated between {self.wavelength[after - 1]:g} and "
-                f"{self.wavelength[after]:g} nm, where it changes by {abs(high - low) / abs(low):.0%} ({self.source}); "
-                "give a denser table (read_index) or the index at this wavelength.",
+                f"The refractive index at {wavelength:g} nm is interpolated between {low:g} and {high:g} nm, "
+                f"where it changes by {change:.0%} ({self.source}); give a denser table (read_index) or the "
+                "index at this wavelength.",
                 CoarseIndexWarning,
                 stacklevel=4,
             )
@@ -160,8 +162,8 @@ def check_index(value: complex, where: str) -> complex:
         raise ValueError(f"{where} = {value!r} is not a complex number; write it like 2.77+8.35j.") from None
     if number.imag < 0:
         raise ValueError(
-            f"{where} = {number:g} has a negative imaginary part; with the time factor e^{{-i w t}} an absorbing "
-            "medium has n'' >= 0. If the source uses e^{+i w t}, take the complex conjugate."
+            f"{where} = {number:g} has a negative imaginary part; with the time factor e^{{-i w t}} an "
+            "absorbing medium has n'' >= 0. If the source uses e^{+i w t}, take the complex conjugate."
         )
     check("n_real", number.real, where)
     check("n_imag", number.imag, where)
@@ -176,7 +178,7 @@ def read_index(
     delimiter: str | None = None,
     columns: Sequence[str] | None = None,
 ) -> IndexTable:
-    """Read a table of wavelength, n and k from a text file, such as an ellipsometer writes.
+    r"""Read a table of wavelength, n and k from a text file, such as an ellipsometer writes.
 
     The first line that is neither empty nor begins with ``#`` names the columns, unless `columns` does.
 
@@ -185,7 +187,8 @@ def read_index(
     path : str or Path
         The file, UTF-8.
     unit : {"nm", "um", "eV"}, optional
-        Unit of the first quantity (eV for photon energy); may instead stand in its column name, ``wavelength (nm)``.
+        Unit of the wavelength (eV for photon energy); it may stand in the column's name instead,
+        ``wavelength (nm)``.
     decimal : {".", ","}
         Decimal mark. It is never guessed.
     delimiter : str, optional
@@ -210,7 +213,7 @@ def read_index(
     --------
     >>> import pathlib, tempfile
     >>> file = pathlib.Path(tempfile.mkdtemp()) / "film.txt"
-    >>> _ = file.write_text("wavelength (nm);n;k\\n400,0;0,49;4,84\\n800,0;2,77;8,35\\n")
+    >>> _ = file.write_text("wavelength (nm);n;k\n400,0;0,49;4,84\n800,0;2,77;8,35\n")
     >>> read_index(file, decimal=",").at(800.0)
     (2.77+8.35j)
     """
@@ -218,19 +221,29 @@ def read_index(
         raise ValueError(f"decimal = {decimal!r}; give '.' or ','.")
     lines = _content_lines(Path(path))
     separator = _delimiter(lines[0][1], delimiter, decimal)
-    names = list(columns) if columns is not None else _cells(lines[0][1], separator)
-    body = lines if columns is not None else lines[1:]
+    names = list(columns) if columns is not None else _names(lines.pop(0)[1], separator)
     places = _find_columns(names, path)
-    factor_unit = _unit(names[places[0]], unit, path)
-    rows = [_row(number, text, separator, decimal, names, places, path) for number, text in body]
-    if not rows:
+    layout = _Layout(path, separator, decimal, len(names), places, _unit(names[places[0]], unit, path))
+    if not lines:
         raise ValueError(f"{path} holds no row of numbers under its line of names; give wavelength, n and k.")
-    rows = sorted((_to_nm(w, factor_unit), n, k) for w, n, k in rows)
+    rows = sorted(_row(layout, number, text) for number, text in lines)
     return IndexTable(
-        tuple(r[0] for r in rows),
-        tuple(complex(r[1], r[2]) for r in rows),
+        tuple(wavelength for wavelength, _, _ in rows),
+        tuple(complex(n, k) for _, n, k in rows),
         source=f"read from {Path(path).name}",
     )
+
+
+@dataclass(frozen=True)
+class _Layout:
+    """How a file writes its rows."""
+
+    path: str | Path
+    separator: str | None
+    decimal: str
+    columns: int
+    places: tuple[int, int, int]
+    unit: str
 
 
 def _content_lines(path: Path) -> list[tuple[int, str]]:
@@ -251,11 +264,9 @@ def _delimiter(first: str, given: str | None, decimal: str) -> str | None:
     return next((mark for mark in marks if mark in first), None)
 
 
-def _cells(line: str, separator: str | None) -> list[str]:
-    return [cell.strip() for cell in line.split(separator)] if separator else _blank_cells(line)
-
-
-def _blank_cells(line: str) -> list[str]:
+def _names(line: str, separator: str | None) -> list[str]:
+    if separator:
+        return [cell.strip() for cell in line.split(separator)]
     # A unit in brackets after a blank belongs to the name before it.
     return re.sub(r"\s+([(\[])", r"\1", line).split()
 
@@ -271,8 +282,8 @@ def _find_columns(names: Sequence[str], path: str | Path) -> tuple[int, int, int
         hits = [i for i, name in enumerate(bare) if name in spellings]
         if len(hits) != 1:
             raise ValueError(
-                f"{path} has {len(hits)} columns for '{wanted}' among {list(names)}; name the columns wavelength, n "
-                "and k in the file's first line, or pass columns=('wavelength', 'n', 'k')."
+                f"{path} has {len(hits)} columns for '{wanted}' among {list(names)}; name the columns "
+                "wavelength, n and k in the file's first line, or pass columns=('wavelength', 'n', 'k')."
             )
         found.append(hits[0])
     return found[0], found[1], found[2]
@@ -291,38 +302,28 @@ def _unit(name: str, given: str | None, path: str | Path) -> str:
     return written or asked or ""
 
 
-def _row(
-    number: int,
-    text: str,
-    separator: str | None,
-    decimal: str,
-    names: Sequence[str],
-    places: tuple[int, int, int],
-    path: str | Path,
-) -> tuple[float, float, float]:
-    cells = [c.strip() for c in text.split(separator)]
-    if len(cells) != len(names):
+def _row(layout: _Layout, line: int, text: str) -> tuple[float, float, float]:
+    cells = [cell.strip() for cell in text.split(layout.separator)]
+    if len(cells) != layout.columns:
         raise ValueError(
-            f"{path}, line {number}: {len(cells)} values for {len(names)} columns in '{text}'. If the file writes "
-            "decimal commas, pass decimal=',' (and delimiter if it is not a tab or semicolon)."
+            f"{layout.path}, line {line}: {len(cells)} values for {layout.columns} columns in '{text}'. If "
+            "the file writes decimal commas, pass decimal=',' (and a delimiter other than tab or semicolon)."
         )
-    wavelength, n, k = (_number(cells[place], decimal, path, number) for place in places)
-    return wavelength, n, k
+    wavelength, n, k = (_number(layout, line, cells[place]) for place in layout.places)
+    return _to_nm(wavelength, layout.unit), n, k
 
 
-def _number(cell: str, decimal: str, path: str | Path, line: int) -> float:
-    other = "." if decimal == "," else ","
+def _number(layout: _Layout, line: int, cell: str) -> float:
+    other = "." if layout.decimal == "," else ","
+    hint = f" It holds '{other}': pass decimal='{other}'." if other in cell else ""
     try:
-        if other in cell:
-            raise ValueError
-        value = float(cell.replace(",", "."))
+        value = float("" if hint else cell.replace(",", "."))
     except ValueError:
-        hint = f" It holds '{other}': pass decimal='{other}'." if other in cell else ""
         raise ValueError(
-            f"{path}, line {line}: '{cell}' is not a number with decimal '{decimal}'.{hint}"
+            f"{layout.path}, line {line}: '{cell}' is not a number with decimal '{layout.decimal}'.{hint}"
         ) from None
     if not np.isfinite(value):
-        raise ValueError(f"{path}, line {line}: '{cell}' is not finite; delete the row.")
+        raise ValueError(f"{layout.path}, line {line}: '{cell}' is not finite; delete the row.")
     return value
 
 
