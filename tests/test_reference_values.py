@@ -23,7 +23,7 @@ def some_material(name: str, **keywords: str) -> Material:
 
 # --- optics -----------------------------------------------------------------------------------------------
 
-# Reflectance at normal incidence, 400, 532, 800 nm (computed, the same with tmm 0.2.0), from the paper's n and k.
+# Reflectance at normal incidence, 400, 532, 800 nm (computed, the same with tmm 0.2.0), from published n, k.
 REFLECTANCE = {
     ("Al", "Rakic"): (0.9238, 0.9165, 0.8682),  # Rakic 1995
     ("Au", "Johnson"): (0.4071, 0.7044, 0.9758),  # Johnson & Christy 1972
