@@ -1,4 +1,4 @@
-"""Numbers from the text files of a laboratory: separators, decimal commas, comments and headers, nothing guessed."""
+"""Numbers from the text files of a laboratory: separators, decimal commas, comments and headers."""
 
 from __future__ import annotations
 
@@ -72,7 +72,7 @@ def read_table(
     decimal : {".", ","}
         The decimal mark.
     separator : str, optional
-        What stands between columns; ``" "`` is any run of blanks. By default found from the first row of numbers.
+        Mark between columns, ``" "`` for any run of blanks; by default found from the first row of numbers.
 
     Returns
     -------
@@ -121,7 +121,7 @@ def split_fields(line: str, separator: str) -> list[str]:
 
 
 def _decode(path: Path) -> tuple[str, str]:
-    """Text of the file and its encoding; UTF-8, UTF-16 with its mark, or else the Western single-byte code."""
+    """Text of the file and its encoding: UTF-8, UTF-16 with its mark, or else Latin 1."""
     if not path.is_file():
         raise TableNotFoundError(f"no file {str(path)!r}; check the path and the working folder {Path.cwd()}")
     raw = path.read_bytes()
@@ -188,7 +188,8 @@ def _split_head(
     body = lines[len(head) :]
     if not body:
         raise TableError(
-            f"{name} holds no row of numbers; expected columns of delay and signal. If columns are divided by an "
+            f"{name} holds no row of numbers; expected columns of delay and signal. If columns are divided "
+            "by an "
             "unusual mark, pass separator=; if the decimal mark is a comma, pass decimal=','"
         )
     return head, body
@@ -218,13 +219,15 @@ def _parse_row(line: _Line, separator: str, decimal: str, width: int, name: str)
     fields = split_fields(line.text, separator)
     if len(fields) != width:
         raise TableError(
-            f"line {line.number} of {name} has {len(fields)} fields where the first row of numbers has {width} "
+            f"line {line.number} of {name} has {len(fields)} fields where the first row of numbers has "
+            f"{width} "
             f"(separator: {_SEPARATOR_NAMES.get(separator, separator)}): {line.text.strip()!r}; mend the file"
         )
     for field in fields:
         if not _is_number(field, decimal):
             raise TableError(
-                f"line {line.number} of {name} has {field!r} where a number is expected; remove the line, start it "
+                f"line {line.number} of {name} has {field!r} where a number is expected; remove the line, "
+                "start it "
                 "with '#', or set header_lines if it belongs to the header"
             )
     return [_number(field, decimal) for field in fields]
@@ -233,7 +236,7 @@ def _parse_row(line: _Line, separator: str, decimal: str, width: int, name: str)
 def _find_names(
     head: list[_Line], remarks: list[_Line], first: _Line, separator: str, width: int, name: str
 ) -> tuple[tuple[str, ...], list[_Line]]:
-    """Column headers, from the last line above the numbers or the comment just above; and the lines left over."""
+    """Column headers, from the line above the numbers or the comment there, and the lines left over."""
     for line in reversed(head):
         names = _fitting_names(line.text, separator, width)
         if names:
@@ -241,7 +244,8 @@ def _find_names(
         if line is head[-1] and "," in line.text and separator == "," and width > 2:
             columns = len(split_fields(line.text, separator))
             raise TableError(
-                f"line {line.number} of {name} names {columns} columns, but the rows hold {width}; if the file has "
+                f"line {line.number} of {name} names {columns} columns, but the rows hold {width}; if the "
+                "file has "
                 "decimal commas and commas between columns, export it with another separator"
             )
     above = [line for line in remarks if line.number < first.number]

@@ -38,7 +38,8 @@ def check_trace(trace: xr.Dataset, *, measured: bool = True) -> xr.Dataset:
     Raises
     ------
     TraceError
-        If there is no delay or no channel; if a number is NaN or infinite; if delays are unsorted, repeated or look
+        If there is no delay or no channel; if a number is NaN or infinite; if delays are unsorted,
+        repeated or look
         like another unit than ps; if there are too few points or a signal is constant.
     """
     import xarray as xr
@@ -79,7 +80,8 @@ def channels_of(trace: xr.Dataset) -> tuple[str, ...]:
     found = tuple(name for name in CHANNELS if name in trace.data_vars)
     if not found:
         raise TraceError(
-            f"the trace has none of the channels {', '.join(CHANNELS)} (it has {sorted(map(str, trace.data_vars))}); "
+            f"the trace has none of the channels {', '.join(CHANNELS)} (it has "
+            f"{sorted(map(str, trace.data_vars))}); "
             "rename the variable or use make_trace"
         )
     return found
@@ -90,8 +92,10 @@ def refuse_non_finite(name: str, values: NDArray[np.float64]) -> None:
     for label, bad in (("NaN", np.isnan(values)), ("infinite", np.isinf(values))):
         if bad.any():
             raise TraceError(
-                f"{name} has {np.count_nonzero(bad)} {label} value(s), the first at point {np.argmax(bad)} (from 0); "
-                "drop those points from every channel (read_trace: repair=('drop_nan',) drops NaN rows and counts them)"
+                f"{name} has {np.count_nonzero(bad)} {label} value(s), the first at point {np.argmax(bad)} "
+                "(from 0); "
+                "drop those points from every channel (read_trace: repair=('drop_nan',) drops NaN rows and "
+                "counts them)"
             )
 
 
@@ -107,13 +111,15 @@ def refuse_disorder(delay: NDArray[np.float64]) -> None:
         first = int(np.argmax(step < 0))
         raise TraceError(
             f"the delays are unsorted: they step back {back} time(s), first from {delay[first]:g} to "
-            f"{delay[first + 1]:g} ps; pass repair=('sort',) to read_trace, or, if the stage ran several scans, name the "
+            f"{delay[first + 1]:g} ps; pass repair=('sort',) to read_trace, or, if the stage ran several "
+            "scans, name the "
             "scan column (columns={'scan': ...})"
         )
     if same:
         first = int(np.argmax(step == 0))
         raise TraceError(
-            f"{same} delay(s) are repeated, first {delay[first]:g} ps; pass repair=('average_repeats',) to read_trace, "
+            f"{same} delay(s) are repeated, first {delay[first]:g} ps; pass repair=('average_repeats',) to "
+            "read_trace, "
             "or name the scan column"
         )
 
@@ -133,11 +139,13 @@ def refuse_other_time_unit(unit: str, delay: NDArray[np.float64], measured: bool
         )
     if measured and span < 1.0:
         raise TraceError(
-            f"the delays span {span:.3g} ps, which looks like nanoseconds; pass delay_unit='ns' or convert to ps"
+            f"the delays span {span:.3g} ps, which looks like nanoseconds; pass delay_unit='ns' or convert "
+            "to ps"
         )
     if measured and step > _LONGEST_STEP:
         raise TraceError(
-            f"the median step between delays is {step:.4g} ps, which looks like femtoseconds (more than {_LONGEST_STEP:g} ps "
+            f"the median step between delays is {step:.4g} ps, which looks like femtoseconds (more than "
+            f"{_LONGEST_STEP:g} ps "
             "cannot show an echo); pass delay_unit='fs' or convert to ps"
         )
 
@@ -151,5 +159,6 @@ def refuse_poor(signals: Mapping[str, NDArray[np.float64]]) -> None:
             )
         if np.ptp(values) == 0.0:
             raise TraceError(
-                f"{name} is constant ({values[0]:g} at every delay): no signal was recorded, or it is another column"
+                f"{name} is constant ({values[0]:g} at every delay): no signal was recorded, or it is "
+                "another column"
             )

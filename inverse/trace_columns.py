@@ -15,11 +15,12 @@ ColumnChoice = str | int | Sequence[str | int]
 _SIGNS = str.maketrans(
     {"Δ": "d", "δ": "d", "∆": "d", "φ": "phi", "ϕ": "phi", "Φ": "phi", "τ": "tau", "μ": "u", "µ": "u"}
 )
+_CHANGE = r"(d|delta|change(of|in)?)?"
 _WORDS = {
     "delay": r"((pump)?probe|time|optical|stage)*(delay|position|time|tau|t|stage)(stage|time|position)?",
-    "reflectance_change": r"d(elta)?r((over|by|div)?r)?|(d|delta|change(of|in)?)?reflect(ance|ivity)(change)?",
+    "reflectance_change": r"d(elta)?r((over|by|div)?r)?|" + _CHANGE + r"reflect(ance|ivity)(change)?",
     "optical_phase": r"d(elta)?ph(i|ase)|optical(d|delta)?phase(change)?|phase(change|shift)|phi",
-    "transmission_change": r"d(elta)?t(over|by|div)?t|(d|delta|change(of|in)?)?transmi(ssion|ttance)(change)?",
+    "transmission_change": r"d(elta)?t(over|by|div)?t|" + _CHANGE + r"transmi(ssion|ttance)(change)?",
     "x": r"(lockin)?x|inphase|vin",
     "y": r"(lockin)?y|outofphase|quadrature|vout",
     "scan": r"scan(number|no|index)?|run|sweep|repeat",
@@ -80,7 +81,8 @@ def find_columns(
     table : TextTable
         The table.
     columns : mapping or None
-        The user's map, from role to header, number (from 0) or several of them; None reads the header's words.
+        The user's map, from role to header, number (from 0) or several of them; None reads the header's
+        words.
     name : str
         File name for messages.
 
@@ -147,14 +149,15 @@ def _one_chosen(table: TextTable, role: str, item: str | int, name: str) -> Colu
     if len(hits) != 1:
         problem = "no column" if not hits else "several columns called"
         raise TraceError(
-            f"{name} has {problem} {item!r} for {role}; its columns are {describe_columns(table)} (numbers from 0)"
+            f"{name} has {problem} {item!r} for {role}; its columns are {describe_columns(table)} (numbers "
+            "from 0)"
         )
     label = table.names[hits[0]] if table.names else str(hits[0])
     return _with_unit(role, Column(hits[0], label))
 
 
 def _with_unit(role: str, column: Column) -> Column:
-    """The column with the unit its header ends in, if any."""
+    """Read the unit that the header of a mapped column ends in, if any."""
     tokens = re.findall(r"[a-z]+", column.label.translate(_SIGNS).lower().replace("%", " percent "))
     if tokens[-2:] == ["per", "fluence"]:
         return Column(column.index, column.label, "per unit fluence")
@@ -183,7 +186,8 @@ def _from_header(table: TextTable, name: str) -> dict[str, tuple[Column, ...]]:
             labels = ", ".join(repr(column.label) for column in several)
             raise TraceError(
                 f"{name} has several columns that could be {role}: {labels}; "
-                f"say which with columns={{'{role}': ...}}, or number repeated scans in the header (dR_1, dR_2)"
+                f"say which with columns={{'{role}': ...}}, or number repeated scans in the header (dR_1, "
+                "dR_2)"
             )
     return {role: tuple(several) for role, several in found.items()}
 

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from .lockin import USUAL_UNITS, to_channels
 from .text_tables import TextTable, read_table
 from .trace_checks import CHANNELS, TraceError, channels_of, check_trace, refuse_disorder, refuse_non_finite
 from .trace_columns import Column, ColumnChoice, find_columns
@@ -29,7 +30,6 @@ _LONG_NAMES = {
     "optical_phase": "change of the phase of the reflected light",
     "transmission_change": "transmission change dT/T",
 }
-_USUAL_UNITS = {"reflectance_change": "1", "optical_phase": "rad", "transmission_change": "1"}
 _TO_PICOSECONDS = {"fs": 1e-3, "ps": 1.0, "ns": 1e3, "us": 1e6, "s": 1e12}
 _TO_MILLIMETRES = {"mm": 1.0, "um": 1e-3}
 _Floats = NDArray[np.float64]
@@ -111,23 +111,29 @@ def read_trace(
 ) -> xr.Dataset:
     """Read a pump-probe trace from a text file.
 
-    Columns are recognised from the words of the header (``delay_ps,dR_over_R``) or named in `columns`. One column per
-    scan (``dR_1,dR_2``, or several in `columns`), or a scan number beside each row, gives the mean, its standard error
-    ``<channel>_scatter`` and the count ``<channel>_scans``. Per cent, ppm, mrad, urad and degrees become 1 and rad.
+    Columns are recognised from the words of the header (``delay_ps,dR_over_R``) or named in `columns`.
+    One column per
+    scan (``dR_1,dR_2``, or several in `columns`), or a scan number beside each row, gives the mean, its
+    standard error
+    ``<channel>_scatter`` and the count ``<channel>_scans``. Per cent, ppm, mrad, urad and degrees become
+    1 and rad.
 
     Parameters
     ----------
     path : str or Path
         Text file. Lines that start with ``#`` are kept in ``attrs["comment"]``.
     columns : mapping, optional
-        From ``delay``, ``reflectance_change``, ``optical_phase``, ``transmission_change``, ``x``, ``y`` (lock-in
-        channels) and ``scan`` to the column's header, or its number counted from 0, or several of these, one per scan.
+        From ``delay``, ``reflectance_change``, ``optical_phase``, ``transmission_change``, ``x``, ``y``
+        (lock-in
+        channels) and ``scan`` to the column's header, or its number counted from 0, or several of these,
+        one per scan.
         Where it is given, no other column is read.
     delay_unit : {"fs", "ps", "ns", "us", "s", "mm", "um"}, optional
         Unit of the delay column; by default the header's, or else ps.
         With ``mm`` or ``um`` it is a stage position: delay = passes (position - stage_zero) / c.
     passes : int
-        How often the light runs along the stage's travel, 2 for one retroreflector; negative if a larger position
+        How often the light runs along the stage's travel, 2 for one retroreflector; negative if a larger
+        position
         means a shorter delay.
     stage_zero : float
         Stage position at zero delay, in `delay_unit`.
@@ -140,15 +146,16 @@ def read_trace(
     repair : sequence of {"drop_nan", "sort", "average_repeats"}
         What may be mended. Each repair is counted in attrs; without it the fault is an error.
     lockin_phase : float, optional
-        Degrees by which the lock-in's X and Y are turned: X' = X cos + Y sin, Y' = Y cos - X sin. X' becomes the
-        reflectance change. ``0`` takes X as it stands.
+        Degrees by which the lock-in's X and Y are turned: X' = X cos + Y sin, Y' = Y cos - X sin. X' becomes
+        the reflectance change. ``0`` takes X as it stands.
     ratio : bool
         Take X' / Y' (in phase over out of phase), free of the laser's slow drift, as the reflectance change.
 
     Returns
     -------
     xarray.Dataset
-        See `make_trace`. attrs: ``source`` (file name), ``columns``, ``columns_not_read``, ``assumptions``, ``comment``,
+        See `make_trace`. attrs: ``source`` (file name), ``columns``, ``columns_not_read``,
+        ``assumptions``, ``comment``,
         ``rows_dropped_nan``, ``rows_sorted``, ``repeats_averaged``.
 
     Raises
@@ -166,7 +173,7 @@ def read_trace(
     attrs = _file_attrs(name, table, chosen)
     rows = _read_rows(table, chosen).without_nan(allowed, attrs, name)
     delay = _to_picoseconds(rows.delay, unit, passes, stage_zero)
-    signals, units = _to_channels(rows.signals, chosen, lockin_phase, ratio, assumptions)
+    signals, units = to_channels(rows.signals, chosen, lockin_phase, ratio, assumptions)
     delay, signals = _collect_scans(delay, signals, rows.scan, allowed, attrs)
     attrs["assumptions"] = "; ".join(assumptions)
     return check_trace(_averaged(delay, signals, units, attrs))
@@ -174,7 +181,7 @@ def read_trace(
 
 @dataclass(frozen=True)
 class _Rows:
-    """The numbers of the columns in use: delay (n,), signals (n, scans) by role, scan numbers (n,) or None."""
+    """The numbers in use: delay (n,), signals (n, scans) by role, scan numbers (n,) or None."""
 
     delay: _Floats
     signals: dict[str, _Floats]
@@ -214,7 +221,7 @@ def _checked_repairs(repair: Sequence[str]) -> frozenset[str]:
 
 
 def _delay_unit(given: str | None, column: Column, table: TextTable) -> tuple[str, list[str]]:
-    """Unit of the delay column and what was assumed about the file."""
+    """Find the unit of the delay column and what was assumed about the file."""
     known = (*_TO_PICOSECONDS, *_TO_MILLIMETRES)
     if given is not None and given not in known:
         raise TraceError(f"delay_unit is {given!r}; expected one of {', '.join(known)}")
@@ -262,87 +269,6 @@ def _to_picoseconds(delay: _Floats, unit: str, passes: int, stage_zero: float) -
     return delay * _TO_PICOSECONDS[unit]
 
 
-def _to_channels(
-    signals: dict[str, _Floats],
-    chosen: Mapping[str, tuple[Column, ...]],
-    phase: float | None,
-    ratio: bool,
-    assumptions: list[str],
-) -> tuple[dict[str, _Floats], dict[str, str]]:
-    """Channels and their units, with the lock-in's X and Y made one reflectance channel."""
-    lockin = {role: signals[role] for role in ("x", "y") if role in signals}
-    channels = {name: signals[name] for name in CHANNELS if name in signals}
-    units = {name: _common_unit(chosen[name]) or _USUAL_UNITS[name] for name in channels}
-    if not lockin:
-        if phase is not None or ratio:
-            raise TraceError(
-                "lockin_phase and ratio need the lock-in's two channels; map columns={'x': ..., 'y': ...}"
-            )
-        return channels, units
-    if "reflectance_change" in channels:
-        raise TraceError(
-            "the file has a reflectance change and lock-in channels; say with columns= which of them is the signal"
-        )
-    both = {*lockin} == {"x", "y"} and lockin["x"].shape == lockin["y"].shape
-    channels["reflectance_change"] = _in_phase(lockin, both, phase, ratio, assumptions)
-    units["reflectance_change"] = "1" if ratio else _common_unit(chosen["x"]) or "1"
-    return channels, units
-
-
-def _in_phase(
-    lockin: dict[str, _Floats], both: bool, phase: float | None, ratio: bool, assumptions: list[str]
-) -> _Floats:
-    if not both:
-        if phase is not None or ratio or "x" not in lockin:
-            raise TraceError(
-                f"lockin_phase and ratio need as many X as Y columns of the lock-in, found {', '.join(lockin)}; "
-                "map columns={'x': ..., 'y': ...}"
-            )
-        assumptions.append("the in-phase column is the reflectance change as it stands")
-        return lockin["x"]
-    if phase is None and not ratio:
-        raise TraceError(
-            "the file has the lock-in's X and Y; pass lockin_phase= (degrees, 0 takes X as it stands) or ratio=True, "
-            "or map the one column to use with columns="
-        )
-    turned, across = rotate(lockin["x"], lockin["y"], phase or 0.0)
-    if not ratio:
-        return turned
-    if (np.sign(across) != np.sign(across.flat[0])).any():
-        raise TraceError(
-            "ratio: the out-of-phase channel passes through zero, so in phase over out of phase means nothing; "
-            "set lockin_phase, or take the in-phase channel alone"
-        )
-    return turned / across
-
-
-def rotate(x: _Floats, y: _Floats, degrees: float) -> tuple[_Floats, _Floats]:
-    """Turn lock-in channels: X' = X cos + Y sin, Y' = Y cos - X sin.
-
-    Parameters
-    ----------
-    x, y : ndarray
-        In-phase and quadrature outputs, any unit.
-    degrees : float
-        Angle.
-
-    Returns
-    -------
-    tuple of ndarray
-        The turned channels.
-    """
-    cosine, sine = np.cos(np.deg2rad(degrees)), np.sin(np.deg2rad(degrees))
-    return x * cosine + y * sine, y * cosine - x * sine
-
-
-def _common_unit(columns: Sequence[Column]) -> str:
-    found = {column.unit for column in columns}
-    if len(found) > 1:
-        labels = ", ".join(column.label for column in columns)
-        raise TraceError(f"scans in different units: {labels}; bring them to one unit first")
-    return found.pop()
-
-
 def _collect_scans(
     delay: _Floats,
     signals: dict[str, _Floats],
@@ -362,7 +288,8 @@ def _collect_scans(
     for number, (times, _) in enumerate(blocks[1:], 2):
         if times.shape != first.shape or not np.allclose(times, first, rtol=0.0, atol=1e-6):
             raise TraceError(
-                f"scan {number} was not taken at the delays of scan 1 ({times.size} and {first.size} points); "
+                f"scan {number} was not taken at the delays of scan 1 ({times.size} and {first.size} "
+                "points); "
                 "bring the scans to common delays first, or read them as separate traces"
             )
     return first, {name: np.hstack([block[name] for _, block in blocks]) for name in signals}
@@ -389,7 +316,7 @@ def _mend_order(
 def _averaged(
     delay: _Floats, scans: Mapping[str, _Floats], units: Mapping[str, str], attrs: Mapping[str, Any]
 ) -> xr.Dataset:
-    """The Dataset of scan means, with the standard error of the mean where there are several."""
+    """Build the Dataset of scan means, with the standard error of the mean where there are several."""
     trace = _dataset(delay, {name: values.mean(axis=1) for name, values in scans.items()}, units, attrs)
     for name, values in scans.items():
         count = values.shape[1]
@@ -418,7 +345,7 @@ def _dataset(
         name: (
             "delay",
             values,
-            {"units": units.get(name, _USUAL_UNITS[name]), "long_name": _LONG_NAMES[name]},
+            {"units": units.get(name, USUAL_UNITS[name]), "long_name": _LONG_NAMES[name]},
         )
         for name, values in signals.items()
     }
@@ -427,7 +354,7 @@ def _dataset(
 
 
 def _as_vector(name: str, values: ArrayLike) -> _Floats:
-    """A float copy of a one-dimensional array."""
+    """Copy a one-dimensional array of floats."""
     try:
         vector = np.array(values, dtype=float)
     except (TypeError, ValueError) as error:
