@@ -46,7 +46,6 @@ class Layer:
     material: Material
     thickness: Any
     density_ratio: Any
-    given: tuple[str, ...]
 
     def __init__(
         self, material: str | Material, *, thickness: Any, orientation: str | None = None, **overrides: Any
@@ -77,7 +76,6 @@ class Substrate:
 
     material: Material
     density_ratio: Any
-    given: tuple[str, ...]
 
     def __init__(self, material: str | Material, *, orientation: str | None = None, **overrides: Any) -> None:
         if "density_ratio" in overrides:
@@ -156,14 +154,15 @@ class Stack:
         object.__setattr__(self, "ambient", _ambient(ambient))
         object.__setattr__(self, "names", tuple(_place_names(media)))
 
+    def __str__(self) -> str:
+        """Say the stack in one line, surface first."""
+        above = "air" if self.ambient is None else self.ambient.name
+        return " / ".join([above, *self.names])
+
     @property
     def interface_names(self) -> tuple[str, ...]:
         """Names of the interfaces, ``Al|Si``, top to bottom."""
         return tuple(f"{a}|{b}" for a, b in zip(self.names, self.names[1:], strict=False))
-
-    def layer_thicknesses(self) -> Iterator[Any]:
-        """Yield the thickness of each layer (number, distribution or unknown), substrate left out."""
-        return (part.thickness for part in self.media if isinstance(part, Layer))
 
 
 def _name_of(given: str | Material) -> str:
@@ -200,7 +199,6 @@ def _fill_medium(
         _check_value("density_ratio", ratio, base.name)
     object.__setattr__(part, "material", _override(base, overrides))
     object.__setattr__(part, "density_ratio", ratio)
-    object.__setattr__(part, "given", (*overrides, *(("density_ratio",) if ratio is not None else ())))
 
 
 def _override(base: Material, overrides: dict[str, Any]) -> Material:

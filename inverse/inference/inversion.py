@@ -77,6 +77,7 @@ class Inversion:
         self._assemble([member], priors, fields)
         self.shared = shared
         self.stack, self.setup, self.trace = stack, setup, trace
+        self.arguments = {"time_zero": time_zero, "mask": mask, "noise": noise}
         self.parts: tuple[Inversion, ...] = (self,)
 
     @classmethod
@@ -201,6 +202,12 @@ class Inversion:
 
         return least_squares(self, starts=starts, seed=seed)
 
+    def sample_posterior(self, *, seed: int, **options: Any) -> xr.DataTree:
+        """Sample the posterior; see `inverse.inference.sampling.sample_posterior` for the options."""
+        from inverse.inference.sampling import sample_posterior
+
+        return sample_posterior(self, seed=seed, **options)
+
     def _checked(self, values: Any) -> Array:
         array = np.atleast_2d(np.asarray(values, dtype=float))
         if array.ndim != 2 or array.shape[1] != len(self.names):
@@ -214,7 +221,7 @@ def _member(
     stack: Stack, setup: PumpProbe, trace: xr.Dataset, time_zero: Any, mask: Any, noise: Any
 ) -> tuple[Member, dict[str, Any], dict[str, str], frozenset[str]]:
     """Build one trace's model; return it with the priors, quantity names and shared names of its unknowns."""
-    from inverse.first_look import first_look
+    from inverse.look import first_look
     from inverse.trace_checks import check_trace
 
     check_trace(trace)
@@ -254,7 +261,7 @@ def _time_zero(given: Any, trace: xr.Dataset) -> tuple[str, Any, dict[str, float
     if given is None:
         from scipy import stats
 
-        from inverse.first_look import edge_prior
+        from inverse.rising_edge import edge_prior
 
         centre, sd = edge_prior(trace)
         return "time_zero", stats.norm(centre, sd), {}

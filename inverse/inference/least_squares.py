@@ -220,7 +220,7 @@ def _add_distinct(points: list[Array], z: Array, distance: float = 0.05) -> None
 
 def _move_to_echo(inversion: Inversion, z: Array) -> None:
     """Move the top layer's thickness to the round-trip time that the echoes show (in place)."""
-    from inverse.first_look import first_look
+    from inverse.look import first_look
 
     for member, part in zip(inversion.posterior.members, inversion.parts, strict=True):
         slots = member.model.bound.media[0]
@@ -233,7 +233,7 @@ def _move_to_echo(inversion: Inversion, z: Array) -> None:
         named = member.local(inversion.posterior.parameters.named(values))
         column = inversion.names.index(member.names[slots["thickness"].name])
         velocity = named.get(slots["velocity"].name, slots["velocity"].value)
-        values[:, column] = np.asarray(velocity) * time / 2
+        values[:, column] = np.asarray(velocity) * time.value / 2
         moved = np.clip(inversion.posterior.parameters.to_z(values)[:, column], -3, 3)
         z[:, column] = np.where(np.isfinite(moved), moved, z[:, column])
 

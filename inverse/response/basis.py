@@ -15,7 +15,7 @@ from inverse.response.light import LightField, absorption, light_field
 from inverse.response.media import Sample
 from inverse.response.sound import SoundField, sound_field
 
-__all__ = ["CHANNELS", "Columns", "basis", "columns", "fields", "take"]
+__all__ = ["CHANNELS", "Columns", "basis", "columns", "displaced", "fields", "take"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]

@@ -1,0 +1,69 @@
+"""Quantities that follow from the unknowns of a stack, computed for every draw."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.places import BoundStack, Slots
+
+__all__ = ["derived"]
+
+Array = NDArray[np.float64]
+
+FREQUENCY = 0.05
+"""Frequency in THz at which reflection coefficients are reported."""
+
+
+def derived(
+    bound: BoundStack, values: Mapping[str, Array], *, interlayer: tuple[str, float] | None = None, frequency: float = FREQUENCY
+) -> dict[str, Array]:
+    """Compute the derived quantities of a stack.
+
+    Parameters
+    ----------
+    bound : BoundStack
+    values : mapping
+        Unknown name -> array of any one shape.
+    interlayer : (str, float), optional
+        Name and c33 (GPa) of the interlayer whose equivalent thickness is reported.
+    frequency : float
+        THz, of the reported reflection coefficient.
+
+    Returns
+    -------
+    dict
+        Per layer ``c33 = rho v^2`` (GPa), ``round_trip = 2 d / v`` (ps) and ``impedance_ratio = Z / Z_below``;
+        per interface ``stiffness`` (GPa/nm; inf for a perfect bond), ``equivalent_thickness = c33 / K`` (nm) and
+        the magnitude of the displacement's reflection, ``(Z1 - Z2 + s Z1 Z2 / K) / (Z1 + Z2 + s Z1 Z2 / K)``
+        (Schoenberg 1980; Tas et al. 1998). Only what depends on an unknown is returned.
+    """
+    media = [_acoustic(bound, slots, values) for slots in bound.media]
+    out: dict[str, Array] = {}
+    for name, slots, (density, velocity), (lower_density, lower_velocity) in zip(
+        bound.names, bound.media, media, media[1:], strict=False
+    ):
+        thickness = bound.fill(slots, values)["thickness"]
+        out[f"{name}.c33"] = np.asarray(density * velocity**2)
+        out[f"{name}.round_trip"] = np.asarray(2 * thickness / velocity)
+        out[f"{name}.impedance_ratio"] = np.asarray(density * velocity / (lower_density * lower_velocity))
+    for j, slots in enumerate(bound.interfaces):
+        place = f"{bound.names[j]}|{bound.names[j + 1]}"
+        compliance = np.asarray(bound.fill(slots, values)["compliance"])
+        z1, z2 = (density * velocity for density, velocity in media[j : j + 2])
+        spring = 2j * np.pi * frequency * z1 * z2 * compliance
+        with np.errstate(divide="ignore"):
+            out[f"{place}.stiffness"] = np.asarray(1 / compliance)
+        if interlayer is not None:
+            out[f"{place}.equivalent_thickness"] = np.asarray(interlayer[1] * compliance)
+        out[f"{place}.reflection"] = np.abs((z1 - z2 + spring) / (z1 + z2 + spring))
+    return {name: value for name, value in out.items() if value.ndim}
+
+
+def _acoustic(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> tuple[Array, Array]:
+    filled = bound.fill(slots, values)
+    if "density_ratio" in filled:
+        filled["density"] = np.asarray(filled["density_ratio"]) * filled["substrate_density"]
+    return np.asarray(filled["density"]), np.asarray(filled["velocity"])

@@ -1,0 +1,281 @@
+"""The result of sampling: a DataTree in ArviZ's schema, saved as one NetCDF file that rebuilds the problem."""
+
+from __future__ import annotations
+
+import json
+import os
+from importlib.metadata import PackageNotFoundError, version
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.inference.derived import derived
+from inverse.inference.ensembles import EnsembleRun
+from inverse.quantities import quantity
+from inverse.records import decode, encode
+from inverse.unknowns import describe_prior
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+    from inverse.inference.inversion import Inversion
+
+__all__ = ["load", "problem_record", "rebuild", "result_tree", "save"]
+
+Array = NDArray[np.float64]
+
+_PREDICTIVE = 50
+"""Posterior predictive draws per ensemble."""
+
+_PRIOR = 2000
+
+
+def result_tree(inversion: Inversion, run: EnsembleRun, seed: int, notes: dict[str, Any]) -> xr.DataTree:
+    """Put a finished run into a DataTree.
+
+    Parameters
+    ----------
+    inversion : Inversion
+    run : EnsembleRun
+        Of the standard normal variables of the priors.
+    seed : int
+    notes : dict
+        More entries for the JSON attribute ``inverse``.
+    """
+    import xarray as xr
+
+    draws = run.walker_major()
+    z = np.stack([draws.values[name] for name in inversion.names], axis=-1)
+    chains, count, size = z.shape
+    values = inversion.posterior.parameters.to_values(z.reshape(-1, size)).reshape(z.shape)
+    coords = {"walker": ("draw", draws.walker), "step": ("draw", draws.step)}
+    rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(1)[0])
+    pick = rng.choice(count, min(_PREDICTIVE, count), replace=False)
+    prior = inversion.posterior.parameters.to_values(rng.standard_normal((_PRIOR, size)))[None]
+    posterior = _variables(inversion, values, ("chain", "draw"))
+    groups = {
+        "posterior": xr.Dataset(posterior, coords={"chain": np.arange(chains), "draw": np.arange(count), **coords}),
+        "sample_stats": xr.Dataset({"lp": (("chain", "draw"), draws.log_prob, {"long_name": "log posterior in the "
+                                    "standard normal variables of the priors"})}),
+        "prior": xr.Dataset(_variables(inversion, prior, ("chain", "draw"))),
+        **_data_groups(inversion),
+    }  # fmt: skip
+    if len(inversion.parts) == 1:
+        predicted, coefficients = _predictive(inversion, values[:, pick], seed)
+        groups["posterior_predictive"], groups["coefficients"] = predicted, coefficients
+    tree = xr.DataTree.from_dict(groups)
+    tree.attrs["inverse"] = json.dumps({**_information(inversion, run, seed), **notes})
+    return tree
+
+
+def save(result: xr.DataTree, path: str | os.PathLike[str]) -> Path:
+    """Write a result to one NetCDF file; the file appears whole or not at all.
+
+    Parameters
+    ----------
+    result : xarray.DataTree
+    path : path
+        Ends in ``.nc``.
+
+    Raises
+    ------
+    ValueError
+        If the path does not end in .nc, its folder does not exist, or `result` is not a sampling result.
+    """
+    target = Path(path)
+    if not hasattr(result, "to_netcdf") or "inverse" not in getattr(result, "attrs", {}):
+        raise ValueError(f"save takes the result of sample_posterior, not {type(result).__name__}.")
+    if target.suffix != ".nc":
+        raise ValueError(f"'{target.name}' does not end in .nc; results are NetCDF files.")
+    if not target.parent.is_dir():
+        raise ValueError(f"The folder '{target.parent}' does not exist; create it first.")
+    part = target.with_name(f".{target.name}.{os.getpid()}.part")
+    try:
+        result.to_netcdf(part, engine="h5netcdf")
+        part.replace(target)
+    finally:
+        part.unlink(missing_ok=True)
+    return target
+
+
+def load(path: str | os.PathLike[str]) -> xr.DataTree:
+    """Read a result that `save` wrote.
+
+    Raises
+    ------
+    ValueError
+        If the file does not exist or holds no result of this library.
+    """
+    import xarray as xr
+
+    source = Path(path)
+    if not source.is_file():
+        raise ValueError(f"There is no file '{source}'.")
+    try:
+        with xr.open_datatree(source, engine="h5netcdf") as tree:
+            loaded = tree.load()
+    except (OSError, ValueError) as error:
+        raise ValueError(f"'{source}' is not a NetCDF file this library can read: {error}") from None
+    if "inverse" not in loaded.attrs:
+        raise ValueError(f"'{source}' holds no result of sample_posterior.")
+    return loaded
+
+
+def rebuild(result: xr.DataTree) -> Inversion:
+    """Rebuild the problem from its result, data included.
+
+    Parameters
+    ----------
+    result : xarray.DataTree
+        From `sample_posterior` or `load`.
+    """
+    from inverse.inference.inversion import Inversion
+
+    record = json.loads(result.attrs["inverse"])["record"]
+    shared: dict[str, Any] = {}
+    parts = []
+    for entry in record["parts"]:
+        arguments = {key: decode(value, shared) for key, value in entry["arguments"].items()}
+        if entry["arguments"]["mask"] is not None and isinstance(arguments["mask"], tuple):
+            arguments["mask"] = np.array(arguments["mask"])
+        stack, setup = decode(entry["stack"], shared), decode(entry["setup"], shared)
+        parts.append(Inversion(stack, setup, _trace(result, entry["label"]), **arguments))
+    return parts[0] if len(parts) == 1 else Inversion.joint(parts, [e["label"] for e in record["parts"]])
+
+
+def problem_record(inversion: Inversion) -> dict[str, Any]:
+    """Describe a problem, data apart, as plain JSON data."""
+    return {
+        "parts": [
+            {
+                "label": member.label,
+                "stack": encode(part.stack),
+                "setup": encode(part.setup),
+                "arguments": {key: encode(value) for key, value in part.arguments.items()},
+            }
+            for part, member in zip(inversion.parts, inversion.posterior.members, strict=True)
+        ]
+    }
+
+
+def _variables(inversion: Inversion, values: Array, dims: tuple[str, ...]) -> dict[str, Any]:
+    """Name the unknowns and what follows from them; the last axis of `values` is the unknowns."""
+    named = {name: values[..., i] for i, name in enumerate(inversion.names)}
+    out = {
+        name: (dims, array, _attrs(name, inversion.fields[name], inversion.units[name], inversion.priors[name]))
+        for name, array in named.items()
+    }
+    for member in inversion.posterior.members:
+        local = {inner: named[outer] for inner, outer in member.names.items()}
+        prefix = f"{member.label}:" if member.label else ""
+        for name, array in derived(member.model.bound, local).items():
+            q = quantity(name)
+            out[prefix + name] = (dims, array, _attrs(prefix + name, q.name, q.unit, None))
+    return out
+
+
+def _attrs(name: str, field: str, unit: str, prior: Any) -> dict[str, Any]:
+    q = quantity(field)
+    return {
+        "units": unit,
+        "long_name": q.meaning,
+        "symbol": q.symbol,
+        "role": "derived" if prior is None else "noise" if field.startswith("noise.") else "unknown",
+        "prior": "" if prior is None else json.dumps(describe_prior(prior)),
+        "low": q.low,
+        "high": q.high,
+    }
+
+
+def _data_groups(inversion: Inversion) -> dict[str, Any]:
+    import xarray as xr
+
+    groups = {}
+    for part, member in zip(inversion.parts, inversion.posterior.members, strict=True):
+        suffix = f"_{member.label}" if member.label else ""
+        groups[f"observed_data{suffix}"] = part.trace
+        groups[f"constant_data{suffix}"] = xr.Dataset(
+            {"used": ("delay", member.model.used.astype("i1"), {"long_name": "1 where the delay was fitted"})},
+            coords={"delay": part.trace["delay"]},
+        )
+    return groups
+
+
+def _trace(result: xr.DataTree, label: str) -> xr.Dataset:
+    return result[f"observed_data{'_' + label if label else ''}"].to_dataset()
+
+
+def _predictive(inversion: Inversion, values: Array, seed: int) -> tuple[xr.Dataset, xr.Dataset]:
+    """Draw traces (without white noise) and the linear coefficients."""
+    import xarray as xr
+
+    (member,) = inversion.posterior.members
+    model = member.model
+    chains, count, size = values.shape
+    named = member.local(inversion.posterior.parameters.named(values.reshape(-1, size)))
+    weights = model.eliminated(named).draw(np.random.default_rng(seed))
+    traces = model.predict(named, weights, model.delay)
+    shape = ("chain", "draw", "delay")
+    predicted = xr.Dataset(
+        {
+            c.name: (shape, traces[c.name].reshape(chains, count, -1), {"units": c.unit})
+            for c in model.channels
+        },
+        coords={"delay": ("delay", model.delay, {"units": "ps"})},
+    )
+    scaled = (weights * model.coefficient_widths).reshape(chains, count, -1)
+    coefficients = xr.Dataset(
+        {
+            name.replace("/", " per "): (("chain", "draw"), scaled[..., i], {"long_name": "fluence x coefficient"})
+            for i, name in enumerate(_coefficient_names(model))
+        }
+    )
+    return predicted, coefficients
+
+
+def _coefficient_names(model: Any) -> tuple[str, ...]:
+    return tuple(model.coefficient_names)
+
+
+def _information(inversion: Inversion, run: EnsembleRun, seed: int) -> dict[str, Any]:
+    models = [m.model for m in inversion.posterior.members]
+    constants = {f"{c['place']}.{c['field']}": c for m in models for c in m.bound.constants}
+    return {
+        "stack": "; ".join(str(part.stack) for part in inversion.parts),
+        "noise": {
+            "model": models[0].channels[0].noise.model,
+            "coefficients": {
+                name: float(width)
+                for m in models
+                for name, width in zip(m.coefficient_names, m.coefficient_widths, strict=True)
+            },
+        },
+        "constants": list(constants.values()),
+        "record": problem_record(inversion),
+        "seed": seed,
+        "versions": _versions(),
+        "ensembles": int(run.chain.shape[0]),
+        "convergence": {
+            "converged": bool(run.converged),
+            "interrupted": bool(run.interrupted),
+            "message": run.message,
+            "steps": int(run.steps_total),
+            "burn_in": int(run.burn_in),
+            "thin": int(run.thin),
+            "acceptance": [round(float(a), 4) for a in run.acceptance],
+            "autocorrelation_time": dict(zip(run.names, map(float, run.autocorrelation_time), strict=True)),
+            "rejected_evaluations": int(run.rejected_evaluations),
+        },
+    }
+
+
+def _versions() -> dict[str, str]:
+    out = {}
+    for package in ("inverse-ultrasonics", "numpy", "scipy", "emcee", "xarray"):
+        try:
+            out[package] = version(package)
+        except PackageNotFoundError:
+            out[package] = "not installed"
+    return out

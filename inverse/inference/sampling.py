@@ -1,0 +1,153 @@
+"""Sample the posterior: ensembles started in every minimum that matters, run until the draws suffice."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+from collections.abc import Callable, Sequence
+from concurrent.futures import Executor
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.inference.ensembles import run_ensembles
+from inverse.inference.least_squares import Basin, Fit
+from inverse.inference.posterior import Posterior
+from inverse.inference.result import problem_record, result_tree
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+    from inverse.inference.inversion import Inversion
+
+__all__ = ["problem_hash", "sample_posterior", "starting_walkers"]
+
+Array = NDArray[np.float64]
+
+_LEAST_WEIGHT = 1e-3
+"""A minimum with less probability than this in the normal approximation gets no walkers."""
+
+
+def sample_posterior(
+    inversion: Inversion,
+    *,
+    seed: int,
+    fit: Fit | None = None,
+    ess: float = 1000,
+    rhat: float = 1.01,
+    ensembles: int = 4,
+    walkers: int | None = None,
+    max_steps: int = 20000,
+    checkpoint: str | os.PathLike[str] | None = None,
+    executor: Executor | None = None,
+    moves: Any = None,
+    progress: bool | Callable[[dict[str, Any]], object] = True,
+) -> xr.DataTree:
+    """Sample the posterior of a problem.
+
+    Parameters
+    ----------
+    inversion : Inversion
+    seed : int
+        Equal seeds give equal draws, whatever the executor.
+    fit : Fit, optional
+        Minima to start from; least squares is run first if left out.
+    ess : float
+        Effective sample size that every unknown must reach.
+    rhat : float
+        Largest split R-hat between ensembles allowed.
+    ensembles : int
+        Independent ensembles; each is a chain of the result.
+    walkers : int, optional
+        Per ensemble; by default the larger of 24 and three per unknown, made even.
+    max_steps : int
+        Most steps per ensemble; the result says if they did not suffice.
+    checkpoint : path, optional
+        File from which a killed run goes on to the same draws.
+    executor : concurrent.futures.Executor, optional
+        Runs the ensembles side by side.
+    moves : emcee moves, optional
+        Differential evolution and stretch moves by default.
+    progress : bool or callable
+        Bar, nothing, or a function that is given the state.
+
+    Returns
+    -------
+    xarray.DataTree
+        ArviZ's schema: posterior (unknowns and derived quantities, units in attrs), sample_stats, prior,
+        observed_data, constant_data, posterior_predictive.
+
+    Raises
+    ------
+    ValueError
+        For arguments that will not do or a checkpoint of another problem.
+    """
+    from inverse.inference.least_squares import least_squares
+
+    if ensembles < 2:
+        raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
+    fit = least_squares(inversion, seed=seed) if fit is None else fit
+    count = walkers or max(24, 3 * len(inversion.names) + len(inversion.names) % 2)
+    starts = starting_walkers(inversion.posterior, fit.minima, ensembles, count + count % 2, seed)
+    run = run_ensembles(
+        inversion.posterior,
+        starts,
+        seed=seed,
+        names=inversion.names,
+        ess=ess,
+        rhat=rhat,
+        max_steps=max_steps,
+        moves=moves,
+        checkpoint=checkpoint,
+        problem_hash=problem_hash(inversion),
+        progress=progress,
+        executor=executor,
+    )
+    return result_tree(inversion, run, seed, {"minima": _minima(fit)})
+
+
+def starting_walkers(posterior: Posterior, minima: Sequence[Basin], ensembles: int, walkers: int, seed: int) -> Array:
+    """Draw starting points of shape (ensembles, walkers, unknowns) around the minima that matter.
+
+    Each walker belongs to a minimum in proportion to the root of its weight, so that a minor one is not
+    missed; impossible points are drawn again.
+    """
+    rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(2)[1])
+    kept = [b for b in minima if b.weight >= _LEAST_WEIGHT]
+    share = np.sqrt([b.weight for b in kept])
+    share /= share.sum()
+    roots = [np.linalg.cholesky(_positive(b.covariance_z)) for b in kept]
+    out = np.empty((ensembles * walkers, kept[0].z.size))
+    missing = np.ones(len(out), dtype=bool)
+    for spread in (1.0, 1.0, 1.0, 0.3, 0.1, 0.03, 0.01):
+        which = rng.choice(len(kept), missing.sum(), p=share)
+        kick = spread * rng.standard_normal((missing.sum(), out.shape[1]))
+        out[missing] = [kept[w].z + roots[w] @ k for w, k in zip(which, kick, strict=True)]
+        missing[missing] = ~np.isfinite(posterior(out[missing]))
+        if not missing.any():
+            break
+    return out.reshape(ensembles, walkers, -1)
+
+
+def problem_hash(inversion: Inversion) -> str:
+    """Return a hash of data, model and priors, for checkpoints."""
+    digest = hashlib.sha256(json.dumps(problem_record(inversion), sort_keys=True).encode())
+    for member in inversion.posterior.members:
+        for array in (member.model.delay, *(c.data for c in member.model.channels)):
+            digest.update(np.ascontiguousarray(array).tobytes())
+    return digest.hexdigest()
+
+
+def _positive(covariance: Array) -> Array:
+    size, vectors = np.linalg.eigh(covariance)
+    return np.asarray((vectors * np.clip(size, 1e-12, 1.0)) @ vectors.T)
+
+
+def _minima(fit: Fit) -> list[dict[str, Any]]:
+    return [
+        {"values": dict(zip(fit.names, map(float, b.values), strict=True)), "weight": b.weight,
+         "log_posterior": b.log_posterior}
+        for b in fit.minima
+    ]  # fmt: skip

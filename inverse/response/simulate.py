@@ -1,0 +1,137 @@
+"""A trace from a stack whose every value is known, with the share of each layer and mechanism."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.places import BoundStack, bind
+from inverse.pumpprobe import PumpProbe
+from inverse.response.basis import CHANNELS, displaced, fields
+from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
+from inverse.response.media import Sample, sample
+from inverse.stack import Stack
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+__all__ = ["DEFAULT_HEAT", "DEFAULT_STRAIN", "simulate"]
+
+Array = NDArray[np.float64]
+
+DEFAULT_STRAIN = 1.0 + 1.0j
+"""dn/d(strain) where the material gives none: the order of magnitude, nothing more."""
+
+DEFAULT_HEAT = 1e-4 + 1e-4j
+"""dn/dT in 1/K where the material gives none: the order of magnitude, nothing more."""
+
+
+def simulate(
+    stack: Stack,
+    setup: PumpProbe,
+    delay: Any,
+    *,
+    values: Mapping[str, float] | None = None,
+    time_zero: float = 0.0,
+    shares: bool = False,
+) -> xr.Dataset:
+    """Compute the noise-free trace of a stack.
+
+    Parameters
+    ----------
+    stack : Stack
+        Distributions stand for their median unless `values` says otherwise.
+    setup : PumpProbe
+        ``fluence`` scales the trace.
+    delay : array
+        ps, strictly increasing.
+    values : mapping, optional
+        Unknown name -> value.
+    time_zero : float
+        ps.
+    shares : bool
+        Add ``<channel>_share`` on (part, delay): strain and heat of every medium, displacement of every boundary.
+        They add up to the channel.
+
+    Returns
+    -------
+    xarray.Dataset
+        ``reflectance_change`` and ``optical_phase`` (rad) on ``delay``; attrs tell every coefficient used and
+        where it comes from.
+
+    Raises
+    ------
+    ValueError
+        If a constant is missing, a delay is not finite or not increasing, or `values` names no unknown.
+    """
+    from inverse.traces import make_trace
+
+    delay = np.atleast_1d(np.asarray(delay, dtype=float))
+    bound = bind(stack, setup)
+    known = _known(bound, values or {})
+    grid = time_grid(delay, setup.pulse_rms, earliest=time_zero)
+    batch = sample(bound, known)
+    parts, names = _parts(bound, stack, batch, setup, grid, time_zero)
+    signals = {channel: setup.fluence * parts[channel] for channel in CHANNELS}
+    trace = make_trace(delay, **{channel: rows.sum(axis=0) for channel, rows in signals.items()})
+    if shares:
+        trace = trace.assign_coords(part=("part", names))
+        for channel, rows in signals.items():
+            trace[f"{channel}_share"] = (("part", "delay"), rows, dict(trace[channel].attrs))
+    trace.attrs["coefficients"] = _said(stack)
+    return trace
+
+
+def _known(bound: BoundStack, values: Mapping[str, float]) -> dict[str, Array]:
+    strange = sorted(set(values) - set(bound.priors))
+    if strange:
+        raise ValueError(
+            f"values names {', '.join(strange)}; the stack's unknowns are {', '.join(bound.priors) or 'none'}."
+        )
+    return {
+        name: np.array([float(values[name] if name in values else prior.median())])
+        for name, prior in bound.priors.items()
+    }
+
+
+def _parts(
+    bound: BoundStack, stack: Stack, batch: Sample, setup: PumpProbe, grid: TimeGrid, time_zero: float
+) -> tuple[dict[str, Array], list[str]]:
+    """Return per channel the contribution of each part at unit fluence, and the parts' names."""
+    found = fields(batch, (setup.pump, setup.probe), grid, np.full((1, 1), time_zero))
+    media = [*([stack.ambient] if bound.ambient else []), *(part.material for part in stack.media)]
+    owners = [*(["ambient"] if bound.ambient else []), *bound.names]
+    spectra: list[NDArray[np.complex128]] = []
+    names: list[str] = []
+    weights: list[complex] = []
+    for owner, material, part in zip(owners, media, found.detected, strict=True):
+        names += [f"{owner} strain", f"{owner} heat"]
+        weights += [_coefficient(material.dn_dstrain, DEFAULT_STRAIN), _coefficient(material.dn_dT, DEFAULT_HEAT)]
+        spectra += [part.strain_real, part.strain_imag, part.heat_real, part.heat_imag]
+    for boundary, real, imag in zip(("surface", *stack.interface_names), *displaced(found), strict=True):
+        names.append(f"{boundary} displacement")
+        weights.append(1.0)
+        spectra += [real, imag]
+    size = grid.s.shape[1]
+    rows = np.stack([np.broadcast_to(spectrum, (1, size))[0] for spectrum in spectra])
+    response = to_delays(grid, rows[None])[0]
+    complex_parts = np.array(weights)[:, None] * (response[0::2] + 1j * response[1::2])
+    return {"reflectance_change": 2 * complex_parts.real, "optical_phase": complex_parts.imag}, names
+
+
+def _coefficient(given: Any, default: complex) -> complex:
+    return default if given is None else complex(given)
+
+
+def _said(stack: Stack) -> str:
+    """Say for every material which coefficients were used."""
+    lines = []
+    for material in dict.fromkeys(part.material.name for part in stack.media):
+        part = next(p.material for p in stack.media if p.material.name == material)
+        for field, default in (("dn_dstrain", DEFAULT_STRAIN), ("dn_dT", DEFAULT_HEAT)):
+            value = getattr(part, field)
+            lines.append(f"{material}.{field} = {default if value is None else value} ({'default' if value is None else 'given'})")
+    return "; ".join(lines)
