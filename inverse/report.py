@@ -112,11 +112,12 @@ def table(
 
     Notes
     -----
-    "narrowed" is the width of the prior's central interval over the posterior's. ``prior only`` marks a
-    posterior less than a tenth narrower than its prior and not moved; ``prior edge`` one that leans on a
-    bound of the prior that nature does not set; ``far from prior`` a median more than two half-widths from the
-    prior's; ``not converged`` a bulk effective sample size under 400 or a split R-hat above 1.01 (Vehtari et
-    al. 2021; the 400 from memory).
+    "narrowed" is the width of the prior's central interval over the posterior's. Flags:
+    ``prior only``, the posterior is less than a tenth narrower than its prior and has not moved;
+    ``prior edge``, it leans on a bound of the prior that nature does not set;
+    ``far from prior``, its median is more than two half-widths from the prior's;
+    ``not converged``, its bulk effective sample size is under 400 (from memory) or its split R-hat above 1.01
+    (Vehtari et al. 2021).
     """
     masses = _check_mass(mass)
     if format is not None and format not in _FORMATS:

@@ -149,9 +149,9 @@ def least_squares_rows(fit: Any, mass: Sequence[float]) -> tuple[Row, ...]:
 
     Parameters
     ----------
-    fit : object
-        ``names``, ``values``, ``sd`` and ``units`` in one order, ``flags`` a mapping name -> texts;
-        ``bounds``, a mapping name -> (low, high), and ``priors``, a mapping name -> distribution, are used where present.
+    fit : Fit
+        With ``names``, ``values``, ``sd``, ``units`` and ``flags`` in one order, a flag being texts joined by
+        ``"; "``; the priors of its ``inversion`` are used where it has one.
     mass : sequence of float
         Masses of the intervals.
 
@@ -160,16 +160,16 @@ def least_squares_rows(fit: Any, mass: Sequence[float]) -> tuple[Row, ...]:
     tuple of Row
         In the order of ``names``.
     """
-    bounds = getattr(fit, "bounds", {}) or {}
-    priors = getattr(fit, "priors", {}) or {}
-    flags = fit.flags or {}
+    priors = fit.inversion.priors if hasattr(fit, "inversion") else {}
     rows = []
-    for name, value, spread, unit in zip(fit.names, fit.values, fit.sd, fit.units, strict=True):
-        allowed = bounds.get(name, _allowed(name))
+    for name, value, spread, unit, flag in zip(
+        fit.names, fit.values, fit.sd, fit.units, fit.flags, strict=True
+    ):
+        allowed = _allowed(name)
         row = _normal_row(name, unit, float(value), float(spread), allowed, tuple(mass))
-        width = _central_width(priors[name], allowed, mass[0]) if name in priors else None
-        row = _against_prior(row, width)
-        rows.append(replace(row, flags=_merge(row.flags, flags.get(name, ()))))
+        if name in priors:
+            row = _against_prior(row, _central_width(priors[name], allowed, mass[0]))
+        rows.append(replace(row, flags=_merge(row.flags, filter(None, flag.split("; ")))))
     return tuple(rows)
 
 

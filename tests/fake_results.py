@@ -1,7 +1,7 @@
 """Results built by hand in the schema of the library, for tests of tables and figures."""
 
 import json
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 import xarray as xr
@@ -98,4 +98,4 @@ class Fit:
     values: np.ndarray
     sd: np.ndarray
     units: tuple[str, ...]
-    flags: dict[str, tuple[str, ...]] = field(default_factory=dict)
+    flags: tuple[str, ...]

@@ -244,7 +244,7 @@ def fit() -> Fit:
         values=np.array([60.03, 0.001, 6.4]),
         sd=np.array([0.12, 0.005, np.inf]),
         units=("nm", "nm/GPa", "nm/ps"),
-        flags={"Al.thickness": ("2 minima",)},
+        flags=("2 minima; prior only", "", ""),
     )
 
 
@@ -252,7 +252,7 @@ def test_least_squares_intervals_are_normal(fit):
     row = table(fit)["Al.thickness"]
     np.testing.assert_allclose(row.intervals[1], [60.03 - 1.959964 * 0.12, 60.03 + 1.959964 * 0.12])
     assert row.statement() == "60.03(12) nm"
-    assert row.flags == ("2 minima",)
+    assert row.flags == ("2 minima", "prior only")
 
 
 def test_least_squares_limit_at_a_bound(fit):
