@@ -23,7 +23,7 @@ _HOMES = {
     "Unknown": "unknowns",
     "read_trace": "traces",
     "make_trace": "traces",
-    "first_look": "first_look",
+    "first_look": "look",
     "simulate": "response.simulate",
     "Inversion": "inference.inversion",
     "save": "inference.result",

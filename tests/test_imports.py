@@ -12,7 +12,8 @@ ROOMS = ("elastic", "description", "response", "inference", "study", "report")
 DESCRIPTION = {
     *("quantities", "unknowns", "materials", "reference_tables", "reference_values"),
     *("refractive_index", "stack", "pumpprobe", "places"),
-    *("traces", "trace_checks", "arrivals", "rising_edge", "trace_columns", "text_tables"),
+    *("traces", "trace_checks", "arrivals", "rising_edge", "trace_columns", "text_tables", "lockin"),
+    *("look", "oscillation"),
 }
 REPORT = {
     *("report", "report_header", "summary", "sheet", "plot", "plot_elastic", "__main__"),
