@@ -178,6 +178,13 @@ def test_edge_prior_widens_with_the_step_and_the_noise() -> None:
     assert edge_prior(invented(noise=0.05))[1] > edge_prior(invented(noise=0.001))[1]
 
 
+def test_edge_prior_widens_with_the_rise() -> None:
+    """Documented sum, no noise: 0.1 ps, 0.12 of the 10 to 90 % rise (2.563 rms widths), 0.2 of the step."""
+    for rms in (0.3, 1.0):
+        _, sd = edge_prior(make_trace(DELAY, reflectance_change=step(DELAY, rms)))
+        assert sd == pytest.approx(np.sqrt(0.1**2 + (0.12 * 2.563 * rms) ** 2 + (0.2 * 0.2) ** 2), rel=0.02)
+
+
 def test_edge_prior_covers_the_place_of_the_samples() -> None:
     """Sampled every ps, an edge moved through the grid stays inside one standard deviation."""
     for shift in np.linspace(0.0, 1.0, 11):
