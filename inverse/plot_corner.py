@@ -9,10 +9,9 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.unknowns import rebuild_prior
 from inverse.plot_style import COLUMN, MILLIMETRE, decade, new_figure, power_label, style
-from inverse.summary import is_noise
 from inverse.unit_text import unit_text
-from inverse.unknowns import rebuild_prior
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -103,8 +102,7 @@ def _posterior(result: Any) -> Any:
 def _names(dataset: Any, names: Sequence[str] | None) -> list[str]:
     present = [str(name) for name in dataset.data_vars]
     if names is None:
-        unknown = [n for n in present if dataset[n].attrs.get("role", "unknown") == "unknown"]
-        return [n for n in unknown if not is_noise(n)] or unknown
+        return [n for n in present if dataset[n].attrs.get("role", "unknown") == "unknown"] or present
     strange = [name for name in names if name not in present]
     if strange:
         raise ValueError(f"names holds {', '.join(strange)}; the posterior has {', '.join(present)}.")

@@ -77,7 +77,7 @@ def fit(result: Any, *, axes: Sequence[Axes] | None = None) -> Figure:
     ----------
     result : xarray.DataTree or least-squares result
         A posterior with the groups ``observed_data`` and ``posterior_predictive`` (and ``constant_data`` with
-        ``mask``, True where a delay is fitted), or what `Inversion.least_squares` gave, drawn without bands.
+        ``used``, not zero where a delay is fitted), or what `Inversion.least_squares` gave, drawn without bands.
     axes : sequence of matplotlib Axes, optional
         Two per channel: signal, residuals. Without them a figure one column (85 mm) wide is made.
 
@@ -143,7 +143,7 @@ def _views_of_tree(tree: Any) -> tuple[ChannelView, ...]:
     constant = tree["constant_data"].to_dataset() if "constant_data" in tree.children else {}
     delay = np.asarray(observed["delay"], dtype=float)
     fitted = (
-        np.asarray(constant["mask"], dtype=bool) if "mask" in constant else np.ones(delay.size, dtype=bool)
+        np.asarray(constant["used"], dtype=bool) if "used" in constant else np.ones(delay.size, dtype=bool)
     )
     views = []
     names = [str(n) for n in observed.data_vars if n in predictive]
@@ -168,6 +168,8 @@ def _views_of_tree(tree: Any) -> tuple[ChannelView, ...]:
 
 def _views_of_fit(found: Any) -> tuple[ChannelView, ...]:
     """Adapt a least-squares result: its inversion holds the trace and predicts."""
+    if len(found.inversion.parts) > 1:
+        raise ValueError("plot.fit draws one trace; fit and draw each of joint.parts.")
     trace = found.inversion.trace
     predicted = found.inversion.predict(np.asarray(found.values)[None])
     values = dict(zip(found.names, found.values, strict=True))

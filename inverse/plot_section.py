@@ -11,7 +11,7 @@ import numpy as np
 from inverse.plot_style import COLUMN, MILLIMETRE, new_figure, style
 from inverse.rounding import decimal_place, format_range
 from inverse.unit_text import unit_text
-from inverse.unknowns import Unknown, is_distribution
+from inverse.description.unknowns import Unknown, is_distribution
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

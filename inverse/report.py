@@ -28,7 +28,7 @@ __all__ = [
     "table",
 ]
 
-_ROLES = ("all", "unknown", "derived")
+_ROLES = ("all", "unknown", "noise", "derived")
 _FORMATS = ("plain", "markdown", "latex", "html", "dict")
 
 
@@ -97,7 +97,7 @@ def table(
         the same masses stand in their place.
     format : {None, "plain", "markdown", "latex", "html", "dict"}
         None gives the `Table`, the others what it would write.
-    include : {"all", "unknown", "derived"} or sequence of str
+    include : {"all", "unknown", "noise", "derived"} or sequence of str
         Which quantities: a role, or names.
 
     Returns
@@ -115,9 +115,9 @@ def table(
     "narrowed" is the width of the prior's central interval over the posterior's. Flags:
     ``prior only``, the posterior is less than a tenth narrower than its prior and has not moved;
     ``prior edge``, it leans on a bound of the prior that nature does not set;
-    ``far from prior``, its median is more than two half-widths from the prior's;
-    ``not converged``, its bulk effective sample size is under 400 (from memory) or its split R-hat above 1.01
-    (Vehtari et al. 2021).
+    ``far from prior``, its median lies in the outer 5 % of the prior, where the prior's density is low;
+    ``not converged``, its split R-hat is above 1.01 (Vehtari et al. 2021);
+    ``few effective draws``, its bulk effective sample size is under 400 (the same, from memory).
     """
     masses = _check_mass(mass)
     if format is not None and format not in _FORMATS:
@@ -289,7 +289,11 @@ def _is_tree(result: Any) -> bool:
 
 
 def _fit_rows(result: Any, mass: tuple[float, ...]) -> tuple[Row, ...]:
-    missing = [field for field in ("names", "values", "sd", "units", "flags") if not hasattr(result, field)]
+    missing = [
+        field
+        for field in ("names", "values", "sd", "units", "flags", "inversion")
+        if not hasattr(result, field)
+    ]
     if missing:
         raise ValueError(
             f"table got {type(result).__name__}; expected a DataTree with a group 'posterior' "

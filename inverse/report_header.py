@@ -26,8 +26,8 @@ def header_lines(result: Any, rows: Sequence[Row]) -> tuple[str, ...]:
     Parameters
     ----------
     result : xarray.DataTree or least-squares result
-        The tree's JSON attribute ``inverse`` may hold ``stack`` (text), ``noise`` (text), ``convergence``
-        (``converged``, ``message``), ``ensembles`` and ``warnings`` (texts); the fit may have ``warnings``.
+        The tree's JSON attribute ``inverse`` may hold ``stack`` (text), ``noise`` (with ``model``),
+        ``convergence`` (``converged``, ``message``) and ``warnings`` (texts).
     rows : sequence of Row
         Every quantity of the result, also those that will not be shown.
 
@@ -37,24 +37,32 @@ def header_lines(result: Any, rows: Sequence[Row]) -> tuple[str, ...]:
         Lines without line ends.
     """
     if not hasattr(result, "children"):
-        return ("Least squares", _FIT_NOTE, *_warnings(getattr(result, "warnings", ())))
+        return (_minima_line(result), _FIT_NOTE)
     information = json.loads(result.attrs.get("inverse", "{}"))
     lines = [f"Stack: {information['stack']}"] if isinstance(information.get("stack"), str) else []
     lines += _data_lines(result)
     if "noise" in information:
-        lines.append(f"Noise model: {_text(information['noise'], 'model')}")
+        lines.append(f"Noise model: {information['noise']['model']}")
     lines.append(_sampling_line(result, information, rows))
-    return (*lines, *_warnings(information.get("warnings", ())), _POSTERIOR_NOTE)
+    return (*lines, *(f"Warning: {text}" for text in information.get("warnings", ())), _POSTERIOR_NOTE)
+
+
+def _minima_line(fit: Any) -> str:
+    if len(fit.minima) == 1:
+        return "Least squares: one minimum found."
+    shares = ", ".join(f"{100 * minimum.weight:.3g} %" for minimum in fit.minima)
+    return f"Least squares: {len(fit.minima)} minima hold {shares} of the probability; the first is shown."
 
 
 def _data_lines(tree: Any) -> list[str]:
-    if "observed_data" not in tree.children:
-        return []
-    observed = tree["observed_data"].to_dataset()
+    return [_data_line(tree[g].to_dataset()) for g in tree.children if g.startswith("observed_data")]
+
+
+def _data_line(observed: Any) -> str:
     delay = np.asarray(observed["delay"])
     unit = unit_text(observed["delay"].attrs.get("units", "ps"))
     channels = " and ".join(str(name) for name in observed.data_vars)
-    return [f"Data: {channels}, {delay.size} delays from {delay.min():.4g} to {delay.max():.4g} {unit}"]
+    return f"Data: {channels}, {delay.size} delays from {delay.min():.4g} to {delay.max():.4g} {unit}"
 
 
 def _sampling_line(tree: Any, information: Mapping[str, Any], rows: Sequence[Row]) -> str:
@@ -71,13 +79,12 @@ def _sampling_line(tree: Any, information: Mapping[str, Any], rows: Sequence[Row
 
 def _verdict(stated: Any, ess: float, rhat: float) -> str:
     """Say converged only if the run says so (or says nothing) and the draws agree."""
-    agreed = ess >= LEAST_ESS and rhat <= MOST_RHAT
-    claimed = stated.get("converged", True) if isinstance(stated, Mapping) else True
-    message = stated.get("message", "") if isinstance(stated, Mapping) else ""
-    if agreed and claimed:
-        return "converged."
-    reason = message or f"expected at least {LEAST_ESS:.0f} and at most {MOST_RHAT}; sample longer"
-    return f"NOT converged ({reason.rstrip('.')})."
+    stated = stated or {"converged": ess >= LEAST_ESS, "message": ""}
+    if not stated["converged"]:
+        return f"NOT converged. {stated['message']}".rstrip()
+    if not rhat <= MOST_RHAT:
+        return f"NOT converged: R-hat should be at most {MOST_RHAT}; sample longer."
+    return "converged." if ess >= LEAST_ESS else f"converged, but fewer than {LEAST_ESS:.0f} effective draws."
 
 
 def _worst_first(number: float) -> float:
@@ -86,11 +93,3 @@ def _worst_first(number: float) -> float:
 
 def _or_nan(number: float | None) -> float:
     return math.nan if number is None else number
-
-
-def _text(entry: Any, key: str) -> str:
-    return str(entry.get(key, entry)) if isinstance(entry, Mapping) else str(entry)
-
-
-def _warnings(texts: Sequence[str]) -> tuple[str, ...]:
-    return tuple(f"Warning: {text}" for text in texts)

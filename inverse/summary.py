@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import math
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
@@ -11,20 +10,17 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.quantities import quantity
 from inverse.inference.convergence import bulk_ess, split_rhat
-from inverse.quantities import quantity
+from inverse.prior_view import PriorView, quantiles, touches, view_of_distribution, view_of_variable
 from inverse.rounding import decimal_place, format_limit, format_value
-from inverse.unknowns import rebuild_prior
 
-__all__ = ["MOST_RHAT", "LEAST_ESS", "Limit", "Row", "is_noise", "least_squares_rows", "posterior_rows"]
+__all__ = ["MOST_RHAT", "LEAST_ESS", "Limit", "Row", "least_squares_rows", "posterior_rows"]
 
 Array = NDArray[np.float64]
 
 LEAST_ESS = 400.0
 MOST_RHAT = 1.01
-# A bound is touched where the density there, relative to its peak, is above that of a normal 1.96 deviations
-# away: then the bound belongs to the interval of highest density that holds 95 %.
-_TOUCHED = math.exp(-0.5 * 1.96**2)
 _NOT_NARROWED = 1.1
 _NOT_MOVED = 0.2
 _MONOTONE = 0.999
@@ -48,7 +44,7 @@ class Row:
     Attributes
     ----------
     name, unit, role : str
-        Name, unit and ``unknown`` or ``derived``.
+        Name, unit and ``unknown``, ``noise`` or ``derived``.
     median : float
         Posterior median, or the estimate of least squares.
     intervals : tuple of (float, float)
@@ -59,7 +55,7 @@ class Row:
         Width of the prior's central interval of the first mass, and that over the posterior's.
     flags : tuple of str
         ``upper limit``, ``lower limit``, ``prior edge``, ``prior only``, ``far from prior``,
-        ``not converged``, ...
+        ``not converged``, ``few effective draws``, ...
     ess, rhat : float or None
         Bulk effective sample size and split R-hat; None for least squares.
     """
@@ -110,11 +106,6 @@ class Row:
         return format_value(self.median, uncertainty, digits=digits, style=style, unit=self.unit)
 
 
-def is_noise(name: str) -> bool:
-    """Tell whether a quantity belongs to the noise model."""
-    return name.startswith("noise.")
-
-
 def posterior_rows(tree: Any, mass: Sequence[float]) -> tuple[Row, ...]:
     """Summarise every variable of a posterior.
 
@@ -137,9 +128,7 @@ def posterior_rows(tree: Any, mass: Sequence[float]) -> tuple[Row, ...]:
     rows = {}
     for name, values in draws.items():
         attrs = dataset[name].attrs
-        known = _prior_quantiles(
-            name, attrs.get("prior", ""), np.asarray(prior[name]) if name in prior else None
-        )
+        known = view_of_variable(attrs, np.asarray(prior[name]) if name in prior else None)
         rows[name] = _posterior_row(name, attrs, values, known, tuple(mass))
     return tuple(_inherit_limit(row, rows.values(), draws, tuple(mass)) for row in rows.values())
 
@@ -151,7 +140,7 @@ def least_squares_rows(fit: Any, mass: Sequence[float]) -> tuple[Row, ...]:
     ----------
     fit : Fit
         With ``names``, ``values``, ``sd``, ``units`` and ``flags`` in one order, a flag being texts joined by
-        ``"; "``; the priors of its ``inversion`` are used where it has one.
+        ``"; "``, and with the ``inversion``, whose ``priors`` and ``fields`` are used.
     mass : sequence of float
         Masses of the intervals.
 
@@ -160,69 +149,21 @@ def least_squares_rows(fit: Any, mass: Sequence[float]) -> tuple[Row, ...]:
     tuple of Row
         In the order of ``names``.
     """
-    priors = fit.inversion.priors if hasattr(fit, "inversion") else {}
     rows = []
     for name, value, spread, unit, flag in zip(
         fit.names, fit.values, fit.sd, fit.units, fit.flags, strict=True
     ):
-        allowed = _allowed(name)
-        row = _normal_row(name, unit, float(value), float(spread), allowed, tuple(mass))
-        if name in priors:
-            row = _against_prior(row, _central_width(priors[name], allowed, mass[0]))
-        rows.append(replace(row, flags=_merge(row.flags, filter(None, flag.split("; ")))))
+        known = quantity(fit.inversion.fields[name])
+        prior = view_of_distribution(fit.inversion.priors[name], (known.low, known.high))
+        role = "noise" if known.name.startswith("noise.") else "unknown"
+        row = _normal_row(Row(name, unit, role, float(value), ()), float(spread), prior.natural, tuple(mass))
+        said = [*filter(None, flag.split("; ")), *_against_prior(row, prior, mass[0]).flags]
+        rows.append(replace(_against_prior(row, prior, mass[0]), flags=_merge(said)))
     return tuple(rows)
 
 
-@dataclass(frozen=True)
-class _Prior:
-    """What a row needs of a prior: bounds, quantiles, and which bounds nature sets."""
-
-    low: float
-    high: float
-    natural: tuple[float, float]
-    quantiles: Any
-
-
-def _prior_quantiles(name: str, description: str, draws: Array | None) -> _Prior | None:
-    natural = _allowed(name)
-    if description:
-        prior = rebuild_prior(json.loads(description))
-        low, high = (float(x) for x in prior.support())
-        low, high = max(low, natural[0]), min(high, natural[1])
-        return _Prior(low, high, natural, _cut_quantiles(prior, (low, high)))
-    if draws is not None:
-        return _Prior(-math.inf, math.inf, natural, lambda p: quantiles(draws.ravel(), p))
-    return None
-
-
-def _cut_quantiles(prior: Any, allowed: tuple[float, float]) -> Any:
-    start, stop = prior.cdf(allowed[0]), prior.cdf(allowed[1])
-    return lambda p: prior.ppf(start + np.asarray(p) * (stop - start))
-
-
-def _central_width(prior: Any, allowed: tuple[float, float], mass: float) -> float:
-    low, high = _cut_quantiles(prior, allowed)([0.5 - mass / 2, 0.5 + mass / 2])
-    return float(high - low)
-
-
-def _allowed(name: str) -> tuple[float, float]:
-    try:
-        known = quantity(name)
-    except ValueError:  # a shared unknown goes by a name of the user's
-        return -math.inf, math.inf
-    return known.low, known.high
-
-
-def quantiles(draws: Array, probabilities: Sequence[float]) -> Array:
-    """Quantiles of draws that may hold infinities (a perfect bond has infinite stiffness)."""
-    at = np.asarray(probabilities, dtype=float)
-    if np.all(np.isfinite(draws)):
-        return np.quantile(draws, at)
-    return np.quantile(draws, at, method="nearest")
-
-
 def _posterior_row(
-    name: str, attrs: dict[str, Any], values: Array, prior: _Prior | None, mass: tuple[float, ...]
+    name: str, attrs: dict[str, Any], values: Array, prior: PriorView | None, mass: tuple[float, ...]
 ) -> Row:
     known = values[~np.isnan(values)]
     unit, role = attrs.get("units", "1"), attrs.get("role", "unknown")
@@ -233,9 +174,7 @@ def _posterior_row(
     ess, rhat = _diagnostics(values)
     row = Row(name, unit, role, median, tuple(_central(known, m) for m in mass), ess=ess, rhat=rhat)
     if prior is not None:
-        low, high = prior.quantiles([0.5 - mass[0] / 2, 0.5 + mass[0] / 2])
-        row = _against_prior(row, float(high - low), float(prior.quantiles([0.5])[0]))
-        row = _at_bounds(row, known, prior, mass)
+        row = _at_bounds(_against_prior(row, prior, mass[0]), known, prior, mass)
     lost = values.size - known.size
     return replace(
         row, flags=_merge(row.flags, _converged(row), [f"{lost} draws are not a number"] * (lost > 0))
@@ -251,21 +190,18 @@ def _central(draws: Array, mass: float) -> tuple[float, float]:
     return float(low), float(high)
 
 
-def _against_prior(row: Row, width: float | None, centre: float | None = None) -> Row:
+def _against_prior(row: Row, prior: PriorView, mass: float) -> Row:
     """Add the prior's width, the ratio, and what they say."""
-    if width is None:
-        return row
     low, high = row.intervals[0]
+    width = prior.width(mass)
     narrowed = width / (high - low) if high > low else math.nan
-    flags: tuple[str, ...] = ()
-    if centre is not None and math.isfinite(width) and width > 0:
-        moved = abs(row.median - centre) / (width / 2)
-        flags = ("prior only",) if narrowed < _NOT_NARROWED and moved < _NOT_MOVED else ()
-        flags = ("far from prior",) if moved > 2.0 and math.isfinite(moved) else flags
+    still = abs(row.median - prior.median) < _NOT_MOVED * width / 2
+    flags = ["prior only"] if narrowed < _NOT_NARROWED and still else []
+    flags += ["far from prior"] if prior.is_surprised_by(row.median) else []
     return replace(row, prior_width=width, narrowed=narrowed, flags=_merge(row.flags, flags))
 
 
-def _at_bounds(row: Row, draws: Array, prior: _Prior, mass: tuple[float, ...]) -> Row:
+def _at_bounds(row: Row, draws: Array, prior: PriorView, mass: tuple[float, ...]) -> Row:
     touched = [
         (side, bound == natural)
         for side, bound, natural in (
@@ -278,34 +214,6 @@ def _at_bounds(row: Row, draws: Array, prior: _Prior, mass: tuple[float, ...]) -
     if len(touched) != 1:
         return replace(row, flags=_merge(row.flags, edge))
     return _limited(replace(row, flags=_merge(row.flags, edge)), draws, touched[0][0], mass)
-
-
-def touches(draws: Array, bound: float, side: str) -> bool:
-    """Tell whether a sample's density at a bound is not small against its peak.
-
-    Parameters
-    ----------
-    draws : numpy.ndarray
-        Shape (n,), finite or infinite.
-    bound : float
-        An end of the allowed range; an infinite one is never touched.
-    side : {"<", ">"}
-        ``<`` where the draws lie above the bound (an upper limit results), ``>`` where they lie below.
-
-    Returns
-    -------
-    bool
-        True above exp(-1.96^2 / 2) of the peak, both counted in bins an eighth of the central 68 % wide.
-    """
-    low, high = quantiles(draws, [0.16, 0.84])
-    width = (high - low) / 8
-    if not (math.isfinite(bound) and math.isfinite(width) and width > 0):
-        return False
-    distance = draws - bound if side == "<" else bound - draws
-    counts = np.bincount((distance[distance < 64 * width] / width).astype(int).clip(0), minlength=1)
-    # The bins between the quantiles hold 0.68 / 8 of the draws each on average, also where they are far away.
-    peak = max(counts.max(), 0.68 / 8 * draws.size)
-    return bool(counts[0] > _TOUCHED * peak)
 
 
 def _limited(row: Row, draws: Array, side: str, mass: tuple[float, ...]) -> Row:
@@ -335,30 +243,24 @@ def _rank_correlation(a: Array, b: Array) -> float:
 def _converged(row: Row) -> list[str]:
     if row.ess is None or row.rhat is None:
         return []
-    unknown = math.isnan(row.ess) or math.isnan(row.rhat)
-    if unknown:
+    if math.isnan(row.ess) or math.isnan(row.rhat):
         return ["not converged"] if row.role != "derived" else []
-    return ["not converged"] if row.ess < LEAST_ESS or row.rhat > MOST_RHAT else []
+    return ["not converged"] * (row.rhat > MOST_RHAT) + ["few effective draws"] * (row.ess < LEAST_ESS)
 
 
-def _normal_row(
-    name: str, unit: str, value: float, spread: float, allowed: tuple[float, float], mass: tuple[float, ...]
-) -> Row:
+def _normal_row(row: Row, spread: float, allowed: tuple[float, float], mass: tuple[float, ...]) -> Row:
     from scipy import stats
 
     if not (math.isfinite(spread) and spread > 0):
-        return Row(
-            name, unit, "unknown", value, ((math.nan, math.nan),) * len(mass), flags=("not determined",)
-        )
-    normal = stats.norm(value, spread)
-    intervals = tuple((float(a), float(b)) for a, b in (normal.interval(m) for m in mass))
-    row = Row(name, unit, "unknown", value, intervals)
-    low, high = value - allowed[0] < 1.96 * spread, allowed[1] - value < 1.96 * spread
+        return replace(row, intervals=((math.nan, math.nan),) * len(mass), flags=("not determined",))
+    normal = stats.norm(row.median, spread)
+    row = replace(row, intervals=tuple((float(a), float(b)) for a, b in (normal.interval(m) for m in mass)))
+    low, high = (abs(row.median - bound) < 1.96 * spread for bound in allowed)
     if low == high:
         return row
     side = "<" if low else ">"
-    cut = _cut_quantiles(normal, allowed)
-    limits = tuple(Limit(side, float(cut(m if side == "<" else 1 - m)), m) for m in mass)
+    cut = view_of_distribution(normal, allowed).quantiles
+    limits = tuple(Limit(side, float(cut([m if side == "<" else 1 - m])[0]), m) for m in mass)
     return replace(row, limits=limits, flags=(_SIDE_FLAG[side],))
 
 

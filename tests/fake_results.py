@@ -7,7 +7,7 @@ import numpy as np
 import xarray as xr
 from scipy import stats
 
-from inverse.unknowns import describe_prior
+from inverse.description.unknowns import describe_prior
 
 CHAINS, DRAWS = 4, 1000
 

@@ -9,12 +9,6 @@ from pathlib import Path
 import pytest
 
 ROOMS = ("elastic", "description", "response", "inference", "study", "report")
-DESCRIPTION = {
-    *("quantities", "unknowns", "materials", "reference_tables", "reference_values"),
-    *("refractive_index", "stack", "pumpprobe", "places"),
-    *("traces", "trace_checks", "arrivals", "rising_edge", "trace_columns", "text_tables", "lockin"),
-    *("look", "oscillation"),
-}
 REPORT = {
     *("report", "report_header", "summary", "sheet", "plot", "plot_elastic", "__main__"),
     *("rounding", "unit_text", "propagation", "finite_differences"),
@@ -37,8 +31,6 @@ def room(module: str) -> str | None:
     if module == "inverse":
         return None
     top = module.split(".")[1]
-    if top in DESCRIPTION:
-        return "description"
     if top in REPORT:
         return "report"
     if top in ROOMS:
@@ -142,7 +134,7 @@ def test_heavy_libraries_are_imported_inside_functions() -> None:
         ),
         ("response/__init__.py", "from .. import plot", "response imports inverse.plot"),
         ("response/heat.py", "from inverse import table", "response.heat imports inverse"),
-        ("elastic/__init__.py", "def f():\n    import inverse.stack", "elastic imports inverse.stack"),
+        ("elastic/__init__.py", "def f():\n    import inverse.description.stack", "elastic imports inverse.description.stack"),
         ("inference/a.py", "from inverse.study.batch import run", "inference.a imports inverse.study.batch"),
     ],
 )
@@ -173,7 +165,7 @@ def test_a_module_without_a_room_is_refused(tmp_path: Path) -> None:
 def test_a_heavy_import_is_found_unless_it_waits(tmp_path: Path) -> None:
     waiting = "if TYPE_CHECKING:\n    import xarray\ndef f():\n    import corner\n"
     sources = {"stack.py": "from scipy import stats\nimport scipy.optimize", "plot.py": waiting}
-    assert list(heavy_at_import(write_tree(tmp_path, sources))) == ["inverse.stack imports scipy.stats"]
+    assert list(heavy_at_import(write_tree(tmp_path, sources))) == ["inverse.description.stack imports scipy.stats"]
 
 
 def test_import_loads_nothing_heavy() -> None:

@@ -142,12 +142,19 @@ def plane_section(
 
 def _order(waves: PlaneWaves) -> NDArray[np.intp]:
     """Index of the wave of each branch at each point, shape (points, 3)."""
-    order = _followed(waves.polarisation)
+    order = _followed(_turning(waves.polarisation, waves.direction))
     followed = _reordered(waves.polarisation, order)
     longitudinal, out_of_plane = _parts(followed, waves.direction)
     first = int(np.argmax(longitudinal))
     others = sorted({0, 1, 2} - {first}, key=lambda branch: out_of_plane[branch])
     return order[:, [first, *others]]
+
+
+def _turning(polarisation: FloatArray, direction: FloatArray) -> FloatArray:
+    """Components along the direction, across it in the plane, and out of it: they change least on the way."""
+    across = np.cross((0.0, 0.0, 1.0), direction)
+    out = np.broadcast_to((0.0, 0.0, 1.0), direction.shape)
+    return np.einsum("pmi,pai->pma", polarisation, np.stack([direction, across, out], axis=1))
 
 
 def _followed(polarisation: FloatArray) -> NDArray[np.intp]:

@@ -370,6 +370,6 @@ def _require_symmetry(matrix: FloatArray, symmetry: str) -> None:
     formula = implied_formula(symmetry, name)
     expected = f"{formula} = {implied[worst]:.6g} GPa" if formula else "zero"
     raise ValueError(
-        f"stiffness is not {symmetry}: {name} = {matrix[worst]:.6g} GPa, but in that symmetry it is {expected}. "
-        "Mend the constant, turn the axes, or choose a lower symmetry."
+        f"stiffness is not {symmetry}: {name} = {matrix[worst]:.6g} GPa, "
+        f"but in that symmetry it is {expected}. Mend it, turn the axes, or choose a lower symmetry."
     )

@@ -275,6 +275,7 @@ class Checkpoint:
 
     def _check_same_run(self, identity: Identity, starts: np.ndarray) -> None:
         with _open_checked(self.path) as file:
+            self.capacity = len(file["chain"])
             differences = identity.differences(file.attrs["identity"])
             if not differences and not _same_starts(file["starts"][:], starts):
                 differences = ["starts: the walkers start elsewhere"]
@@ -297,6 +298,7 @@ class Checkpoint:
         with open(fresh, "rb") as written:
             os.fsync(written.fileno())
         os.replace(fresh, self.path)
+        self.capacity = capacity
 
     def append(self, chain: np.ndarray, log_prob: np.ndarray, commit: Commit) -> None:
         """Add steps and the state after them.
@@ -319,13 +321,12 @@ class Checkpoint:
             file["commits"][1 - newest] = _as_record(commit)
 
     def _make_room(self, steps: int) -> None:
+        if steps <= self.capacity:
+            return
         with _open(self.path, "r") as file:
-            capacity = len(file["chain"])
-            if steps <= capacity:
-                return
             commit = _newest(file["commits"][:])[1]
             identity_json, starts = file.attrs["identity"], file["starts"][:]
-        self._replace(identity_json, starts, commit, max(2 * capacity, steps), filled=commit.steps)
+        self._replace(identity_json, starts, commit, max(2 * self.capacity, steps), filled=commit.steps)
 
 
 def _same_starts(stored: np.ndarray, given: np.ndarray) -> bool:

@@ -106,8 +106,9 @@ def effective_sample_size(chains: np.ndarray) -> float:
 def _geyer_time(correlation: np.ndarray) -> float:
     """Autocorrelation time from sums of neighbouring lags, cut where they turn negative and made monotone."""
     pairs = correlation[: correlation.size // 2 * 2].reshape(-1, 2).sum(axis=1)
-    negative = np.flatnonzero(pairs[:-1] <= 0.0)
-    last = int(negative[0]) if negative.size else pairs.size - 1
+    last = (correlation.size - 3) // 2
+    negative = np.flatnonzero(pairs[:last] <= 0.0)
+    last = int(negative[0]) if negative.size else last
     monotone = np.minimum.accumulate(pairs[:last])
     return float(-1.0 + 2.0 * monotone.sum() + max(correlation[2 * last], 0.0))
 
@@ -262,40 +263,82 @@ class Convergence:
         return calm and self.least_ess >= ess and self.largest_rhat <= rhat
 
 
-def _finite_log_prob_drift(log_prob: np.ndarray) -> float:
-    return drift(log_prob, bulk_ess(walker_major(log_prob)))
+@dataclass(frozen=True)
+class BurnIn:
+    """What the second half of a run says about its start.
+
+    Attributes
+    ----------
+    steps : int
+        Stored steps to drop, at most half of them.
+    settled : bool
+        Whether half of them was enough.
+    times : ndarray, shape (d,)
+        Autocorrelation times, in stored steps.
+    """
+
+    steps: int
+    settled: bool
+    times: np.ndarray
 
 
-def assess(chain: np.ndarray, log_prob: np.ndarray) -> Convergence:
-    """Choose the burn-in and compute the convergence numbers of what is left.
+def find_burn_in(chain: np.ndarray, log_prob: np.ndarray) -> BurnIn:
+    """Choose the burn-in from the autocorrelation times and the settling of the log density.
 
     Parameters
     ----------
     chain : ndarray, shape (ensembles, steps, walkers, d)
     log_prob : ndarray, shape (ensembles, steps, walkers)
         Finite.
+    """
+    steps = chain.shape[1]
+    later = slice(steps // 2, steps)
+    times = np.array([integrated_time(chain[:, later, :, k]) for k in range(chain.shape[3])])
+    longest = max(np.nanmax(times, initial=1.0), integrated_time(log_prob[:, later]))
+    wanted, most = burn_in_steps(log_prob, longest), int(MOST_BURN_IN * steps)
+    return BurnIn(min(wanted, most), wanted <= most, times)
+
+
+def rough_ess(chain: np.ndarray, burn_in: BurnIn) -> float:
+    """Divide the kept draws by the longest autocorrelation time: cheap, rather too large than small."""
+    ensembles, steps, walkers, _ = chain.shape
+    return float(ensembles * walkers * (steps - burn_in.steps) / np.nanmax(burn_in.times, initial=1.0))
+
+
+def rough_rhat(chain: np.ndarray, burn_in: BurnIn) -> float:
+    """Find the largest R-hat between ensembles, split but not rank-normalised: cheap."""
+    kept = chain[:, burn_in.steps :]
+    chains = (walker_major(kept[..., k]) for k in range(chain.shape[3]))
+    return max(_plain_rhat(split_chains(values)) for values in chains)
+
+
+def assess(chain: np.ndarray, log_prob: np.ndarray, burn_in: BurnIn) -> Convergence:
+    """Compute the convergence numbers of what is left after burn-in.
+
+    Parameters
+    ----------
+    chain : ndarray, shape (ensembles, steps, walkers, d)
+        Burn-in included.
+    log_prob : ndarray, shape (ensembles, steps, walkers)
+        Finite.
+    burn_in : BurnIn
+        From `find_burn_in`.
 
     Returns
     -------
     Convergence
     """
-    steps = chain.shape[1]
+    kept, kept_log_prob = chain[:, burn_in.steps :], log_prob[:, burn_in.steps :]
     names = range(chain.shape[3])
-    half = steps // 2
-    times = np.array([integrated_time(chain[:, half:, :, k]) for k in names])
-    longest = max(np.nanmax(times, initial=1.0), integrated_time(log_prob[:, half:]))
-    wanted = burn_in_steps(log_prob, longest)
-    burn_in = min(wanted, int(MOST_BURN_IN * steps))
-    kept = chain[:, burn_in:]
     chains = [walker_major(kept[..., k]) for k in names]
     ess = np.array([bulk_ess(values) for values in chains])
     return Convergence(
-        burn_in=burn_in,
-        settled=wanted <= int(MOST_BURN_IN * steps),
-        autocorrelation_time=times,
+        burn_in=burn_in.steps,
+        settled=burn_in.settled,
+        autocorrelation_time=burn_in.times,
         ess=ess,
         ess_tail=np.array([tail_ess(values) for values in chains]),
         rhat=np.array([split_rhat(values) for values in chains]),
         drift=np.array([drift(kept[..., k], ess[k]) for k in names]),
-        log_prob_drift=_finite_log_prob_drift(log_prob[:, burn_in:]),
+        log_prob_drift=drift(kept_log_prob, bulk_ess(walker_major(kept_log_prob))),
     )

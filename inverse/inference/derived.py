@@ -7,7 +7,7 @@ from collections.abc import Mapping
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.places import BoundStack, Slots
+from inverse.description.places import BoundStack, Slots
 
 __all__ = ["derived"]
 

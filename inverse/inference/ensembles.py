@@ -187,6 +187,8 @@ def run_ensembles(
     125 (2013) 306; ter Braak, Statistics and Computing 16 (2006) 239. From memory.
     """
     targets = Targets(ess, rhat, max_steps, chunk)
+    if not memory > 0:
+        raise ValueError(f"memory must be a positive number of megabytes, not {memory!r}")
     starts = checked_starts(starts, names)
     moves = checked_moves(moves)
     sequence = seed_sequence(seed)

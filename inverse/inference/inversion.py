@@ -12,14 +12,14 @@ from inverse.inference.likelihood import HEAT_WIDTH, SCALE_WIDTH, STRAIN_WIDTH, 
 from inverse.inference.noise import Noise, noise_priors
 from inverse.inference.parameters import parameters
 from inverse.inference.posterior import Member, Posterior
-from inverse.places import BoundStack, bind
-from inverse.pumpprobe import PumpProbe
-from inverse.quantities import check, quantity
+from inverse.description.places import BoundStack, bind
+from inverse.description.pumpprobe import PumpProbe
+from inverse.description.quantities import check, quantity
 from inverse.response.basis import CHANNELS, basis, columns, take
 from inverse.response.inverse_laplace import time_grid
 from inverse.response.media import sample
-from inverse.stack import Stack
-from inverse.unknowns import Unknown, is_distribution
+from inverse.description.stack import Stack
+from inverse.description.unknowns import Unknown, is_distribution
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -221,8 +221,8 @@ def _member(
     stack: Stack, setup: PumpProbe, trace: xr.Dataset, time_zero: Any, mask: Any, noise: Any
 ) -> tuple[Member, dict[str, Any], dict[str, str], frozenset[str]]:
     """Build one trace's model; return it with the priors, quantity names and shared names of its unknowns."""
-    from inverse.look import first_look
-    from inverse.trace_checks import check_trace
+    from inverse.description.look import first_look
+    from inverse.description.trace_checks import check_trace
 
     check_trace(trace)
     bound = bind(stack, setup)
@@ -261,7 +261,7 @@ def _time_zero(given: Any, trace: xr.Dataset) -> tuple[str, Any, dict[str, float
     if given is None:
         from scipy import stats
 
-        from inverse.rising_edge import edge_prior
+        from inverse.description.rising_edge import edge_prior
 
         centre, sd = edge_prior(trace)
         return "time_zero", stats.norm(centre, sd), {}

@@ -220,7 +220,7 @@ def _add_distinct(points: list[Array], z: Array, distance: float = 0.05) -> None
 
 def _move_to_echo(inversion: Inversion, z: Array) -> None:
     """Move the top layer's thickness to the round-trip time that the echoes show (in place)."""
-    from inverse.look import first_look
+    from inverse.description.look import first_look
 
     for member, part in zip(inversion.posterior.members, inversion.parts, strict=True):
         slots = member.model.bound.media[0]

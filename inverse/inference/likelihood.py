@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from inverse.inference.elimination import Eliminated, eliminate
 from inverse.inference.noise import Noise
-from inverse.places import BoundStack
+from inverse.description.places import BoundStack
 from inverse.response.basis import Columns, basis, take
 from inverse.response.inverse_laplace import TimeGrid, time_grid
 from inverse.response.media import sample

@@ -12,7 +12,7 @@ import numpy as np
 
 from .advance import EnsembleState, LogProb, Moves, Segment, advance
 from .checkpoint import Checkpoint, Commit, StoredRun
-from .convergence import Convergence, assess
+from .convergence import BurnIn, Convergence, assess, find_burn_in, rough_ess, rough_rhat
 from .executor import Shared, checked_executor, run_tasks
 from .history import History
 from .initial import check_same_density, start_values
@@ -21,6 +21,7 @@ from .verdict import Targets
 
 SECONDS_BETWEEN_NEWS = 1.0
 FEWEST_STEPS_AT_ONCE = 10
+FAR_OFF = 0.5
 
 
 @dataclass(frozen=True)
@@ -77,7 +78,9 @@ class Sampling:
         self.display = display
         self.step_all = step_all
         self.checkpoint = checkpoint
+        self.burn_in: BurnIn | None = None
         self.convergence: Convergence | None = None
+        self.shown = (np.nan, np.nan)
         self.checked_at = 0
         self.seconds_per_step: float | None = None
 
@@ -96,16 +99,36 @@ class Sampling:
         steps = self.snapshot.history.steps
         if not self.targets.is_check(steps):
             return False
+        if steps < self.targets.max_steps and self._is_far_off():
+            return False
         convergence = self.assessed()
-        self._show(convergence)
+        self._show(convergence.least_ess, convergence.largest_rhat)
         return steps >= self.targets.max_steps or self.targets.met_by(convergence, steps)
+
+    def _is_far_off(self) -> bool:
+        """Spare the ranks, which cost as much as many steps, while there are far too few draws."""
+        chain = self.snapshot.history.kept_chain
+        burn_in = self._burn_in()
+        ess = rough_ess(chain, burn_in)
+        if ess >= FAR_OFF * self.targets.ess:
+            return False
+        self._show(ess, rough_rhat(chain, burn_in))
+        return True
+
+    def _burn_in(self) -> BurnIn:
+        history = self.snapshot.history
+        if self.burn_in is None or self.checked_at != history.steps:
+            self.burn_in = find_burn_in(history.kept_chain, history.kept_log_prob)
+            self.convergence = None
+            self.checked_at = history.steps
+        return self.burn_in
 
     def assessed(self) -> Convergence:
         """Assess the steps made so far, once."""
-        history = self.snapshot.history
-        if self.convergence is None or self.checked_at != history.steps:
-            self.convergence = assess(history.kept_chain, history.kept_log_prob)
-            self.checked_at = history.steps
+        burn_in = self._burn_in()
+        if self.convergence is None:
+            history = self.snapshot.history
+            self.convergence = assess(history.kept_chain, history.kept_log_prob, burn_in)
         return self.convergence
 
     def _make_steps(self) -> None:
@@ -119,7 +142,7 @@ class Sampling:
         self.snapshot = after
         self.seconds_per_step = (time.perf_counter() - before) / count
         if not self.targets.is_check(after.history.steps):
-            self._show(self.convergence)
+            self._show(*self.shown)
 
     def _steps_at_once(self) -> int:
         left = self.targets.until_chunk(self.snapshot.history.steps)
@@ -127,10 +150,9 @@ class Sampling:
             return min(left, FEWEST_STEPS_AT_ONCE)
         return min(left, max(FEWEST_STEPS_AT_ONCE, int(SECONDS_BETWEEN_NEWS / self.seconds_per_step)))
 
-    def _show(self, convergence: Convergence | None) -> None:
+    def _show(self, ess: float, rhat: float) -> None:
+        self.shown = (ess, rhat)
         targets = self.targets
-        ess = np.nan if convergence is None else convergence.least_ess
-        rhat = np.nan if convergence is None else convergence.largest_rhat
         steps = self.snapshot.history.steps
         self.display.show(Progress(steps, targets.max_steps, ess, targets.ess, rhat, targets.rhat))
 

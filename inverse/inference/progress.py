@@ -22,7 +22,8 @@ class Progress:
     steps, max_steps : int
         Steps made by each ensemble, and the most it may make.
     least_ess, target_ess : float
-        Smallest effective sample size of any name (NaN before the first check), and the target.
+        Smallest effective sample size of any name (NaN before the first check, an estimate while far from the
+        target), and the target.
     largest_rhat, target_rhat : float
         Largest R-hat of any name (NaN before the first check), and the target.
     """

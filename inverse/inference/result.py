@@ -13,9 +13,9 @@ from numpy.typing import NDArray
 
 from inverse.inference.derived import derived
 from inverse.inference.ensembles import EnsembleRun
-from inverse.quantities import quantity
-from inverse.records import decode, encode
-from inverse.unknowns import describe_prior
+from inverse.description.quantities import quantity
+from inverse.description.records import decode, encode
+from inverse.description.unknowns import describe_prior
 
 if TYPE_CHECKING:
     import xarray as xr

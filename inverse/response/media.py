@@ -8,8 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.places import BoundStack, Slots
-from inverse.quantities import QUANTITIES
+from inverse.description.places import BoundStack, Slots
+from inverse.description.quantities import QUANTITIES
 from inverse.response.recursion import OPEN
 
 __all__ = ["Ambient", "Medium", "Sample", "sample"]

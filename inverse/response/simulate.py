@@ -8,12 +8,12 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.places import BoundStack, bind
-from inverse.pumpprobe import PumpProbe
+from inverse.description.places import BoundStack, bind
+from inverse.description.pumpprobe import PumpProbe
 from inverse.response.basis import CHANNELS, displaced, fields
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.media import Sample, sample
-from inverse.stack import Stack
+from inverse.description.stack import Stack
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -67,7 +67,7 @@ def simulate(
     ValueError
         If a constant is missing, a delay is not finite or not increasing, or `values` names no unknown.
     """
-    from inverse.traces import make_trace
+    from inverse.description.traces import make_trace
 
     delay = np.atleast_1d(np.asarray(delay, dtype=float))
     bound = bind(stack, setup)

@@ -81,6 +81,25 @@ def test_the_far_end_of_a_liquid_is_not_seen(al, si):
     assert np.all(np.abs(long[: len(time)] - short) < 2e-5 * scale)
 
 
+def test_hot_electrons_and_pairs_push_like_the_heat_they_stand_for(si):
+    # One temperature: the electrons' is the lattice's. Pairs that live for ever and diffuse as heat does follow
+    # N = C T / energy: with a quarter of the light turned to heat at once, a quarter of the stress is left to it.
+    plain, energy = replace(si, dn_dT=0j), 0.5
+    electrons = replace(plain, thermal_stress=0.0, electron_stress=si.thermal_stress)
+    pairs = replace(
+        plain,
+        carrier_energy=energy,
+        carrier_diffusivity=si.conductivity / si.heat_capacity,
+        prompt_heat=0.25,
+        carrier_stress=0.75 * si.thermal_stress * energy / si.heat_capacity,
+    )
+    experiment, delay = Experiment(PUMP, PUMP, 0.3), np.arange(-1, 10, 0.1)
+    expected, *found = (simulate(Sample((m,)), experiment, delay, 0.05) for m in (plain, electrons, pairs))
+    for trace in found:
+        scale = np.abs(expected.reflectance_change).max()
+        np.testing.assert_allclose(trace.reflectance_change, expected.reflectance_change, atol=1e-9 * scale)
+
+
 @pytest.mark.parametrize("angle", [0.0, 0.8])
 def test_brillouin_frequency_of_silica(stacks, angle):
     # 2 n v cos(refracted angle) / lambda, conservation of momentum, for the pulse that climbs from tungsten

@@ -7,9 +7,9 @@ from collections.abc import Iterator
 from dataclasses import dataclass, field, fields, replace
 from typing import Any
 
-from inverse.materials import Material, material
-from inverse.quantities import check
-from inverse.unknowns import Unknown, is_unknown, validate_prior
+from inverse.description.materials import Material, material
+from inverse.description.quantities import check
+from inverse.description.unknowns import Unknown, is_unknown, validate_prior
 
 __all__ = ["Interface", "Layer", "Stack", "Substrate"]
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from inverse.quantities import check
+from inverse.description.quantities import check
 
 __all__ = ["PumpProbe"]
 

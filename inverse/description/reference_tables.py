@@ -9,7 +9,7 @@ from functools import cache
 from pathlib import Path
 from statistics import stdev
 
-from inverse.refractive_index import IndexTable
+from inverse.description.refractive_index import IndexTable
 
 __all__ = ["Entry", "Number", "Row", "find", "index_series", "names", "read_table", "table_directory"]
 
@@ -61,7 +61,7 @@ def table_directory() -> Path:
     ValueError
         If there is none.
     """
-    here = Path(__file__).resolve().parent
+    here = Path(__file__).resolve().parents[1]
     for folder in (here / "reference_materials", here.parent / "reference_materials"):
         if (folder / "materials.csv").is_file():
             return folder

@@ -9,9 +9,9 @@ import re
 import pytest
 from scipy import stats
 
-from inverse.materials import Material, film_prior, material
-from inverse.refractive_index import IndexTable
-from inverse.unknowns import Unknown
+from inverse.description.materials import Material, film_prior, material
+from inverse.description.refractive_index import IndexTable
+from inverse.description.unknowns import Unknown
 
 
 @pytest.mark.parametrize(

@@ -9,9 +9,9 @@ import tomllib
 from pathlib import Path
 from typing import Any
 
-from inverse.pumpprobe import PumpProbe
-from inverse.stack import Interface, Layer, Stack, Substrate
-from inverse.unknowns import Unknown, is_distribution
+from inverse.description.pumpprobe import PumpProbe
+from inverse.description.stack import Interface, Layer, Stack, Substrate
+from inverse.description.unknowns import Unknown, is_distribution
 
 __all__ = ["read_stack"]
 

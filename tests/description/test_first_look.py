@@ -9,15 +9,15 @@ import pytest
 import xarray as xr
 
 import inverse as inv
-from inverse.arrivals import Estimate, find_train, slow_background
-from inverse.look import FirstLook, first_look
-from inverse.oscillation import find_oscillation
-from inverse.rising_edge import edge_prior, find_edge, white_noise
-from inverse.trace_checks import TraceError
-from inverse.traces import make_trace, read_trace
+from inverse.description.arrivals import Estimate, find_train, slow_background
+from inverse.description.look import FirstLook, first_look
+from inverse.description.oscillation import find_oscillation
+from inverse.description.rising_edge import edge_prior, find_edge, white_noise
+from inverse.description.trace_checks import TraceError
+from inverse.description.traces import make_trace, read_trace
 
-STACKS = json.loads((Path(__file__).parent / "data" / "vectors" / "stacks.json").read_text(encoding="utf-8"))
-TRUTH = json.loads((Path(__file__).parent / "data" / "splits" / "truth.json").read_text(encoding="utf-8"))[
+STACKS = json.loads((Path(__file__).parents[1] / "data" / "vectors" / "stacks.json").read_text(encoding="utf-8"))
+TRUTH = json.loads((Path(__file__).parents[1] / "data" / "splits" / "truth.json").read_text(encoding="utf-8"))[
     "traces"
 ]
 VECTORS = [name for name, entry in STACKS.items() if "layers" in entry]

@@ -8,7 +8,7 @@ from inverse.elastic.averages import averages
 from inverse.elastic.christoffel import longitudinal_velocity
 from inverse.elastic.symmetry import constant_names
 from inverse.elastic.tensor import StiffnessTensor
-from inverse.reference_tables import (
+from inverse.description.reference_tables import (
     Entry,
     Number,
     Row,

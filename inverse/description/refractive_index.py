@@ -11,7 +11,7 @@ from pathlib import Path
 
 import numpy as np
 
-from inverse.quantities import check
+from inverse.description.quantities import check
 
 __all__ = ["CoarseIndexWarning", "IndexTable", "read_index"]
 

@@ -8,11 +8,11 @@ from typing import Any
 
 import numpy as np
 
-from inverse.quantities import check
-from inverse.reference_tables import Entry, find, index_table
-from inverse.reference_values import DEFAULT_SPREAD, reference_values, stiffness
-from inverse.refractive_index import IndexTable, check_index
-from inverse.unknowns import Unknown, is_unknown, validate_prior
+from inverse.description.quantities import check
+from inverse.description.reference_tables import Entry, find, index_table
+from inverse.description.reference_values import DEFAULT_SPREAD, reference_values, stiffness
+from inverse.description.refractive_index import IndexTable, check_index
+from inverse.description.unknowns import Unknown, is_unknown, validate_prior
 
 __all__ = ["Material", "film_prior", "material"]
 
@@ -268,7 +268,7 @@ def material(name: str, orientation: str | None = None, *, index_series: str | N
         `sources` begin with ``from memory`` where a number was recalled and not read in its source (inside
         the text where it is one of several inputs). `spread` holds the larger of the standard deviation
         between the table's sources and this project's least relative spread
-        (`inverse.reference_values.DEFAULT_SPREAD`).
+        (`inverse.description.reference_values.DEFAULT_SPREAD`).
 
     Raises
     ------

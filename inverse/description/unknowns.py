@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from inverse.quantities import check, quantity
+from inverse.description.quantities import check, quantity
 
 __all__ = ["Unknown", "describe_prior", "is_distribution", "is_unknown", "rebuild_prior", "validate_prior"]
 

@@ -8,11 +8,11 @@ from typing import Any
 
 import numpy as np
 
-from inverse.materials import Material
-from inverse.pumpprobe import PumpProbe
-from inverse.refractive_index import IndexTable
-from inverse.stack import Interface, Layer, Stack, Substrate
-from inverse.unknowns import Unknown, describe_prior, is_distribution, rebuild_prior
+from inverse.description.materials import Material
+from inverse.description.pumpprobe import PumpProbe
+from inverse.description.refractive_index import IndexTable
+from inverse.description.stack import Interface, Layer, Stack, Substrate
+from inverse.description.unknowns import Unknown, describe_prior, is_distribution, rebuild_prior
 
 __all__ = ["decode", "encode"]
 

@@ -9,11 +9,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.materials import Material
-from inverse.pumpprobe import PumpProbe
-from inverse.quantities import QUANTITIES
-from inverse.stack import Layer, Stack, Substrate
-from inverse.unknowns import Unknown, is_unknown
+from inverse.description.materials import Material
+from inverse.description.pumpprobe import PumpProbe
+from inverse.description.quantities import QUANTITIES
+from inverse.description.stack import Layer, Stack, Substrate
+from inverse.description.unknowns import Unknown, is_unknown
 
 __all__ = ["BoundStack", "Slot", "bind"]
 

@@ -1,0 +1,1 @@
+"""What is known, measured and sought: materials, stacks, setups, traces and unknowns."""
