@@ -77,7 +77,8 @@ def fit(result: Any, *, axes: Sequence[Axes] | None = None) -> Figure:
     ----------
     result : xarray.DataTree or least-squares result
         A posterior with the groups ``observed_data`` and ``posterior_predictive`` (and ``constant_data`` with
-        ``used``, not zero where a delay is fitted), or what `Inversion.least_squares` gave, drawn without bands.
+        ``used``, not zero where a delay is fitted), or what `Inversion.least_squares` gave, which has no
+        bands.
     axes : sequence of matplotlib Axes, optional
         Two per channel: signal, residuals. Without them a figure one column (85 mm) wide is made.
 

@@ -289,12 +289,7 @@ def _is_tree(result: Any) -> bool:
 
 
 def _fit_rows(result: Any, mass: tuple[float, ...]) -> tuple[Row, ...]:
-    missing = [
-        field
-        for field in ("names", "values", "sd", "units", "flags", "inversion")
-        if not hasattr(result, field)
-    ]
-    if missing:
+    if not all(hasattr(result, field) for field in ("values", "sd", "flags", "minima", "inversion")):
         raise ValueError(
             f"table got {type(result).__name__}; expected a DataTree with a group 'posterior' "
             "or the result of Inversion.least_squares."

@@ -79,7 +79,7 @@ def _sampling_line(tree: Any, information: Mapping[str, Any], rows: Sequence[Row
 
 def _verdict(stated: Any, ess: float, rhat: float) -> str:
     """Say converged only if the run says so (or says nothing) and the draws agree."""
-    stated = stated or {"converged": ess >= LEAST_ESS, "message": ""}
+    stated = stated or {"converged": ess >= LEAST_ESS, "message": "Sample longer."}
     if not stated["converged"]:
         return f"NOT converged. {stated['message']}".rstrip()
     if not rhat <= MOST_RHAT:

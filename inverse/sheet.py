@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import html
+import itertools
 import re
+import textwrap
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -12,6 +14,7 @@ from inverse.unit_text import siunitx_unit, unit_text
 __all__ = ["Rendered", "Sheet"]
 
 _UNIT = "unit"
+_WIDEST = 60
 _NUMBER = re.compile(r"(?<![\w.#])[+-]?\d+(?:\.\d+)?(?:\(\d+\))?(?:e-?\d+)?(?![\w.])")
 _LATEX = {
     "\\": r"\textbackslash{}", "&": r"\&", "%": r"\%", "#": r"\#", "_": r"\_", "$": r"\$",
@@ -39,13 +42,11 @@ class Sheet:
     notes: tuple[str, ...] = ()
 
     def plain(self) -> str:
-        """Return fixed-width text."""
-        rows = [self.columns, *self._with_units(unit_text)]
-        widths = [max(map(len, column)) for column in zip(*rows, strict=True)]
-        lines = [
-            "  ".join(cell.ljust(w) for cell, w in zip(row, widths, strict=True)).rstrip() for row in rows
-        ]
-        lines.insert(1, "  ".join("-" * w for w in widths))
+        """Return fixed-width text; long texts are broken into lines."""
+        rows = [line for row in self._with_units(unit_text) for line in _wrapped(row)]
+        widths = [max(map(len, column)) for column in zip(self.columns, *rows, strict=True)]
+        rows = [self.columns, tuple("-" * width for width in widths), *rows]
+        lines = ["  ".join(c.ljust(w) for c, w in zip(row, widths, strict=True)).rstrip() for row in rows]
         return "\n".join([*self.notes, *([""] if self.notes else []), *lines])
 
     def markdown(self) -> str:
@@ -101,6 +102,12 @@ class Rendered:
     def latex(self) -> str:
         """Return the table in LaTeX (booktabs and siunitx)."""
         return self.sheet().latex()
+
+
+def _wrapped(row: tuple[str, ...]) -> list[tuple[str, ...]]:
+    """Break the long texts of a row; what follows stands below in its column."""
+    parts = [textwrap.wrap(cell, _WIDEST) or [""] for cell in row]
+    return list(itertools.zip_longest(*parts, fillvalue=""))
 
 
 def _html_row(tag: str, cells: tuple[str, ...]) -> str:

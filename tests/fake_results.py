@@ -2,11 +2,13 @@
 
 import json
 from dataclasses import dataclass
+from types import SimpleNamespace
 
 import numpy as np
 import xarray as xr
 from scipy import stats
 
+from inverse.description.quantities import quantity
 from inverse.description.unknowns import describe_prior
 
 CHAINS, DRAWS = 4, 1000
@@ -27,7 +29,7 @@ UNITS = {
 }
 INFORMATION = {
     "stack": "Al on Si",
-    "noise": "white level unknown, correlated discrepancy",
+    "noise": {"model": "correlated"},
     "convergence": {"converged": True, "message": ""},
     "warnings": ["4 delays were left out"],
     "constants": [
@@ -71,11 +73,15 @@ def posterior(values: dict[str, np.ndarray], priors=PRIORS) -> xr.Dataset:
     variables = {}
     for name, array in values.items():
         prior = json.dumps(describe_prior(priors[name])) if name in priors else ""
+        known = quantity(name)
+        role = "derived" if name not in priors else "noise" if name.startswith("noise.") else "unknown"
         attrs = {
             "units": UNITS.get(name, "1"),
             "long_name": name,
             "symbol": name,
-            "role": "unknown" if name in priors else "derived",
+            "role": role,
+            "low": known.low,
+            "high": known.high,
             "prior": prior,
         }
         variables[name] = (("chain", "draw"), array, attrs)
@@ -91,11 +97,25 @@ def tree(values=None, priors=PRIORS, information=INFORMATION, **groups) -> xr.Da
 
 
 @dataclass
+class Minimum:
+    """One minimum of a least-squares result."""
+
+    weight: float
+
+
+@dataclass
 class Fit:
-    """What a least-squares result offers to tables and figures."""
+    """What a least-squares result offers to tables."""
 
     names: tuple[str, ...]
     values: np.ndarray
     sd: np.ndarray
     units: tuple[str, ...]
     flags: tuple[str, ...]
+    minima: tuple[Minimum, ...]
+
+    @property
+    def inversion(self) -> SimpleNamespace:
+        """Priors and quantity of each name."""
+        fields = {name: name.rsplit(".", 1)[1] for name in self.names}
+        return SimpleNamespace(priors=PRIORS, fields=fields)

@@ -10,7 +10,8 @@ import pytest
 
 ROOMS = ("elastic", "description", "response", "inference", "study", "report")
 REPORT = {
-    *("report", "report_header", "summary", "sheet", "plot", "plot_elastic", "__main__"),
+    *("report", "report_header", "summary", "sheet", "prior_view", "__main__"),
+    *("plot", "plot_fit", "plot_corner", "plot_section", "plot_style", "plot_elastic"),
     *("rounding", "unit_text", "propagation", "finite_differences"),
 }
 HEAVY = (

@@ -41,7 +41,7 @@ def posterior_with_data(channels=("reflectance_change",), **extra):
     return tree(
         observed_data=measured(channels),
         posterior_predictive=xr.Dataset({**predicted, **extra}, {"delay": DELAY}),
-        constant_data=xr.Dataset({"mask": ("delay", FITTED)}, {"delay": DELAY}),
+        constant_data=xr.Dataset({"used": ("delay", FITTED.astype("i1"))}, {"delay": DELAY}),
     )
 
 
@@ -121,6 +121,7 @@ def test_fit_of_least_squares():
     trace = measured()
     predicted = xr.Dataset({"reflectance_change": (("sample", "delay"), SIGNAL[None])}, {"delay": DELAY})
     inversion = SimpleNamespace(
+        parts=[None],
         trace=trace,
         predict=lambda values: predicted,
         posterior=SimpleNamespace(members=[SimpleNamespace(model=SimpleNamespace(used=FITTED))]),

@@ -6,11 +6,11 @@ import re
 import numpy as np
 import pytest
 import xarray as xr
-from fake_results import DRAWS, INFORMATION, PRIORS, Fit, draws, tree
+from fake_results import DRAWS, INFORMATION, PRIORS, Fit, Minimum, draws, tree
 from scipy import stats
 
+from inverse.prior_view import touches, view_of_distribution
 from inverse.report import budget_table, constants_table, table
-from inverse.summary import touches
 
 
 @pytest.fixture(scope="module")
@@ -42,6 +42,33 @@ def test_prior_only_is_flagged(made):
 def test_narrow_posterior_far_from_its_prior_is_flagged():
     values = {"Al.velocity": draws()["Al.velocity"] + 0.3}
     assert table(tree(values))["Al.velocity"].flags == ("far from prior",)
+
+
+@pytest.mark.parametrize(
+    ("prior", "value", "surprised"),
+    [
+        (stats.norm(6.42, 0.1), 6.60, False),
+        (stats.norm(6.42, 0.1), 6.63, True),
+        (stats.halfcauchy(scale=0.05), 1e-4, False),  # in the lowest 2.5 %, but at the peak of the density
+        (stats.halfcauchy(scale=0.05), 1.0, False),  # a heavy tail is meant: P(x > 1) = 3 %
+        (stats.halfcauchy(scale=0.05), 10.0, True),
+        (stats.uniform(40, 40), 40.1, False),
+    ],
+)
+def test_prior_is_surprised_only_by_improbable_values_of_low_density(prior, value, surprised):
+    assert view_of_distribution(prior, (0.0, np.inf)).is_surprised_by(value) is surprised
+
+
+def test_few_effective_draws_are_flagged():
+    # Every half of an ensemble holds the same 30 values in its own order: R-hat has nothing to see.
+    rng = np.random.default_rng(5)
+    score = stats.norm.ppf((np.arange(30) + 0.5) / 30)
+    halves = np.array([rng.permutation(score) for _ in range(8)]).reshape(4, 60)
+    made = table(tree({"Al.thickness": 60 + 0.1 * halves}, information={}))
+    assert made["Al.thickness"].flags == ("few effective draws",)
+    assert any(line.endswith("NOT converged. Sample longer.") for line in made.header)
+    made = table(tree({"Al.thickness": 60 + 0.1 * halves}))
+    assert any(line.endswith("converged, but fewer than 400 effective draws.") for line in made.header)
 
 
 def test_compliance_at_zero_gives_an_upper_limit(made):
@@ -114,7 +141,7 @@ def test_run_that_says_not_converged_is_believed():
         "convergence": {"converged": False, "message": "20000 more steps are needed"},
     }
     header = "\n".join(table(tree(information=information)).header)
-    assert "NOT converged (20000 more steps are needed)." in header
+    assert "NOT converged. 20000 more steps are needed" in header
 
 
 def test_draws_that_are_not_numbers_are_counted():
@@ -150,7 +177,7 @@ def test_header_says_what_was_fitted():
     header = "\n".join(table(tree(observed_data=observed)).header)
     assert "Stack: Al on Si" in header
     assert "reflectance_change, 450 delays from 3.5 to 110 ps" in header
-    assert "Noise model: white level unknown, correlated discrepancy" in header
+    assert "Noise model: correlated" in header
     assert "4 ensembles, 1000 draws each" in header and ": converged." in header
     assert "Warning: 4 delays were left out" in header
 
@@ -207,6 +234,7 @@ def test_include_and_format():
     result = tree()
     assert [row.name for row in table(result, include="derived").rows] == ["Al|Si.stiffness", "Al.round_trip"]
     assert [row.name for row in table(result, include=["Al.velocity"]).rows] == ["Al.velocity"]
+    assert [row.name for row in table(result, include="noise").rows] == ["noise.white"]
     assert table(result, format="plain") == repr(table(result))
     assert table(result, format="dict")["rows"][0]["name"] == "Al.thickness"
     assert table(result, format="latex").endswith(r"\end{tabular}")
@@ -218,7 +246,7 @@ def test_include_and_format():
     [
         ({"mass": (68,)}, "probabilities between 0 and 1"),
         ({"format": "rtf"}, "expected None or one of plain"),
-        ({"include": "noise"}, "expected one of all, unknown, derived"),
+        ({"include": "priors"}, "expected one of all, unknown, noise, derived"),
         ({"include": ["Al.mass"]}, "include names Al.mass; the result holds Al.thickness"),
     ],
 )
@@ -245,6 +273,7 @@ def fit() -> Fit:
         sd=np.array([0.12, 0.005, np.inf]),
         units=("nm", "nm/GPa", "nm/ps"),
         flags=("2 minima; prior only", "", ""),
+        minima=(Minimum(0.93), Minimum(0.07)),
     )
 
 
@@ -271,6 +300,16 @@ def test_least_squares_without_information_says_so(fit):
     assert "linearised covariance" in table(fit).header[1]
 
 
+def test_least_squares_hides_no_minimum(fit):
+    assert table(fit).header[0].startswith("Least squares: 2 minima hold 93 %, 7 % of the probability")
+    fit.minima = fit.minima[:1]
+    assert table(fit).header[0] == "Least squares: one minimum found."
+
+
+def test_least_squares_says_what_the_data_added(fit):
+    assert table(fit)["Al.thickness"].narrowed == pytest.approx(0.68 * 40 / (2 * 0.99446 * 0.12), rel=1e-4)
+
+
 def test_constants_carry_their_sources():
     listed = constants_table(tree())
     assert listed.sheet().cells[0] == ("Al", "heat_capacity", "2.430(20)", "J/cm3/K", "a handbook")
@@ -279,6 +318,14 @@ def test_constants_carry_their_sources():
     assert listed.to_dict()["rows"][1]["source"] == "a paper"
     with pytest.raises(ValueError, match="carries no list of constants"):
         constants_table(tree(information={}))
+
+
+def test_long_sources_are_broken_into_lines():
+    entry = {**INFORMATION["constants"][0], "source": "a very long title " * 8}
+    lines = repr(constants_table(tree(information={"constants": [entry]}))).splitlines()
+    assert max(map(len, lines)) < 110
+    assert " ".join(" ".join(lines[-3:]).split()).count("very long") == 8
+    assert lines[-1].startswith(" " * lines[-3].index("a very"))
 
 
 def test_budget_combines_by_root_sum_of_squares():
