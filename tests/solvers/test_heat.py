@@ -94,6 +94,7 @@ def test_carriers_die_of_lifetime_and_surface_and_give_their_energy_back(si):
         carrier_diffusivity=1e4,
         carrier_lifetime=8.0,
         surface_recombination=0.4,
+        prompt_heat=0.2,
     )
     sample, step = Sample((semiconductor,)), 0.01
     mesh = build_mesh(sample, step, 1, PUMP)
@@ -105,4 +106,4 @@ def test_carriers_die_of_lifetime_and_surface_and_give_their_energy_back(si):
         density = 2 * middle - density
     np.testing.assert_allclose(density, np.exp(-10 * (1 / 8 + 0.4 / 5)), rtol=3e-4)
     # 1000 solves of a matrix of condition 1e7, as diffusion is made fast: rounding stays under 1e-8
-    assert heat == pytest.approx(0.5 * mesh.width @ (1 - density), rel=1e-8)
+    assert heat == pytest.approx(0.8 * 0.5 * mesh.width @ (1 - density), rel=1e-8)

@@ -82,8 +82,9 @@ def test_the_far_end_of_a_liquid_is_not_seen(al, si):
 
 
 def test_hot_electrons_and_pairs_push_like_the_heat_they_stand_for(si):
-    # One temperature: the electrons' is the lattice's. Pairs that live for ever and diffuse as heat does follow
-    # N = C T / energy: with a quarter of the light turned to heat at once, a quarter of the stress is left to it.
+    # One temperature: the electrons' is the lattice's. Pairs that live for ever and diffuse as heat does
+    # follow N = C T / energy: with a quarter of the light turned to heat at once, a quarter of the stress is
+    # left to it.
     plain, energy = replace(si, dn_dT=0j), 0.5
     electrons = replace(plain, thermal_stress=0.0, electron_stress=si.thermal_stress)
     pairs = replace(
