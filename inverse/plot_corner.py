@@ -24,6 +24,7 @@ Array = NDArray[np.float64]
 LEVELS = (0.68, 0.95)
 _QUANTILES = (0.16, 0.5, 0.84)
 _BINS = 30
+_LONG = 14
 _PANEL = 22 * MILLIMETRE
 _MARGIN = 19 * MILLIMETRE
 _FILLS = ("white", "0.85", "0.6")
@@ -126,7 +127,10 @@ def _range(column: Array) -> tuple[float, float]:
 def _text(dataset: Any, name: str, exponent: int) -> str:
     """Break a label after the place and before the unit: panels are narrow."""
     unit = unit_text(dataset[name].attrs.get("units", "1"))
-    return power_label(name.replace(".", "\n.", 1), unit, exponent).replace(" (", "\n(")
+    place, dot, field = name.partition(".")
+    if len(field) > _LONG:
+        field = field.replace("_", "_\n", 1)
+    return power_label(f"{place}\n.{field}" if dot else name, unit, exponent).replace(" (", "\n(")
 
 
 def _draw_prior(ax: Axes, description: str, shown: tuple[float, float], scale: float, draws: int) -> None:

@@ -181,6 +181,12 @@ def test_corner_of_chosen_names_and_heavy_tails():
     assert axes[0, 0].get_xlim()[1] < 0.1 * stiffness.max()
 
 
+def test_corner_breaks_long_names():
+    values = {"Al|Si.boundary_conductance": 100 + np.random.default_rng(1).standard_normal((4, 200))}
+    figure = plot.corner(tree(values))
+    assert figure.axes[0].get_xlabel() == "Al|Si\n.boundary_\nconductance"
+
+
 def test_corner_refuses():
     with pytest.raises(ValueError, match=r"names holds W\.thickness; the posterior has Al\.thickness"):
         plot.corner(tree(), names=["W.thickness"])
