@@ -8,10 +8,10 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from inverse.description.unknowns import Unknown, is_distribution
 from inverse.plot_style import COLUMN, MILLIMETRE, new_figure, style
 from inverse.rounding import decimal_place, format_range
 from inverse.unit_text import unit_text
-from inverse.description.unknowns import Unknown, is_distribution
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

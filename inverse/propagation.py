@@ -324,9 +324,7 @@ def _check_inputs(estimates: ArrayLike, covariance: ArrayLike) -> tuple[Array, A
         )
     if matrix.ndim == 1:
         if np.any(matrix < 0):
-            raise ValueError(
-                f"standard uncertainties {matrix} hold a negative number; give their magnitudes."
-            )
+            raise ValueError(f"standard uncertainties {matrix} hold a negative number; give magnitudes.")
         matrix = np.diag(matrix**2)
     if not (np.all(np.isfinite(matrix)) and np.allclose(matrix, matrix.T, rtol=1e-9, atol=0)):
         raise ValueError("The covariance is not a finite symmetric matrix; give u(x_i, x_j) for every pair.")

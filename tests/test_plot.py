@@ -173,6 +173,13 @@ def test_corner_draws_quantiles_and_prior(corner_figure):
     assert prior.get_ydata().max() == pytest.approx(4000 * width * stats.norm.pdf(0) / 0.10, rel=0.02)
 
 
+def test_corner_scales_the_prior_with_its_axis(corner_figure):
+    ax = grid(corner_figure, 3)[2, 2]  # compliance in 10^-3 nm/GPa
+    width = np.diff(ax.get_xlim())[0] / 30 * 1e-3
+    expected = 4000 * width * stats.halfcauchy(scale=0.05).pdf(0)
+    assert line(ax, "prior").get_ydata()[0] == pytest.approx(expected, rel=0.01)
+
+
 def test_corner_of_chosen_names_and_heavy_tails():
     figure = plot.corner(tree(), names=["Al|Si.stiffness", "noise.white"])
     axes = grid(figure, 2)

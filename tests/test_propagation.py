@@ -235,6 +235,13 @@ def test_shortest_interval_of_exponential_starts_at_zero():
     np.testing.assert_allclose(trials.interval(), -np.log([0.975, 0.025]), atol=0.06)
 
 
+def test_standard_uncertainty_of_few_draws_is_that_of_a_sample():
+    # JCGM 101 7.6: divisor M - 1
+    trials = MonteCarlo(np.array([1.0, 2.0, 3.0, 4.0]))
+    assert trials.standard_uncertainty == pytest.approx(np.sqrt(5 / 3))
+    assert trials.standard_error == pytest.approx(np.sqrt(5 / 12))
+
+
 def test_seed_fixes_draws_and_streams_stay_apart():
     before = np.random.get_state()[1].copy()
     one = propagate_distributions(lambda a, b: a, [stats.norm(), 2.0], seed=7, draws=1000)

@@ -89,6 +89,9 @@ def test_stiffness_inherits_a_lower_limit(made):
 
 def test_derived_quantity_that_is_not_monotone_inherits_nothing(made):
     assert made["Al.round_trip"].limits == ()
+    values = draws()
+    values["Al.reflection"] = values["Al|Si.compliance"] * values["Al.velocity"] ** 4  # correlated, no more
+    assert table(tree(values))["Al.reflection"].limits == ()
     assert made["Al.round_trip"].prior_width is None
 
 
