@@ -47,6 +47,30 @@ class Quantity:
 
 _INF = float("inf")
 
+
+def _elastic_constants() -> tuple[Quantity, ...]:
+    """List the 21 constants of a crystal along its own axes; the diagonal holds moduli of single strains."""
+    return tuple(
+        Quantity(
+            f"c{i}{j}",
+            "GPa",
+            f"c_{{{i}{j}}}",
+            0.0 if i == j else -2e3,
+            2e3,
+            _constant_meaning(i, j),
+            suspect="Pa or MPa",
+        )
+        for i in range(1, 7)
+        for j in range(i, 7)
+    )
+
+
+def _constant_meaning(i: int, j: int) -> str:
+    if (i, j) == (3, 3):
+        return "elastic stiffness constant (of a layer known by its velocity: density x velocity squared)"
+    return "elastic stiffness constant"
+
+
 QUANTITIES: dict[str, Quantity] = {
     q.name: q
     for q in (
@@ -94,12 +118,20 @@ QUANTITIES: dict[str, Quantity] = {
         Quantity("noise.white", "1", r"\sigma", 0.0, _INF, "white noise, standard deviation per point"),
         Quantity("noise.discrepancy", "1", "a", 0.0, _INF, "correlated discrepancy, standard deviation"),
         Quantity("noise.correlation_time", "ps", r"\ell", 0.0, _INF, "correlation time of the discrepancy"),
-        Quantity("c33", "GPa", "c_{33}", 0.0, _INF, "longitudinal stiffness along the depth, density x velocity squared"),
+        Quantity("longitudinal_modulus", "GPa", r"\rho v^2", 0.0, _INF, "density x velocity squared"),
         Quantity("round_trip", "ps", "2d/v", 0.0, _INF, "acoustic round-trip time"),
         Quantity("impedance_ratio", "1", "Z/Z'", 0.0, _INF, "acoustic impedance over that of the medium below"),
         Quantity("stiffness", "GPa/nm", "K", 0.0, _INF, "interface stiffness (1 GPa/nm = 1e18 N/m3)"),
         Quantity("equivalent_thickness", "nm", r"d_\mathrm{eq}", 0.0, _INF, "thickness of an interlayer that acts the same"),
         Quantity("reflection", "1", "|R|", 0.0, 1.0, "magnitude of the displacement reflection coefficient"),
+        *_elastic_constants(),
+        Quantity("shear_modulus", "GPa", "G", 0.0, _INF, "shear modulus of the polycrystal (Hill)"),
+        Quantity("young_modulus", "GPa", "E", 0.0, _INF, "Young's modulus of the polycrystal (Hill)"),
+        Quantity("poisson_ratio", "1", r"\nu", -1.0, 0.5, "Poisson's ratio of the polycrystal (Hill)"),
+        Quantity("universal_anisotropy", "1", "A_U", 0.0, _INF, "5 G_V/G_R + K_V/K_R - 6, zero if isotropic"),
+        Quantity("brillouin_shift", "THz", "f", 1e-6, 10.0, "Brillouin shift", suspect="GHz or Hz"),
+        Quantity("echo_time", "ps", "t", 1e-3, 1e6, "time of the round trip through a layer", suspect="s"),
+        Quantity("scattering_angle", "degrees", r"\theta", 1e-3, 180.0, "angle of scattering of the light"),
     )
 }
 

@@ -5,6 +5,7 @@ factor.
 """
 
 from .averages import Averages, averages, poisson_ratio, young_modulus
+from .branch_moduli import BranchModuli, branch_moduli
 from .christoffel import (
     BRANCHES,
     PlaneWaves,
@@ -49,6 +50,8 @@ __all__ = [
     "young_modulus",
     "poisson_ratio",
     "BRANCHES",
+    "BranchModuli",
+    "branch_moduli",
     "PlaneWaves",
     "christoffel_matrix",
     "phase_velocities",

@@ -4,21 +4,32 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy import optimize
 
 from inverse.inference.minimise import Minimum, minimise
+from inverse.inference.parameters import Parameters
 from inverse.inference.posterior import Posterior
 
 if TYPE_CHECKING:
     from inverse.inference.inversion import Inversion
 
-__all__ = ["Basin", "Fit", "least_squares"]
+__all__ = ["Basin", "Fit", "basin_distance", "least_squares", "make_basin", "ranked"]
 
 Array = NDArray[np.float64]
+
+
+class Density(Protocol):
+    """A log posterior density of standard normal variables, shape (n, unknowns) -> (n,)."""
+
+    @property
+    def parameters(self) -> Parameters: ...
+
+    def __call__(self, z: Array) -> Array: ...
+
 
 _CANDIDATES = 512
 # White noise that lets a coarse search see past the narrow minima, over the rms of the signal.
@@ -137,9 +148,9 @@ def least_squares(inversion: Inversion, *, starts: int = 12, seed: int = 0) -> F
     basins: list[Basin] = []
     for z in found:
         basin = _refine(posterior, physical, z)
-        if all(_distance(basin.z, b) > 1.0 for b in basins):
+        if all(basin_distance(basin.z, b) > 1.0 for b in basins):
             basins.append(basin)
-    return Fit(inversion, inversion.names, _ranked(basins), seed)
+    return Fit(inversion, inversion.names, ranked(basins), seed)
 
 
 class _Projected:
@@ -247,7 +258,7 @@ def _refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds:
         z = _joined(z, physical, minimum.x)
     assert minimum is not None
     covariance = _laplace(posterior, physical, z, minimum)
-    return _basin(posterior, z, covariance, minimum)
+    return make_basin(posterior, z, covariance, minimum)
 
 
 def _fit_noise(posterior: Posterior, physical: NDArray[np.bool_], z: Array) -> Array:
@@ -315,7 +326,8 @@ def _hessian(density: _NoiseDensity, x: Array, step: float = 0.05) -> Array:
     return out
 
 
-def _basin(posterior: Posterior, z: Array, covariance: Array, minimum: Minimum) -> Basin:
+def make_basin(posterior: Density, z: Array, covariance: Array, minimum: Minimum) -> Basin:
+    """Describe a minimum at standard normal variables z, shape (unknowns,), in public units too."""
     step = 1e-5
     up, down = (posterior.parameters.to_values(z[None] + d) for d in (step, -step))
     slope = ((up - down) / (2 * step))[0]
@@ -332,13 +344,14 @@ def _basin(posterior: Posterior, z: Array, covariance: Array, minimum: Minimum) 
     )
 
 
-def _distance(z: Array, basin: Basin) -> float:
+def basin_distance(z: Array, basin: Basin) -> float:
     """Mahalanobis distance per root unknown from a basin's centre."""
     delta = z - basin.z
     return float(np.sqrt(delta @ np.linalg.pinv(basin.covariance_z) @ delta / delta.size))
 
 
-def _ranked(basins: Sequence[Basin]) -> tuple[Basin, ...]:
+def ranked(basins: Sequence[Basin]) -> tuple[Basin, ...]:
+    """Sort minima by the probability that each holds in the normal approximation, and state their shares."""
     log_mass = np.array([b.log_posterior + 0.5 * np.linalg.slogdet(b.covariance_z)[1] for b in basins])
     weight = np.exp(log_mass - log_mass.max())
     weight /= weight.sum()
