@@ -12,7 +12,13 @@ from numpy.typing import NDArray
 
 from inverse.description.quantities import quantity
 from inverse.inference.convergence import bulk_ess, split_rhat
-from inverse.prior_view import PriorView, quantiles, touches, view_of_distribution, view_of_variable
+from inverse.inference.prior_view import (
+    PriorView,
+    quantiles,
+    touches,
+    view_of_distribution,
+    view_of_variable,
+)
 from inverse.rounding import decimal_place, format_limit, format_value
 
 __all__ = ["MOST_RHAT", "LEAST_ESS", "Limit", "Row", "least_squares_rows", "posterior_rows"]

@@ -10,7 +10,7 @@ import pytest
 
 ROOMS = ("elastic", "description", "response", "inference", "study", "report")
 REPORT = {
-    *("report", "report_header", "summary", "sheet", "prior_view", "__main__"),
+    *("report", "report_header", "summary", "sheet", "__main__"),
     *("plot", "plot_fit", "plot_corner", "plot_section", "plot_style", "plot_elastic"),
     *("rounding", "unit_text", "propagation", "finite_differences"),
 }

@@ -9,7 +9,7 @@ import xarray as xr
 from fake_results import DRAWS, INFORMATION, PRIORS, Fit, Minimum, draws, tree
 from scipy import stats
 
-from inverse.prior_view import touches, view_of_distribution
+from inverse.inference.prior_view import touches, view_of_distribution
 from inverse.report import budget_table, constants_table, table
 
 

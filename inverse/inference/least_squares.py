@@ -142,7 +142,7 @@ def least_squares(inversion: Inversion, *, starts: int = 12, seed: int = 0) -> F
     coarse = _coarse_noise(inversion, centre)
     found: list[Array] = []
     for start in _starting_points(inversion, physical, coarse, starts, seed):
-        rough = minimise(_Projected(posterior, physical, coarse), start[physical], max_evaluations=60)
+        rough = minimise(Projected(posterior, physical, coarse), start[physical], max_evaluations=60)
         _add_distinct(found, _joined(coarse, physical, rough.x))
     found = sorted(found, key=lambda z: -float(posterior(z[None])[0]))[: max(4, starts // 2)]
     basins: list[Basin] = []
@@ -153,7 +153,7 @@ def least_squares(inversion: Inversion, *, starts: int = 12, seed: int = 0) -> F
     return Fit(inversion, inversion.names, ranked(basins), seed)
 
 
-class _Projected:
+class Projected:
     """Whitened residuals with the linear coefficients eliminated, as a function of the physical unknowns."""
 
     def __init__(self, posterior: Posterior, physical: NDArray[np.bool_], z: Array) -> None:
@@ -254,7 +254,7 @@ def _refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds:
     minimum: Minimum | None = None
     for _ in range(rounds):
         z = _fit_noise(posterior, physical, z)
-        minimum = minimise(_Projected(posterior, physical, z), z[physical], max_evaluations=100)
+        minimum = minimise(Projected(posterior, physical, z), z[physical], max_evaluations=100)
         z = _joined(z, physical, minimum.x)
     assert minimum is not None
     covariance = _laplace(posterior, physical, z, minimum)
