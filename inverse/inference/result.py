@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+from collections.abc import Callable
 from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -13,6 +14,7 @@ from numpy.typing import NDArray
 
 from inverse.inference.derived import derived
 from inverse.inference.ensembles import EnsembleRun
+from inverse.inference.parameters import Parameters
 from inverse.description.quantities import quantity
 from inverse.description.records import decode, encode
 from inverse.description.unknowns import describe_prior
@@ -22,7 +24,16 @@ if TYPE_CHECKING:
 
     from inverse.inference.inversion import Inversion
 
-__all__ = ["load", "problem_record", "rebuild", "result_tree", "save"]
+__all__ = [
+    "load",
+    "prior_draws",
+    "problem_record",
+    "rebuild",
+    "result_tree",
+    "sampled_tree",
+    "save",
+    "variable_attrs",
+]
 
 Array = NDArray[np.float64]
 
@@ -30,6 +41,9 @@ _PREDICTIVE = 50
 """Posterior predictive draws per ensemble."""
 
 _PRIOR = 2000
+_PRIOR_ROUNDS = 50
+
+_LP = "log posterior in the standard normal variables of the priors"
 
 
 def result_tree(inversion: Inversion, run: EnsembleRun, seed: int, notes: dict[str, Any]) -> xr.DataTree:
@@ -44,30 +58,84 @@ def result_tree(inversion: Inversion, run: EnsembleRun, seed: int, notes: dict[s
     notes : dict
         More entries for the JSON attribute ``inverse``.
     """
+    def groups(values: Array, pick: NDArray[np.intp]) -> dict[str, Any]:
+        found = _data_groups(inversion)
+        if len(inversion.parts) == 1:
+            predicted = _predictive(inversion, values[:, pick], seed)
+            found["posterior_predictive"], found["coefficients"] = predicted
+        return found
+
+    return sampled_tree(
+        inversion.posterior.parameters,
+        run,
+        seed,
+        lambda values: _variables(inversion, values, ("chain", "draw")),
+        groups,
+        {**_information(inversion), **notes},
+    )
+
+
+def sampled_tree(
+    parameters: Parameters,
+    run: EnsembleRun,
+    seed: int,
+    variables: Callable[[Array], dict[str, Any]],
+    groups: Callable[[Array, NDArray[np.intp]], dict[str, Any]],
+    information: dict[str, Any],
+    possible: Callable[[Array], NDArray[np.bool_]] | None = None,
+) -> xr.DataTree:
+    """Lay out any finished run of the standard normal variables of priors as a DataTree.
+
+    Parameters
+    ----------
+    parameters : Parameters
+        Names and priors of the unknowns that were sampled.
+    run : EnsembleRun
+    seed : int
+    variables : callable
+        Values of shape (chain, draw, unknowns) -> name -> (dims, array, attrs), derived quantities included.
+    groups : callable
+        The same values, and the draws picked for predictions -> the other groups, such as observed_data.
+    information : dict
+        JSON attribute ``inverse``, to which seed, versions and convergence are added.
+    possible : callable, optional
+        Values of shape (n, unknowns) -> which of them the model admits; others are left out of the prior.
+    """
     import xarray as xr
 
     draws = run.walker_major()
-    z = np.stack([draws.values[name] for name in inversion.names], axis=-1)
+    z = np.stack([draws.values[name] for name in parameters.names], axis=-1)
     chains, count, size = z.shape
-    values = inversion.posterior.parameters.to_values(z.reshape(-1, size)).reshape(z.shape)
+    values = parameters.to_values(z.reshape(-1, size)).reshape(z.shape)
     coords = {"walker": ("draw", draws.walker), "step": ("draw", draws.step)}
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(1)[0])
     pick = rng.choice(count, min(_PREDICTIVE, count), replace=False)
-    prior = inversion.posterior.parameters.to_values(rng.standard_normal((_PRIOR, size)))[None]
-    posterior = _variables(inversion, values, ("chain", "draw"))
-    groups = {
-        "posterior": xr.Dataset(posterior, coords={"chain": np.arange(chains), "draw": np.arange(count), **coords}),
-        "sample_stats": xr.Dataset({"lp": (("chain", "draw"), draws.log_prob, {"long_name": "log posterior in the "
-                                    "standard normal variables of the priors"})}),
-        "prior": xr.Dataset(_variables(inversion, prior, ("chain", "draw"))),
-        **_data_groups(inversion),
-    }  # fmt: skip
-    if len(inversion.parts) == 1:
-        predicted, coefficients = _predictive(inversion, values[:, pick], seed)
-        groups["posterior_predictive"], groups["coefficients"] = predicted, coefficients
-    tree = xr.DataTree.from_dict(groups)
-    tree.attrs["inverse"] = json.dumps({**_information(inversion, run, seed), **notes})
+    prior = prior_draws(parameters, rng, possible)[None]
+    tree = xr.DataTree.from_dict(
+        {
+            "posterior": xr.Dataset(
+                variables(values), coords={"chain": np.arange(chains), "draw": np.arange(count), **coords}
+            ),
+            "sample_stats": xr.Dataset({"lp": (("chain", "draw"), draws.log_prob, {"long_name": _LP})}),
+            "prior": xr.Dataset(variables(prior)),
+            **groups(values, pick),
+        }
+    )
+    tree.attrs["inverse"] = json.dumps({**_run_information(run, seed), **information})
     return tree
+
+
+def prior_draws(
+    parameters: Parameters, rng: np.random.Generator, possible: Callable[[Array], NDArray[np.bool_]] | None
+) -> Array:
+    """Draw values of shape (up to 2000, unknowns) from the priors, only what is possible."""
+    kept: list[Array] = []
+    for _ in range(_PRIOR_ROUNDS):
+        values = parameters.to_values(rng.standard_normal((_PRIOR, len(parameters.names))))
+        kept.append(values if possible is None else values[possible(values)])
+        if sum(map(len, kept)) >= _PRIOR:
+            break
+    return np.concatenate(kept)[:_PRIOR]
 
 
 def save(result: xr.DataTree, path: str | os.PathLike[str]) -> Path:
@@ -164,7 +232,11 @@ def _variables(inversion: Inversion, values: Array, dims: tuple[str, ...]) -> di
     """Name the unknowns and what follows from them; the last axis of `values` is the unknowns."""
     named = {name: values[..., i] for i, name in enumerate(inversion.names)}
     out = {
-        name: (dims, array, _attrs(name, inversion.fields[name], inversion.units[name], inversion.priors[name]))
+        name: (
+            dims,
+            array,
+            variable_attrs(inversion.fields[name], inversion.units[name], inversion.priors[name]),
+        )
         for name, array in named.items()
     }
     for member in inversion.posterior.members:
@@ -172,11 +244,12 @@ def _variables(inversion: Inversion, values: Array, dims: tuple[str, ...]) -> di
         prefix = f"{member.label}:" if member.label else ""
         for name, array in derived(member.model.bound, local).items():
             q = quantity(name)
-            out[prefix + name] = (dims, array, _attrs(prefix + name, q.name, q.unit, None))
+            out[prefix + name] = (dims, array, variable_attrs(q.name, q.unit, None))
     return out
 
 
-def _attrs(name: str, field: str, unit: str, prior: Any) -> dict[str, Any]:
+def variable_attrs(field: str, unit: str, prior: Any) -> dict[str, Any]:
+    """Return the attrs of a variable of a result; without a prior it is a derived quantity."""
     q = quantity(field)
     return {
         "units": unit,
@@ -239,7 +312,7 @@ def _coefficient_names(model: Any) -> tuple[str, ...]:
     return tuple(model.coefficient_names)
 
 
-def _information(inversion: Inversion, run: EnsembleRun, seed: int) -> dict[str, Any]:
+def _information(inversion: Inversion) -> dict[str, Any]:
     models = [m.model for m in inversion.posterior.members]
     constants = {f"{c['place']}.{c['field']}": c for m in models for c in m.bound.constants}
     return {
@@ -254,6 +327,11 @@ def _information(inversion: Inversion, run: EnsembleRun, seed: int) -> dict[str,
         },
         "constants": list(constants.values()),
         "record": problem_record(inversion),
+    }
+
+
+def _run_information(run: EnsembleRun, seed: int) -> dict[str, Any]:
+    return {
         "seed": seed,
         "versions": _versions(),
         "ensembles": int(run.chain.shape[0]),
