@@ -11,7 +11,7 @@ import numpy as np
 from records import one
 
 from inverse.response.heat import HeatField, heat_field
-from inverse.response.inverse_laplace import TimeGrid, powers, time_grid, to_delays
+from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.light import Absorption, LightField, absorption, light_field
 from inverse.response.media import Ambient, Medium, Sample
 from inverse.response.sound import SoundField, sound_field
@@ -87,11 +87,23 @@ def stacked(*media: Medium, compliance=None, resistance=None, ambient: Ambient =
 
 
 @dataclass(frozen=True)
+class AtOnce:
+    """A few values of s in place of a time grid, and a pulse without width at time zero."""
+
+    s: np.ndarray
+    pulse: complex = 1.0
+    origin: float = 0.0
+
+
+AT_ONCE = AtOnce(np.array([[0.02 + 0j, 0.05 + 0.3j, 0.4 + 2j]]))
+
+
+@dataclass(frozen=True)
 class Solved:
     """What the pump sets in motion, medium by medium."""
 
     sample: Sample
-    grid: TimeGrid
+    grid: TimeGrid | AtOnce
     pump: LightField
     probe: LightField
     profiles: list[Absorption]
@@ -100,16 +112,20 @@ class Solved:
     sound: list[SoundField]
 
 
-def solve(sample: Sample, grid: TimeGrid, pump: float = 400.0, probe: float = 800.0) -> Solved:
+def solve(sample: Sample, grid: TimeGrid | AtOnce, pump: float = 400.0, probe: float = 800.0) -> Solved:
     """Light in, heat and sound at unit incident fluence, time zero at 0 ps."""
+
+    def delayed(t):
+        return np.exp(-grid.s * t)
+
     media, ambient = sample.media, sample.ambient
     depth = [m.thickness for m in media[:-1]]
     pumped = light_field([m.n_pump for m in media], depth, pump, ambient.n_pump)
     probed = light_field([m.n_probe for m in media], depth, probe, ambient.n_probe)
     profiles = [absorption(pumped, j) for j in range(len(media))]
-    source = grid.pulse * powers(grid, one(-grid.origin))
+    source = grid.pulse * delayed(-grid.origin)
     heat, surface = heat_field(media, sample.resistance, ambient, profiles, grid.s, source)
-    sound = sound_field(media, sample.compliance, ambient, profiles, heat, grid.s, lambda t: powers(grid, t))
+    sound = sound_field(media, sample.compliance, ambient, profiles, heat, grid.s, delayed)
     return Solved(sample, grid, pumped, probed, profiles, heat, surface, sound)
 
 

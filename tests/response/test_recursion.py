@@ -24,7 +24,8 @@ def spring(z1, z2, s, stiffness):
 @pytest.mark.parametrize(
     ("stiffness", "expected"),
     [
-        # |r| at 50, 100, 200 GHz, computed outside the library from the closed form for Al/Si[100]; K in GPa/nm
+        # |r| at 50, 100, 200 GHz, computed outside the library from the closed form for Al/Si[100]
+        # (K in GPa/nm; 1 GPa/nm = 1e18 N/m3)
         (0.1, (0.9994, 0.9999, 1.0000)),
         (1.0, (0.9454, 0.9855, 0.9963)),
         (10.0, (0.2844, 0.5038, 0.7578)),
@@ -148,11 +149,8 @@ def test_splitting_a_medium_leaves_what_is_seen_from_above():
     y, decay, compliance, _, _ = random_problem(7, 3)
     whole = ascend(y, decay, compliance)
     root = [np.sqrt(decay[1])] * 2
-    split = ascend(
-        [y[0], y[1], y[1], y[2], y[3]],
-        [decay[0], *root, decay[2]],
-        [compliance[0], one(0.0), *compliance[1:]],
-    )
+    joints = [compliance[0], one(0.0), *compliance[1:]]
+    split = ascend([y[0], y[1], y[1], y[2], y[3]], [decay[0], *root, decay[2]], joints)
     np.testing.assert_allclose(split.reflection[0], whole.reflection[0], rtol=1e-12)
 
 

@@ -1,7 +1,7 @@
 """The forward model against an independent time-domain simulator.
 
-The vectors carry their own grid error: about 4e-4 of full scale at the pulse (1e-3 for the two-temperature stacks),
-2e-4 after 2 ps, so 5e-4 and 2e-3 are asked.
+The vectors carry their own grid error: about 4e-4 of full scale at the pulse (1e-3 for the two-temperature
+stacks), 2e-4 after 2 ps, so 5e-4 and 2e-3 are asked.
 """
 
 import numpy as np
