@@ -24,6 +24,7 @@ from inverse.description.unknowns import Unknown, is_distribution
 if TYPE_CHECKING:
     import xarray as xr
 
+    from inverse.inference.ensembles import EnsembleRun
     from inverse.inference.least_squares import Fit
 
 __all__ = ["Inversion"]
@@ -207,6 +208,18 @@ class Inversion:
         from inverse.inference.sampling import sample_posterior
 
         return sample_posterior(self, seed=seed, **options)
+
+    def fingerprint(self) -> str:
+        """Return a hash of data, model and priors, for checkpoints."""
+        from inverse.inference.sampling import problem_hash
+
+        return problem_hash(self)
+
+    def result(self, run: EnsembleRun, seed: int, notes: dict[str, Any]) -> xr.DataTree:
+        """Put a finished run into a DataTree; see `inverse.inference.result.result_tree`."""
+        from inverse.inference.result import result_tree
+
+        return result_tree(self, run, seed, notes)
 
     def _checked(self, values: Any) -> Array:
         array = np.atleast_2d(np.asarray(values, dtype=float))

@@ -7,15 +7,14 @@ import json
 import os
 from collections.abc import Callable, Sequence
 from concurrent.futures import Executor
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.inference.ensembles import run_ensembles
-from inverse.inference.least_squares import Basin, Fit
-from inverse.inference.posterior import Posterior
-from inverse.inference.result import problem_record, result_tree
+from inverse.inference.ensembles import EnsembleRun, run_ensembles
+from inverse.inference.least_squares import Basin, Density, Fit
+from inverse.inference.result import problem_record
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -30,8 +29,24 @@ _LEAST_WEIGHT = 1e-3
 """A minimum with less probability than this in the normal approximation gets no walkers."""
 
 
+class Problem(Protocol):
+    """What can be sampled: named unknowns, a density, minima to start from, and a result to fill."""
+
+    @property
+    def names(self) -> tuple[str, ...]: ...
+
+    @property
+    def posterior(self) -> Density: ...
+
+    def least_squares(self, *, seed: int) -> Fit: ...
+
+    def fingerprint(self) -> str: ...
+
+    def result(self, run: EnsembleRun, seed: int, notes: dict[str, Any]) -> xr.DataTree: ...
+
+
 def sample_posterior(
-    inversion: Inversion,
+    inversion: Problem,
     *,
     seed: int,
     fit: Fit | None = None,
@@ -49,7 +64,7 @@ def sample_posterior(
 
     Parameters
     ----------
-    inversion : Inversion
+    inversion : Inversion or ConstantsInversion
     seed : int
         Equal seeds give equal draws, whatever the executor.
     fit : Fit, optional
@@ -84,11 +99,9 @@ def sample_posterior(
     ValueError
         For arguments that will not do or a checkpoint of another problem.
     """
-    from inverse.inference.least_squares import least_squares
-
     if ensembles < 2:
         raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
-    fit = least_squares(inversion, seed=seed) if fit is None else fit
+    fit = inversion.least_squares(seed=seed) if fit is None else fit
     count = walkers or max(24, 3 * len(inversion.names) + len(inversion.names) % 2)
     starts = starting_walkers(inversion.posterior, fit.minima, ensembles, count + count % 2, seed)
     run = run_ensembles(
@@ -101,14 +114,14 @@ def sample_posterior(
         max_steps=max_steps,
         moves=moves,
         checkpoint=checkpoint,
-        problem_hash=problem_hash(inversion),
+        problem_hash=inversion.fingerprint(),
         progress=progress,
         executor=executor,
     )
-    return result_tree(inversion, run, seed, {"minima": _minima(fit)})
+    return inversion.result(run, seed, {"minima": _minima(fit)})
 
 
-def starting_walkers(posterior: Posterior, minima: Sequence[Basin], ensembles: int, walkers: int, seed: int) -> Array:
+def starting_walkers(posterior: Density, minima: Sequence[Basin], ensembles: int, walkers: int, seed: int) -> Array:
     """Draw starting points of shape (ensembles, walkers, unknowns) around the minima that matter.
 
     Each walker belongs to a minimum in proportion to the root of its weight, so that a minor one is not
