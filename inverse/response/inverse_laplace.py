@@ -1,7 +1,9 @@
 """From the Laplace domain back to the measured delays.
 
-``f(t) = exp(gamma t) irfft[F(gamma + i w_k)] / dt`` on a uniform grid, then cubic B-splines to the delays.
-The spline's own smoothing is undone in the frequency domain, where that is one real factor.
+``f(t) = exp(gamma t) irfft[F(gamma + i w_k)] / dt`` on a uniform grid, then B-splines to the delays.
+What the splines and their aliases do to each frequency is undone in the frequency domain by one real factor
+(the kernel correction of nonuniform fast Fourier transforms), so that splines of degree 7 need no finer grid
+than the highest frequency asks for.
 """
 
 from __future__ import annotations
@@ -10,7 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import fft
+from scipy import fft, sparse
 
 __all__ = ["TimeGrid", "powers", "time_grid", "to_delays"]
 
@@ -20,9 +22,13 @@ Complex = NDArray[np.complex128]
 _RADIX = 32
 # Each step of the window loses this factor: what wraps around is 1e-6 of what leaves.
 _DAMPING = 1e6
-# The Gaussian exp(-(w tau)^2 / 2) is below 1e-7 beyond.
+# The Gaussian exp(-(w tau)^2 / 2) is 1.5e-8 here; the end of the window magnifies what is cut by up to _DAMPING.
 _CUTOFF = 6.0
-_SAMPLES_PER_RMS = 4
+_DEGREE = 7
+# Points of the uniform grid per frequency; 2 would be the least.
+_OVERSAMPLING = 2.1
+# Functions of delay whose transforms stay in a core's cache together.
+_ROWS = 32
 
 
 @dataclass(frozen=True)
@@ -41,9 +47,7 @@ class TimeGrid:
         Delay at which the window begins, ps.
     size : int
         Points of the uniform grid.
-    first : int array, shape (delays,)
-        First grid point under each delay.
-    weight : array, shape (4, delays)
+    weights : sparse array, shape (delays, size)
         B-spline weights times ``exp(gamma t)``.
     """
 
@@ -52,8 +56,7 @@ class TimeGrid:
     spline: Array
     origin: float
     size: int
-    first: NDArray[np.intp]
-    weight: Array
+    weights: sparse.csr_array
 
     @property
     def block(self) -> int:
@@ -61,7 +64,7 @@ class TimeGrid:
         return max(1, 8192 // self.s.shape[1])
 
 
-def time_grid(delay: Array, pulse_rms: float, earliest: float, stretch: float = 1.5) -> TimeGrid:
+def time_grid(delay: Array, pulse_rms: float, earliest: float, stretch: float = 1.3) -> TimeGrid:
     """Lay out a grid for given delays.
 
     Parameters
@@ -84,23 +87,39 @@ def time_grid(delay: Array, pulse_rms: float, earliest: float, stretch: float = 
         raise ValueError("A delay is not finite; remove such points before modelling (read_trace does on request).")
     origin = min(float(delay.min()), earliest) - 8 * pulse_rms - 1.0
     window = max(float(delay.max()) - origin, 20 * pulse_rms) * stretch
-    size = int(fft.next_fast_len(int(np.ceil(window * _SAMPLES_PER_RMS / pulse_rms)), real=True))
+    count = _RADIX * int(np.ceil(_CUTOFF / pulse_rms / (2 * np.pi / window) / _RADIX))
+    size = int(fft.next_fast_len(int(np.ceil(_OVERSAMPLING * count)), real=True))
     step = window / size
-    count = min(_RADIX * int(np.ceil(_CUTOFF / pulse_rms / (2 * np.pi / window) / _RADIX)), size // 2)
     gamma = np.log(_DAMPING) / window
     w = 2 * np.pi / window * np.arange(count)
     s = (gamma + 1j * w)[None, :]
-    place = (delay - origin) / step
-    first = np.floor(place).astype(np.intp) - 1
-    weight = _cubic(place - np.floor(place)) * np.exp(gamma * (delay - origin))
-    spline = 6 / (4 + 2 * np.cos(w * step)) / step
-    return TimeGrid(s, np.exp((s * pulse_rms) ** 2 / 2), spline[None, None, :], origin, size, first, weight)
+    # The transform of a B-spline of degree p is sinc^(p + 1).
+    spline = np.sinc(w * step / (2 * np.pi)) ** -(_DEGREE + 1) / step
+    weights = _weights((delay - origin) / step, np.exp(gamma * (delay - origin)), size)
+    return TimeGrid(s, np.exp((s * pulse_rms) ** 2 / 2), spline[None, None, :], origin, size, weights)
 
 
-def _cubic(x: Array) -> Array:
-    """Weights of the four uniform cubic B-splines that reach a point at fraction x of its cell."""
-    y = 1 - x
-    return np.stack([y**3, 3 * x**3 - 6 * x**2 + 4, 3 * y**3 - 6 * y**2 + 4, x**3]) / 6
+def _weights(place: Array, growth: Array, size: int) -> sparse.csr_array:
+    """Rows of B-spline weights at places on a periodic grid of unit step."""
+    cell = np.floor(place).astype(np.intp)
+    value = _b_splines(place - cell) * growth
+    column = (cell[:, None] + np.arange(_DEGREE + 1) - _DEGREE // 2) % size
+    row = np.repeat(np.arange(place.size), _DEGREE + 1)
+    return sparse.csr_array((value.T.ravel(), (row, column.ravel())), shape=(place.size, size))
+
+
+def _b_splines(x: Array) -> Array:
+    """Values of the uniform B-splines that reach a point at fraction x of its cell, shape (degree + 1, points).
+
+    The recurrence of Cox and de Boor on integer knots.
+    """
+    values = [np.ones_like(x)]
+    for k in range(1, _DEGREE + 1):
+        parts = [v / k for v in values]
+        rising = [np.zeros_like(x), *((x + k - 1 - j) * part for j, part in enumerate(parts))]
+        falling = [*((j + 1 - x) * part for j, part in enumerate(parts)), np.zeros_like(x)]
+        values = [up + down for up, down in zip(rising, falling, strict=True)]
+    return np.stack(values)
 
 
 def powers(grid: TimeGrid, t: Array) -> Complex:
@@ -118,19 +137,29 @@ def powers(grid: TimeGrid, t: Array) -> Complex:
     return (coarse[:, :, None] * fine[:, None, :]).reshape(t.shape[0], -1)[:, :count]
 
 
-def to_delays(grid: TimeGrid, spectra: Complex) -> Array:
+def to_delays(grid: TimeGrid, spectra: Complex, arrival: Complex | None = None) -> Array:
     """Transform spectra to the delays of the grid.
 
     Parameters
     ----------
     spectra : complex array, shape (sets, functions, frequencies)
+    arrival : complex array, shape (sets, frequencies), optional
+        A factor of all functions of a set.
 
     Returns
     -------
     array, shape (sets, functions, delays)
     """
-    signal = fft.irfft(spectra * grid.spline, n=grid.size, axis=-1, overwrite_x=True)
-    out = signal[..., grid.first] * grid.weight[0]
-    for tap in (1, 2, 3):
-        out += signal[..., grid.first + tap] * grid.weight[tap]
+    sets, functions, count = spectra.shape
+    factor = grid.spline if arrival is None else grid.spline * arrival[:, None]
+    factor = np.broadcast_to(factor, (sets, 1, count))
+    out = np.empty((sets, functions, grid.weights.shape[0]))
+    together = max(1, _ROWS // functions)
+    padded = np.zeros((min(together, sets), functions, grid.size // 2 + 1), dtype=complex)
+    for start in range(0, sets, together):
+        part = slice(start, start + together)
+        room = padded[: len(spectra[part])]
+        np.multiply(spectra[part], factor[part], out=room[..., :count])
+        signal = fft.irfft(room, n=grid.size, axis=-1).reshape(-1, grid.size)
+        out[part] = (grid.weights @ signal.T).T.reshape(out[part].shape)
     return out
