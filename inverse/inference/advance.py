@@ -137,14 +137,17 @@ def checked_moves(moves: Any) -> Moves:
         3.1.6.
     """
     from emcee.moves import DESnookerMove
-    from emcee.moves.move import Move
 
     if moves is None:
         return default_moves()
     entries = list(moves) if isinstance(moves, Sequence) else [moves]
     pairs = [entry if isinstance(entry, tuple) and len(entry) == 2 else (entry, 1.0) for entry in entries]
     for move, weight in pairs:
-        if not isinstance(move, Move) or not isinstance(weight, int | float) or not weight > 0:
+        if (
+            not callable(getattr(move, "propose", None))
+            or not isinstance(weight, int | float)
+            or not weight > 0
+        ):
             raise ValueError(
                 f"moves must be emcee moves or (move, positive weight) pairs, not {(move, weight)!r}; leave "
                 "moves out for differential evolution with stretch moves"

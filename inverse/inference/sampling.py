@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.inference.ensembles import EnsembleRun, run_ensembles
+from inverse.inference.independence import IndependenceMove, StudentMixture, adapt
 from inverse.inference.least_squares import Basin, Density, Fit
 from inverse.inference.result import problem_record
 
@@ -21,9 +22,11 @@ if TYPE_CHECKING:
 
     from inverse.inference.inversion import Inversion
 
-__all__ = ["problem_hash", "sample_posterior", "starting_walkers"]
+__all__ = ["prepare", "problem_hash", "sample_posterior"]
 
 Array = NDArray[np.float64]
+
+_CHUNK = 50
 
 _LEAST_WEIGHT = 1e-3
 """A minimum with less probability than this in the normal approximation gets no walkers."""
@@ -84,7 +87,8 @@ def sample_posterior(
     executor : concurrent.futures.Executor, optional
         Runs the ensembles side by side.
     moves : emcee moves, optional
-        Differential evolution and stretch moves by default.
+        By default seven steps in ten offer fresh draws from an approximation of the posterior that was fixed before
+        the run, the others are differential evolution and stretch moves.
     progress : bool or callable
         Bar, nothing, or a function that is given the state.
 
@@ -103,7 +107,7 @@ def sample_posterior(
         raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
     fit = inversion.least_squares(seed=seed) if fit is None else fit
     count = walkers or max(24, 3 * len(inversion.names) + len(inversion.names) % 2)
-    starts = starting_walkers(inversion.posterior, fit.minima, ensembles, count + count % 2, seed)
+    starts, mixture = prepare(inversion.posterior, fit.minima, ensembles, count + count % 2, seed)
     run = run_ensembles(
         inversion.posterior,
         starts,
@@ -112,7 +116,8 @@ def sample_posterior(
         ess=ess,
         rhat=rhat,
         max_steps=max_steps,
-        moves=moves,
+        chunk=_CHUNK,
+        moves=_moves(mixture) if moves is None else moves,
         checkpoint=checkpoint,
         problem_hash=inversion.fingerprint(),
         progress=progress,
@@ -121,27 +126,40 @@ def sample_posterior(
     return inversion.result(run, seed, {"minima": _minima(fit)})
 
 
-def starting_walkers(posterior: Density, minima: Sequence[Basin], ensembles: int, walkers: int, seed: int) -> Array:
-    """Draw starting points of shape (ensembles, walkers, unknowns) around the minima that matter.
+def prepare(
+    posterior: Density, minima: Sequence[Basin], ensembles: int, walkers: int, seed: int
+) -> tuple[Array, StudentMixture]:
+    """Approximate the posterior from its minima and draw starting points from the approximation.
 
-    Each walker belongs to a minimum in proportion to the root of its weight, so that a minor one is not
-    missed; impossible points are drawn again.
+    Returns
+    -------
+    starts : array, shape (ensembles, walkers, unknowns)
+        Importance-resampled without replacement: no two ensembles share a point.
+    mixture : StudentMixture
     """
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(2)[1])
     kept = [b for b in minima if b.weight >= _LEAST_WEIGHT]
-    share = np.sqrt([b.weight for b in kept])
-    share /= share.sum()
-    roots = [np.linalg.cholesky(_positive(b.covariance_z)) for b in kept]
-    out = np.empty((ensembles * walkers, kept[0].z.size))
-    missing = np.ones(len(out), dtype=bool)
-    for spread in (1.0, 1.0, 1.0, 0.3, 0.1, 0.03, 0.01):
-        which = rng.choice(len(kept), missing.sum(), p=share)
-        kick = spread * rng.standard_normal((missing.sum(), out.shape[1]))
-        out[missing] = [kept[w].z + roots[w] @ k for w, k in zip(which, kick, strict=True)]
-        missing[missing] = ~np.isfinite(posterior(out[missing]))
-        if not missing.any():
-            break
-    return out.reshape(ensembles, walkers, -1)
+    first = StudentMixture(
+        np.full(len(kept), 1 / len(kept)),
+        np.array([b.z for b in kept]),
+        np.array([np.linalg.cholesky(_positive(b.covariance_z)) for b in kept]),
+    )
+    mixture, points, log_weights = adapt(posterior, first, rng)
+    count = ensembles * walkers
+    if len(points) < count:
+        raise ValueError(
+            f"Only {len(points)} of the points drawn around the minima are possible; {count} walkers are asked for. "
+            "Check the priors against the allowed ranges."
+        )
+    # Gumbel's trick: sampling without replacement in proportion to the weights.
+    order = np.argsort(-(log_weights + rng.gumbel(size=len(points))))[:count]
+    return points[rng.permutation(order)].reshape(ensembles, walkers, -1), mixture
+
+
+def _moves(mixture: StudentMixture) -> list[tuple[Any, float]]:
+    from emcee.moves import DEMove, StretchMove
+
+    return [(IndependenceMove(mixture), 0.7), (DEMove(), 0.25), (StretchMove(), 0.05)]
 
 
 def problem_hash(inversion: Inversion) -> str:
