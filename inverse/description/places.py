@@ -223,11 +223,11 @@ def _index_slots(place: str, material: Material, light: str, wavelength: float) 
         raise ValueError(f"{place} has no refractive index n; give n={{{wavelength:g}: complex}} or a table of it.")
     real, imag = _index_parts(material, wavelength)
     source = material.sources.get("n", "given by the user")
-    spread = material.spread
+    spread = material.index_spread_at(wavelength)
     suffix = f"_{wavelength:g}"
     return {
-        f"n_real_{light}": _slot("n_real", real, place, source, float(spread.get("n_real", 0.0)), suffix),
-        f"n_imag_{light}": _slot("n_imag", imag, place, source, float(spread.get("n_imag", 0.0)), suffix),
+        f"n_real_{light}": _slot("n_real", real, place, source, spread.real, suffix),
+        f"n_imag_{light}": _slot("n_imag", imag, place, source, spread.imag, suffix),
     }
 
 
