@@ -40,7 +40,9 @@ __all__ = ["__version__", *_HOMES]
 
 def __getattr__(name: str) -> Any:
     if name not in _HOMES:
-        raise AttributeError(f"module 'inverse' has no attribute {name!r}; it has {', '.join(sorted(_HOMES))}.")
+        raise AttributeError(
+            f"module 'inverse' has no attribute {name!r}; it has {', '.join(sorted(_HOMES))}."
+        )
     home = import_module(f"inverse.{_HOMES[name]}")
     found = home if name in _MODULES else getattr(home, name)
     globals()[name] = found

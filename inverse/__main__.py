@@ -66,10 +66,14 @@ def _parser() -> argparse.ArgumentParser:
     )
     parser.add_argument("trace", nargs="?", type=Path, help="CSV file: delay in ps, reflectance change")
     parser.add_argument("stack", nargs="?", type=Path, help="TOML file: the stack and its priors")
-    parser.add_argument("--out", default="inverse-result", help="folder for the results (default: %(default)s)")
+    parser.add_argument(
+        "--out", default="inverse-result", help="folder for the results (default: %(default)s)"
+    )
     parser.add_argument("--seed", type=int, default=1, help="seed of every draw (default: %(default)s)")
     parser.add_argument("--noise", choices=("correlated", "white"), default="correlated", help="noise model")
-    parser.add_argument("--ess", type=float, default=1000, help="effective sample size wanted (default: %(default)s)")
+    parser.add_argument(
+        "--ess", type=float, default=1000, help="effective sample size wanted (default: %(default)s)"
+    )
     return parser
 
 

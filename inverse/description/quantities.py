@@ -75,10 +75,21 @@ QUANTITIES: dict[str, Quantity] = {
     q.name: q
     for q in (
         Quantity("thickness", "nm", "d", 0.1, 1e6, "layer thickness", suspect="m or um"),
-        Quantity("velocity", "nm/ps", "v", 0.1, 50.0, "longitudinal sound velocity along the depth", suspect="m/s"),
+        Quantity(
+            "velocity", "nm/ps", "v", 0.1, 50.0, "longitudinal sound velocity along the depth", suspect="m/s"
+        ),
         Quantity("density", "g/cm3", r"\rho", 1e-3, 30.0, "mass density", suspect="kg/m3"),
         Quantity("density_ratio", "1", r"\rho/\rho_s", 1e-3, 1e3, "mass density over the substrate's"),
-        Quantity("heat_capacity", "J/cm3/K", "C", 1e-4, 20.0, "volumetric heat capacity of the lattice", 1e-3, "J/m3/K"),
+        Quantity(
+            "heat_capacity",
+            "J/cm3/K",
+            "C",
+            1e-4,
+            20.0,
+            "volumetric heat capacity of the lattice",
+            1e-3,
+            "J/m3/K",
+        ),
         Quantity("conductivity", "W/m/K", r"\kappa", 1e-5, 1e4, "thermal conductivity", 1e-3, "W/cm/K"),
         Quantity(
             "thermal_stress_coefficient",
@@ -92,16 +103,41 @@ QUANTITIES: dict[str, Quantity] = {
         Quantity("expansion", "1/K", r"\alpha", -1e-3, 1e-3, "linear thermal expansion", suspect="1e-6/K"),
         Quantity("bulk_modulus", "GPa", "B", 1e-3, 2e3, "bulk modulus", suspect="Pa"),
         Quantity(
-            "electron_heat_capacity", "J/cm3/K", "C_e", 1e-5, 1.0, "volumetric heat capacity of the electrons",
-            1e-3, "J/m3/K",
+            "electron_heat_capacity",
+            "J/cm3/K",
+            "C_e",
+            1e-5,
+            1.0,
+            "volumetric heat capacity of the electrons",
+            1e-3,
+            "J/m3/K",
         ),
         Quantity(
-            "electron_phonon_coupling", "W/m3/K", "g", 1e13, _INF, "electron-phonon coupling", 1e-21, "W/cm3/K"
+            "electron_phonon_coupling",
+            "W/m3/K",
+            "g",
+            1e13,
+            _INF,
+            "electron-phonon coupling",
+            1e-21,
+            "W/cm3/K",
         ),
-        Quantity("attenuation_time", "ps", r"\tau_a", 0.0, 1e3, "time constant of the acoustic loss", suspect="s"),
+        Quantity(
+            "attenuation_time", "ps", r"\tau_a", 0.0, 1e3, "time constant of the acoustic loss", suspect="s"
+        ),
         Quantity("attenuation_exponent", "1", "y", 0.0, 1.0, "loss modulus grows as frequency to this power"),
-        Quantity("quality_factor", "1", "Q", 1.0, _INF, "acoustic quality factor, constant above quality_frequency"),
-        Quantity("quality_frequency", "THz", "f_0", 1e-5, 10.0, "frequency at which the modulus is stated", 2 * np.pi),
+        Quantity(
+            "quality_factor", "1", "Q", 1.0, _INF, "acoustic quality factor, constant above quality_frequency"
+        ),
+        Quantity(
+            "quality_frequency",
+            "THz",
+            "f_0",
+            1e-5,
+            10.0,
+            "frequency at which the modulus is stated",
+            2 * np.pi,
+        ),
         Quantity("n_real", "1", "n'", 0.0, 20.0, "refractive index"),
         Quantity("n_imag", "1", "n''", 0.0, 30.0, "extinction coefficient"),
         Quantity("dn_dstrain_real", "1", r"\mathrm{Re}\,P", -1e4, 1e4, "real part of dn/d(strain)"),
@@ -109,9 +145,19 @@ QUANTITIES: dict[str, Quantity] = {
         Quantity("dn_dT_real", "1/K", r"\mathrm{Re}\,Q", -1.0, 1.0, "real part of dn/dT"),
         Quantity("dn_dT_imag", "1/K", r"\mathrm{Im}\,Q", -1.0, 1.0, "imaginary part of dn/dT"),
         Quantity("compliance", "nm/GPa", "1/K", 0.0, _INF, "compliance of the bond; 0 is a perfect bond"),
-        Quantity("boundary_conductance", "MW/m2/K", "G", 0.0, _INF, "thermal boundary conductance", 1e-6, "W/m2/K"),
+        Quantity(
+            "boundary_conductance", "MW/m2/K", "G", 0.0, _INF, "thermal boundary conductance", 1e-6, "W/m2/K"
+        ),
         Quantity("roughness", "nm", "h", 0.0, 100.0, "rms roughness of the interface", suspect="m"),
-        Quantity("pulse_rms", "ps", r"\tau", 1e-3, 50.0, "rms width of the pump-probe cross-correlation", suspect="fs"),
+        Quantity(
+            "pulse_rms",
+            "ps",
+            r"\tau",
+            1e-3,
+            50.0,
+            "rms width of the pump-probe cross-correlation",
+            suspect="fs",
+        ),
         Quantity("wavelength", "nm", r"\lambda", 10.0, 2e4, "vacuum wavelength", suspect="m or um"),
         Quantity("fluence", "J/m2", "F", 1e-9, 1e6, "incident pump fluence"),
         Quantity("time_zero", "ps", "t_0", -1e5, 1e5, "delay at which pump and probe coincide", suspect="s"),
@@ -120,9 +166,18 @@ QUANTITIES: dict[str, Quantity] = {
         Quantity("noise.correlation_time", "ps", r"\ell", 0.0, _INF, "correlation time of the discrepancy"),
         Quantity("longitudinal_modulus", "GPa", r"\rho v^2", 0.0, _INF, "density x velocity squared"),
         Quantity("round_trip", "ps", "2d/v", 0.0, _INF, "acoustic round-trip time"),
-        Quantity("impedance_ratio", "1", "Z/Z'", 0.0, _INF, "acoustic impedance over that of the medium below"),
+        Quantity(
+            "impedance_ratio", "1", "Z/Z'", 0.0, _INF, "acoustic impedance over that of the medium below"
+        ),
         Quantity("stiffness", "GPa/nm", "K", 0.0, _INF, "interface stiffness (1 GPa/nm = 1e18 N/m3)"),
-        Quantity("equivalent_thickness", "nm", r"d_\mathrm{eq}", 0.0, _INF, "thickness of an interlayer that acts the same"),
+        Quantity(
+            "equivalent_thickness",
+            "nm",
+            r"d_\mathrm{eq}",
+            0.0,
+            _INF,
+            "thickness of an interlayer that acts the same",
+        ),
         Quantity("reflection", "1", "|R|", 0.0, 1.0, "magnitude of the displacement reflection coefficient"),
         *_elastic_constants(),
         Quantity("shear_modulus", "GPa", "G", 0.0, _INF, "shear modulus of the polycrystal (Hill)"),
@@ -185,5 +240,7 @@ def check(name: str, value: float, where: str = "") -> float:
         ) from None
     if np.isnan(number) or not q.low <= number <= q.high:
         hint = f" It looks like {q.suspect}; convert it to {q.unit}." if q.suspect else ""
-        raise ValueError(f"{label} = {number:g} is outside {q.low:g} to {q.high:g} {q.unit} ({q.meaning}).{hint}")
+        raise ValueError(
+            f"{label} = {number:g} is outside {q.low:g} to {q.high:g} {q.unit} ({q.meaning}).{hint}"
+        )
     return number

@@ -56,7 +56,9 @@ def _encode_fields(value: Any) -> dict[str, Any]:
         return {"parts": encode(value.parts), "ambient": encode(value.ambient)}
     if type(value).__name__ in (*_PLAIN, *_MEDIA):
         return {f.name: encode(getattr(value, f.name)) for f in fields(value)}
-    raise ValueError(f"{value!r} cannot be written to a file; describe it with numbers, priors and materials.")
+    raise ValueError(
+        f"{value!r} cannot be written to a file; describe it with numbers, priors and materials."
+    )
 
 
 def decode(data: Any, shared: dict[str, Unknown] | None = None) -> Any:

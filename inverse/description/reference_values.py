@@ -4,10 +4,6 @@ from __future__ import annotations
 
 import numpy as np
 
-from inverse.elastic.averages import averages
-from inverse.elastic.christoffel import longitudinal_velocity
-from inverse.elastic.symmetry import constant_names
-from inverse.elastic.tensor import StiffnessTensor
 from inverse.description.reference_tables import (
     Entry,
     Number,
@@ -19,6 +15,10 @@ from inverse.description.reference_tables import (
     source_of,
     uncertainty,
 )
+from inverse.elastic.averages import averages
+from inverse.elastic.christoffel import longitudinal_velocity
+from inverse.elastic.symmetry import constant_names
+from inverse.elastic.tensor import StiffnessTensor
 
 __all__ = ["CRYSTAL_SPREAD", "DEFAULT_SPREAD", "reference_values", "stiffness"]
 

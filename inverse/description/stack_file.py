@@ -48,20 +48,26 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
         raise ValueError(f"'{source.name}' is not a TOML file: {error}") from None
     for key in ("setup", "part"):
         if key not in content:
-            raise ValueError(f"'{source.name}' has no [{key}] table; it needs [setup] and one [[part]] per part.")
+            raise ValueError(
+                f"'{source.name}' has no [{key}] table; it needs [setup] and one [[part]] per part."
+            )
     shared: dict[str, Unknown] = {}
     parts = [_part(dict(entry), position, shared) for position, entry in enumerate(content["part"], 1)]
     try:
         setup = PumpProbe(**content["setup"])
     except TypeError as error:
-        raise ValueError(f"[setup] does not fit PumpProbe (pump, probe, pulse_rms, fluence): {error}") from None
+        raise ValueError(
+            f"[setup] does not fit PumpProbe (pump, probe, pulse_rms, fluence): {error}"
+        ) from None
     return Stack(*parts, ambient=content.get("ambient", "air")), setup
 
 
 def _part(entry: dict[str, Any], position: int, shared: dict[str, Unknown]) -> Layer | Interface | Substrate:
     kinds = [kind for kind in ("layer", "interface", "substrate") if kind in entry]
     if len(kinds) != 1:
-        raise ValueError(f"[[part]] {position} must hold exactly one of layer, interface and substrate; it has {kinds}.")
+        raise ValueError(
+            f"[[part]] {position} must hold one of layer, interface and substrate; it has {kinds}."
+        )
     name = entry.pop(kinds[0])
     fields = {key: _value(key, value, shared) for key, value in entry.items()}
     try:
@@ -86,7 +92,9 @@ def _prior(key: str, text: str) -> Any:
     match = _CALL.match(text)
     family = getattr(stats, match.group(1), None) if match else None
     if match is None or family is None:
-        raise ValueError(f'{key} = "{text}" is no prior; write a scipy.stats family, such as "norm(6.42, 0.10)".')
+        raise ValueError(
+            f'{key} = "{text}" is no prior; write a scipy.stats family, such as "norm(6.42, 0.10)".'
+        )
     try:
         call = ast.parse(f"f({match.group(2)})", mode="eval").body
         assert isinstance(call, ast.Call)

@@ -41,7 +41,9 @@ class Unknown:
 
     def __post_init__(self) -> None:
         if not isinstance(self.name, str) or not self.name.strip() or "/" in self.name:
-            raise ValueError(f"Unknown name {self.name!r}: give a non-empty text without '/', such as 'v_film'.")
+            raise ValueError(
+                f"Unknown name {self.name!r}: give a non-empty text without '/', such as 'v_film'."
+            )
         if not is_distribution(self.prior):
             raise ValueError(
                 f"Unknown '{self.name}' got {self.prior!r} as its prior; give a frozen continuous "

@@ -18,7 +18,11 @@ FREQUENCY = 0.05
 
 
 def derived(
-    bound: BoundStack, values: Mapping[str, Array], *, interlayer: tuple[str, float] | None = None, frequency: float = FREQUENCY
+    bound: BoundStack,
+    values: Mapping[str, Array],
+    *,
+    interlayer: tuple[str, float] | None = None,
+    frequency: float = FREQUENCY,
 ) -> dict[str, Array]:
     """Compute the derived quantities of a stack.
 

@@ -8,18 +8,18 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.places import BoundStack, bind
+from inverse.description.pumpprobe import PumpProbe
+from inverse.description.quantities import check, quantity
+from inverse.description.stack import Stack
+from inverse.description.unknowns import Unknown, is_distribution
 from inverse.inference.likelihood import HEAT_WIDTH, SCALE_WIDTH, STRAIN_WIDTH, Channel, TraceModel
 from inverse.inference.noise import Noise, noise_priors
 from inverse.inference.parameters import parameters
 from inverse.inference.posterior import Member, Posterior
-from inverse.description.places import BoundStack, bind
-from inverse.description.pumpprobe import PumpProbe
-from inverse.description.quantities import check, quantity
 from inverse.response.basis import CHANNELS, basis, columns, take
 from inverse.response.inverse_laplace import time_grid
 from inverse.response.media import sample
-from inverse.description.stack import Stack
-from inverse.description.unknowns import Unknown, is_distribution
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -99,7 +99,9 @@ class Inversion:
         parts = [p for i in inversions for p in i.parts]
         labels = [str(i + 1) for i in range(len(parts))] if labels is None else list(labels)
         if len(parts) < 2 or len(set(labels)) != len(parts):
-            raise ValueError(f"joint got {len(parts)} problems and labels {labels}; give two or more, one label each.")
+            raise ValueError(
+                f"joint got {len(parts)} problems and labels {labels}; give two or more, one label each."
+            )
         members, priors, fields = _join(parts, labels)
         joined = cls.__new__(cls)
         joined._assemble(members, priors, fields)
@@ -107,11 +109,16 @@ class Inversion:
         joined.parts = tuple(parts)
         return joined
 
-    def _assemble(self, members: Sequence[Member], priors: Mapping[str, Any], fields: Mapping[str, str]) -> None:
+    def _assemble(
+        self, members: Sequence[Member], priors: Mapping[str, Any], fields: Mapping[str, str]
+    ) -> None:
         limits = [quantity(fields[name]) for name in priors]
         self.fields = dict(fields)
         self.posterior = Posterior(
-            parameters(priors), tuple(members), np.array([q.low for q in limits]), np.array([q.high for q in limits])
+            parameters(priors),
+            tuple(members),
+            np.array([q.low for q in limits]),
+            np.array([q.high for q in limits]),
         )
 
     @property
@@ -225,7 +232,8 @@ class Inversion:
         array = np.atleast_2d(np.asarray(values, dtype=float))
         if array.ndim != 2 or array.shape[1] != len(self.names):
             raise ValueError(
-                f"values has shape {np.shape(values)}; give (n, {len(self.names)}) in the order {', '.join(self.names)}."
+                f"values has shape {np.shape(values)}; give (n, {len(self.names)}) in the order "
+                f"{', '.join(self.names)}."
             )
         return array
 
@@ -251,7 +259,9 @@ def _member(
     names = {inner: inner for inner in slots}
     if zero is not None:
         names["time_zero"] = name
-    centre, early = (fixed["time_zero"],) * 2 if zero is None else (float(zero.median()), float(zero.ppf(1e-9)))
+    centre, early = (
+        (fixed["time_zero"],) * 2 if zero is None else (float(zero.median()), float(zero.ppf(1e-9)))
+    )
     delay = trace["delay"].values.astype(float)
     used = _used(mask, delay, centre, setup.pulse_rms)
     look = first_look(trace)
@@ -262,7 +272,11 @@ def _member(
         built, own = _channel(trace, channel, used, noise, look.noise[channel], prefix)
         channels.append(built)
         for key, prior in own.items():
-            priors[prefix + key], fields[prefix + key], names[prefix + key] = prior, f"noise.{key}", prefix + key
+            priors[prefix + key], fields[prefix + key], names[prefix + key] = (
+                prior,
+                f"noise.{key}",
+                prefix + key,
+            )
     model = _trace_model(bound, setup, tuple(channels), delay, used, centre, early)
     return Member(model, "", names, fixed), priors, fields, frozenset(shared)
 
@@ -288,7 +302,9 @@ def _used(mask: Any, delay: Array, centre: float, pulse_rms: float) -> NDArray[n
         return np.ones(delay.size, dtype=bool)
     if isinstance(mask, str):
         if mask != "overlap":
-            raise ValueError(f"mask={mask!r} is not known; give 'overlap', None, a pair of times in ps or a bool array.")
+            raise ValueError(
+                f"mask={mask!r} is not known; give 'overlap', None, a pair of times in ps or a bool array."
+            )
         mask = (-4 * pulse_rms - 0.3, OVERLAP)
     array = np.asarray(mask)
     if array.dtype == bool and array.shape == delay.shape:
@@ -301,7 +317,9 @@ def _used(mask: Any, delay: Array, centre: float, pulse_rms: float) -> NDArray[n
             f"zero, start first, or {delay.size} booleans, True where a delay is fitted."
         )
     if used.sum() < 20:
-        raise ValueError(f"The mask leaves {used.sum()} of {delay.size} delays; at least 20 are needed for a fit.")
+        raise ValueError(
+            f"The mask leaves {used.sum()} of {delay.size} delays; at least 20 are needed for a fit."
+        )
     return used
 
 
@@ -342,7 +360,9 @@ def _trace_model(
     grid = time_grid(delay[used], setup.pulse_rms, early)
     groups = [m for m in bound.materials] if not bound.ambient else ["ambient", *bound.materials]
     layout = columns(groups)
-    middle = {slot.name: np.array([float(slot.prior.median())]) for slot in bound.slots if slot.prior is not None}
+    middle = {
+        slot.name: np.array([float(slot.prior.median())]) for slot in bound.slots if slot.prior is not None
+    }
     middle = middle or {"time_zero": np.array([centre])}
     widths = np.array([_width(name) for name in layout.names])
     parts = basis(sample(bound, middle), (setup.pump, setup.probe), grid, np.full((1, 1), centre), layout, 1)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING, Protocol
+from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -69,17 +69,18 @@ class Basin:
 
 @dataclass(frozen=True)
 class Fit:
-    """Result of `Inversion.least_squares`: distinct minima, the most probable first.
+    """Result of `least_squares` of a problem: distinct minima, the most probable first.
 
     Attributes
     ----------
-    inversion : Inversion
+    inversion : Inversion or ConstantsInversion
+        The problem that was fitted.
     names : tuple of str
     minima : tuple of Basin
     seed : int
     """
 
-    inversion: Inversion
+    inversion: Any
     names: tuple[str, ...]
     minima: tuple[Basin, ...]
     seed: int
@@ -216,7 +217,9 @@ def _starting_points(
     z[0, physical] = 0.0
     score = posterior(z)
     if not np.isfinite(score).any():
-        raise ValueError("No draw from the priors has a finite likelihood; check the priors and the constants.")
+        raise ValueError(
+            "No draw from the priors has a finite likelihood; check the priors and the constants."
+        )
     chosen: list[Array] = []
     for i in np.argsort(-np.nan_to_num(score, neginf=-1e300)):
         if len(chosen) < starts and np.isfinite(score[i]):
@@ -304,7 +307,9 @@ class _NoiseDensity:
 def _laplace(posterior: Posterior, physical: NDArray[np.bool_], z: Array, minimum: Minimum) -> Array:
     """Join the least-squares covariance with the curvature of the noise's posterior."""
     covariance = np.eye(z.size)
-    covariance[np.ix_(physical, physical)] = np.where(np.isfinite(minimum.covariance), minimum.covariance, 1.0)
+    covariance[np.ix_(physical, physical)] = np.where(
+        np.isfinite(minimum.covariance), minimum.covariance, 1.0
+    )
     noise = ~physical
     if noise.any():
         curvature = -_hessian(_NoiseDensity(posterior, physical, z), z[noise])

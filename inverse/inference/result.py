@@ -12,12 +12,12 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.inference.derived import derived
-from inverse.inference.ensembles import EnsembleRun
-from inverse.inference.parameters import Parameters
 from inverse.description.quantities import quantity
 from inverse.description.records import decode, encode
 from inverse.description.unknowns import describe_prior
+from inverse.inference.derived import derived
+from inverse.inference.ensembles import EnsembleRun
+from inverse.inference.parameters import Parameters
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -58,6 +58,7 @@ def result_tree(inversion: Inversion, run: EnsembleRun, seed: int, notes: dict[s
     notes : dict
         More entries for the JSON attribute ``inverse``.
     """
+
     def groups(values: Array, pick: NDArray[np.intp]) -> dict[str, Any]:
         found = _data_groups(inversion)
         if len(inversion.parts) == 1:
@@ -270,7 +271,13 @@ def _data_groups(inversion: Inversion) -> dict[str, Any]:
         suffix = f"_{member.label}" if member.label else ""
         groups[f"observed_data{suffix}"] = part.trace
         groups[f"constant_data{suffix}"] = xr.Dataset(
-            {"used": ("delay", member.model.used.astype("i1"), {"long_name": "1 where the delay was fitted"})},
+            {
+                "used": (
+                    "delay",
+                    member.model.used.astype("i1"),
+                    {"long_name": "1 where the delay was fitted"},
+                )
+            },
             coords={"delay": part.trace["delay"]},
         )
     return groups
@@ -301,7 +308,11 @@ def _predictive(inversion: Inversion, values: Array, seed: int) -> tuple[xr.Data
     scaled = (weights * model.coefficient_widths).reshape(chains, count, -1)
     coefficients = xr.Dataset(
         {
-            name.replace("/", " per "): (("chain", "draw"), scaled[..., i], {"long_name": "fluence x coefficient"})
+            name.replace("/", " per "): (
+                ("chain", "draw"),
+                scaled[..., i],
+                {"long_name": "fluence x coefficient"},
+            )
             for i, name in enumerate(_coefficient_names(model))
         }
     )

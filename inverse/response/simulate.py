@@ -10,10 +10,10 @@ from numpy.typing import NDArray
 
 from inverse.description.places import BoundStack, bind
 from inverse.description.pumpprobe import PumpProbe
+from inverse.description.stack import Stack
 from inverse.response.basis import CHANNELS, displaced, fields
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.media import Sample, sample
-from inverse.description.stack import Stack
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -109,7 +109,10 @@ def _parts(
     weights: list[complex] = []
     for owner, material, part in zip(owners, media, found.detected, strict=True):
         names += [f"{owner} strain", f"{owner} heat"]
-        weights += [_coefficient(material.dn_dstrain, DEFAULT_STRAIN), _coefficient(material.dn_dT, DEFAULT_HEAT)]
+        weights += [
+            _coefficient(material.dn_dstrain, DEFAULT_STRAIN),
+            _coefficient(material.dn_dT, DEFAULT_HEAT),
+        ]
         spectra += [part.strain_real, part.strain_imag, part.heat_real, part.heat_imag]
     for boundary, real, imag in zip(("surface", *stack.interface_names), *displaced(found), strict=True):
         names.append(f"{boundary} displacement")
@@ -133,5 +136,6 @@ def _said(stack: Stack) -> str:
         part = next(p.material for p in stack.media if p.material.name == material)
         for field, default in (("dn_dstrain", DEFAULT_STRAIN), ("dn_dT", DEFAULT_HEAT)):
             value = getattr(part, field)
-            lines.append(f"{material}.{field} = {default if value is None else value} ({'default' if value is None else 'given'})")
+            origin = "default" if value is None else "given"
+            lines.append(f"{material}.{field} = {default if value is None else value} ({origin})")
     return "; ".join(lines)
