@@ -15,6 +15,7 @@ Array = NDArray[np.float64]
 Residuals = Callable[[Array], Array]
 
 _STEP = float(np.finfo(float).eps ** (1 / 3))
+_LARGEST = 1e150
 
 
 @dataclass(frozen=True)
@@ -85,14 +86,18 @@ def minimise(
 
     def one(x: Array) -> Array:
         count[0] += 1
-        return residuals(x[None])[0]
+        values = residuals(x[None])[0]
+        # A step to where the sum of squares overflows is refused like one to where it is not a number.
+        return np.where(np.abs(values) < _LARGEST, values, np.inf)
 
     def slope(x: Array) -> Array:
         count[0] += 2 * x.size
         return jacobian(residuals, x) if derivative is None else derivative(x)
 
     if not np.isfinite(one(start)).all():
-        raise ValueError(f"The residuals at the starting point {start} are not finite; start from another point.")
+        raise ValueError(
+            f"The residuals at the starting point {start} are not finite; start from another point."
+        )
     try:
         found = optimize.least_squares(
             one, start, jac=slope, method="trf", x_scale="jac", ftol=1e-14, xtol=1e-12, gtol=1e-12,
@@ -102,13 +107,22 @@ def minimise(
         return _failed(start, float((one(start) ** 2).sum()), count[0], str(error))
     covariance, condition, left_open = _covariance(found.jac)
     return Minimum(
-        found.x, 2 * float(found.cost), covariance, condition, left_open, count[0], bool(found.success), found.message
+        found.x,
+        2 * float(found.cost),
+        covariance,
+        condition,
+        left_open,
+        count[0],
+        bool(found.success),
+        found.message,
     )
 
 
 def _failed(start: Array, cost: float, evaluations: int, reason: str) -> Minimum:
     size = start.size
-    return Minimum(start, cost, np.full((size, size), np.nan), np.inf, np.eye(size), evaluations, False, reason)
+    return Minimum(
+        start, cost, np.full((size, size), np.nan), np.inf, np.eye(size), evaluations, False, reason
+    )
 
 
 def _covariance(j: Array) -> tuple[Array, float, Array]:
