@@ -32,7 +32,7 @@ __all__ = ["Inversion"]
 Array = NDArray[np.float64]
 
 OVERLAP = 2.5
-"""Delays up to this many ps after time zero are left out by default: electrons far from equilibrium fit no simple model."""
+"""Delays up to this many ps after time zero are left out by default: hot electrons there fit no simple model."""
 
 
 class Inversion:

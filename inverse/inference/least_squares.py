@@ -189,7 +189,7 @@ def _joined(z: Array, physical: NDArray[np.bool_], x: Array) -> Array:
 
 
 def _coarse_noise(inversion: Inversion, z: Array) -> Array:
-    """Standard normal variables with white noise at a fraction of the signal and little discrepancy."""
+    """Return standard normal variables with white noise at a fraction of the signal and little discrepancy."""
     named = inversion.posterior.parameters.named(inversion.posterior.parameters.to_values(z[None]))
     values = {name: float(v[0]) for name, v in named.items()}
     for member in inversion.posterior.members:
