@@ -35,6 +35,8 @@ def encode(value: Any) -> Any:
     """
     if value is None or isinstance(value, bool | int | str):
         return value
+    if isinstance(value, np.bool_):
+        return bool(value)
     if isinstance(value, float | np.floating | np.integer):
         number = float(value)
         return number if np.isfinite(number) else {"float": str(number)}
