@@ -90,7 +90,9 @@ def sound_field(
     powers : callable
         ``powers(t)`` is ``exp(-s t)`` for t of shape (sets, 1), cheap on the uniform grid.
     """
-    c = [_off_resonance(m, modulus(m, s), f, s) for m, f in zip(media, profiles, strict=True)]
+    c = [
+        _off_resonance(m, modulus(m, s), f, h.q, s) for m, f, h in zip(media, profiles, heat, strict=True)
+    ]
     lossless = [cj.shape[1] == 1 for cj in c]
     slow = [np.sqrt(m.density / cj) for m, cj in zip(media, c, strict=True)]
     q = [s * sl for sl in slow]
@@ -112,10 +114,11 @@ def sound_field(
     ]
 
 
-def _off_resonance(m: Medium, c: Complex, f: Absorption, s: Complex) -> Complex:
-    """Move the modulus by 2e-6 where c p^2 = rho s^2 would be met at the real frequency."""
-    inertia = m.density * s[:, :1].real ** 2
-    close = np.abs(c[:, :1].real * f.p**2 - inertia) < 1e-6 * inertia
+def _off_resonance(m: Medium, c: Complex, f: Absorption, diffusing: Complex, s: Complex) -> Complex:
+    """Move the modulus by 2e-6 where light or diffusing heat is as steep as sound at the real frequency."""
+    inertia, first = m.density * s[:, :1].real ** 2, c[:, :1].real
+    close = np.abs(first * f.p**2 - inertia) < 1e-6 * inertia
+    close = close | (np.abs(first * diffusing[:, :1].real ** 2 - inertia) < 1e-6 * inertia)
     return np.where(close, c * (1 + 2e-6), c) if np.any(close) else c
 
 
