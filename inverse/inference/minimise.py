@@ -105,7 +105,7 @@ def minimise(
         )  # fmt: skip
     except (np.linalg.LinAlgError, ValueError) as error:
         return _failed(start, float((one(start) ** 2).sum()), count[0], str(error))
-    covariance, condition, left_open = _covariance(found.jac)
+    covariance, condition, left_open = _covariance(np.asarray(found.jac))
     return Minimum(
         found.x,
         2 * float(found.cost),
