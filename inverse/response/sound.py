@@ -54,17 +54,17 @@ class SoundField:
 
 
 def modulus(m: Medium, s: Complex) -> Complex:
-    """Return the complex modulus c(s) in GPa: power-law loss, or constant Q held at c(w0) below w0.
+    """Return the complex modulus c(s) in GPa: power-law loss, or constant Q above w0 and none below.
 
-    ``rho v^2 (1 + (s t)^y)`` (Kelvin-Voigt for y = 1) or ``rho v^2 (s / w0)^(2 theta)``,
-    theta = arctan(1/Q)/pi.
+    ``rho v^2 (1 + (s t)^y)`` (Kelvin-Voigt for y = 1) or ``rho v^2 (1 + (s / w0)^2)^theta``,
+    theta = arctan(1/Q)/pi, which is ``(s / w0)^(2 theta)`` for s far above w0 and analytic for Re s > 0, as
+    causality demands: a switch at w0 would ring at all times.
     """
     c = (m.density * m.velocity**2).astype(complex)
     if np.any(m.loss_time):
         c = c * (1 + (s * m.loss_time) ** m.loss_exponent)
     if np.any(m.inverse_quality):
-        ratio = np.where(np.abs(s) > m.quality_frequency, s / m.quality_frequency, 1)
-        c = c * ratio ** (2 * np.arctan(m.inverse_quality) / np.pi)
+        c = c * (1 + (s / m.quality_frequency) ** 2) ** (np.arctan(m.inverse_quality) / np.pi)
     return c
 
 
