@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.materials import Material
 from inverse.description.places import BoundStack, bind
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
@@ -76,7 +77,8 @@ def simulate(
     batch = sample(bound, known)
     parts, names = _parts(bound, stack, batch, setup, grid, time_zero)
     signals = {channel: setup.fluence * parts[channel] for channel in CHANNELS}
-    trace = make_trace(delay, **{channel: rows.sum(axis=0) for channel, rows in signals.items()})
+    sums = {channel: rows.sum(axis=0) for channel, rows in signals.items()}
+    trace = make_trace(delay, **sums, measured=False)
     if shares:
         trace = trace.assign_coords(part=("part", names))
         for channel, rows in signals.items():
@@ -102,7 +104,7 @@ def _parts(
 ) -> tuple[dict[str, Array], list[str]]:
     """Return per channel the contribution of each part at unit fluence, and the parts' names."""
     found = fields(batch, (setup.pump, setup.probe), grid, np.full((1, 1), time_zero))
-    media = [*([stack.ambient] if bound.ambient else []), *(part.material for part in stack.media)]
+    media = _materials(stack)
     owners = [*(["ambient"] if bound.ambient else []), *bound.names]
     spectra: list[NDArray[np.complex128]] = []
     names: list[str] = []
@@ -125,6 +127,12 @@ def _parts(
     return {"reflectance_change": 2 * complex_parts.real, "optical_phase": complex_parts.imag}, names
 
 
+def _materials(stack: Stack) -> list[Material]:
+    """Return what the probe crosses, top to bottom, a liquid above included."""
+    liquid = [] if stack.ambient is None else [stack.ambient]
+    return [*liquid, *(part.material for part in stack.media)]
+
+
 def _coefficient(given: Any, default: complex) -> complex:
     return default if given is None else complex(given)
 
@@ -132,10 +140,9 @@ def _coefficient(given: Any, default: complex) -> complex:
 def _said(stack: Stack) -> str:
     """Say for every material which coefficients were used."""
     lines = []
-    for material in dict.fromkeys(part.material.name for part in stack.media):
-        part = next(p.material for p in stack.media if p.material.name == material)
+    for name, material in {m.name: m for m in _materials(stack)}.items():
         for field, default in (("dn_dstrain", DEFAULT_STRAIN), ("dn_dT", DEFAULT_HEAT)):
-            value = getattr(part, field)
+            value = getattr(material, field)
             origin = "default" if value is None else "given"
-            lines.append(f"{material}.{field} = {default if value is None else value} ({origin})")
+            lines.append(f"{name}.{field} = {default if value is None else value} ({origin})")
     return "; ".join(lines)
