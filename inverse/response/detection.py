@@ -185,7 +185,7 @@ def _wave(probe: _Probe, ix: Complex, turn: Complex) -> Complex:
     """Integral of exp(i x z) E^2 over a layer; zero in the half-space, where light does not interfere."""
     if not np.any(turn):
         return np.zeros((1, 1), dtype=complex)
-    along = _difference(turn * probe.decay, np.ones((1, 1)), ix + probe.g, probe.thickness)
+    along = _difference(turn * probe.decay, np.ones((1, 1), dtype=complex), ix + probe.g, probe.thickness)
     across = _difference(probe.decay, turn, probe.g - ix, probe.thickness)
     level = (turn - 1) / ix
     return probe.forth * along + probe.back * across + probe.still * level
