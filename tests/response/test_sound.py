@@ -359,38 +359,44 @@ def test_power_law_disperses_as_causality_demands(y):
 
 
 def test_constant_quality_attenuation_and_dispersion():
-    # w / (2 Q v) at small loss, and ln(c / c0) = ln(w / w0) / (pi Q) (Kjartansson 1979; from memory)
-    quality, w0 = 2000.0, 2 * np.pi * 0.01
+    # Far above w0: w / (2 Q v) at small loss, and ln(c / c0) = ln(w / w0) / (pi Q) (Kjartansson 1979; from
+    # memory)
+    quality, w0 = 2000.0, 2 * np.pi * 1e-4
     q = wavenumber(FREQUENCIES, inverse_quality=1 / quality, quality_frequency=w0)
     np.testing.assert_allclose(q.real, FREQUENCIES / (2 * quality * V), rtol=3e-3)
     speed = np.log(FREQUENCIES / q.imag / V)
-    np.testing.assert_allclose(speed, np.log(FREQUENCIES / w0) / (np.pi * quality), rtol=1e-3)
+    np.testing.assert_allclose(speed, np.log(FREQUENCIES / w0) / (np.pi * quality), rtol=1e-4)
 
 
-def test_constant_quality_holds_the_static_modulus():
+def test_constant_quality_begins_at_its_lowest_frequency():
+    # Above w0 the loss angle of the modulus is arctan(1 / Q), below there is no loss; the velocity is the static
     m = metal(velocity=V, inverse_quality=0.02, quality_frequency=0.1)
-    s = np.array([[1e-6, 0.05j, 0.099 + 0j]])
-    np.testing.assert_allclose(modulus(m, s), 2.7 * V**2, rtol=1e-12)
-    # |c| at ten times w0: 10^(2 theta), theta = arctan(1 / Q) / pi
-    grown = np.abs(modulus(m, np.array([[1j]])))[0, 0]
-    assert grown == pytest.approx(2.7 * V**2 * 10 ** (2 * np.arctan(0.02) / np.pi), rel=1e-12)
+    below, above = (modulus(m, 1j * np.array([w]))[0] for w in ([1e-6, 0.03, 0.09], [0.11, 0.5, 20.0]))
+    np.testing.assert_allclose(below.imag, 0.0, atol=1e-12)
+    np.testing.assert_allclose(below[0].real, 2.7 * V**2, rtol=1e-9)
+    np.testing.assert_allclose(above.imag / above.real, 0.02, rtol=1e-6)
 
 
 LOSSES = {
     "Kelvin-Voigt": {"loss_time": 0.05},
     "power law": {"loss_time": 1e-3, "loss_exponent": 0.5},
-    "constant Q": {"inverse_quality": 0.05, "quality_frequency": 2 * np.pi * 0.005},
+    "constant Q": {"inverse_quality": 0.05, "quality_frequency": 2 * np.pi * 0.03},
 }
 
 
 @pytest.mark.parametrize("law", LOSSES)
 def test_loss_sends_nothing_ahead_of_the_pulse(law):
-    # A modulus that is no causal transform would show before time zero
+    # A modulus that is no causal transform would show before time zero, and would make the trace depend on the
+    # window in which it is computed
     film = opaque(60.0, 2.7, 6.42)
     lossy = replace(film, **{k: one(v) for k, v in LOSSES[law].items()})
     delay = np.linspace(-15, 60, 600)
-    u = surface(stacked(lossy, SAPPHIRE), delay)
+    u, longer = (
+        in_time(grid, solve(stacked(lossy, SAPPHIRE), grid).sound[0].u_top)[0]
+        for grid in (time_grid(delay, RMS, earliest=0.0, stretch=x) for x in (1.3, 3.0))
+    )
     assert np.abs(u[delay < -7 * RMS]).max() < 2e-6 * np.abs(u).max()
+    np.testing.assert_allclose(u, longer, rtol=0, atol=4e-6 * np.abs(u).max())
     plain = surface(stacked(film, SAPPHIRE), delay)
     assert np.abs(u - plain).max() > 1e-3 * np.abs(plain).max()
 
