@@ -1,0 +1,1 @@
+"""Studies on top of the inference: elastic constants from velocities."""
