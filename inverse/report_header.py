@@ -59,6 +59,8 @@ def _data_lines(tree: Any) -> list[str]:
 
 
 def _data_line(observed: Any) -> str:
+    if "delay" not in observed.coords:
+        return f"Data: {observed.sizes['measurement']} measurements"
     delay = np.asarray(observed["delay"])
     unit = unit_text(observed["delay"].attrs.get("units", "ps"))
     channels = " and ".join(str(name) for name in observed.data_vars)

@@ -75,7 +75,9 @@ def view_of_variable(attrs: Mapping[str, Any], draws: Array | None) -> PriorView
     Parameters
     ----------
     attrs : mapping
-        ``prior``, JSON of the distribution or empty; ``low`` and ``high``, the range nature allows.
+        ``prior``, JSON of the distribution or empty; ``low`` and ``high``, the range nature allows;
+        ``constrained``, 1 where a condition on several unknowns cuts the prior further, so that only draws
+        show what is left of it.
     draws : numpy.ndarray or None
         Draws from the prior, used where no distribution is stated.
 
@@ -85,7 +87,7 @@ def view_of_variable(attrs: Mapping[str, Any], draws: Array | None) -> PriorView
         None where nothing is known.
     """
     natural = float(attrs.get("low", -math.inf)), float(attrs.get("high", math.inf))
-    if attrs.get("prior"):
+    if attrs.get("prior") and not (attrs.get("constrained") and draws is not None):
         return view_of_distribution(rebuild_prior(json.loads(attrs["prior"])), natural)
     if draws is None:
         return None
