@@ -18,6 +18,8 @@ _HOMES = {
     "Layer": "description.stack",
     "Substrate": "description.stack",
     "Interface": "description.stack",
+    "Repeat": "description.stack",
+    "Graded": "description.stack",
     "Stack": "description.stack",
     "PumpProbe": "description.pumpprobe",
     "Unknown": "description.unknowns",

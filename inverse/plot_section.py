@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from inverse.description.parts import Graded, Interface, Substrate
 from inverse.description.unknowns import Unknown, is_distribution
 from inverse.plot_style import COLUMN, MILLIMETRE, new_figure, style
 from inverse.rounding import decimal_place, format_range
@@ -69,23 +70,24 @@ def section(stack: Any) -> Figure:
 
 
 def _slabs(stack: Any) -> list[_Slab]:
-    parts = list(getattr(stack, "parts", ()))
-    media = [part for part in parts if hasattr(part, "material")]
-    if not media:
+    if not hasattr(stack, "written"):
         raise ValueError(f"plot.section got {stack!r}, which has no parts; give a Stack.")
-    names = list(getattr(stack, "names", ())) or [part.material.name for part in media]
-    slabs = [_Slab(name, _thickness(part)) for name, part in zip(names, media, strict=True)]
-    place = -1
-    for part in parts:
-        if hasattr(part, "material"):
-            place += 1
+    slabs: list[_Slab] = []
+    for part, name, count in stack.written():
+        if isinstance(part, Interface):
+            slabs[-1] = _Slab(slabs[-1].name, slabs[-1].thickness, _bond(part))
         else:
-            slabs[place] = _Slab(slabs[place].name, slabs[place].thickness, _bond(part))
+            slabs.append(_Slab(name, _thickness(part, count)))
     return slabs
 
 
-def _thickness(part: Any) -> str:
-    return _value(part.thickness, "nm") if hasattr(part, "thickness") else "substrate"
+def _thickness(part: Any, count: int) -> str:
+    if isinstance(part, Substrate):
+        return "free below" if part.is_empty else "substrate"
+    text = _value(part.thickness, "nm")
+    if isinstance(part, Graded):
+        text += f"\nin {part.slices} slices"
+    return text if count == 1 else f"{text}\n{count} times"
 
 
 def _bond(interface: Any) -> tuple[str, ...]:
@@ -125,7 +127,8 @@ def _looks(names: Sequence[str]) -> list[tuple[str, str]]:
     """Grey and hatch per medium; equal materials look equal."""
     kinds = list(dict.fromkeys(name.split("#")[0] for name in names))
     order = [kinds.index(name.split("#")[0]) for name in names]
-    return [(_GREYS[i % len(_GREYS)], _HATCHES[i % len(_HATCHES)]) for i in order]
+    looks = [(_GREYS[i % len(_GREYS)], _HATCHES[i % len(_HATCHES)]) for i in order]
+    return [("1.0", "") if name == "vacuum" else look for name, look in zip(names, looks, strict=True)]
 
 
 def _draw_slab(ax: Axes, row: int, slab: _Slab, look: tuple[str, str], last: bool) -> None:

@@ -253,6 +253,17 @@ def test_section_text_stays_on_the_page(section_figure):
         assert box.x0 >= page.x0 and box.x1 <= page.x1 and box.y0 >= page.y0 and box.y1 <= page.y1
 
 
+def test_section_draws_periods_once_and_leaves_vacuum_blank():
+    period = inv.Layer("Al", thickness=5.0), inv.Interface(compliance=0.1, boundary_conductance=1.0)
+    ramp = inv.Graded("Al", "W", thickness=30.0, slices=6)
+    figure = plot.section(inv.Stack(inv.Repeat(9, *period), ramp, inv.Substrate("vacuum")))
+    texts = [t.get_text() for t in figure.axes[0].texts]
+    slabs = ["Al\n5 nm\n9 times", "Al-W\n30 nm\nin 6 slices", "vacuum\nfree below"]
+    assert [t for t in texts if t in slabs] == slabs
+    looks = {p.get_label(): (p.get_facecolor()[0], p.get_hatch()) for p in figure.axes[0].patches}
+    assert looks["vacuum"] == (1.0, "")
+
+
 def test_section_refuses_other_objects():
     with pytest.raises(ValueError, match="which has no parts; give a Stack"):
         plot.section("Al/Si")

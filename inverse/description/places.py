@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -10,9 +10,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.materials import Material
+from inverse.description.parts import Graded, Interface, Layer, Medium, Slice, Substrate
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import QUANTITIES
-from inverse.description.stack import Layer, Stack, Substrate
+from inverse.description.stack import Stack
 from inverse.description.unknowns import Unknown, is_unknown
 
 __all__ = ["BoundStack", "Slot", "bind"]
@@ -53,6 +54,8 @@ class Slot:
         Standard uncertainty of a fixed constant, 0 where none is stated.
     shared : bool
         The unknown was given by an `Unknown` and keeps its name wherever it stands.
+    terms : tuple of (Slot, float)
+        Where the place holds a weighted sum of others, as in a slice of a graded layer.
     """
 
     name: str
@@ -62,6 +65,20 @@ class Slot:
     source: str = ""
     spread: float = 0.0
     shared: bool = False
+    terms: tuple[tuple[Slot, float], ...] = ()
+
+    def leaves(self) -> Iterator[Slot]:
+        """Give the slots that hold numbers or unknowns."""
+        if not self.terms:
+            yield self
+        for slot, _ in self.terms:
+            yield from slot.leaves()
+
+    def fill(self, values: Mapping[str, Array]) -> Array | float:
+        """Return the number, or the unknown's values."""
+        if not self.terms:
+            return values.get(self.name, self.value)
+        return sum(weight * slot.fill(values) for slot, weight in self.terms)
 
 
 Slots = dict[str, Slot]
@@ -74,9 +91,10 @@ class BoundStack:
     Attributes
     ----------
     media : tuple of dict
-        Per layer, substrate last: field -> `Slot`.
+        Per layer, substrate last: field -> `Slot`; the same object for the periods of a superlattice. Vacuum below
+        has an index and nothing else.
     interfaces : tuple of dict
-        Per interface: field -> `Slot`.
+        Per interface: field -> `Slot`, the same object where one repeats.
     ambient : dict
         Fields of a liquid above; empty for air and vacuum.
     names : tuple of str
@@ -93,9 +111,10 @@ class BoundStack:
 
     @property
     def slots(self) -> tuple[Slot, ...]:
-        """All places, top to bottom."""
+        """All places that hold a number or an unknown, top to bottom; what repeats is given once."""
         groups = (self.ambient, *self.media, *self.interfaces)
-        return tuple(slot for group in groups for slot in group.values())
+        leaves = (leaf for group in groups for slot in group.values() for leaf in slot.leaves())
+        return tuple({id(leaf): leaf for leaf in leaves}.values())
 
     @property
     def priors(self) -> dict[str, Any]:
@@ -120,7 +139,7 @@ class BoundStack:
 
     def fill(self, group: Slots, values: Mapping[str, Array]) -> dict[str, Array | float]:
         """Return field -> number or array (one entry per parameter set), in the public units."""
-        return {field: values.get(slot.name, slot.value) for field, slot in group.items()}
+        return {field: slot.fill(values) for field, slot in group.items()}
 
 
 def bind(stack: Stack, setup: PumpProbe) -> BoundStack:
@@ -131,19 +150,17 @@ def bind(stack: Stack, setup: PumpProbe) -> BoundStack:
     ValueError
         If a constant the model needs is missing (named), or one unknown's name is used for two priors.
     """
-    substrate = _medium_slots(stack.names[-1], stack.media[-1], setup, None)
-    layers = tuple(
-        _medium_slots(name, part, setup, substrate["density"])
-        for name, part in zip(stack.names[:-1], stack.media[:-1], strict=True)
-    )
-    interfaces = tuple(
-        {f: _slot(f, getattr(part, f), name, "given by the user", 0.0) for f in _INTERFACE}
-        for name, part in zip(stack.interface_names, stack.interfaces, strict=True)
-    )
+    substrate = _substrate_slots(stack.names[-1], stack.media[-1], setup)
+    media = _media_slots(stack, setup, substrate.get("density"))
+    bonds: dict[Any, Slots] = {}
+    for name, part in zip(stack.interface_names, stack.interfaces, strict=True):
+        bonds.setdefault((name, id(part)), _interface_slots(name, part))
     ambient = {} if stack.ambient is None else _ambient_slots(stack.ambient, setup)
     bound = BoundStack(
-        media=(*layers, substrate),
-        interfaces=interfaces,
+        media=(*media, substrate),
+        interfaces=tuple(
+            bonds[name, id(part)] for name, part in zip(stack.interface_names, stack.interfaces, strict=True)
+        ),
         ambient=ambient,
         names=stack.names,
         materials=tuple(part.material.name for part in stack.media),
@@ -176,16 +193,84 @@ def _need(place: str, material: Material, field: str) -> Any:
     return value
 
 
-def _medium_slots(place: str, part: Layer | Substrate, setup: PumpProbe, substrate_density: Slot | None) -> Slots:
-    material = part.material
-    slots: Slots = {}
-    if isinstance(part, Layer):
-        slots["thickness"] = _slot("thickness", part.thickness, place, "given by the user", 0.0)
-    if part.density_ratio is not None and substrate_density is not None:
-        slots["density_ratio"] = _slot("density_ratio", part.density_ratio, place, "given by the user", 0.0)
-        slots["substrate_density"] = substrate_density
+def _media_slots(stack: Stack, setup: PumpProbe, below: Slot | None) -> list[Slots]:
+    """Fill the places of all layers, one object for each that repeats."""
+    known: dict[tuple[str, float], Slots] = {}
+    faces: dict[str, tuple[Slots, Slots]] = {}
+    media = []
+    for name, part in zip(stack.names[:-1], stack.media[:-1], strict=True):
+        key = (name, part.fraction if isinstance(part, Slice) else 0.0)
+        if key not in known and isinstance(part, Slice):
+            if name not in faces:
+                faces[name] = _faces(name, part.whole, setup)
+            known[key] = _slice_slots(name, part, faces[name])
+        elif key not in known and isinstance(part, Layer):
+            known[key] = _layer_slots(name, part, setup, below)
+        media.append(known[key])
+    return media
+
+
+def _interface_slots(place: str, part: Interface) -> Slots:
+    return {f: _slot(f, getattr(part, f), place, "given by the user", 0.0) for f in _INTERFACE}
+
+
+def _substrate_slots(place: str, part: Medium, setup: PumpProbe) -> Slots:
+    if isinstance(part, Substrate) and part.is_empty:
+        return _light_slots(place, part.material, setup)
+    return {**_density_slot(place, part.material), **_material_slots(place, part.material, setup)}
+
+
+def _layer_slots(place: str, part: Layer, setup: PumpProbe, below: Slot | None) -> Slots:
+    """Fill the places of a layer; `below` is the substrate's density."""
+    slots = {"thickness": _slot("thickness", part.thickness, place, "given by the user", 0.0)}
+    if part.density_ratio is None:
+        slots |= _density_slot(place, part.material)
+    elif below is None:
+        raise ValueError(
+            f"{place} has density_ratio, but there is no substrate to refer it to; give density."
+        )
     else:
-        slots["density"] = _field_slot(place, material, "density", _need(place, material, "density"))
+        slots["density_ratio"] = _slot("density_ratio", part.density_ratio, place, "given by the user", 0.0)
+        slots["substrate_density"] = below
+    return slots | _material_slots(place, part.material, setup)
+
+
+def _faces(place: str, whole: Graded, setup: PumpProbe) -> tuple[Slots, Slots]:
+    """Fill the places of a graded layer's top and bottom; the top holds its thickness."""
+    thickness = {"thickness": _slot("thickness", whole.thickness, place, "given by the user", 0.0)}
+    top, bottom = (
+        {**_density_slot(name, end), **_material_slots(name, end, setup)}
+        for name, end in ((f"{place}.top", whole.top), (f"{place}.bottom", whole.bottom))
+    )
+    return thickness | top, bottom
+
+
+def _slice_slots(place: str, part: Slice, faces: tuple[Slots, Slots]) -> Slots:
+    """Blend the places of a graded layer's faces."""
+    top, bottom = faces
+    thickness = Slot(
+        top["thickness"].name, "thickness", np.nan, terms=((top["thickness"], 1 / part.whole.slices),)
+    )
+    blended = {field: _blend(place, top[field], slot, part.fraction) for field, slot in bottom.items()}
+    return {"thickness": thickness, **blended}
+
+
+def _blend(place: str, top: Slot, bottom: Slot, fraction: float) -> Slot:
+    if (top.value == np.inf) != (bottom.value == np.inf):
+        raise ValueError(
+            f"{place} has an infinite {top.field} on one face only; a graded layer needs two finite values, or inf on "
+            f"both (electron_phonon_coupling=inf asks for one temperature)."
+        )
+    return Slot(f"{place}.{top.field}", top.field, np.nan, terms=((top, 1 - fraction), (bottom, fraction)))
+
+
+def _density_slot(place: str, material: Material) -> Slots:
+    return {"density": _field_slot(place, material, "density", _need(place, material, "density"))}
+
+
+def _material_slots(place: str, material: Material, setup: PumpProbe) -> Slots:
+    """Fill the places that every solid has, but for its density."""
+    slots: Slots = {}
     for field in _REQUIRED:
         slots[field] = _field_slot(place, material, field, _need(place, material, field))
     slots["thermal_stress_coefficient"] = _stress_slot(place, material)
@@ -197,9 +282,14 @@ def _medium_slots(place: str, part: Layer | Substrate, setup: PumpProbe, substra
             if value is None
             else _field_slot(place, material, field, value)
         )
-    slots.update(_index_slots(place, material, "pump", setup.pump))
-    slots.update(_index_slots(place, material, "probe", setup.probe))
-    return slots
+    return slots | _light_slots(place, material, setup)
+
+
+def _light_slots(place: str, material: Material, setup: PumpProbe) -> Slots:
+    return {
+        **_index_slots(place, material, "pump", setup.pump),
+        **_index_slots(place, material, "probe", setup.probe),
+    }
 
 
 def _stress_slot(place: str, material: Material) -> Slot:
@@ -215,12 +305,16 @@ def _electron_pair(place: str, material: Material) -> None:
             "(electron_phonon_coupling=inf asks for one temperature)."
         )
     if len(given) == 1 and material.electron_phonon_coupling != np.inf:
-        raise ValueError(f"{place} has electron_phonon_coupling but no electron_heat_capacity; give both or neither.")
+        raise ValueError(
+            f"{place} has electron_phonon_coupling but no electron_heat_capacity; give both or neither."
+        )
 
 
 def _index_slots(place: str, material: Material, light: str, wavelength: float) -> Slots:
     if material.n is None:
-        raise ValueError(f"{place} has no refractive index n; give n={{{wavelength:g}: complex}} or a table of it.")
+        raise ValueError(
+            f"{place} has no refractive index n; give n={{{wavelength:g}: complex}} or a table of it."
+        )
     real, imag = _index_parts(material, wavelength)
     source = material.sources.get("n", "given by the user")
     spread = material.index_spread_at(wavelength)
@@ -248,11 +342,7 @@ def _ambient_slots(material: Material, setup: PumpProbe) -> Slots:
         field: _field_slot(place, material, field, _need(place, material, field))
         for field in ("density", *_REQUIRED)
     }
-    return {
-        **slots,
-        **_index_slots(place, material, "pump", setup.pump),
-        **_index_slots(place, material, "probe", setup.probe),
-    }
+    return slots | _light_slots(place, material, setup)
 
 
 def _refuse_two_priors(bound: BoundStack) -> None:

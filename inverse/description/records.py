@@ -9,14 +9,15 @@ from typing import Any
 import numpy as np
 
 from inverse.description.materials import Material
+from inverse.description.parts import Graded, Interface, Layer, Repeat, Substrate
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.refractive_index import IndexTable
-from inverse.description.stack import Interface, Layer, Stack, Substrate
+from inverse.description.stack import Stack
 from inverse.description.unknowns import Unknown, describe_prior, is_distribution, rebuild_prior
 
 __all__ = ["decode", "encode"]
 
-_PLAIN: dict[str, type] = {c.__name__: c for c in (Material, IndexTable, PumpProbe, Interface)}
+_PLAIN: dict[str, type] = {c.__name__: c for c in (Material, IndexTable, PumpProbe, Interface, Graded)}
 _MEDIA: dict[str, type] = {"Layer": Layer, "Substrate": Substrate}
 
 
@@ -25,8 +26,8 @@ def encode(value: Any) -> Any:
 
     Parameters
     ----------
-    value : Stack, Layer, Substrate, Interface, Material, PumpProbe, Unknown, distribution, number, text, mapping
-        or sequence of such.
+    value : Stack, Layer, Substrate, Interface, Graded, Repeat, Material, PumpProbe, Unknown, distribution,
+        number, text, mapping or sequence of such.
 
     Raises
     ------
@@ -56,6 +57,8 @@ def encode(value: Any) -> Any:
 def _encode_fields(value: Any) -> dict[str, Any]:
     if isinstance(value, Stack):
         return {"parts": encode(value.parts), "ambient": encode(value.ambient)}
+    if isinstance(value, Repeat):
+        return {"count": value.count, "parts": encode(value.parts)}
     if type(value).__name__ in (*_PLAIN, *_MEDIA):
         return {f.name: encode(getattr(value, f.name)) for f in fields(value)}
     raise ValueError(
@@ -92,6 +95,8 @@ def decode(data: Any, shared: dict[str, Unknown] | None = None) -> Any:
 def _rebuild(name: str, parts: dict[str, Any]) -> Any:
     if name == "Stack":
         return Stack(*parts["parts"], ambient="air" if parts["ambient"] is None else parts["ambient"])
+    if name == "Repeat":
+        return Repeat(parts["count"], *parts["parts"])
     if name in _MEDIA:
         ratio = parts.pop("density_ratio")
         extra = {} if ratio is None else {"density_ratio": ratio}

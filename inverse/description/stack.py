@@ -1,114 +1,28 @@
-"""Layers, interfaces and the stack they make, drawn top to bottom."""
+"""The stack: parts in the order of its cross-section, top to bottom."""
 
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Iterator
-from dataclasses import dataclass, field, fields, replace
+from dataclasses import dataclass, field
 from typing import Any
 
 from inverse.description.materials import Material, material
-from inverse.description.quantities import check
-from inverse.description.unknowns import Unknown, is_unknown, validate_prior
+from inverse.description.parts import (
+    EMPTY,
+    Graded,
+    Interface,
+    Layer,
+    Medium,
+    Part,
+    Repeat,
+    Slice,
+    Substrate,
+    unroll,
+)
 
-__all__ = ["Interface", "Layer", "Stack", "Substrate"]
+__all__ = ["Graded", "Interface", "Layer", "Repeat", "Slice", "Stack", "Substrate"]
 
-_VACUUM = ("air", "vacuum")
-
-
-@dataclass(frozen=True, init=False, eq=False)
-class Layer:
-    """A layer of the stack.
-
-    Parameters
-    ----------
-    material : str or Material
-        Reference name or a material of the user's.
-    thickness : float, frozen scipy.stats distribution or Unknown
-        Thickness in nm.
-    orientation : str, optional
-        Cut of a single crystal, for reference materials that need one.
-    **overrides
-        Material fields (numbers, distributions, unknowns), or ``density_ratio`` (to the substrate)
-        instead of ``density``.
-
-    Raises
-    ------
-    ValueError
-        If a field is unknown to `Material`, out of range, or given twice in contradiction.
-
-    Notes
-    -----
-    Reference values are the bulk's. A deposited film's velocity and density differ by some per cent;
-    give them priors that admit it (`film_prior`).
-    """
-
-    material: Material
-    thickness: Any
-    density_ratio: Any
-
-    def __init__(
-        self, material: str | Material, *, thickness: Any, orientation: str | None = None, **overrides: Any
-    ) -> None:
-        _check_value("thickness", thickness, _name_of(material))
-        object.__setattr__(self, "thickness", thickness)
-        _fill_medium(self, material, orientation, overrides)
-
-
-@dataclass(frozen=True, init=False, eq=False)
-class Substrate:
-    """The half-space under the stack.
-
-    Parameters
-    ----------
-    material : str or Material
-        Reference name or a material of the user's.
-    orientation : str, optional
-        Cut of a single crystal, such as ``"100"``.
-    **overrides
-        Material fields.
-
-    Raises
-    ------
-    ValueError
-        As for `Layer`; a substrate has no ``density_ratio``.
-    """
-
-    material: Material
-    density_ratio: Any
-
-    def __init__(self, material: str | Material, *, orientation: str | None = None, **overrides: Any) -> None:
-        if "density_ratio" in overrides:
-            raise ValueError("Substrate got density_ratio; densities are stated relative to it, so give 'density'.")
-        _fill_medium(self, material, orientation, overrides)
-
-
-@dataclass(frozen=True, eq=False, kw_only=True)
-class Interface:
-    """The bond between the layers above and below it.
-
-    Parameters
-    ----------
-    compliance : float, frozen scipy.stats distribution or Unknown
-        Inverse interface stiffness in nm/GPa; 0 is a perfect bond, inf an open gap.
-    boundary_conductance : float, frozen scipy.stats distribution or Unknown
-        Thermal boundary conductance in MW/m2/K; inf is ideal contact. It has no default.
-    roughness : float, frozen scipy.stats distribution or Unknown
-        Rms roughness in nm.
-
-    Raises
-    ------
-    ValueError
-        If a value is out of range.
-    """
-
-    boundary_conductance: Any
-    compliance: Any = 0.0
-    roughness: Any = 0.0
-
-    def __post_init__(self) -> None:
-        for name in ("compliance", "boundary_conductance", "roughness"):
-            _check_value(name, getattr(self, name), "Interface")
+_WELDED = Interface(boundary_conductance=float("inf"))
 
 
 @dataclass(frozen=True, init=False, eq=False)
@@ -117,9 +31,9 @@ class Stack:
 
     Parameters
     ----------
-    *parts : Layer, Interface or Substrate
+    *parts : Layer, Interface, Graded, Repeat or Substrate
         Layers from the surface down, the substrate last; an `Interface` may stand between two of them.
-        Two parts in a row without one are welded and thermally ideal.
+        Two parts in a row without one are welded and thermally ideal. ``Substrate("vacuum")`` is none.
     ambient : str or Material
         ``"air"``, ``"vacuum"``, or a liquid by reference name or `Material`.
 
@@ -138,121 +52,141 @@ class Stack:
     ... )
     >>> stack.names
     ('Al', 'Si')
+
+    Attributes
+    ----------
+    media, names : tuple
+        Every medium as it lies in the sample, and the name of the place whose unknowns it has; periods of a `Repeat`
+        and slices of a `Graded` layer share theirs.
+    interfaces, interface_names : tuple
+        What lies below each medium but the last, and the name of its unknowns, ``Al|Si``.
     """
 
-    parts: tuple[Layer | Interface | Substrate, ...]
+    parts: tuple[Part, ...]
     ambient: Material | None
-    media: tuple[Layer | Substrate, ...] = field(repr=False)
+    media: tuple[Medium, ...] = field(repr=False)
     interfaces: tuple[Interface, ...] = field(repr=False)
     names: tuple[str, ...] = field(repr=False)
+    interface_names: tuple[str, ...] = field(repr=False)
 
-    def __init__(self, *parts: Layer | Interface | Substrate, ambient: str | Material = "air") -> None:
-        media, interfaces = _split(parts)
-        object.__setattr__(self, "parts", tuple(parts))
-        object.__setattr__(self, "media", tuple(media))
-        object.__setattr__(self, "interfaces", tuple(interfaces))
-        object.__setattr__(self, "ambient", _ambient(ambient))
-        object.__setattr__(self, "names", tuple(_place_names(media)))
+    def __init__(self, *parts: Part, ambient: str | Material = "air") -> None:
+        media, bonds = _split(parts)
+        names = _place_names(media)
+        for name, value in (
+            ("parts", tuple(parts)),
+            ("media", tuple(part for part, _ in media)),
+            ("interfaces", tuple(bond for bond, _ in bonds)),
+            ("ambient", _ambient(ambient)),
+            ("names", names),
+            ("interface_names", _bond_names(names, bonds)),
+        ):
+            object.__setattr__(self, name, value)
 
     def __str__(self) -> str:
         """Say the stack in one line, surface first."""
         above = "air" if self.ambient is None else self.ambient.name
-        return " / ".join([above, *self.names])
+        places = (place for part, place in unroll(self.parts) if not isinstance(part, Interface))
+        return " / ".join([above, *_said(self.parts, dict(zip(places, self.names, strict=True)))])
 
-    @property
-    def interface_names(self) -> tuple[str, ...]:
-        """Names of the interfaces, ``Al|Si``, top to bottom."""
-        return tuple(f"{a}|{b}" for a, b in zip(self.names, self.names[1:], strict=False))
-
-
-def _name_of(given: str | Material) -> str:
-    return given.name if isinstance(given, Material) else str(given)
-
-
-def _check_value(name: str, value: Any, where: str) -> None:
-    if isinstance(value, Unknown):
-        validate_prior(name, value.prior, where)
-    elif is_unknown(value):
-        validate_prior(name, value, where)
-    else:
-        check(name, value, where)
+    def written(self) -> list[tuple[Any, str, int]]:
+        """Return every part once, with its name (none for an interface) and how often it lies in the sample."""
+        placed = list(unroll(self.parts))
+        count = Counter(place for _, place in placed)
+        names = iter(self.names)
+        out: dict[tuple[int, ...], tuple[Any, str, int]] = {}
+        for part, place in placed:
+            name = "" if isinstance(part, Interface) else next(names)
+            whole = part.whole if isinstance(part, Slice) else part
+            slices = whole.slices if isinstance(whole, Graded) else 1
+            out.setdefault(place, (whole, name, count[place] // slices))
+        return list(out.values())
 
 
-_MATERIAL_FIELDS = tuple(f.name for f in fields(Material) if f.name not in ("name", "sources", "spread"))
+_Placed = tuple[Any, tuple[int, ...] | None]
+"""A part and the place it is written at; None for a weld that is not written."""
 
 
-def _fill_medium(
-    part: Layer | Substrate, given: str | Material, orientation: str | None, overrides: dict[str, Any]
-) -> None:
-    """Resolve a material with its overrides into the attributes shared by layers and the substrate."""
-    base = given if isinstance(given, Material) else material(given, orientation)
-    ratio = overrides.pop("density_ratio", None)
-    strange = sorted(set(overrides) - set(_MATERIAL_FIELDS))
-    if strange:
-        raise ValueError(
-            f"{base.name} got {', '.join(strange)}, which no Material has; its fields are "
-            f"{', '.join(_MATERIAL_FIELDS)}, or density_ratio for a layer."
-        )
-    if ratio is not None:
-        if "density" in overrides:
-            raise ValueError(f"{base.name} got both density and density_ratio; give one of them.")
-        _check_value("density_ratio", ratio, base.name)
-    object.__setattr__(part, "material", _override(base, overrides))
-    object.__setattr__(part, "density_ratio", ratio)
-
-
-def _override(base: Material, overrides: dict[str, Any]) -> Material:
-    if not overrides:
-        return base
-    sources = {**base.sources, **dict.fromkeys(overrides, "given by the user")}
-    spread = {k: v for k, v in base.spread.items() if k not in overrides}
-    parts = {"expansion", "bulk_modulus"} & set(overrides)
-    if parts and "thermal_stress_coefficient" not in overrides:
-        overrides = {**overrides, "thermal_stress_coefficient": None}
-    elif "thermal_stress_coefficient" in overrides and not parts:
-        overrides = {**overrides, "expansion": None, "bulk_modulus": None}
-    return replace(base, **overrides, sources=sources, spread=spread)
-
-
-def _split(
-    parts: tuple[Layer | Interface | Substrate, ...],
-) -> tuple[list[Layer | Substrate], list[Interface]]:
+def _split(parts: tuple[Part, ...]) -> tuple[list[_Placed], list[_Placed]]:
     """Separate media from interfaces, filling welded ones in."""
-    media: list[Layer | Substrate] = []
-    interfaces: list[Interface] = []
-    pending: Interface | None = None
-    for position, part in enumerate(parts):
+    media: list[_Placed] = []
+    bonds: list[_Placed] = []
+    pending: _Placed | None = None
+    for part, place in unroll(parts):
+        where = f"Part {place[0] + 1} of the Stack"
         if isinstance(part, Interface):
             if not media or pending is not None:
                 raise ValueError(
-                    f"Part {position + 1} of the Stack is an Interface that has no layer above it; "
-                    "an Interface stands between two layers."
+                    f"{where} is an Interface that has no layer above it; an Interface stands between two layers."
                 )
-            pending = part
-        elif isinstance(part, Layer | Substrate):
-            if media:
-                if isinstance(media[-1], Substrate):
-                    raise ValueError("The Stack goes on below its Substrate; the Substrate must be the last part.")
-                interfaces.append(pending or Interface(boundary_conductance=float("inf")))
-            media.append(part)
+            pending = (part, place)
+        elif isinstance(part, Layer | Substrate | Slice):
+            _add(media, bonds, (part, place), pending)
             pending = None
         else:
-            raise ValueError(f"Part {position + 1} of the Stack is {part!r}; give Layer, Interface or Substrate.")
-    if pending is not None or not media or not isinstance(media[-1], Substrate):
-        raise ValueError("A Stack must end with a Substrate (the half-space below everything).")
-    return media, interfaces
+            raise ValueError(f"{where} is {part!r}; give Layer, Interface, Graded, Repeat or Substrate.")
+    if pending is not None or not media or not isinstance(media[-1][0], Substrate):
+        raise ValueError(
+            "A Stack must end with a Substrate (the half-space below everything; Substrate('vacuum') if there is none)."
+        )
+    return media, bonds
 
 
-def _place_names(media: list[Layer | Substrate]) -> Iterator[str]:
+def _add(media: list[_Placed], bonds: list[_Placed], medium: _Placed, bond: _Placed | None) -> None:
+    """Put a medium below the others."""
+    is_empty = isinstance(medium[0], Substrate) and medium[0].is_empty
+    if is_empty and (bond is not None or not media):
+        raise ValueError(
+            "Vacuum below must follow a layer, with no Interface between: there is nothing to bond to."
+        )
+    if media:
+        if isinstance(media[-1][0], Substrate):
+            raise ValueError("The Stack goes on below its Substrate; the Substrate must be the last part.")
+        bonds.append(bond or (_WELDED, None))
+    media.append(medium)
+
+
+def _place_names(media: list[_Placed]) -> tuple[str, ...]:
+    """Name the places; those of the same material are numbered from the top."""
     seen: Counter[str] = Counter()
-    for part in media:
-        name = part.material.name
-        seen[name] += 1
-        yield name if seen[name] == 1 else f"{name}#{seen[name]}"
+    names: dict[Any, str] = {}
+    for part, place in media:
+        if place not in names:
+            name = part.whole.name if isinstance(part, Slice) else part.material.name
+            seen[name] += 1
+            names[place] = name if seen[name] == 1 else f"{name}#{seen[name]}"
+    return tuple(names[place] for _, place in media)
+
+
+def _bond_names(names: tuple[str, ...], bonds: list[_Placed]) -> tuple[str, ...]:
+    """Name an interface by the first pair of media it stands between; others of the same pair are numbered."""
+    seen: Counter[str] = Counter()
+    known: dict[Any, str] = {}
+    out = []
+    for above, below, (_, place) in zip(names, names[1:], bonds, strict=False):
+        pair = f"{above}|{below}"
+        if place is not None and place not in known:
+            seen[pair] += 1
+            known[place] = pair if seen[pair] == 1 else f"{pair}#{seen[pair]}"
+        out.append(pair if place is None else known[place])
+    return tuple(out)
+
+
+def _said(
+    parts: tuple[Any, ...], names: dict[tuple[int, ...], str], place: tuple[int, ...] = ()
+) -> list[str]:
+    """Say the parts as they are written, periods once."""
+    said = []
+    for position, part in enumerate(parts):
+        here = (*place, position)
+        if isinstance(part, Repeat):
+            said.append(f"{part.count} x [{' / '.join(_said(part.parts, names, here))}]")
+        elif here in names:
+            said.append(names[here])
+    return said
 
 
 def _ambient(given: str | Material) -> Material | None:
     """Return the liquid above the stack, or None where it carries neither sound nor heat."""
     if isinstance(given, Material):
         return given
-    return None if given.lower() in _VACUUM else material(given)
+    return None if given.lower() in EMPTY else material(given)

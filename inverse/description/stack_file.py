@@ -9,8 +9,9 @@ import tomllib
 from pathlib import Path
 from typing import Any
 
+from inverse.description.parts import Graded, Interface, Layer, Part, Repeat, Substrate
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Interface, Layer, Stack, Substrate
+from inverse.description.stack import Stack
 from inverse.description.unknowns import Unknown, is_distribution
 
 __all__ = ["read_stack"]
@@ -25,7 +26,8 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
     ----------
     path : path
         A TOML file with a table ``[setup]`` (fields of `PumpProbe`), an optional ``ambient`` and one ``[[part]]``
-        per part, top to bottom, holding ``layer``, ``interface`` (any value) or ``substrate``. A prior is written as
+        per part, top to bottom, holding ``layer``, ``interface`` (any value), ``substrate``, ``graded`` (the two
+        materials) or ``repeat`` (a number, with the parts of a period as ``[[part.part]]``). A prior is written as
         text, ``velocity = "norm(6.42, 0.10)"``, by the name of a scipy.stats family; the same shared unknown in
         several places as ``"v_film: norm(6.42, 0.10)"``.
 
@@ -62,24 +64,34 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
     return Stack(*parts, ambient=content.get("ambient", "air")), setup
 
 
-def _part(entry: dict[str, Any], position: int, shared: dict[str, Unknown]) -> Layer | Interface | Substrate:
-    kinds = [kind for kind in ("layer", "interface", "substrate") if kind in entry]
+_KINDS = ("layer", "interface", "substrate", "graded", "repeat")
+
+
+def _part(entry: dict[str, Any], position: int, shared: dict[str, Unknown]) -> Part:
+    kinds = [kind for kind in _KINDS if kind in entry]
     if len(kinds) != 1:
-        raise ValueError(
-            f"[[part]] {position} must hold one of layer, interface and substrate; it has {kinds}."
-        )
+        raise ValueError(f"[[part]] {position} must hold exactly one of {', '.join(_KINDS)}; it has {kinds}.")
     name = entry.pop(kinds[0])
+    inner = [_part(dict(part), position, shared) for part in entry.pop("part", [])]
     fields = {key: _value(key, value, shared) for key, value in entry.items()}
     try:
-        if kinds[0] == "interface":
-            return Interface(**fields)
-        return Layer(name, **fields) if kinds[0] == "layer" else Substrate(name, **fields)
+        return _made(kinds[0], name, inner, fields)
     except TypeError as error:
         raise ValueError(f"[[part]] {position} ({kinds[0]}) does not fit: {error}") from None
 
 
+def _made(kind: str, name: Any, inner: list[Part], fields: dict[str, Any]) -> Part:
+    if kind == "interface":
+        return Interface(**fields)
+    if kind == "repeat":
+        return Repeat(name, *inner, **fields)
+    if kind == "graded":
+        return Graded(*name, **fields)
+    return Layer(name, **fields) if kind == "layer" else Substrate(name, **fields)
+
+
 def _value(key: str, value: Any, shared: dict[str, Unknown]) -> Any:
-    if key == "orientation" or not isinstance(value, str):
+    if key in ("orientation", "name") or not isinstance(value, str):
         return value
     name, _, text = value.rpartition(":")
     prior = _prior(key, text)

@@ -44,16 +44,19 @@ def derived(
         the magnitude of the displacement's reflection, ``(Z1 - Z2 + s Z1 Z2 / K) / (Z1 + Z2 + s Z1 Z2 / K)``
         (Schoenberg 1980; Tas et al. 1998). Only what depends on an unknown is returned.
     """
-    media = [_acoustic(bound, slots, values) for slots in bound.media]
+    media = [_acoustic(bound, slots, values) for slots in bound.media if "velocity" in slots]
     out: dict[str, Array] = {}
     for name, slots, (density, velocity), (lower_density, lower_velocity) in zip(
         bound.names, bound.media, media, media[1:], strict=False
     ):
+        if f"{name}.c33" in out or slots["thickness"].terms:
+            # Periods have the same values; a slice of a graded layer has none of its own.
+            continue
         thickness = bound.fill(slots, values)["thickness"]
         out[f"{name}.c33"] = np.asarray(density * velocity**2)
         out[f"{name}.round_trip"] = np.asarray(2 * thickness / velocity)
         out[f"{name}.impedance_ratio"] = np.asarray(density * velocity / (lower_density * lower_velocity))
-    for j, slots in enumerate(bound.interfaces):
+    for j, slots in enumerate(bound.interfaces[: len(media) - 1]):
         place = f"{bound.names[j]}|{bound.names[j + 1]}"
         compliance = np.asarray(bound.fill(slots, values)["compliance"])
         z1, z2 = (density * velocity for density, velocity in media[j : j + 2])
