@@ -1,0 +1,192 @@
+"""Residuals that are independent standard normal if the model is right, whatever the delays and the noise model."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import optimize
+
+from inverse.inference.elimination import eliminate
+from inverse.inference.inversion import Inversion
+from inverse.inference.likelihood import Channel
+from inverse.inference.noise import Noise
+
+__all__ = ["Correlation", "Replicates", "autocorrelation", "fit_correlation", "innovations", "replicates"]
+
+Array = NDArray[np.float64]
+
+_BATCH = 50
+
+
+@dataclass(frozen=True)
+class Replicates:
+    """Residuals of one channel at draws of the posterior, linear coefficients drawn too.
+
+    Attributes
+    ----------
+    channel : Channel
+    name : str
+        Of the channel, after the label of its trace in a joint problem.
+    delay : array, shape (delays,)
+        Fitted delays, ps.
+    data : array, shape (delays,)
+    residual : array, shape (draws, delays)
+        Data less model.
+    innovation : array, shape (draws, delays)
+        Standardised one-step prediction errors of the residual.
+    replicate : array, shape (draws, delays)
+        Data that model and noise would give anew.
+    noise : mapping of str to array
+        Noise values of the draws.
+    """
+
+    channel: Channel
+    name: str
+    delay: Array
+    data: Array
+    residual: Array
+    innovation: Array
+    replicate: Array
+    noise: Mapping[str, Array]
+
+
+@dataclass(frozen=True)
+class Correlation:
+    """Best Ornstein-Uhlenbeck part of a residual: ``K_ij = white^2 delta_ij + size^2 exp(-|t_i - t_j| / time)``.
+
+    Attributes
+    ----------
+    white, size : float
+        In the residual's unit.
+    time : float
+        ps.
+    """
+
+    white: float
+    size: float
+    time: float
+
+
+def innovations(noise: Noise, residual: Array, values: Mapping[str, Array]) -> Array:
+    """Standardise residuals by their prediction from the earlier ones: ``u = L^-1 r``, ``K = L L'``.
+
+    Parameters
+    ----------
+    noise : Noise
+    residual : array, shape (draws, delays)
+    values : mapping
+        Noise values, each of shape (draws,).
+
+    Returns
+    -------
+    array, shape (draws, delays)
+        Independent N(0, 1) if K is right, for delays of any spacing (Kalman filter of the Markov kernel; O(delays)).
+    """
+    white = values["white"][:, None] * noise.relative
+    if noise.model == "white":
+        return residual / white
+    size2, time = values["discrepancy"] ** 2, values["correlation_time"]
+    mean, variance = np.zeros(len(residual)), size2.copy()
+    steps = np.append(np.diff(noise.delay), 0.0)
+    out = np.empty_like(residual)
+    for i, step in enumerate(steps):
+        total = variance + white[:, i] ** 2
+        error = residual[:, i] - mean
+        out[:, i] = error / np.sqrt(total)
+        gain = variance / total
+        kept = np.exp(-step / time)
+        mean = kept * (mean + gain * error)
+        variance = kept**2 * variance * (1 - gain) - size2 * np.expm1(2 * np.log(kept))
+    return out
+
+
+def replicates(inversion: Inversion, values: Array, seed: int) -> tuple[Replicates, ...]:
+    """Compute the residuals of every channel at draws of the posterior.
+
+    Parameters
+    ----------
+    inversion : Inversion
+    values : array, shape (draws, unknowns)
+        Public units.
+    seed : int
+        For the linear coefficients and the replicated noise.
+    """
+    rng = np.random.default_rng(seed)
+    batches = [_batch(inversion, values[i : i + _BATCH], rng) for i in range(0, len(values), _BATCH)]
+    return tuple(_joined(parts) for parts in zip(*batches, strict=True))
+
+
+def _batch(inversion: Inversion, values: Array, rng: np.random.Generator) -> list[Replicates]:
+    out = []
+    named = inversion.posterior.parameters.named(values)
+    for member in inversion.posterior.members:
+        model, local = member.model, member.local(named)
+        functions = model.functions(local)
+        weights = eliminate(*model.gram(functions, local), model.count).draw(rng)
+        for channel in model.channels:
+            predicted = np.einsum("nc,ncd->nd", weights, functions[channel.name])
+            noise = channel.noise_values(local)
+            residual = channel.data[model.used] - predicted
+            drawn = [
+                channel.noise.draw(rng, {k: float(v[i]) for k, v in noise.items()})
+                for i in range(len(values))
+            ]
+            out.append(
+                Replicates(
+                    channel,
+                    f"{member.label}:{channel.name}" if member.label else channel.name,
+                    model.delay[model.used],
+                    channel.data[model.used],
+                    residual,
+                    innovations(channel.noise, residual, noise),
+                    predicted + np.array(drawn),
+                    noise,
+                )
+            )
+    return out
+
+
+def _joined(parts: tuple[Replicates, ...]) -> Replicates:
+    return replace(
+        parts[0],
+        residual=np.concatenate([p.residual for p in parts]),
+        innovation=np.concatenate([p.innovation for p in parts]),
+        replicate=np.concatenate([p.replicate for p in parts]),
+        noise={k: np.concatenate([p.noise[k] for p in parts]) for k in parts[0].noise},
+    )
+
+
+def autocorrelation(series: Array, lags: int) -> Array:
+    """Return the autocorrelations of rows at lags 1 to `lags`, shape (rows, lags): ``sum u_i u_i+k / sum u_i^2``."""
+    power = (series**2).sum(axis=1)
+    return np.stack(
+        [(series[:, k:] * series[:, :-k]).sum(axis=1) / power for k in range(1, lags + 1)], axis=1
+    )
+
+
+def fit_correlation(noise: Noise, residual: Array) -> Correlation:
+    """Fit white noise and an Ornstein-Uhlenbeck part to one residual by maximum likelihood.
+
+    Parameters
+    ----------
+    noise : Noise
+        Its delays and relative noise are used.
+    residual : array, shape (delays,)
+    """
+    correlated = Noise("correlated", noise.delay, noise.relative)
+    span, scale = float(np.ptp(noise.delay)), float(np.std(residual))
+    step = float(np.median(np.diff(noise.delay)))
+
+    def minus_log_likelihood(x: Array) -> float:
+        white, size, time = np.exp(np.clip(x, -50, 50))[:, None] * np.array([[scale], [scale], [1.0]])
+        values = {"white": white, "discrepancy": size, "correlation_time": np.clip(time, step / 2, span)}
+        gram, log_det = correlated.gram(residual[None, None], values)
+        return 0.5 * float(gram[0, 0, 0] + log_det[0])
+
+    starts = [np.array([-0.7, -0.3, np.log(time)]) for time in np.geomspace(2 * step, span / 4, 3)]
+    found = [optimize.minimize(minus_log_likelihood, s, method="Nelder-Mead") for s in starts]
+    white, size, time = np.exp(min(found, key=lambda f: float(f.fun)).x)
+    return Correlation(white * scale, size * scale, float(np.clip(time, step / 2, span)))
