@@ -1,0 +1,258 @@
+"""Sound with three displacement components: anisotropic layers at any orientation.
+
+``rho s^2 u = (C u' - S)'`` with C the Christoffel matrix c_{i3k3} along the depth and S_i3 the thermal stress, tension
+positive. The eigenvectors of C decouple a layer into one quasi-longitudinal and two quasi-transverse waves, each of
+which obeys the scalar equation; interfaces couple them again (see `blocks`).
+
+Loss multiplies every component of C by the scalar law's factor: all waves of a medium are damped alike per cycle.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.response.blocks import BlockEnds, ascend_blocks, descend_blocks, surface_amplitudes
+from inverse.response.heat import HeatField
+from inverse.response.light import Absorption
+from inverse.response.media import Ambient, Medium
+from inverse.response.recursion import Ends
+from inverse.response.sound import SoundField, _ends, _off_resonance, _particular, modulus
+
+__all__ = ["DepthElastic", "ThreeSound", "depth_elastic", "interface_compliance", "three_sound_field"]
+
+Array = NDArray[np.float64]
+Complex = NDArray[np.complex128]
+
+# Voigt places of the pairs (1, 3), (2, 3), (3, 3).
+_DEPTH = (4, 3, 2)
+
+
+@dataclass(frozen=True, eq=False)
+class DepthElastic:
+    """What waves along the depth and their thermal launching need of a medium, along the sample's axes.
+
+    Attributes
+    ----------
+    stiffness : array, shape (sets or 1, 3, 3)
+        c_{i3k3} in GPa, symmetric and positive definite.
+    stress : array, shape (sets or 1, 3)
+        Thermal stress S_i3 per kelvin at zero strain in GPa/K, tension positive.
+    """
+
+    stiffness: Array
+    stress: Array
+
+
+def depth_elastic(voigt: Array, stress: Array) -> DepthElastic:
+    """Take the depth's part of a stiffness.
+
+    Parameters
+    ----------
+    voigt : array, shape (sets or 1, 6, 6)
+        Voigt matrix along the sample's axes (z the depth), GPa.
+    stress : array, shape (sets or 1, 3) or (sets or 1, 6)
+        Thermal stress per kelvin, GPa/K: S_13, S_23 and S_33; or the six components of the linear expansion in Voigt
+        order (engineering shear), from which ``S = C alpha`` follows.
+
+    Returns
+    -------
+    DepthElastic
+    """
+    if stress.shape[-1] == 6:
+        stress = (voigt @ stress[..., None])[..., list(_DEPTH), 0]
+    return DepthElastic(voigt[..., list(_DEPTH), :][..., list(_DEPTH)], stress)
+
+
+@dataclass(frozen=True)
+class ThreeSound:
+    """Displacement of one medium as three waves.
+
+    Attributes
+    ----------
+    modes : tuple of SoundField
+        Fast to slow; each holds the wave's own amplitude along its polarisation.
+    polarisation : array, shape (sets or 1, 3, 3)
+        Unit vectors (x, y, z of the sample) as columns, in the order of `modes`.
+    """
+
+    modes: tuple[SoundField, SoundField, SoundField]
+    polarisation: Array
+
+    def component(self, axis: int) -> tuple[Array, Array, Array]:
+        """Return the weights, shape (sets or 1, 1), with which the modes enter a displacement component."""
+        a, b, c = (self.polarisation[:, axis, mode, None] for mode in range(3))
+        return a, b, c
+
+    def at_top(self, axis: int) -> Complex:
+        """Return a displacement component at the top, nm."""
+        a, b, c = self.component(axis)
+        first, second, third = self.modes
+        return a * first.u_top + b * second.u_top + c * third.u_top
+
+    def at_bottom(self, axis: int) -> Complex:
+        """Return a displacement component at the bottom, nm."""
+        a, b, c = self.component(axis)
+        first, second, third = self.modes
+        return a * first.u_bottom + b * second.u_bottom + c * third.u_bottom
+
+    @property
+    def u_top(self) -> Complex:
+        """Displacement along the depth at the top, nm: what moves a boundary for light at normal incidence."""
+        return self.at_top(2)
+
+    @property
+    def u_bottom(self) -> Complex:
+        """Displacement along the depth at the bottom, nm."""
+        return self.at_bottom(2)
+
+
+def interface_compliance(normal: Array, tangential: Array | None = None) -> Array:
+    """Put the compliance of an interface into components.
+
+    Parameters
+    ----------
+    normal, tangential : array, shape (sets or 1, 1)
+        nm/GPa; without a tangential one, the normal one holds for all components.
+
+    Returns
+    -------
+    array, shape (sets or 1, 1, 3)
+    """
+    tangential = normal if tangential is None else tangential
+    return np.stack(np.broadcast_arrays(tangential, tangential, normal), axis=-1)
+
+
+def three_sound_field(
+    media: Sequence[Medium],
+    solids: Sequence[DepthElastic],
+    compliance: Sequence[Array],
+    ambient: Ambient,
+    profiles: Sequence[Absorption],
+    heat: Sequence[HeatField],
+    s: Complex,
+    powers: Callable[[Array], Complex],
+) -> list[ThreeSound]:
+    """Solve for the displacement of every medium.
+
+    Parameters
+    ----------
+    media : sequence of Medium
+        Coherent units; their velocity and stress are not used.
+    solids : sequence of DepthElastic
+        One per medium.
+    compliance : sequence of arrays, shape (sets or 1, 1, 3)
+        One per interface, from `interface_compliance`.
+    ambient, profiles, heat, s, powers
+        As in `inverse.response.sound.sound_field`.
+
+    Returns
+    -------
+    list of ThreeSound
+        From the top, the half-space last.
+    """
+    waves = [_waves(m, solid) for m, solid in zip(media, solids, strict=True)]
+    polarisation = [w.polarisation for w in waves]
+    scalars = [_scalars(w, f, h, s, powers) for w, f, h in zip(waves, profiles, heat, strict=True)]
+    y = [_modal([one.y for one in three]) for three in scalars]
+    decay = [_modal([one.decay for one in three]) for three in scalars[:-1]]
+    ends = [_block_ends([one.ends for one in three]) for three in scalars]
+    modes = [p[:, None] for p in polarisation]
+    below = ascend_blocks(y, decay, modes, compliance, ends)
+    first = surface_amplitudes(y[0], modes[0], below, ends[0], _load(ambient, s))
+    down, up = descend_blocks(first, y, decay, modes, below, ends)
+    return [
+        ThreeSound(_fields(three, a, b), p)
+        for three, a, b, p in zip(scalars, down, up, polarisation, strict=True)
+    ]
+
+
+@dataclass(frozen=True)
+class _Waves:
+    """The three waves of a medium as media of scalar sound, and their polarisations."""
+
+    media: tuple[Medium, Medium, Medium]
+    polarisation: Array
+
+
+@dataclass(frozen=True)
+class _Scalar:
+    """One wave of one medium, before its amplitudes are known."""
+
+    q: Complex
+    y: Complex
+    decay: Complex
+    parts: tuple[Complex, Complex, Complex]
+    ends: Ends
+
+
+def _waves(m: Medium, solid: DepthElastic) -> _Waves:
+    moduli, vectors = np.linalg.eigh(solid.stiffness)
+    moduli, vectors = moduli[..., ::-1], vectors[..., ::-1]
+    stress = (np.swapaxes(vectors, -1, -2) @ solid.stress[..., None])[..., 0]
+    first, second, third = (
+        replace(m, velocity=np.sqrt(moduli[:, k, None] / m.density), stress=stress[:, k, None]) for k in range(3)
+    )
+    return _Waves((first, second, third), vectors)
+
+
+def _scalars(
+    waves: _Waves, f: Absorption, heat: HeatField, s: Complex, powers: Callable[[Array], Complex]
+) -> list[_Scalar]:
+    return [_scalar(m, f, heat, s, powers) for m in waves.media]
+
+
+def _scalar(m: Medium, f: Absorption, heat: HeatField, s: Complex, powers: Callable[[Array], Complex]) -> _Scalar:
+    c = _off_resonance(m, modulus(m, s), f, heat.q, s)
+    slow = np.sqrt(m.density / c)
+    q, inertia = s * slow, m.density * s**2
+    parts = _particular(m, c, inertia, f, heat)
+    return _Scalar(
+        q=q,
+        y=s * np.sqrt(m.density * c),
+        decay=_decay(m.thickness, slow, q, powers),
+        parts=parts,
+        ends=_ends(f, heat, parts, inertia),
+    )
+
+
+def _decay(thickness: Array, slow: Complex, q: Complex, powers: Callable[[Array], Complex]) -> Complex:
+    if np.all(np.isinf(thickness)):
+        return np.zeros((1, 1), dtype=complex)
+    return powers(slow.real * thickness) if slow.shape[1] == 1 else np.exp(-q * thickness)
+
+
+def _modal(three: Sequence[Complex]) -> Complex:
+    return np.stack(np.broadcast_arrays(*three), axis=-1)
+
+
+def _block_ends(three: Sequence[Ends]) -> BlockEnds:
+    return BlockEnds(
+        u_top=_modal([e.u_top for e in three]),
+        f_top=_modal([e.f_top for e in three]),
+        u_bottom=_modal([e.u_bottom for e in three]),
+        f_bottom=_modal([e.f_bottom for e in three]),
+    )
+
+
+def _load(ambient: Ambient, s: Complex) -> Complex:
+    """Admittance of a liquid, which holds on to the normal component only; zero without one."""
+    if ambient.density is None or ambient.velocity is None:
+        return np.zeros((1, 1, 3), dtype=complex)
+    normal = s * (ambient.density * ambient.velocity)
+    return np.stack([0 * normal, 0 * normal, normal], axis=-1)
+
+
+def _fields(three: Sequence[_Scalar], down: Complex, up: Complex) -> tuple[SoundField, SoundField, SoundField]:
+    a, b, c = (_field(one, down[..., k], up[..., k]) for k, one in enumerate(three))
+    return a, b, c
+
+
+def _field(one: _Scalar, a: Complex, b: Complex) -> SoundField:
+    e, end = one.decay, one.ends
+    return SoundField(
+        one.q, e, a, b, *one.parts, u_top=a + b * e + end.u_top, u_bottom=a * e + b + end.u_bottom
+    )
