@@ -1,0 +1,84 @@
+"""Weighted draws against densities whose moments are known, and against ArviZ."""
+
+import numpy as np
+import pytest
+from scipy import stats
+
+from inverse.inference.importance import LARGEST_SHAPE, importance_draws, pareto_shape, smoothed_weights
+from inverse.inference.independence import StudentMixture
+
+MEAN = np.array([1.0, -2.0, 0.5])
+ROOT = np.array([[1.0, 0.0, 0.0], [0.8, 0.5, 0.0], [-0.3, 0.4, 2.0]])
+
+
+def log_normal(points):
+    white = np.linalg.solve(ROOT, (points - MEAN).T)
+    return -0.5 * (white * white).sum(axis=0)
+
+
+def mixture(scale=1.0, shift=0.0):
+    return StudentMixture(np.ones(1), (MEAN + shift)[None], scale * ROOT[None])
+
+
+def test_weighted_draws_have_the_moments_of_a_correlated_normal_density():
+    found = importance_draws(log_normal, mixture(1.2, 0.3), np.random.default_rng(2), 3000)
+    assert found.shape < LARGEST_SHAPE and found.ess >= 3000
+    mean = found.weights @ found.points
+    centred = found.points - mean
+    covariance = (centred.T * found.weights) @ centred
+    expected = ROOT @ ROOT.T
+    sd = np.sqrt(np.diag(expected))
+    # five Monte Carlo errors of a mean and of a covariance (Isserlis: s_ii s_jj + s_ij^2)
+    assert (np.abs(mean - MEAN) < 5 * sd / np.sqrt(found.ess)).all()
+    error = np.sqrt((np.outer(sd, sd) ** 2 + expected**2) / found.ess)
+    assert (np.abs(covariance - expected) < 5 * error).all()
+
+
+def test_resampled_points_follow_the_weights():
+    rng = np.random.default_rng(3)
+    found = importance_draws(log_normal, mixture(1.5), rng, 2000)
+    points = found.resample(4000, rng)
+    for i in range(3):
+        scaled = (points[:, i] - MEAN[i]) / np.sqrt((ROOT @ ROOT.T)[i, i])
+        assert abs(scaled.mean()) < 5 * np.sqrt(1 / 4000 + 1 / found.ess)
+        assert abs(np.mean(scaled < -1.2816) - 0.1) < 5 * np.sqrt(0.09 * (1 / 4000 + 1 / found.ess))
+
+
+def test_proposal_far_too_narrow_is_found_out():
+    # Weights of a normal target over one with its deviation s: a Pareto tail of shape 1 - s^2 (closed form).
+    narrow = StudentMixture(np.ones(1), MEAN[None], 0.15 * ROOT[None])
+    assert importance_draws(log_normal, narrow, np.random.default_rng(4), 1e6).shape > LARGEST_SHAPE
+
+
+@pytest.mark.parametrize("shape", [-0.3, 0.2, 0.7])
+def test_pareto_shape_of_pareto_draws(shape):
+    size = 4000
+    excess = np.sort(stats.genpareto(shape, scale=2.5).rvs(size, random_state=6))
+    found, scale = pareto_shape(excess)
+    # asymptotic error of the maximum-likelihood shape: (1 + k) / sqrt(n) (Smith 1987; from memory)
+    assert found == pytest.approx((size * shape + 5) / (size + 10), abs=5 * (1 + shape) / np.sqrt(size))
+    assert scale == pytest.approx(2.5, rel=0.15)
+
+
+@pytest.mark.parametrize(("degrees", "scale"), [(3, 1.0), (5, 0.6), (30, 0.5)])
+def test_smoothed_weights_agree_with_arviz(degrees, scale):
+    arviz = pytest.importorskip("arviz")
+    # 3 sqrt(1600) is whole: ArviZ's versions round the tail's size differently
+    x = scale * np.random.default_rng(7).standard_t(degrees, 1600)
+    log_weights = stats.norm.logpdf(x) - stats.t.logpdf(x, degrees, scale=scale)
+    weights, shape = smoothed_weights(log_weights)
+    if hasattr(arviz, "psislw"):
+        theirs, k = arviz.psislw(log_weights.copy())
+    else:
+        import xarray as xr
+
+        # from version 1 it is given log likelihoods, the weights' negative
+        theirs, k = xr.DataArray(-log_weights, dims="draw").azstats.psislw(dim="draw")
+    expected = np.exp(np.asarray(theirs) - np.max(np.asarray(theirs)))
+    np.testing.assert_allclose(weights, expected / expected.sum(), rtol=1e-6, atol=1e-12)
+    assert shape == pytest.approx(float(k), abs=1e-6)
+
+
+def test_density_without_a_possible_point_is_an_error():
+    with pytest.raises(ValueError, match="is possible; check the priors"):
+        importance_draws(lambda p: np.full(len(p), -np.inf), mixture(), np.random.default_rng(1), 100)
