@@ -17,7 +17,7 @@ from inverse.inference.posterior import Posterior
 if TYPE_CHECKING:
     from inverse.inference.inversion import Inversion
 
-__all__ = ["Basin", "Fit", "basin_distance", "least_squares", "make_basin", "ranked"]
+__all__ = ["Basin", "Fit", "basin_distance", "least_squares", "make_basin", "ranked", "refine"]
 
 Array = NDArray[np.float64]
 
@@ -148,7 +148,7 @@ def least_squares(inversion: Inversion, *, starts: int = 12, seed: int = 0) -> F
     found = sorted(found, key=lambda z: -float(posterior(z[None])[0]))[: max(4, starts // 2)]
     basins: list[Basin] = []
     for z in found:
-        basin = _refine(posterior, physical, z)
+        basin = refine(posterior, physical, z)
         if all(basin_distance(basin.z, b) > 1.0 for b in basins):
             basins.append(basin)
     return Fit(inversion, inversion.names, ranked(basins), seed)
@@ -252,7 +252,7 @@ def _move_to_echo(inversion: Inversion, z: Array) -> None:
         z[:, column] = np.where(np.isfinite(moved), moved, z[:, column])
 
 
-def _refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds: int = 3) -> Basin:
+def refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds: int = 3) -> Basin:
     """Alternate between the physical unknowns (least squares) and the noise (marginal likelihood)."""
     minimum: Minimum | None = None
     for _ in range(rounds):
