@@ -32,7 +32,7 @@ def room(module: str) -> str | None:
     if module == "inverse":
         return None
     top = module.split(".")[1]
-    if top in REPORT:
+    if top in REPORT or top.startswith("plot_"):
         return "report"
     if top in ROOMS:
         return top
@@ -127,7 +127,11 @@ def test_heavy_libraries_are_imported_inside_functions() -> None:
 @pytest.mark.parametrize(
     ("name", "source", "found"),
     [
-        ("materials.py", "from inverse.response import light", "materials imports inverse.response.light"),
+        (
+            "description/materials.py",
+            "from inverse.response import light",
+            "description.materials imports inverse.response.light",
+        ),
         (
             "response/light.py",
             "from ..inference import noise",
@@ -135,12 +139,16 @@ def test_heavy_libraries_are_imported_inside_functions() -> None:
         ),
         ("response/__init__.py", "from .. import plot", "response imports inverse.plot"),
         ("response/heat.py", "from inverse import table", "response.heat imports inverse"),
-        ("elastic/__init__.py", "def f():\n    import inverse.description.stack", "elastic imports inverse.description.stack"),
+        (
+            "elastic/__init__.py",
+            "def f():\n    import inverse.description.stack",
+            "elastic imports inverse.description.stack",
+        ),
         ("inference/a.py", "from inverse.study.batch import run", "inference.a imports inverse.study.batch"),
     ],
 )
 def test_an_import_against_the_flow_is_found(tmp_path: Path, name: str, source: str, found: str) -> None:
-    others = ("response/light.py", "inference/noise.py", "plot.py", "stack.py", "study/batch.py")
+    others = ("response/light.py", "inference/noise.py", "plot.py", "description/stack.py", "study/batch.py")
     assert list(wrong_way(write_tree(tmp_path, dict.fromkeys(others, "") | {name: source}))) == [
         f"inverse.{found}"
     ]
@@ -148,8 +156,9 @@ def test_an_import_against_the_flow_is_found(tmp_path: Path, name: str, source: 
 
 def test_imports_with_the_flow_are_left_alone(tmp_path: Path) -> None:
     sources = {
-        "quantities.py": "import numpy",
-        "inference/a.py": "from ..response.light import f\nfrom . import b\nfrom ..quantities import check",
+        "description/quantities.py": "import numpy",
+        "inference/a.py": "from ..response.light import f\nfrom . import b\n"
+        "from ..description.quantities import check",
         "inference/b.py": "",
         "response/light.py": "def f(): ...",
         "__main__.py": "import inverse as inv\nfrom . import report",
@@ -165,8 +174,10 @@ def test_a_module_without_a_room_is_refused(tmp_path: Path) -> None:
 
 def test_a_heavy_import_is_found_unless_it_waits(tmp_path: Path) -> None:
     waiting = "if TYPE_CHECKING:\n    import xarray\ndef f():\n    import corner\n"
-    sources = {"stack.py": "from scipy import stats\nimport scipy.optimize", "plot.py": waiting}
-    assert list(heavy_at_import(write_tree(tmp_path, sources))) == ["inverse.description.stack imports scipy.stats"]
+    sources = {"description/stack.py": "from scipy import stats\nimport scipy.optimize", "plot.py": waiting}
+    assert list(heavy_at_import(write_tree(tmp_path, sources))) == [
+        "inverse.description.stack imports scipy.stats"
+    ]
 
 
 def test_import_loads_nothing_heavy() -> None:
