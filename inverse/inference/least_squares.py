@@ -115,7 +115,9 @@ class Fit:
         return tuple("; ".join([*notes, *(["prior only"] if w else [])]) for w in wide)
 
 
-def least_squares(inversion: Inversion, *, starts: int = 12, seed: int = 0) -> Fit:
+def least_squares(
+    inversion: Inversion, *, starts: int = 12, seed: int = 0, points: Sequence[Mapping[str, float]] = ()
+) -> Fit:
     """Find the minima of a problem from several starting points.
 
     Parameters
@@ -125,6 +127,8 @@ def least_squares(inversion: Inversion, *, starts: int = 12, seed: int = 0) -> F
         Starting points that are followed to their minimum. They are the best of 512 draws from the priors
         (half of them moved to the round-trip time that the echoes show), distinct ones first.
     seed : int
+    points : sequence of mapping
+        Values of the unknowns at further starting points, such as the minima of a neighbouring site.
 
     Returns
     -------
@@ -133,7 +137,7 @@ def least_squares(inversion: Inversion, *, starts: int = 12, seed: int = 0) -> F
     Raises
     ------
     ValueError
-        If `starts` is below 1, or no start has a finite likelihood.
+        If `starts` is below 1, a point lacks an unknown, or no start has a finite likelihood.
     """
     if starts < 1:
         raise ValueError(f"starts={starts}; give 1 or more.")
@@ -142,7 +146,8 @@ def least_squares(inversion: Inversion, *, starts: int = 12, seed: int = 0) -> F
     centre = np.zeros(len(inversion.names))
     coarse = _coarse_noise(inversion, centre)
     found: list[Array] = []
-    for start in _starting_points(inversion, physical, coarse, starts, seed):
+    near = [_given_point(inversion, point) for point in points]
+    for start in [*near, *_starting_points(inversion, physical, coarse, starts, seed)]:
         rough = minimise(Projected(posterior, physical, coarse), start[physical], max_evaluations=60)
         _add_distinct(found, _joined(coarse, physical, rough.x))
     found = sorted(found, key=lambda z: -float(posterior(z[None])[0]))[: max(4, starts // 2)]
@@ -225,6 +230,14 @@ def _starting_points(
         if len(chosen) < starts and np.isfinite(score[i]):
             _add_distinct(chosen, z[i], 0.5)
     return chosen
+
+
+def _given_point(inversion: Inversion, point: Mapping[str, float]) -> Array:
+    missing = [name for name in inversion.names if name not in point]
+    if missing:
+        raise ValueError(f"A starting point lacks {', '.join(missing)}; it gives {', '.join(point)}.")
+    values = np.array([[point[name] for name in inversion.names]])
+    return np.clip(inversion.posterior.parameters.to_z(values)[0], -5, 5)
 
 
 def _add_distinct(points: list[Array], z: Array, distance: float = 0.05) -> None:
