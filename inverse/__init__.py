@@ -27,6 +27,8 @@ _HOMES = {
     "make_trace": "description.traces",
     "first_look": "description.look",
     "simulate": "response.simulate",
+    "strain_map": "response.strain_map",
+    "heating": "study.heating",
     "Inversion": "inference.inversion",
     "ConstantsInversion": "study.constants",
     "Velocity": "study.measurements",

@@ -1,4 +1,4 @@
-"""The measurement: wavelengths, pulse width and fluence."""
+"""The measurement: wavelengths, pulse width, fluence, spots and the pulse train."""
 
 from __future__ import annotations
 
@@ -21,6 +21,13 @@ class PumpProbe:
         Rms width of the cross-correlation of pump and probe in ps (0.425 x its full width at half maximum).
     fluence : float
         Incident pump fluence in J/m2. A fit scales with the trace, so only `simulate` feels it.
+    spot_radius, probe_spot_radius : float, optional
+        Radii of the pump and the probe at 1/e2 of their peak intensity in um. With them the library warns where the
+        one-dimensional picture ends; without the probe's it is taken as the pump's.
+    repetition_rate : float, optional
+        Pulses per time in MHz.
+    modulation_frequency : float, optional
+        Frequency at which the pump is modulated and the lock-in listens, in MHz.
 
     Raises
     ------
@@ -38,6 +45,10 @@ class PumpProbe:
     probe: float
     pulse_rms: float
     fluence: float = 1.0
+    spot_radius: float | None = None
+    probe_spot_radius: float | None = None
+    repetition_rate: float | None = None
+    modulation_frequency: float | None = None
 
     def __post_init__(self) -> None:
         for field, name in (
@@ -45,5 +56,11 @@ class PumpProbe:
             ("probe", "wavelength"),
             ("pulse_rms", "pulse_rms"),
             ("fluence", "fluence"),
+            ("spot_radius", "spot_radius"),
+            ("probe_spot_radius", "spot_radius"),
+            ("repetition_rate", "repetition_rate"),
+            ("modulation_frequency", "modulation_frequency"),
         ):
-            object.__setattr__(self, field, check(name, getattr(self, field), f"PumpProbe.{field}"))
+            value = getattr(self, field)
+            if value is not None:
+                object.__setattr__(self, field, check(name, value, f"PumpProbe.{field}"))

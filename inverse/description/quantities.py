@@ -160,6 +160,20 @@ QUANTITIES: dict[str, Quantity] = {
         ),
         Quantity("wavelength", "nm", r"\lambda", 10.0, 2e4, "vacuum wavelength", suspect="m or um"),
         Quantity("fluence", "J/m2", "F", 1e-9, 1e6, "incident pump fluence"),
+        Quantity(
+            "spot_radius", "um", "w", 0.1, 1e4, "radius at 1/e2 of the peak intensity", suspect="m or mm"
+        ),
+        Quantity("power", "mW", "P", 1e-6, 1e5, "average power on the sample", suspect="W"),
+        Quantity("repetition_rate", "MHz", "f_r", 1e-6, 1e5, "pulses per time", suspect="Hz or kHz"),
+        Quantity(
+            "modulation_frequency",
+            "MHz",
+            "f_m",
+            0.0,
+            1e3,
+            "frequency of the pump's modulation",
+            suspect="Hz or kHz",
+        ),
         Quantity("time_zero", "ps", "t_0", -1e5, 1e5, "delay at which pump and probe coincide", suspect="s"),
         Quantity("noise.white", "1", r"\sigma", 0.0, _INF, "white noise, standard deviation per point"),
         Quantity("noise.discrepancy", "1", "a", 0.0, _INF, "correlated discrepancy, standard deviation"),

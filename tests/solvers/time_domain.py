@@ -12,13 +12,14 @@ linear, and it does not matter which of the two pulses carries the width.
 `step` (ps) is the only accuracy knob: time step and mesh shrink together, and the error falls as its square.
 """
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from scipy.interpolate import CubicSpline
 
-from .heat import assemble_carriers, assemble_heat, middle_carriers, middle_temperature
+from .heat import Heat, assemble_carriers, assemble_heat, middle_carriers, middle_temperature
 from .samples import Experiment, Mesh, Real, Sample, build_mesh, per_cell
 from .sound import Sound, advance, assemble_sound, at_rest, joint_nodes
 from .transfer_matrices import Beam, Optics, solve
@@ -78,14 +79,34 @@ def detector_weights(sample: Sample, mesh: Mesh, sound: Sound, probe: Beam) -> t
     return rows_u, rows_t
 
 
-def run(sample: Sample, experiment: Experiment, last_delay: float, step: float) -> tuple[Real, Real]:
-    """March to `last_delay` (ps); times of shape (steps + 1,) and (Re ln r, Im ln r, Re ln t) at each."""
+@dataclass(frozen=True)
+class State:
+    """The sample at one time (ps): node displacement (nm), temperature unknowns (K), and where they stand."""
+
+    time: float
+    mesh: Mesh
+    sound: Sound
+    heat: Heat
+    displacement: Real
+    temperature: Real
+
+    @property
+    def depth(self) -> Real:
+        """Middle of each cell (nm) below the first boundary of the mesh."""
+        return np.cumsum(self.mesh.width) - self.mesh.width / 2
+
+    @property
+    def strain(self) -> Real:
+        return np.diff(self.displacement)[self.sound.cell] / self.mesh.width
+
+
+def states(sample: Sample, experiment: Experiment, last_delay: float, step: float) -> Iterator[State]:
+    """March to `last_delay` (ps) and give the state at the start and after every step."""
     rms = experiment.pulse_rms
     steps = int(np.ceil((last_delay + START * rms) / step))
     mesh = build_mesh(sample, step, steps, experiment.pump)
     heat, sound = assemble_heat(sample, mesh, step), assemble_sound(sample, mesh, step)
     carriers = assemble_carriers(sample, mesh, step) if any(m.carrier_energy for m in sample.media) else None
-    rows_u, rows_t = detector_weights(sample, mesh, sound, experiment.probe)
     absorbed = optics(sample, mesh, experiment.pump, "n_pump").absorbed
     thermal, electronic, by_pairs = (
         per_cell(sample, mesh, name) for name in ("thermal_stress", "electron_stress", "carrier_stress")
@@ -96,7 +117,7 @@ def run(sample: Sample, experiment: Experiment, last_delay: float, step: float) 
     temperature, density = np.zeros(len(heat.capacity)), np.zeros(len(mesh.width))
     power, stress = np.zeros(len(heat.capacity)), np.zeros(len(sound.stiffness))
     motion = at_rest(sound)
-    out = np.zeros((steps + 1, 3))
+    yield State(time[0], mesh, sound, heat, motion.displacement, temperature)
     for i in range(steps):
         power[heat.hot] = pulse[i] * absorbed
         if carriers is not None:
@@ -111,8 +132,18 @@ def run(sample: Sample, experiment: Experiment, last_delay: float, step: float) 
             stress[sound.cell] += by_pairs * pairs
             power[:] = 0.0
         motion = advance(sound, motion, stress)
-        out[i + 1] = rows_u @ motion.displacement + rows_t @ temperature[heat.lattice]
-    return time, out
+        yield State(time[i + 1], mesh, sound, heat, motion.displacement, temperature)
+
+
+def run(sample: Sample, experiment: Experiment, last_delay: float, step: float) -> tuple[Real, Real]:
+    """March to `last_delay` (ps); times of shape (steps + 1,) and (Re ln r, Im ln r, Re ln t) at each."""
+    time, out, rows = [], [], None
+    for state in states(sample, experiment, last_delay, step):
+        if rows is None:
+            rows = detector_weights(sample, state.mesh, state.sound, experiment.probe)
+        time.append(state.time)
+        out.append(rows[0] @ state.displacement + rows[1] @ state.temperature[state.heat.lattice])
+    return np.array(time), np.array(out)
 
 
 def simulate(sample: Sample, experiment: Experiment, delay: Real, step: float = 0.02) -> Response:

@@ -1,0 +1,210 @@
+"""Strain and temperature at given depths and delays: what the pump sets in motion, before any detector.
+
+In each medium both are the few exponentials of depth that `SoundField` and `HeatField` document; they are
+evaluated at every Laplace variable and returned to time like a trace.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.description.places import bind
+from inverse.description.pumpprobe import PumpProbe
+from inverse.description.stack import Stack
+from inverse.response.basis import fields
+from inverse.response.heat import HeatField
+from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
+from inverse.response.light import Absorption, absorption, light_field
+from inverse.response.media import Sample, sample
+from inverse.response.sound import SoundField
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+__all__ = ["known_sample", "strain_map", "temperatures"]
+
+Array = NDArray[np.float64]
+Complex = NDArray[np.complex128]
+
+
+def strain_map(
+    stack: Stack,
+    setup: PumpProbe,
+    delay: Any,
+    depth: Any,
+    *,
+    values: Mapping[str, float] | None = None,
+) -> xr.Dataset:
+    """Compute strain and temperature in the sample.
+
+    Parameters
+    ----------
+    stack : Stack
+        Distributions stand for their median unless `values` says otherwise.
+    setup : PumpProbe
+        ``fluence`` scales the result; the pulse is that of pump and probe together.
+    delay : array, shape (n,)
+        ps after time zero.
+    depth : array, shape (m,)
+        nm below the surface at rest, 0 or more.
+    values : mapping, optional
+        Unknown name -> value.
+
+    Returns
+    -------
+    xarray.Dataset
+        ``strain`` (1, tension positive), ``temperature`` of the lattice and ``electron_temperature`` (K, rises) on
+        (depth, delay); ``medium`` tells each depth's place.
+
+    Raises
+    ------
+    ValueError
+        If a depth is negative or not finite; a constant is missing; or `values`
+        names no unknown.
+    """
+    import xarray as xr
+
+    delay, depth = (np.atleast_1d(np.asarray(a, dtype=float)) for a in (delay, depth))
+    batch = known_sample(stack, setup, values or {})
+    number, below_top = _locate(batch, depth)
+    grid = time_grid(delay, setup.pulse_rms, earliest=0.0)
+    found = np.empty((3, depth.size, delay.size))
+    wavelengths = (setup.pump, setup.probe)
+    for j in np.unique(number):
+        inside = number == j
+        moved = _moved(batch, wavelengths, grid, int(j))
+        spectra = np.concatenate([moved.strain(below_top[inside]), *moved.heated(below_top[inside])])
+        found[:, inside] = _in_time(grid, spectra).reshape(3, inside.sum(), -1)
+    found *= setup.fluence
+    names = np.array(stack.names)[number]
+    return xr.Dataset(
+        {
+            "strain": (("depth", "delay"), found[0], {"units": "1", "long_name": "strain"}),
+            "temperature": (("depth", "delay"), found[1], {"units": "K", "long_name": "rise of the lattice"}),
+            "electron_temperature": (
+                ("depth", "delay"),
+                found[2],
+                {"units": "K", "long_name": "rise of the electrons"},
+            ),
+        },
+        coords={
+            "delay": ("delay", delay, {"units": "ps"}),
+            "depth": ("depth", depth, {"units": "nm"}),
+            "medium": ("depth", names),
+        },
+    )
+
+
+def known_sample(stack: Stack, setup: PumpProbe, values: Mapping[str, float]) -> Sample:
+    """Return the stack in coherent units, unknowns at given values or their medians.
+
+    Raises
+    ------
+    ValueError
+        If `values` names no unknown of the stack, or a constant is missing.
+    """
+    bound = bind(stack, setup)
+    strange = sorted(set(values) - set(bound.priors))
+    if strange:
+        raise ValueError(
+            f"values names {', '.join(strange)}; the stack's unknowns are {', '.join(bound.priors) or 'none'}."
+        )
+    known = {n: np.array([float(values[n] if n in values else p.median())]) for n, p in bound.priors.items()}
+    return sample(bound, known)
+
+
+def temperatures(
+    batch: Sample, wavelengths: tuple[float, float], grid: TimeGrid, medium: int, depth: Array
+) -> tuple[Array, Array]:
+    """Return the rise of the lattice and of the heated (electron) system in one medium at unit fluence.
+
+    Parameters
+    ----------
+    batch : Sample
+        Of one stack.
+    wavelengths : tuple of float
+        Pump and probe, nm.
+    grid : TimeGrid
+    medium : int
+    depth : array, shape (depths,)
+        nm below the medium's top.
+
+    Returns
+    -------
+    tuple of array, shape (depths, delays)
+        K for 1 J/m2.
+    """
+    lattice, hot = _moved(batch, wavelengths, grid, medium).heated(depth)
+    return _in_time(grid, lattice), _in_time(grid, hot)
+
+
+@dataclass(frozen=True)
+class _Moved:
+    """Light, heat and sound of one medium of one stack."""
+
+    thickness: float
+    profile: Absorption
+    heat: HeatField
+    sound: SoundField
+
+    def heated(self, z: Array) -> tuple[Complex, Complex]:
+        """Lattice and electron temperature at depths below the medium's top, shape (depths, frequencies)."""
+        hot = self._diffusing(z)
+        steep, beat = self._absorbed(z)
+        electrons = hot + self.heat.steep * steep + self.heat.beat * beat
+        return self.heat.lattice * electrons, electrons
+
+    def strain(self, z: Array) -> Complex:
+        """Strain at depths below the medium's top."""
+        steep, beat = self._absorbed(z)
+        down, up = self._both_ways(self.sound.q, z)
+        ringing = self.sound.q * (self.sound.up * up - self.sound.down * down)
+        return (
+            ringing + self.sound.hot * self._diffusing(z) + self.sound.steep * steep + self.sound.beat * beat
+        )
+
+    def _both_ways(self, q: Complex, z: Array) -> tuple[Complex, Complex]:
+        """``exp(-q z)`` and ``exp(-q (d - z))``, the latter zero in the half-space."""
+        column = z[:, None]
+        if np.isinf(self.thickness):
+            return np.exp(-q * column), np.zeros_like(q)
+        return np.exp(-q * column), np.exp(-q * (self.thickness - column))
+
+    def _diffusing(self, z: Array) -> Complex:
+        down, up = self._both_ways(self.heat.q, z)
+        return self.heat.down * down + self.heat.up * up
+
+    def _absorbed(self, z: Array) -> tuple[Complex, Complex]:
+        """Exponential and interference part of the absorbed profile."""
+        down, up = self._both_ways(self.profile.p.astype(complex), z)
+        beat = 2 * (self.profile.beat * np.exp(1j * self.profile.x * z[:, None])).real
+        return self.profile.top * down + self.profile.bottom * up, beat.astype(complex)
+
+
+def _moved(batch: Sample, wavelengths: tuple[float, float], grid: TimeGrid, medium: int) -> _Moved:
+    found = fields(batch, wavelengths, grid, np.zeros((1, 1)))
+    media = batch.media
+    pump = light_field(
+        [m.n_pump for m in media], [m.thickness for m in media[:-1]], wavelengths[0], batch.ambient.n_pump
+    )
+    profile = absorption(pump, medium)
+    return _Moved(media[medium].thickness.item(), profile, found.heat[medium], found.sound[medium])
+
+
+def _in_time(grid: TimeGrid, spectra: Complex) -> Array:
+    full = np.broadcast_to(spectra, (len(spectra), grid.s.shape[1]))
+    return to_delays(grid, np.array(full)[None])[0]
+
+
+def _locate(batch: Sample, depth: Array) -> tuple[NDArray[np.intp], Array]:
+    """Return the medium of each depth, and the depth below that medium's top."""
+    tops = np.concatenate([[0.0], np.cumsum([m.thickness.item() for m in batch.media[:-1]])])
+    if not np.all(np.isfinite(depth)) or np.any(depth < 0):
+        raise ValueError("A depth is negative or not finite; give nm below the surface, 0 or more.")
+    number = np.clip(np.searchsorted(tops, depth, side="right") - 1, 0, None)
+    return number, depth - tops[number]
