@@ -13,10 +13,13 @@ from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import check, quantity
 from inverse.description.stack import Stack
 from inverse.description.unknowns import Unknown, is_distribution
+from inverse.inference.least_squares import least_squares
 from inverse.inference.likelihood import HEAT_WIDTH, SCALE_WIDTH, STRAIN_WIDTH, Channel, TraceModel
 from inverse.inference.noise import Noise, noise_priors
 from inverse.inference.parameters import parameters
 from inverse.inference.posterior import Member, Posterior
+from inverse.inference.result import result_tree
+from inverse.inference.sampling import problem_hash, sample_posterior
 from inverse.response.basis import CHANNELS, basis, columns, take
 from inverse.response.inverse_laplace import time_grid
 from inverse.response.media import sample
@@ -25,7 +28,6 @@ if TYPE_CHECKING:
     import xarray as xr
 
     from inverse.inference.ensembles import EnsembleRun
-    from inverse.inference.least_squares import Fit
 
 __all__ = ["Inversion"]
 
@@ -204,29 +206,20 @@ class Inversion:
             coords={"delay": ("delay", delay, {"units": "ps"})},
         )
 
-    def least_squares(self, *, starts: int = 12, seed: int = 0) -> Fit:
-        """Find the minima; see `inverse.inference.least_squares.least_squares`."""
-        from inverse.inference.least_squares import least_squares
-
-        return least_squares(self, starts=starts, seed=seed)
-
-    def sample_posterior(self, *, seed: int, **options: Any) -> xr.DataTree:
-        """Sample the posterior; see `inverse.inference.sampling.sample_posterior` for the options."""
-        from inverse.inference.sampling import sample_posterior
-
-        return sample_posterior(self, seed=seed, **options)
+    least_squares = least_squares
+    sample_posterior = sample_posterior
 
     def fingerprint(self) -> str:
         """Return a hash of data, model and priors, for checkpoints."""
-        from inverse.inference.sampling import problem_hash
-
         return problem_hash(self)
 
     def result(self, run: EnsembleRun, seed: int, notes: dict[str, Any]) -> xr.DataTree:
-        """Put a finished run into a DataTree; see `inverse.inference.result.result_tree`."""
-        from inverse.inference.result import result_tree
+        """Put a finished run into a DataTree, with warnings where the residuals are not the noise assumed."""
+        from inverse.inference.model_checks import noise_warnings
 
-        return result_tree(self, run, seed, notes)
+        values = self.posterior.parameters.to_values(run.chain.reshape(-1, len(self.names)))
+        warnings = [*notes.get("warnings", ()), *noise_warnings(self, values, seed=seed)]
+        return result_tree(self, run, seed, {**notes, "warnings": warnings})
 
     def _checked(self, values: Any) -> Array:
         array = np.atleast_2d(np.asarray(values, dtype=float))
