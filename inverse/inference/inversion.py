@@ -18,6 +18,7 @@ from inverse.inference.likelihood import HEAT_WIDTH, SCALE_WIDTH, STRAIN_WIDTH, 
 from inverse.inference.noise import Noise, noise_priors
 from inverse.inference.parameters import parameters
 from inverse.inference.posterior import Member, Posterior
+from inverse.inference.reach import refuse_what_no_trace_can_tell
 from inverse.inference.result import result_tree
 from inverse.inference.sampling import problem_hash, sample_posterior
 from inverse.response.basis import CHANNELS, basis, columns, take
@@ -257,6 +258,7 @@ def _member(
     )
     delay = trace["delay"].values.astype(float)
     used = _used(mask, delay, centre, setup.pulse_rms)
+    refuse_what_no_trace_can_tell(bound, float(delay[used].max()) - centre, setup.pulse_rms, setup.probe)
     look = first_look(trace)
     present = [c for c in CHANNELS if c in trace]
     channels = []
