@@ -37,10 +37,12 @@ _HOMES = {
     "what_data_added": "inference.diagnostics",
     "check_model": "inference.model_checks",
     "profile": "inference.profile",
+    "budget": "inference.budget",
     "save": "inference.result",
     "load": "inference.result",
     "table": "report",
     "constants_table": "report",
+    "budget_table": "report",
     "plot": "plot",
     "elastic": "elastic",
 }

@@ -11,6 +11,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import asdict, dataclass
 from typing import Any
 
+from inverse.description.quantities import quantity
 from inverse.report_header import header_lines
 from inverse.rounding import fixed, format_limit, format_range, format_value, format_width
 from inverse.sheet import Rendered, Sheet
@@ -29,6 +30,7 @@ __all__ = [
 ]
 
 _ROLES = ("all", "unknown", "noise", "derived")
+_SMALL_SHARE = 1e-3
 _FORMATS = ("plain", "markdown", "latex", "html", "dict")
 
 
@@ -236,6 +238,10 @@ class BudgetTable(Rendered):
     def _block(self, name: str) -> list[tuple[str, ...]]:
         unit, total = self.units.get(name, ""), self.total(name)
         ordered = sorted(self.budget[name].items(), key=lambda item: -item[1])
+        small = [u for _, u in ordered if u**2 < _SMALL_SHARE * total**2]
+        if len(small) > 1:
+            together = f"{len(small)} others, each under {_percent(_SMALL_SHARE)}"
+            ordered = [*ordered[: -len(small)], (together, math.hypot(*small))]
         rows: list[tuple[str, ...]]
         rows = [(name, source, format_width(u), unit, _share(u, total)) for source, u in ordered]
         rows.append((name, "combined", format_width(total), unit, _share(total, total)))
@@ -257,7 +263,7 @@ def budget_table(
     budget : mapping
         Quantity -> {source: standard uncertainty}, every number not negative, in the quantity's unit.
     units : mapping, optional
-        Quantity -> unit.
+        Quantity -> unit. By default that of the quantity a name ends in, none for other names.
     stated : mapping, optional
         Quantity -> standard uncertainty of the result itself, shown below the combination: the two differ
         where the sources are not independent or the model is not linear.
@@ -265,7 +271,7 @@ def budget_table(
     Returns
     -------
     BudgetTable
-        Sources in falling order.
+        Sources in falling order; those under 0.1 % of the variance stand in one row together.
 
     Raises
     ------
@@ -281,7 +287,16 @@ def budget_table(
                     f"The budget of '{name}' has {source} = {u!r}; give a standard uncertainty, >= 0."
                 )
     plain = {name: {str(s): float(u) for s, u in sources.items()} for name, sources in budget.items()}
-    return BudgetTable(plain, dict(units or {}), {k: float(v) for k, v in (stated or {}).items()})
+    known = {name: _unit(name) for name in plain} | dict(units or {})
+    return BudgetTable(plain, known, {k: float(v) for k, v in (stated or {}).items()})
+
+
+def _unit(name: str) -> str:
+    try:
+        unit = quantity(name).unit
+    except ValueError:
+        return ""
+    return "" if unit == "1" else unit
 
 
 def _is_tree(result: Any) -> bool:

@@ -342,6 +342,16 @@ def test_budget_combines_by_root_sum_of_squares():
     assert made.to_dict()["total"]["length"] == made.total("length")
 
 
+def test_budget_folds_what_is_small_and_knows_the_units_of_quantities():
+    sources = {"noise": 3.0, "prior": 4.0, "first": 0.1, "second": 0.05, "third": 0.05}
+    made = budget_table({"Al.c33": sources, "score": {"noise": 1.0}})
+    cells = made.sheet().cells
+    assert [row[1] for row in cells[:4]] == ["prior", "noise", "3 others, each under 0.1 %", "combined"]
+    assert cells[2][2] == "0.12"  # root sum of squares
+    assert cells[0][3] == "GPa"
+    assert cells[4][3] == ""
+
+
 @pytest.mark.parametrize(
     ("budget", "message"),
     [
