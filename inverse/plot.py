@@ -1,8 +1,9 @@
 """Figures: readable at column width and in grey; each function returns the figure and never shows it."""
 
 from inverse.plot_corner import corner
+from inverse.plot_echoes import echoes, shares
 from inverse.plot_elastic import elastic_section
 from inverse.plot_fit import fit
 from inverse.plot_section import section
 
-__all__ = ["corner", "elastic_section", "fit", "section"]
+__all__ = ["corner", "echoes", "elastic_section", "fit", "section", "shares"]

@@ -20,8 +20,8 @@ from inverse.response.basis import fields
 from inverse.response.heat import HeatField
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.light import Absorption, absorption, light_field
-from inverse.response.media import Sample, sample
-from inverse.response.sound import SoundField
+from inverse.response.media import Medium, Sample, sample
+from inverse.response.sound import SoundField, modulus
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -58,8 +58,9 @@ def strain_map(
     Returns
     -------
     xarray.Dataset
-        ``strain`` (1, tension positive), ``temperature`` of the lattice and ``electron_temperature`` (K, rises) on
-        (depth, delay); ``medium`` tells each depth's place.
+        ``strain`` (1, tension positive), ``elastic_strain`` (stress over modulus: the strain less that of heat at
+        rest, so the sound alone), ``temperature`` of the lattice and ``electron_temperature`` (K, rises) on (depth,
+        delay); ``medium`` tells each depth's place.
 
     Raises
     ------
@@ -73,24 +74,26 @@ def strain_map(
     batch = known_sample(stack, setup, values or {})
     number, below_top = _locate(batch, depth)
     grid = time_grid(delay, setup.pulse_rms, earliest=0.0)
-    found = np.empty((3, depth.size, delay.size))
+    found = np.empty((4, depth.size, delay.size))
     wavelengths = (setup.pump, setup.probe)
     for j in np.unique(number):
         inside = number == j
         moved = _moved(batch, wavelengths, grid, int(j))
-        spectra = np.concatenate([moved.strain(below_top[inside]), *moved.heated(below_top[inside])])
-        found[:, inside] = _in_time(grid, spectra).reshape(3, inside.sum(), -1)
+        found[:, inside] = _in_time(grid, moved.everything(below_top[inside], grid.s)).reshape(
+            4, inside.sum(), -1
+        )
     found *= setup.fluence
     names = np.array(stack.names)[number]
+    about = (
+        ("strain", "1", "strain"),
+        ("elastic_strain", "1", "stress over modulus"),
+        ("temperature", "K", "rise of the lattice"),
+        ("electron_temperature", "K", "rise of the electrons"),
+    )
     return xr.Dataset(
         {
-            "strain": (("depth", "delay"), found[0], {"units": "1", "long_name": "strain"}),
-            "temperature": (("depth", "delay"), found[1], {"units": "K", "long_name": "rise of the lattice"}),
-            "electron_temperature": (
-                ("depth", "delay"),
-                found[2],
-                {"units": "K", "long_name": "rise of the electrons"},
-            ),
+            name: (("depth", "delay"), rows, {"units": unit, "long_name": text})
+            for rows, (name, unit, text) in zip(found, about, strict=True)
         },
         coords={
             "delay": ("delay", delay, {"units": "ps"}),
@@ -147,10 +150,16 @@ def temperatures(
 class _Moved:
     """Light, heat and sound of one medium of one stack."""
 
-    thickness: float
+    medium: Medium
     profile: Absorption
     heat: HeatField
     sound: SoundField
+
+    def everything(self, z: Array, s: Complex) -> Complex:
+        """Strain, elastic strain, lattice and electron temperature, one below the other."""
+        strain, (lattice, electrons) = self.strain(z), self.heated(z)
+        elastic = strain - self.medium.stress * lattice / modulus(self.medium, s)
+        return np.concatenate([strain, elastic, lattice, electrons])
 
     def heated(self, z: Array) -> tuple[Complex, Complex]:
         """Lattice and electron temperature at depths below the medium's top, shape (depths, frequencies)."""
@@ -171,9 +180,10 @@ class _Moved:
     def _both_ways(self, q: Complex, z: Array) -> tuple[Complex, Complex]:
         """``exp(-q z)`` and ``exp(-q (d - z))``, the latter zero in the half-space."""
         column = z[:, None]
-        if np.isinf(self.thickness):
+        thickness = self.medium.thickness.item()
+        if np.isinf(thickness):
             return np.exp(-q * column), np.zeros_like(q)
-        return np.exp(-q * column), np.exp(-q * (self.thickness - column))
+        return np.exp(-q * column), np.exp(-q * (thickness - column))
 
     def _diffusing(self, z: Array) -> Complex:
         down, up = self._both_ways(self.heat.q, z)
@@ -193,7 +203,7 @@ def _moved(batch: Sample, wavelengths: tuple[float, float], grid: TimeGrid, medi
         [m.n_pump for m in media], [m.thickness for m in media[:-1]], wavelengths[0], batch.ambient.n_pump
     )
     profile = absorption(pump, medium)
-    return _Moved(media[medium].thickness.item(), profile, found.heat[medium], found.sound[medium])
+    return _Moved(media[medium], profile, found.heat[medium], found.sound[medium])
 
 
 def _in_time(grid: TimeGrid, spectra: Complex) -> Array:

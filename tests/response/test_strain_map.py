@@ -79,6 +79,20 @@ def test_late_strain_is_thermal():
     found = strain_map(stack(), SETUP, [300.0], np.array([5.0, 25.0, 45.0, 100.0]))
     thermal = np.array([5e-3 / (2.7 * 6.4**2)] * 2 + [4e-3 / (5.0 * 25.0)] + [8e-4 / (2.33 * 8.43**2)])
     np.testing.assert_allclose(found.strain[:, 0], thermal * found.temperature[:, 0], rtol=2e-3)
+    np.testing.assert_allclose(
+        found.elastic_strain[:, 0], found.strain[:, 0] - thermal * found.temperature[:, 0], atol=1e-9
+    )
+
+
+def test_elastic_strain_is_stress_over_modulus():
+    # Stress goes through a weld and through a spring unchanged, so the strains on both sides are as the moduli
+    found = strain_map(
+        stack(), SETUP, np.arange(0.5, 30, 0.5), [31.999, 32.001, 56.999, 57.001]
+    ).elastic_strain
+    stress = found.values * np.array([2.7 * 6.4**2] * 1 + [5.0 * 25.0] * 2 + [2.33 * 8.43**2])[:, None]
+    assert np.abs(stress).max() > 1e-3
+    np.testing.assert_allclose(stress[0], stress[1], atol=2e-3 * np.abs(stress).max())
+    np.testing.assert_allclose(stress[2], stress[3], atol=2e-3 * np.abs(stress).max())
 
 
 def test_unknowns_take_their_median_or_what_is_given():
