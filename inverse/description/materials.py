@@ -12,6 +12,7 @@ from inverse.description.quantities import check
 from inverse.description.reference_tables import Entry, find, index_table
 from inverse.description.reference_values import DEFAULT_SPREAD, reference_values, stiffness
 from inverse.description.refractive_index import IndexTable, check_index
+from inverse.description.stiffness_values import checked_stiffness
 from inverse.description.unknowns import Unknown, is_unknown, validate_prior
 
 __all__ = ["Material", "film_prior", "material"]
@@ -30,6 +31,8 @@ _REAL = (
     "attenuation_exponent",
     "quality_factor",
     "quality_frequency",
+    "thermal_stress_xz",
+    "thermal_stress_yz",
 )
 _COMPLEX = ("dn_dstrain", "dn_dT")
 
@@ -71,7 +74,13 @@ class Material:
     quality_factor, quality_frequency : float
         Acoustic loss of constant Q: Q, and the frequency in THz at which the velocity holds.
     stiffness : mapping
-        Elastic constants ``{"symmetry": "cubic", "c11": ...}`` in GPa.
+        Elastic constants ``{"symmetry": "cubic", "c11": ...}`` in GPa, numbers or unknowns. Without a velocity
+        the longitudinal one along the depth follows from them and the orientation.
+    orientation : str or array_like, shape (3,)
+        Crystal direction of the depth, as `inverse.elastic.crystal_direction` takes it.
+    thermal_stress_xz, thermal_stress_yz : float
+        Shear stress per kelvin at zero strain in GPa/K, in an obliquely cut layer (x and y as in
+        `inverse.elastic.rotation_to_z`); 0 by default, as in every cubic crystal.
     sources : mapping of str to str
         Text of the source of each field.
     spread : mapping of str to float
@@ -108,6 +117,9 @@ class Material:
     attenuation_exponent: Any = None
     quality_factor: Any = None
     quality_frequency: Any = None
+    thermal_stress_xz: Any = None
+    thermal_stress_yz: Any = None
+    orientation: Any = None
     stiffness: Mapping[str, Any] | None = None
     sources: Mapping[str, str] = field(default_factory=dict, repr=False)
     spread: Mapping[str, float] = field(default_factory=dict, repr=False)
@@ -120,6 +132,7 @@ class Material:
         for key in _COMPLEX:
             self._set(key, _complex(key, getattr(self, key), self.name))
         self._set("n", _index(self.n, self.name))
+        self._set("stiffness", checked_stiffness(self.stiffness, self.name))
         self._set("thermal_stress_coefficient", _thermal_stress(self))
         self._set("sources", dict(self.sources))
         self._set("spread", dict(self.spread))
@@ -293,6 +306,7 @@ def material(name: str, orientation: str | None = None, *, index_series: str | N
         entry.name,
         n=table,
         stiffness={"symmetry": entry.symmetry, **constants} if constants else None,
+        orientation=direction,
         sources=sources,
         spread={key: value.spread for key, value in values.items()},
         **{key: value.value for key, value in values.items()},

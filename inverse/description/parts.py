@@ -7,8 +7,8 @@ from dataclasses import dataclass, fields, replace
 from typing import Any
 
 from inverse.description.materials import Material, material
-from inverse.description.quantities import check
-from inverse.description.unknowns import Unknown, is_unknown, validate_prior
+from inverse.description.reference_tables import find
+from inverse.description.unknowns import checked
 
 __all__ = [
     "EMPTY",
@@ -37,11 +37,12 @@ class Layer:
         Reference name or a material of the user's.
     thickness : float, frozen scipy.stats distribution or Unknown
         Thickness in nm.
-    orientation : str, optional
-        Cut of a single crystal, for reference materials that need one.
+    orientation : str or array_like, shape (3,), optional
+        Cut of a single crystal: for reference materials that need one, and with ``stiffness`` any direction.
     **overrides
         Material fields (numbers, distributions, unknowns), or ``density_ratio`` (to the substrate)
-        instead of ``density``.
+        instead of ``density``. With ``stiffness`` (constants in GPa, which become ``Al.c11`` and so on) the
+        velocity follows from the constants and the orientation.
 
     Raises
     ------
@@ -59,9 +60,9 @@ class Layer:
     density_ratio: Any
 
     def __init__(
-        self, material: str | Material, *, thickness: Any, orientation: str | None = None, **overrides: Any
+        self, material: str | Material, *, thickness: Any, orientation: Any = None, **overrides: Any
     ) -> None:
-        _check_value("thickness", thickness, _name_of(material))
+        checked("thickness", thickness, _name_of(material))
         object.__setattr__(self, "thickness", thickness)
         _fill_medium(self, material, orientation, overrides)
 
@@ -89,7 +90,7 @@ class Substrate:
     material: Material
     density_ratio: Any
 
-    def __init__(self, material: str | Material, *, orientation: str | None = None, **overrides: Any) -> None:
+    def __init__(self, material: str | Material, *, orientation: Any = None, **overrides: Any) -> None:
         if isinstance(material, str) and material.lower() in EMPTY:
             if overrides or orientation is not None:
                 raise ValueError(
@@ -120,6 +121,8 @@ class Interface:
         Thermal boundary conductance in MW/m2/K; inf is ideal contact. It has no default.
     roughness : float, frozen scipy.stats distribution or Unknown
         Rms roughness in nm.
+    tangential_compliance : float, frozen scipy.stats distribution or Unknown, optional
+        Compliance against sliding in nm/GPa, where a layer is cut obliquely; by default `compliance`.
 
     Raises
     ------
@@ -130,10 +133,13 @@ class Interface:
     boundary_conductance: Any
     compliance: Any = 0.0
     roughness: Any = 0.0
+    tangential_compliance: Any = None
 
     def __post_init__(self) -> None:
+        if self.tangential_compliance is not None:
+            checked("tangential_compliance", self.tangential_compliance, "Interface")
         for name in ("compliance", "boundary_conductance", "roughness"):
-            _check_value(name, getattr(self, name), "Interface")
+            checked(name, getattr(self, name), "Interface")
 
 
 @dataclass(frozen=True, eq=False)
@@ -203,7 +209,7 @@ class Graded:
     ) -> None:
         ends = [end if isinstance(end, Material) else material(end) for end in (top, bottom)]
         label = Material(f"{ends[0].name}-{ends[1].name}" if name is None else name).name
-        _check_value("thickness", thickness, label)
+        checked("thickness", thickness, label)
         if not 2 <= slices <= 500:
             raise ValueError(f"{label} got slices={slices}; give 2 to 500.")
         for field, value in zip(
@@ -294,23 +300,14 @@ def _name_of(given: str | Material) -> str:
     return given.name if isinstance(given, Material) else str(given)
 
 
-def _check_value(name: str, value: Any, where: str) -> None:
-    if isinstance(value, Unknown):
-        validate_prior(name, value.prior, where)
-    elif is_unknown(value):
-        validate_prior(name, value, where)
-    else:
-        check(name, value, where)
-
-
 _MATERIAL_FIELDS = tuple(f.name for f in fields(Material) if f.name not in ("name", "sources", "spread"))
 
 
 def _fill_medium(
-    part: Layer | Substrate, given: str | Material, orientation: str | None, overrides: dict[str, Any]
+    part: Layer | Substrate, given: str | Material, orientation: Any, overrides: dict[str, Any]
 ) -> None:
     """Resolve a material with its overrides into the attributes shared by layers and the substrate."""
-    base = given if isinstance(given, Material) else material(given, orientation)
+    base = _base(given, orientation, overrides)
     ratio = overrides.pop("density_ratio", None)
     strange = sorted(set(overrides) - set(_MATERIAL_FIELDS))
     if strange:
@@ -321,14 +318,39 @@ def _fill_medium(
     if ratio is not None:
         if "density" in overrides:
             raise ValueError(f"{base.name} got both density and density_ratio; give one of them.")
-        _check_value("density_ratio", ratio, base.name)
+        checked("density_ratio", ratio, base.name)
     object.__setattr__(part, "material", _override(base, overrides))
     object.__setattr__(part, "density_ratio", ratio)
+
+
+def _base(given: str | Material, orientation: Any, overrides: dict[str, Any]) -> Material:
+    """Find the material to start from; with constants of its own a layer may be cut in any direction."""
+    if isinstance(given, Material):
+        return given if orientation is None else replace(given, orientation=orientation)
+    if "stiffness" not in overrides:
+        return material(given, orientation)
+    listed = find(given).orientations
+    if orientation is None or (isinstance(orientation, str) and orientation in listed):
+        return material(given, orientation)
+    start = material(given, listed[0] if listed else None)
+    return replace(start, orientation=orientation, thermal_stress_coefficient=_stress_of_any_cut(start))
+
+
+def _stress_of_any_cut(start: Material) -> Any:
+    """Return the thermal stress along the depth if it is the same for every cut, as in cubic crystals."""
+    cubic = start.stiffness is not None and start.stiffness["symmetry"] == "cubic"
+    return start.thermal_stress_coefficient if cubic else None
 
 
 def _override(base: Material, overrides: dict[str, Any]) -> Material:
     if not overrides:
         return base
+    if overrides.get("stiffness") is not None:
+        if overrides.get("velocity") is not None:
+            raise ValueError(
+                f"{base.name} got both stiffness and velocity; the velocity follows from the constants, so give one."
+            )
+        overrides = {**overrides, "velocity": None}
     sources = {**base.sources, **dict.fromkeys(overrides, "given by the user")}
     spread = {k: v for k, v in base.spread.items() if k not in overrides}
     parts = {"expansion", "bulk_modulus"} & set(overrides)

@@ -2,21 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.cuts import cut_slots, depth_slots, is_cut, is_oblique
+from inverse.description.instrument import instrument_slots
 from inverse.description.materials import Material
 from inverse.description.parts import Graded, Interface, Layer, Medium, Slice, Substrate
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import QUANTITIES
+from inverse.description.slots import Slot, Slots, slot_of
 from inverse.description.stack import Stack
-from inverse.description.unknowns import Unknown, is_unknown
 
-__all__ = ["BoundStack", "Slot", "bind"]
+__all__ = ["BoundStack", "Slot", "Slots", "bind"]
 
 Array = NDArray[np.float64]
 
@@ -35,64 +37,14 @@ _INTERFACE = ("compliance", "boundary_conductance", "roughness")
 
 
 @dataclass(frozen=True)
-class Slot:
-    """A place in the model and what stands there.
-
-    Attributes
-    ----------
-    name : str
-        Name of the unknown, or of the place if it holds a number.
-    field : str
-        Quantity of the place.
-    value : float
-        The number, or nan if unknown.
-    prior : object
-        Frozen distribution, or None if known.
-    source : str
-        Where the number comes from.
-    spread : float
-        Standard uncertainty of a fixed constant, 0 where none is stated.
-    shared : bool
-        The unknown was given by an `Unknown` and keeps its name wherever it stands.
-    terms : tuple of (Slot, float)
-        Where the place holds a weighted sum of others, as in a slice of a graded layer.
-    """
-
-    name: str
-    field: str
-    value: float
-    prior: Any = None
-    source: str = ""
-    spread: float = 0.0
-    shared: bool = False
-    terms: tuple[tuple[Slot, float], ...] = ()
-
-    def leaves(self) -> Iterator[Slot]:
-        """Give the slots that hold numbers or unknowns."""
-        if not self.terms:
-            yield self
-        for slot, _ in self.terms:
-            yield from slot.leaves()
-
-    def fill(self, values: Mapping[str, Array]) -> Array | float:
-        """Return the number, or the unknown's values."""
-        if not self.terms:
-            return values.get(self.name, self.value)
-        return sum(weight * slot.fill(values) for slot, weight in self.terms)
-
-
-Slots = dict[str, Slot]
-
-
-@dataclass(frozen=True)
 class BoundStack:
     """A stack bound to a measurement: every place filled by a number or an unknown.
 
     Attributes
     ----------
     media : tuple of dict
-        Per layer, substrate last: field -> `Slot`; the same object for the periods of a superlattice. Vacuum below
-        has an index and nothing else.
+        Per layer, substrate last: field -> `Slot`, with ``depth_zz``, ... where a layer is cut obliquely; the
+        same object for the periods of a superlattice. Vacuum below has an index and nothing else.
     interfaces : tuple of dict
         Per interface: field -> `Slot`, the same object where one repeats.
     ambient : dict
@@ -101,6 +53,8 @@ class BoundStack:
         Place names of the media.
     materials : tuple of str
         Material (with orientation) of each medium: the key by which P and Q are shared.
+    instrument : dict
+        What the bench adds, field -> `Slot`: ``stage_scale`` and ``overlap_drift`` where they are not zero.
     """
 
     media: tuple[Slots, ...]
@@ -108,11 +62,12 @@ class BoundStack:
     ambient: Slots
     names: tuple[str, ...]
     materials: tuple[str, ...]
+    instrument: Slots = field(default_factory=dict)
 
     @property
     def slots(self) -> tuple[Slot, ...]:
         """All places that hold a number or an unknown, top to bottom; what repeats is given once."""
-        groups = (self.ambient, *self.media, *self.interfaces)
+        groups = (self.ambient, *self.media, *self.interfaces, self.instrument)
         leaves = (leaf for group in groups for slot in group.values() for leaf in slot.leaves())
         return tuple({id(leaf): leaf for leaf in leaves}.values())
 
@@ -151,36 +106,30 @@ def bind(stack: Stack, setup: PumpProbe) -> BoundStack:
         If a constant the model needs is missing (named), or one unknown's name is used for two priors.
     """
     substrate = _substrate_slots(stack.names[-1], stack.media[-1], setup)
-    media = _media_slots(stack, setup, substrate.get("density"))
+    media = [*_media_slots(stack, setup, substrate.get("density")), substrate]
+    if oblique := any(is_oblique(part.material) for part in stack.media):
+        media = _sheared(stack, media)
     bonds: dict[Any, Slots] = {}
     for name, part in zip(stack.interface_names, stack.interfaces, strict=True):
-        bonds.setdefault((name, id(part)), _interface_slots(name, part))
+        bonds.setdefault((name, id(part)), _interface_slots(name, part, oblique))
     ambient = {} if stack.ambient is None else _ambient_slots(stack.ambient, setup)
     bound = BoundStack(
-        media=(*media, substrate),
+        media=tuple(media),
         interfaces=tuple(
             bonds[name, id(part)] for name, part in zip(stack.interface_names, stack.interfaces, strict=True)
         ),
         ambient=ambient,
         names=stack.names,
         materials=tuple(part.material.name for part in stack.media),
+        instrument=instrument_slots(setup),
     )
     _refuse_two_priors(bound)
     return bound
 
 
-def _slot(field: str, value: Any, place: str, source: str, spread: float, suffix: str = "") -> Slot:
-    name = f"{place}.{field}{suffix}"
-    if isinstance(value, Unknown):
-        return Slot(value.name, field, np.nan, value.prior, shared=True)
-    if is_unknown(value):
-        return Slot(name, field, np.nan, value)
-    return Slot(name, field, float(value), None, source, spread)
-
-
 def _field_slot(place: str, material: Material, field: str, value: Any) -> Slot:
     source = material.sources.get(field, "given by the user")
-    return _slot(field, value, place, source, float(material.spread.get(field, 0.0)))
+    return slot_of(field, value, place, source, float(material.spread.get(field, 0.0)))
 
 
 def _need(place: str, material: Material, field: str) -> Any:
@@ -210,19 +159,36 @@ def _media_slots(stack: Stack, setup: PumpProbe, below: Slot | None) -> list[Slo
     return media
 
 
-def _interface_slots(place: str, part: Interface) -> Slots:
-    return {f: _slot(f, getattr(part, f), place, "given by the user", 0.0) for f in _INTERFACE}
+def _sheared(stack: Stack, media: list[Slots]) -> list[Slots]:
+    """Add what three components need to every medium, one object for each that repeats."""
+    known: dict[int, Slots] = {}
+    for name, part, slots in zip(stack.names, stack.media, media, strict=True):
+        if id(slots) not in known:
+            known[id(slots)] = slots | depth_slots(name, part.material, slots)
+    return [known[id(slots)] for slots in media]
+
+
+def _interface_slots(place: str, part: Interface, oblique: bool) -> Slots:
+    slots = {f: slot_of(f, getattr(part, f), place, "given by the user", 0.0) for f in _INTERFACE}
+    if part.tangential_compliance is None:
+        return slots
+    field = "tangential_compliance"
+    if not oblique:
+        raise ValueError(
+            f"{place} has a tangential_compliance, but no layer is cut obliquely, so nothing shears; leave it out."
+        )
+    return slots | {field: slot_of(field, part.tangential_compliance, place, "given by the user", 0.0)}
 
 
 def _substrate_slots(place: str, part: Medium, setup: PumpProbe) -> Slots:
     if isinstance(part, Substrate) and part.is_empty:
         return _light_slots(place, part.material, setup)
-    return {**_density_slot(place, part.material), **_material_slots(place, part.material, setup)}
+    return _material_slots(place, part.material, setup, _density_slot(place, part.material))
 
 
 def _layer_slots(place: str, part: Layer, setup: PumpProbe, below: Slot | None) -> Slots:
     """Fill the places of a layer; `below` is the substrate's density."""
-    slots = {"thickness": _slot("thickness", part.thickness, place, "given by the user", 0.0)}
+    slots = {"thickness": slot_of("thickness", part.thickness, place, "given by the user", 0.0)}
     if part.density_ratio is None:
         slots |= _density_slot(place, part.material)
     elif below is None:
@@ -230,16 +196,16 @@ def _layer_slots(place: str, part: Layer, setup: PumpProbe, below: Slot | None) 
             f"{place} has density_ratio, but there is no substrate to refer it to; give density."
         )
     else:
-        slots["density_ratio"] = _slot("density_ratio", part.density_ratio, place, "given by the user", 0.0)
+        slots["density_ratio"] = slot_of("density_ratio", part.density_ratio, place, "given by the user", 0.0)
         slots["substrate_density"] = below
-    return slots | _material_slots(place, part.material, setup)
+    return _material_slots(place, part.material, setup, slots)
 
 
 def _faces(place: str, whole: Graded, setup: PumpProbe) -> tuple[Slots, Slots]:
     """Fill the places of a graded layer's top and bottom; the top holds its thickness."""
-    thickness = {"thickness": _slot("thickness", whole.thickness, place, "given by the user", 0.0)}
+    thickness = {"thickness": slot_of("thickness", whole.thickness, place, "given by the user", 0.0)}
     top, bottom = (
-        {**_density_slot(name, end), **_material_slots(name, end, setup)}
+        _material_slots(name, end, setup, _density_slot(name, end))
         for name, end in ((f"{place}.top", whole.top), (f"{place}.bottom", whole.bottom))
     )
     return thickness | top, bottom
@@ -268,10 +234,14 @@ def _density_slot(place: str, material: Material) -> Slots:
     return {"density": _field_slot(place, material, "density", _need(place, material, "density"))}
 
 
-def _material_slots(place: str, material: Material, setup: PumpProbe) -> Slots:
-    """Fill the places that every solid has, but for its density."""
-    slots: Slots = {}
+def _material_slots(place: str, material: Material, setup: PumpProbe, slots: Slots) -> Slots:
+    """Fill the places that every solid has into `slots`, which hold its density."""
+    slots = dict(slots)
+    if is_cut(material):
+        slots |= cut_slots(place, material, slots)
     for field in _REQUIRED:
+        if field == "velocity" and is_cut(material):
+            continue
         slots[field] = _field_slot(place, material, field, _need(place, material, field))
     slots["thermal_stress_coefficient"] = _stress_slot(place, material)
     _electron_pair(place, material)
@@ -320,8 +290,8 @@ def _index_slots(place: str, material: Material, light: str, wavelength: float) 
     spread = material.index_spread_at(wavelength)
     suffix = f"_{wavelength:g}"
     return {
-        f"n_real_{light}": _slot("n_real", real, place, source, spread.real, suffix),
-        f"n_imag_{light}": _slot("n_imag", imag, place, source, spread.imag, suffix),
+        f"n_real_{light}": slot_of("n_real", real, place, source, spread.real, suffix),
+        f"n_imag_{light}": slot_of("n_imag", imag, place, source, spread.imag, suffix),
     }
 
 

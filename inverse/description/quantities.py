@@ -100,6 +100,8 @@ QUANTITIES: dict[str, Quantity] = {
             "stress per kelvin at zero strain, 3 x bulk modulus x linear expansion",
             suspect="Pa/K or MPa/K",
         ),
+        Quantity("thermal_stress_xz", "GPa/K", r"\beta_{xz}", -0.1, 0.1, "shear stress in xz per kelvin"),
+        Quantity("thermal_stress_yz", "GPa/K", r"\beta_{yz}", -0.1, 0.1, "shear stress in yz per kelvin"),
         Quantity("expansion", "1/K", r"\alpha", -1e-3, 1e-3, "linear thermal expansion", suspect="1e-6/K"),
         Quantity("bulk_modulus", "GPa", "B", 1e-3, 2e3, "bulk modulus", suspect="Pa"),
         Quantity(
@@ -144,6 +146,9 @@ QUANTITIES: dict[str, Quantity] = {
         Quantity("dn_dstrain_imag", "1", r"\mathrm{Im}\,P", -1e4, 1e4, "imaginary part of dn/d(strain)"),
         Quantity("dn_dT_real", "1/K", r"\mathrm{Re}\,Q", -1.0, 1.0, "real part of dn/dT"),
         Quantity("dn_dT_imag", "1/K", r"\mathrm{Im}\,Q", -1.0, 1.0, "imaginary part of dn/dT"),
+        Quantity(
+            "tangential_compliance", "nm/GPa", "1/K_t", 0.0, _INF, "compliance of the bond along its plane"
+        ),
         Quantity("compliance", "nm/GPa", "1/K", 0.0, _INF, "compliance of the bond; 0 is a perfect bond"),
         Quantity(
             "boundary_conductance", "MW/m2/K", "G", 0.0, _INF, "thermal boundary conductance", 1e-6, "W/m2/K"

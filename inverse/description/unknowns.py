@@ -9,7 +9,15 @@ import numpy as np
 
 from inverse.description.quantities import check, quantity
 
-__all__ = ["Unknown", "describe_prior", "is_distribution", "is_unknown", "rebuild_prior", "validate_prior"]
+__all__ = [
+    "Unknown",
+    "checked",
+    "describe_prior",
+    "is_distribution",
+    "is_unknown",
+    "rebuild_prior",
+    "validate_prior",
+]
 
 
 @dataclass(frozen=True, eq=False)
@@ -74,6 +82,20 @@ def validate_prior(name: str, prior: Any, where: str = "") -> None:
             check(name, float(prior.ppf(probability)), where)
         except ValueError as error:
             raise ValueError(f"The prior's {probability:.0%} quantile does not fit. {error}") from None
+
+
+def checked(field: str, value: Any, where: str) -> Any:
+    """Return a number in the allowed range of a quantity, or the prior or `Unknown` given for it.
+
+    Raises
+    ------
+    ValueError
+        If the number, or the middle 98 % of the prior, is out of range.
+    """
+    if is_unknown(value):
+        validate_prior(field, value.prior if isinstance(value, Unknown) else value, where)
+        return value
+    return check(field, value, where)
 
 
 def describe_prior(prior: Any) -> dict[str, Any]:

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.places import BoundStack, Slots
+from inverse.description.slots import ComputedSlot
 
 __all__ = ["derived"]
 
@@ -39,7 +40,8 @@ def derived(
     Returns
     -------
     dict
-        Per layer ``c33 = rho v^2`` (GPa), ``round_trip = 2 d / v`` (ps) and ``impedance_ratio = Z / Z_below``;
+        Per layer ``c33 = rho v^2`` (GPa; of one known by its constants ``velocity`` and
+        ``longitudinal_modulus = rho v^2``), ``round_trip = 2 d / v`` (ps) and ``impedance_ratio = Z / Z_below``;
         per interface ``stiffness`` (GPa/nm; inf for a perfect bond), ``equivalent_thickness = c33 / K`` (nm) and
         the magnitude of the displacement's reflection, ``(Z1 - Z2 + s Z1 Z2 / K) / (Z1 + Z2 + s Z1 Z2 / K)``
         (Schoenberg 1980; Tas et al. 1998). Only what depends on an unknown is returned.
@@ -49,11 +51,14 @@ def derived(
     for name, slots, (density, velocity), (lower_density, lower_velocity) in zip(
         bound.names, bound.media, media, media[1:], strict=False
     ):
-        if f"{name}.c33" in out or slots["thickness"].terms:
+        modulus = "longitudinal_modulus" if isinstance(slots["velocity"], ComputedSlot) else "c33"
+        if f"{name}.{modulus}" in out or slots["thickness"].terms:
             # Periods have the same values; a slice of a graded layer has none of its own.
             continue
         thickness = bound.fill(slots, values)["thickness"]
-        out[f"{name}.c33"] = np.asarray(density * velocity**2)
+        out[f"{name}.{modulus}"] = np.asarray(density * velocity**2)
+        if isinstance(slots["velocity"], ComputedSlot):
+            out[f"{name}.velocity"] = np.asarray(velocity)
         out[f"{name}.round_trip"] = np.asarray(2 * thickness / velocity)
         out[f"{name}.impedance_ratio"] = np.asarray(density * velocity / (lower_density * lower_velocity))
     for j, slots in enumerate(bound.interfaces[: len(media) - 1]):

@@ -8,12 +8,14 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.response.detection import Detected, ambient_response, boundary_steps, medium_response
+from inverse.response.any_sound import any_response, any_sound
+from inverse.response.detection import Detected, ambient_response, boundary_steps
 from inverse.response.heat import HeatField, heat_field
 from inverse.response.inverse_laplace import TimeGrid, powers, to_delays
 from inverse.response.light import LightField, absorption, light_field
 from inverse.response.media import Sample
-from inverse.response.sound import SoundField, sound_field
+from inverse.response.sound import SoundField
+from inverse.response.three_sound import ThreeSound
 
 __all__ = ["CHANNELS", "Columns", "basis", "columns", "displaced", "fields", "take"]
 
@@ -55,7 +57,7 @@ class Fields:
 
     probe: LightField
     heat: list[HeatField]
-    sound: list[SoundField]
+    sound: Sequence[SoundField | ThreeSound]
     detected: list[Detected]
     steps: list[Complex]
 
@@ -80,11 +82,9 @@ def fields(sample: Sample, wavelengths: tuple[float, float], grid: TimeGrid, tim
     profiles = [absorption(pump, j) for j in range(len(media))]
     source = grid.pulse * powers(grid, time_zero - grid.origin)
     heat, liquid = heat_field(media, sample.resistance, sample.ambient, profiles, grid.s, source)
-    sound = sound_field(
-        media, sample.compliance, sample.ambient, profiles, heat, grid.s, lambda t: powers(grid, t)
-    )
+    sound = any_sound(sample, profiles, heat, grid.s, lambda t: powers(grid, t))
     detected = [
-        medium_response(probe, j, m.thickness, *trio)
+        any_response(probe, j, m.thickness, *trio)
         for j, (m, trio) in enumerate(zip(media, zip(profiles, heat, sound, strict=True), strict=True))
     ]
     if liquid is not None:

@@ -13,6 +13,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -97,7 +98,9 @@ def ascend_blocks(
     return BlockInterfaces(tuple(reflection), tuple(source), tuple(gamma), tuple(beta))
 
 
-def surface_amplitudes(y: Complex, modes: Array, below: BlockInterfaces, ends: BlockEnds, load: Complex) -> Complex:
+def surface_amplitudes(
+    y: Complex, modes: Array, below: BlockInterfaces, ends: BlockEnds, load: Complex
+) -> Complex:
     """Return A of the top medium's modes under a load.
 
     Parameters
@@ -140,7 +143,7 @@ def _below(y: Complex, modes: Array, gamma: Complex) -> Complex:
     """Admittance matrix that the region below shows at its top, in components."""
     # The two factors commute, so the order of the solve does not matter.
     inner = y[..., :, None] * np.linalg.solve(_ONE + gamma, _ONE - gamma)
-    return modes @ inner @ np.swapaxes(modes, -1, -2)
+    return np.asarray(modes @ inner @ np.swapaxes(modes, -1, -2), dtype=complex)
 
 
 def _into(modes: Array, matrix: Complex) -> Complex:
@@ -150,7 +153,7 @@ def _into(modes: Array, matrix: Complex) -> Complex:
 
 def _turned(modes: Array, vector: Complex) -> Complex:
     """Turn mode amplitudes into components."""
-    return (modes @ vector[..., None])[..., 0]
+    return np.asarray((modes @ vector[..., None])[..., 0], dtype=complex)
 
 
 def _back(modes: Array, vector: Complex) -> Complex:
@@ -158,12 +161,12 @@ def _back(modes: Array, vector: Complex) -> Complex:
     return (np.swapaxes(modes, -1, -2) @ vector[..., None])[..., 0]
 
 
-def _apply(matrix: Complex, vector: Complex) -> Complex:
+def _apply(matrix: Any, vector: Any) -> Complex:
     return (matrix @ vector[..., None])[..., 0]
 
 
 def _solve(matrix: Complex, vector: Complex) -> Complex:
-    return np.linalg.solve(matrix, vector[..., None])[..., 0]
+    return np.asarray(np.linalg.solve(matrix, vector[..., None])[..., 0], dtype=complex)
 
 
 def _diagonal(values: Complex) -> Complex:

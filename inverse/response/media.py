@@ -4,13 +4,16 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.cuts import COMPONENTS
 from inverse.description.places import BoundStack, Slots
 from inverse.description.quantities import QUANTITIES
 from inverse.response.recursion import OPEN
+from inverse.response.solids import DepthElastic
 
 __all__ = ["Ambient", "Medium", "Sample", "sample"]
 
@@ -79,12 +82,17 @@ class Ambient:
 
 @dataclass(frozen=True)
 class Sample:
-    """A batch of stacks: media top to bottom (half-space last), interfaces, ambient."""
+    """A batch of stacks: media top to bottom (half-space last), interfaces, ambient.
+
+    Where a layer is cut obliquely there are `solids`, one per medium, and the interfaces' compliance in their planes.
+    """
 
     media: tuple[Medium, ...]
     compliance: tuple[Array, ...]
     resistance: tuple[Array, ...]
     ambient: Ambient
+    solids: tuple[DepthElastic, ...] | None = None
+    tangential: tuple[Array, ...] = ()
 
 
 def sample(bound: BoundStack, values: Mapping[str, Array]) -> Sample:
@@ -101,7 +109,40 @@ def sample(bound: BoundStack, values: Mapping[str, Array]) -> Sample:
         compliance=tuple(_compliance(bound, slots, values) for slots in bound.interfaces),
         resistance=tuple(_resistance(bound, slots, values) for slots in bound.interfaces),
         ambient=_ambient(bound, values),
+        **_three_components(bound, values),
     )
+
+
+def _three_components(bound: BoundStack, values: Mapping[str, Array]) -> dict[str, Any]:
+    if not any("depth_zz" in slots for slots in bound.media):
+        return {}
+    if "depth_zz" not in bound.media[-1]:
+        raise ValueError(
+            "A stack with an oblique cut needs a solid substrate; vacuum below it is not modelled."
+        )
+    return {
+        "solids": tuple(_solid(bound, slots, values) for slots in bound.media),
+        "tangential": tuple(_tangential(bound, slots, values) for slots in bound.interfaces),
+    }
+
+
+def _solid(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> DepthElastic:
+    filled = bound.fill(slots, values)
+    xx, yy, zz, yz, xz, xy = np.broadcast_arrays(
+        *(np.atleast_1d(filled[f"depth_{name}"]) for name in COMPONENTS)
+    )
+    rows = [np.stack(row, axis=-1) for row in ((xx, xy, xz), (xy, yy, yz), (xz, yz, zz))]
+    stress = (filled["thermal_stress_xz"], filled["thermal_stress_yz"], filled["thermal_stress_coefficient"])
+    return DepthElastic(
+        np.stack(rows, axis=-2).astype(float),
+        np.stack(np.broadcast_arrays(*(np.atleast_1d(np.asarray(v, dtype=float)) for v in stress)), axis=-1),
+    )
+
+
+def _tangential(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Array:
+    filled = bound.fill(slots, values)
+    field = "tangential_compliance" if "tangential_compliance" in filled else "compliance"
+    return np.minimum(_coherent(field, filled[field]), OPEN)
 
 
 def _coherent(field: str, value: Array | float) -> Array:
@@ -110,7 +151,9 @@ def _coherent(field: str, value: Array | float) -> Array:
 
 
 def _index(filled: Mapping[str, Array | float], light: str) -> Complex:
-    return _coherent("n_real", filled[f"n_real_{light}"]) + 1j * _coherent("n_imag", filled[f"n_imag_{light}"])
+    return _coherent("n_real", filled[f"n_real_{light}"]) + 1j * _coherent(
+        "n_imag", filled[f"n_imag_{light}"]
+    )
 
 
 def _medium(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Medium:

@@ -20,51 +20,13 @@ from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium
 from inverse.response.recursion import Ends
+from inverse.response.solids import DepthElastic
 from inverse.response.sound import SoundField, _ends, _off_resonance, _particular, modulus
 
-__all__ = ["DepthElastic", "ThreeSound", "depth_elastic", "interface_compliance", "three_sound_field"]
+__all__ = ["ThreeSound", "three_sound_field"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
-
-# Voigt places of the pairs (1, 3), (2, 3), (3, 3).
-_DEPTH = (4, 3, 2)
-
-
-@dataclass(frozen=True, eq=False)
-class DepthElastic:
-    """What waves along the depth and their thermal launching need of a medium, along the sample's axes.
-
-    Attributes
-    ----------
-    stiffness : array, shape (sets or 1, 3, 3)
-        c_{i3k3} in GPa, symmetric and positive definite.
-    stress : array, shape (sets or 1, 3)
-        Thermal stress S_i3 per kelvin at zero strain in GPa/K, tension positive.
-    """
-
-    stiffness: Array
-    stress: Array
-
-
-def depth_elastic(voigt: Array, stress: Array) -> DepthElastic:
-    """Take the depth's part of a stiffness.
-
-    Parameters
-    ----------
-    voigt : array, shape (sets or 1, 6, 6)
-        Voigt matrix along the sample's axes (z the depth), GPa.
-    stress : array, shape (sets or 1, 3) or (sets or 1, 6)
-        Thermal stress per kelvin, GPa/K: S_13, S_23 and S_33; or the six components of the linear expansion in Voigt
-        order (engineering shear), from which ``S = C alpha`` follows.
-
-    Returns
-    -------
-    DepthElastic
-    """
-    if stress.shape[-1] == 6:
-        stress = (voigt @ stress[..., None])[..., list(_DEPTH), 0]
-    return DepthElastic(voigt[..., list(_DEPTH), :][..., list(_DEPTH)], stress)
 
 
 @dataclass(frozen=True)
@@ -108,22 +70,6 @@ class ThreeSound:
     def u_bottom(self) -> Complex:
         """Displacement along the depth at the bottom, nm."""
         return self.at_bottom(2)
-
-
-def interface_compliance(normal: Array, tangential: Array | None = None) -> Array:
-    """Put the compliance of an interface into components.
-
-    Parameters
-    ----------
-    normal, tangential : array, shape (sets or 1, 1)
-        nm/GPa; without a tangential one, the normal one holds for all components.
-
-    Returns
-    -------
-    array, shape (sets or 1, 1, 3)
-    """
-    tangential = normal if tangential is None else tangential
-    return np.stack(np.broadcast_arrays(tangential, tangential, normal), axis=-1)
 
 
 def three_sound_field(
@@ -194,7 +140,8 @@ def _waves(m: Medium, solid: DepthElastic) -> _Waves:
     moduli, vectors = moduli[..., ::-1], vectors[..., ::-1]
     stress = (np.swapaxes(vectors, -1, -2) @ solid.stress[..., None])[..., 0]
     first, second, third = (
-        replace(m, velocity=np.sqrt(moduli[:, k, None] / m.density), stress=stress[:, k, None]) for k in range(3)
+        replace(m, velocity=np.sqrt(moduli[:, k, None] / m.density), stress=stress[:, k, None])
+        for k in range(3)
     )
     return _Waves((first, second, third), vectors)
 
@@ -205,7 +152,9 @@ def _scalars(
     return [_scalar(m, f, heat, s, powers) for m in waves.media]
 
 
-def _scalar(m: Medium, f: Absorption, heat: HeatField, s: Complex, powers: Callable[[Array], Complex]) -> _Scalar:
+def _scalar(
+    m: Medium, f: Absorption, heat: HeatField, s: Complex, powers: Callable[[Array], Complex]
+) -> _Scalar:
     c = _off_resonance(m, modulus(m, s), f, heat.q, s)
     slow = np.sqrt(m.density / c)
     q, inertia = s * slow, m.density * s**2
@@ -246,7 +195,9 @@ def _load(ambient: Ambient, s: Complex) -> Complex:
     return np.stack([0 * normal, 0 * normal, normal], axis=-1)
 
 
-def _fields(three: Sequence[_Scalar], down: Complex, up: Complex) -> tuple[SoundField, SoundField, SoundField]:
+def _fields(
+    three: Sequence[_Scalar], down: Complex, up: Complex
+) -> tuple[SoundField, SoundField, SoundField]:
     a, b, c = (_field(one, down[..., k], up[..., k]) for k, one in enumerate(three))
     return a, b, c
 

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.quantities import check
-from inverse.description.unknowns import Unknown, is_unknown, validate_prior
+from inverse.description.unknowns import checked
 from inverse.elastic import BRANCHES, crystal_direction
 
 __all__ = [
@@ -19,7 +19,6 @@ __all__ = [
     "Measurement",
     "Velocity",
     "candidates",
-    "checked",
     "named",
     "velocities",
 ]
@@ -172,14 +171,6 @@ class EchoTime(Measurement):
     def unknowns(self) -> dict[str, Any]:
         """Return the thickness."""
         return {"thickness": self.thickness}
-
-
-def checked(field: str, value: Any, where: str) -> Any:
-    """Return a number in the allowed range of a quantity, or the prior or `Unknown` given for it."""
-    if is_unknown(value):
-        validate_prior(field, value.prior if isinstance(value, Unknown) else value, where)
-        return value
-    return check(field, value, where)
 
 
 def candidates(branch: Any, where: str) -> tuple[str, ...]:

@@ -11,13 +11,13 @@ from numpy.typing import NDArray
 
 from inverse.description.places import Slot
 from inverse.description.quantities import quantity
-from inverse.description.unknowns import Unknown, is_unknown
+from inverse.description.unknowns import Unknown, checked, is_unknown
 from inverse.elastic import BRANCHES, BranchModuli, branch_moduli, constant_names
 from inverse.elastic.stability import is_stable
 from inverse.elastic.symmetry import basis
 from inverse.elastic.voigt import voigt_to_mandel
 from inverse.inference.parameters import Parameters, parameters
-from inverse.study.measurements import Measurement, checked, named
+from inverse.study.measurements import Measurement, named
 
 __all__ = ["VelocityPosterior", "velocity_posterior"]
 

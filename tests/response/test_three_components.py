@@ -11,13 +11,9 @@ from inverse.elastic import StiffnessTensor, plane_waves, rotation_about_axis
 from inverse.response.blocks import BlockEnds, ascend_blocks
 from inverse.response.detection import medium_response
 from inverse.response.inverse_laplace import to_delays
+from inverse.response.solids import DepthElastic, depth_elastic, interface_compliance
 from inverse.response.three_detection import shear_response, three_response
-from inverse.response.three_sound import (
-    DepthElastic,
-    depth_elastic,
-    interface_compliance,
-    three_sound_field,
-)
+from inverse.response.three_sound import three_sound_field
 
 # GaN, Brillouin scattering 1996, GPa; density 6.10 g/cm3.
 NITRIDE = StiffnessTensor.hexagonal(c11=390.0, c12=145.0, c13=106.0, c33=398.0, c44=105.0)

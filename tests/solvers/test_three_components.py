@@ -14,7 +14,8 @@ from records import one
 
 from inverse.elastic import StiffnessTensor, rotation_about_axis
 from inverse.response.inverse_laplace import to_delays
-from inverse.response.three_sound import depth_elastic, interface_compliance, three_sound_field
+from inverse.response.solids import depth_elastic, interface_compliance
+from inverse.response.three_sound import three_sound_field
 
 from .three_components import Slab, surface_motion
 
