@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import fft, sparse
 
-__all__ = ["TimeGrid", "powers", "time_grid", "to_delays"]
+__all__ = ["LaplaceGrid", "TimeGrid", "powers", "time_grid", "to_delays"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
@@ -32,8 +32,8 @@ _ROWS = 32
 
 
 @dataclass(frozen=True)
-class TimeGrid:
-    """Laplace samples and interpolation weights for fixed delays.
+class LaplaceGrid:
+    """Equally spaced samples of the Laplace variable on a line of constant real part.
 
     Attributes
     ----------
@@ -41,20 +41,30 @@ class TimeGrid:
         rad/ps.
     pulse : complex array, shape (1, frequencies)
         ``exp((s tau)^2 / 2)``, the transform of the Gaussian cross-correlation.
+    origin : float
+        Delay from which times count, ps.
+    """
+
+    s: Complex
+    pulse: Complex
+    origin: float
+
+
+@dataclass(frozen=True)
+class TimeGrid(LaplaceGrid):
+    """Laplace samples and interpolation weights for fixed delays, on a window that begins at the origin.
+
+    Attributes
+    ----------
     spline : array, shape (1, 1, frequencies)
         Inverse of the B-spline's smoothing, over dt.
-    origin : float
-        Delay at which the window begins, ps.
     size : int
         Points of the uniform grid.
     weights : sparse array, shape (delays, size)
         B-spline weights times ``exp(gamma t)``.
     """
 
-    s: Complex
-    pulse: Complex
     spline: Array
-    origin: float
     size: int
     weights: sparse.csr_array
 
@@ -96,7 +106,7 @@ def time_grid(delay: Array, pulse_rms: float, earliest: float, stretch: float = 
     # The transform of a B-spline of degree p is sinc^(p + 1).
     spline = np.sinc(w * step / (2 * np.pi)) ** -(_DEGREE + 1) / step
     weights = _weights((delay - origin) / step, np.exp(gamma * (delay - origin)), size)
-    return TimeGrid(s, np.exp((s * pulse_rms) ** 2 / 2), spline[None, None, :], origin, size, weights)
+    return TimeGrid(s, np.exp((s * pulse_rms) ** 2 / 2), origin, spline[None, None, :], size, weights)
 
 
 def _weights(place: Array, growth: Array, size: int) -> sparse.csr_array:
@@ -122,17 +132,17 @@ def _b_splines(x: Array) -> Array:
     return np.stack(values)
 
 
-def powers(grid: TimeGrid, t: Array) -> Complex:
-    """Return ``exp(-s t)`` on the uniform grid as an outer product of two short tables.
+def powers(grid: LaplaceGrid, t: Array) -> Complex:
+    """Return ``exp(-s t)`` on the equally spaced samples as an outer product of two short tables.
 
     Parameters
     ----------
     t : array, shape (sets, 1)
         ps.
     """
-    gamma, step = grid.s[0, 0].real, grid.s[0, 1].imag
+    first, step = grid.s[0, 0], (grid.s[0, 1] - grid.s[0, 0]).imag
     count = grid.s.shape[1]
-    coarse = np.exp(-t * (gamma + 1j * step * np.arange(0, count, _RADIX)))
+    coarse = np.exp(-t * (first + 1j * step * np.arange(0, count, _RADIX)))
     fine = np.exp(-1j * t * (step * np.arange(_RADIX)))
     return (coarse[:, :, None] * fine[:, None, :]).reshape(t.shape[0], -1)[:, :count]
 
