@@ -71,19 +71,21 @@ class PlaneWave:
         said = (
             (
                 self.diffraction > DIFFRACTION,
-                f"sound of {self.wavelength:.3g} nm diffracts on its {self.distance:.3g} nm (D = "
-                f"{self.diffraction:.2g}, limit {DIFFRACTION:g}): late echoes are weaker and earlier than in the model; widen the spot or cut "
-                "the trace",
+                f"sound of {self.wavelength:.3g} nm diffracts on its {self.distance:.3g} nm "
+                f"(D = {self.diffraction:.2g}, limit {DIFFRACTION:g}): late echoes are weaker and earlier than in "
+                "the model; widen the spot or cut the trace",
             ),
             (
                 self.divergence > DIVERGENCE,
-                f"a spot near the optical limit spreads its light over {self.divergence:.2g} rad (limit "
-                f"{DIVERGENCE:g}): Brillouin frequencies and absorption differ from those of a plane wave; widen the spot",
+                f"a spot near the optical limit spreads its light over {self.divergence:.2g} rad "
+                f"(limit {DIVERGENCE:g}): Brillouin frequencies and absorption differ from those of a plane wave; "
+                "widen the spot",
             ),
             (
                 self.spreading > SPREADING,
-                f"heat spreads sideways by {self.spreading:.2g} spot radii up to the last delay (limit "
-                f"{SPREADING:g}): the slow background falls faster than in the model; widen the spot or cut the trace",
+                f"heat spreads sideways by {self.spreading:.2g} spot radii up to the last delay "
+                f"(limit {SPREADING:g}): the slow background falls faster than in the model; widen the spot or cut "
+                "the trace",
             ),
         )
         return tuple(text for beyond, text in said if beyond)

@@ -3,10 +3,17 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 from inverse.description.quantities import check
+from inverse.description.unknowns import checked
 
-__all__ = ["PumpProbe"]
+__all__ = ["INSTRUMENT", "PumpProbe"]
+
+LOCKIN_CHANNELS = ("in-phase", "out-of-phase")
+
+INSTRUMENT = ("stage_scale", "overlap_drift")
+"""Fields that may be unknown; each goes by its bare name."""
 
 
 @dataclass(frozen=True)
@@ -28,11 +35,20 @@ class PumpProbe:
         Pulses per time in MHz.
     modulation_frequency : float, optional
         Frequency at which the pump is modulated and the lock-in listens, in MHz.
+    lockin_channel : {"in-phase", "out-of-phase"}, optional
+        The trace is this output of a lock-in, with the heat that earlier pulses of the train leave: it needs
+        `repetition_rate` and `modulation_frequency`. By default the trace is that of single pulses.
+    stage_scale : float, frozen scipy.stats distribution or Unknown
+        Scale error of the delay stage: the sample ages by ``(1 + stage_scale) (delay - time_zero)``. As an unknown,
+        such as ``stats.norm(0, 1e-3)``, it goes into the interval of every time and thickness.
+    overlap_drift : float, frozen scipy.stats distribution or Unknown
+        In 1/ns: the signal is multiplied by ``1 + overlap_drift (delay - time_zero)``, as the spots of pump and probe
+        part while the stage moves.
 
     Raises
     ------
     ValueError
-        If a value is not a number or outside its range.
+        If a value is not a number or outside its range, or a lock-in's channel lacks its frequencies.
 
     Examples
     --------
@@ -49,6 +65,9 @@ class PumpProbe:
     probe_spot_radius: float | None = None
     repetition_rate: float | None = None
     modulation_frequency: float | None = None
+    lockin_channel: str | None = None
+    stage_scale: Any = 0.0
+    overlap_drift: Any = 0.0
 
     def __post_init__(self) -> None:
         for field, name in (
@@ -64,3 +83,19 @@ class PumpProbe:
             value = getattr(self, field)
             if value is not None:
                 object.__setattr__(self, field, check(name, value, f"PumpProbe.{field}"))
+        for name in INSTRUMENT:
+            checked(name, getattr(self, name), "PumpProbe")
+        if self.lockin_channel is not None:
+            self._check_train()
+
+    def _check_train(self) -> None:
+        if self.lockin_channel not in LOCKIN_CHANNELS:
+            raise ValueError(
+                f"PumpProbe.lockin_channel = {self.lockin_channel!r}; give one of {', '.join(LOCKIN_CHANNELS)}."
+            )
+        rate, modulation = self.repetition_rate, self.modulation_frequency
+        if rate is None or not modulation or modulation > rate / 2:
+            raise ValueError(
+                f"PumpProbe.lockin_channel needs a repetition_rate and a modulation_frequency between 0 and half of "
+                f"it, in MHz; got {rate} and {modulation}."
+            )
