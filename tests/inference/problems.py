@@ -88,3 +88,16 @@ def normal_draws(fit: Fit, seed: int, ensembles: int = 4, steps: int = 25, walke
     rng = np.random.default_rng(seed)
     root = np.linalg.cholesky(fit.best.covariance_z + 1e-14 * np.eye(fit.best.z.size))
     return fit.best.z + rng.standard_normal((ensembles, steps, walkers, fit.best.z.size)) @ root.T
+
+
+def posterior_draws(fit: Fit, seed: int, ensembles: int = 4, steps: int = 8, walkers: int = 10) -> np.ndarray:
+    """Draw from the posterior by resampling wide normal draws with their weights (one minimum, few unknowns)."""
+    rng = np.random.default_rng(seed)
+    size = fit.best.z.size
+    root = 1.5 * np.linalg.cholesky(fit.best.covariance_z + 1e-14 * np.eye(size))
+    kicks = stats.multivariate_t(np.zeros(size), np.eye(size), df=6, seed=rng)
+    drawn = kicks.rvs(2500)
+    z = fit.best.z + drawn @ root.T
+    log_weight = fit.inversion.posterior(z) - kicks.logpdf(drawn)
+    weight = np.exp(log_weight - log_weight.max())
+    return z[rng.choice(len(z), (ensembles, steps, walkers), p=weight / weight.sum())]
