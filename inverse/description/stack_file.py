@@ -29,7 +29,8 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
         per part, top to bottom, holding ``layer``, ``interface`` (any value), ``substrate``, ``graded`` (the two
         materials) or ``repeat`` (a number, with the parts of a period as ``[[part.part]]``). A prior is written as
         text, ``velocity = "norm(6.42, 0.10)"``, by the name of a scipy.stats family; the same shared unknown in
-        several places as ``"v_film: norm(6.42, 0.10)"``.
+        several places as ``"v_film: norm(6.42, 0.10)"``; elastic constants as
+        ``stiffness = {symmetry = "cubic", c11 = "norm(107, 5)", c12 = 60.4, c44 = 28.3}``.
 
     Returns
     -------
@@ -91,7 +92,9 @@ def _made(kind: str, name: Any, inner: list[Part], fields: dict[str, Any]) -> Pa
 
 
 def _value(key: str, value: Any, shared: dict[str, Unknown]) -> Any:
-    if key in ("orientation", "name") or not isinstance(value, str):
+    if isinstance(value, dict):
+        return {name: _value(name, inner, shared) for name, inner in value.items()}
+    if key in ("orientation", "name", "symmetry") or not isinstance(value, str):
         return value
     name, _, text = value.rpartition(":")
     prior = _prior(key, text)

@@ -128,15 +128,18 @@ def _three_components(bound: BoundStack, values: Mapping[str, Array]) -> dict[st
 
 def _solid(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> DepthElastic:
     filled = bound.fill(slots, values)
-    xx, yy, zz, yz, xz, xy = np.broadcast_arrays(
-        *(np.atleast_1d(filled[f"depth_{name}"]) for name in COMPONENTS)
-    )
+    xx, yy, zz, yz, xz, xy = _together(*(filled[f"depth_{name}"] for name in COMPONENTS))
     rows = [np.stack(row, axis=-1) for row in ((xx, xy, xz), (xy, yy, yz), (xz, yz, zz))]
-    stress = (filled["thermal_stress_xz"], filled["thermal_stress_yz"], filled["thermal_stress_coefficient"])
+    # The velocity is no number where the constants are unstable; the stress takes that into the response.
+    mark = 0.0 * np.asarray(filled["velocity"])
+    stress = ("thermal_stress_xz", "thermal_stress_yz", "thermal_stress_coefficient")
     return DepthElastic(
-        np.stack(rows, axis=-2).astype(float),
-        np.stack(np.broadcast_arrays(*(np.atleast_1d(np.asarray(v, dtype=float)) for v in stress)), axis=-1),
+        np.stack(rows, axis=-2), np.stack(_together(*(filled[name] + mark for name in stress)), axis=-1)
     )
+
+
+def _together(*values: Array | float) -> tuple[Array, ...]:
+    return np.broadcast_arrays(*(np.atleast_1d(np.asarray(v, dtype=float)) for v in values))
 
 
 def _tangential(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Array:

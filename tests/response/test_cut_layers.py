@@ -1,0 +1,104 @@
+"""Traces of layers known by their constants: the scalar answer for symmetry cuts, three components otherwise."""
+
+import numpy as np
+import pytest
+from scipy import stats
+
+import inverse as inv
+from inverse.elastic import StiffnessTensor, longitudinal_velocity, plane_waves
+
+SETUP = inv.PumpProbe(pump=400, probe=800, pulse_rms=0.3)
+DELAY = np.arange(-4.0, 60.0, 0.1)
+# Copper, CRC constants: strongly anisotropic.
+COPPER = {"symmetry": "cubic", "c11": 168.3, "c12": 121.2, "c44": 75.7}
+TENSOR = StiffnessTensor.cubic(c11=168.3, c12=121.2, c44=75.7)
+SUBSTRATE = inv.Substrate("Si", orientation="100")
+
+
+def trace(layer: inv.Layer, **bond: object) -> np.ndarray:
+    interface = inv.Interface(boundary_conductance=100.0, **{"compliance": 0.02, **bond})
+    found = inv.simulate(inv.Stack(layer, interface, SUBSTRATE), SETUP, DELAY)
+    return found["reflectance_change"].to_numpy()
+
+
+def cut(orientation: object, **changes: object) -> inv.Layer:
+    return inv.Layer("Cu", **{"thickness": 60.0, "stiffness": COPPER, "orientation": orientation, **changes})
+
+
+@pytest.mark.parametrize("orientation", ["100", "110", "111"])
+def test_a_symmetry_cut_is_the_layer_of_its_velocity(orientation: str) -> None:
+    layer = cut(orientation)
+    velocity = float(longitudinal_velocity(TENSOR, layer.material.density, orientation))
+    plain = inv.Layer("Cu", thickness=60.0, velocity=velocity)
+    np.testing.assert_allclose(trace(layer), trace(plain), rtol=0, atol=1e-12 * np.abs(trace(plain)).max())
+
+
+@pytest.mark.parametrize("axis", [[1, 0, 1e-6], [1, 1, 1e-6], [1, 1, 1 + 1e-6]])
+def test_three_components_meet_the_scalar_path_at_a_symmetry_cut(axis: list) -> None:
+    name = {(1, 0): "100", (1, 1): "110"}[(axis[0], axis[1])] if axis[2] < 0.5 else "111"
+    exact = trace(cut(name))
+    assert np.abs(trace(cut(axis)) - exact).max() < 1e-9 * np.abs(exact).max()
+
+
+def test_an_oblique_cut_shows_a_shear_echo_that_no_scalar_layer_has() -> None:
+    # Copper tilted: the quasi-shear wave returns at 2 d / v, where a scalar layer of the same velocity is quiet.
+    axis, thickness = [0.0, np.sin(np.deg2rad(25)), np.cos(np.deg2rad(25))], 60.0
+    layer = cut(axis, thickness=thickness)
+    waves = plane_waves(TENSOR, layer.material.density, axis)
+    order = np.argsort(waves.longitudinal_part)
+    slow, fast = (2 * thickness / float(waves.phase_velocity[order[k]]) for k in (1, 2))
+    assert abs(slow - 2 * fast) > 3.0  # clear of the longitudinal echoes
+    plain = inv.Layer("Cu", thickness=thickness, velocity=2 * thickness / fast)
+    difference = np.abs(np.diff(trace(layer) - trace(plain), 2))
+    near = np.abs(DELAY[1:-1] - slow) < 1.0
+    quiet = (DELAY[1:-1] > 0.5 * (fast + slow) + 3.0) & (DELAY[1:-1] < 2 * fast - 3.0)
+    assert quiet.sum() > 20
+    assert difference[near].max() > 20 * difference[quiet].max()
+
+
+def test_a_tangential_spring_changes_the_trace_of_an_oblique_cut_only_there() -> None:
+    axis = [0.0, 1.0, 2.0]
+    same = trace(cut(axis), tangential_compliance=0.02)
+    np.testing.assert_array_equal(same, trace(cut(axis)))
+    loose = trace(cut(axis), tangential_compliance=10.0)
+    assert np.abs(loose - same).max() > 1e-4 * np.abs(same).max()
+
+
+def test_shares_of_an_oblique_stack_add_up() -> None:
+    interface = inv.Interface(boundary_conductance=100.0, compliance=0.02)
+    found = inv.simulate(inv.Stack(cut([1, 2, 3]), interface, SUBSTRATE), SETUP, DELAY, shares=True)
+    total = found["reflectance_change_share"].sum("part")
+    scale = float(np.abs(found["reflectance_change"]).max())
+    assert float(np.abs(total - found["reflectance_change"]).max()) < 1e-12 * scale
+
+
+@pytest.mark.parametrize("orientation", ["111", [1, 2, 3]])
+def test_log_prob_of_constants_is_set_by_set_and_refuses_unstable_ones(orientation: object) -> None:
+    priors = {"c11": stats.norm(168, 8), "c12": stats.norm(121, 8), "c44": stats.norm(76, 4)}
+    layer = cut(orientation, stiffness={"symmetry": "cubic", **priors})
+    stack = inv.Stack(layer, inv.Interface(compliance=0.02, boundary_conductance=100.0), SUBSTRATE)
+    data = inv.simulate(stack, SETUP, DELAY)[["reflectance_change"]]
+    size = 1e-3 * float(np.abs(data["reflectance_change"]).max())
+    data["reflectance_change"] += np.random.default_rng(1).normal(0.0, size, DELAY.size)
+    problem = inv.Inversion(stack, SETUP, data, time_zero=0.0, noise="white")
+    assert problem.names == ("Cu.c11", "Cu.c12", "Cu.c44", "noise.white")
+    level = float(problem.priors["noise.white"].median())
+    values = np.array([[168.3, 121.2, 75.7, level], [160.0, 170.0, 75.7, level], [170.0, 119.0, 74.0, level]])
+    together = problem.log_prob(values)
+    assert together[1] == -np.inf
+    alone = [float(problem.log_prob(row)[0]) for row in values[[0, 2]]]
+    np.testing.assert_allclose(together[[0, 2]], alone, rtol=1e-9)
+
+
+def test_derived_quantities_of_a_cut_layer() -> None:
+    from inverse.description.places import bind
+    from inverse.inference.derived import derived
+
+    layer = cut("110", stiffness={**COPPER, "c11": stats.norm(168, 8)}, density=8.932)
+    found = derived(bind(inv.Stack(layer, SUBSTRATE), SETUP), {"Cu.c11": np.array([168.3, 170.0])})
+    # [110] of copper 4968.0 m/s, computed outside this library; rho v^2 = (c11 + c12 + 2 c44) / 2.
+    assert 1e3 * found["Cu.velocity"][0] == pytest.approx(4968.0, abs=0.06)
+    np.testing.assert_allclose(
+        found["Cu.longitudinal_modulus"], (np.array([168.3, 170.0]) + 121.2 + 2 * 75.7) / 2
+    )
+    assert "Cu.c33" not in found
