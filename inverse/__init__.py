@@ -38,6 +38,8 @@ _HOMES = {
     "check_model": "inference.model_checks",
     "profile": "inference.profile",
     "budget": "inference.budget",
+    "check_coverage": "study.coverage",
+    "check_known": "study.coverage",
     "save": "inference.result",
     "load": "inference.result",
     "table": "report",

@@ -11,7 +11,16 @@ import pytest
 ROOMS = ("elastic", "description", "response", "inference", "study", "report")
 REPORT = {
     *("report", "report_header", "summary", "sheet", "__main__"),
-    *("plot", "plot_fit", "plot_corner", "plot_section", "plot_style", "plot_elastic", "plot_echoes"),
+    *(
+        "plot",
+        "plot_fit",
+        "plot_corner",
+        "plot_section",
+        "plot_style",
+        "plot_elastic",
+        "plot_echoes",
+        "plot_coverage",
+    ),
     *("rounding", "unit_text", "propagation", "finite_differences"),
 }
 HEAVY = (

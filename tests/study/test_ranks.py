@@ -4,7 +4,15 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.study.ranks import CELLS, DRAWS, checked_levels, counts, rank_of, simultaneous_bands, tail_probability
+from inverse.study.ranks import (
+    CELLS,
+    DRAWS,
+    checked_levels,
+    counts,
+    rank_of,
+    simultaneous_bands,
+    tail_probability,
+)
 
 LEVELS = (0.5, 0.68, 0.9, 0.95)
 
@@ -59,7 +67,7 @@ def test_bands_widen_as_the_failure_budget_shrinks():
 
 @pytest.mark.parametrize("levels", [(), (0.0,), (1.0,), (0.683,), (50,)])
 def test_levels_that_are_no_whole_per_cent_are_refused(levels):
-    with pytest.raises(ValueError, match="give whole per cents between 0.01 and 0.99"):
+    with pytest.raises(ValueError, match="give whole per cents between"):
         checked_levels(levels)
 
 
