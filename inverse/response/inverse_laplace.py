@@ -94,7 +94,9 @@ def time_grid(delay: Array, pulse_rms: float, earliest: float, stretch: float = 
         If a delay is not finite.
     """
     if not np.all(np.isfinite(delay)):
-        raise ValueError("A delay is not finite; remove such points before modelling (read_trace does on request).")
+        raise ValueError(
+            "A delay is not finite; remove such points before modelling (read_trace does on request)."
+        )
     origin = min(float(delay.min()), earliest) - 8 * pulse_rms - 1.0
     window = max(float(delay.max()) - origin, 20 * pulse_rms) * stretch
     count = _RADIX * int(np.ceil(_CUTOFF / pulse_rms / (2 * np.pi / window) / _RADIX))
@@ -161,8 +163,8 @@ def to_delays(grid: TimeGrid, spectra: Complex, arrival: Complex | None = None) 
     array, shape (sets, functions, delays)
     """
     sets, functions, count = spectra.shape
-    factor = grid.spline if arrival is None else grid.spline * arrival[:, None]
-    factor = np.broadcast_to(factor, (sets, 1, count))
+    common = grid.spline if arrival is None else grid.spline * arrival[:, None]
+    factor = np.broadcast_to(common, (sets, 1, count))
     out = np.empty((sets, functions, grid.weights.shape[0]))
     together = max(1, _ROWS // functions)
     padded = np.zeros((min(together, sets), functions, grid.size // 2 + 1), dtype=complex)
