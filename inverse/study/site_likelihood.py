@@ -26,6 +26,8 @@ _MOST_NORMALS = 3
 _ROUNDS = 300
 _NARROWEST = 0.02  # of the draws' standard deviation
 _MOST_MISSING = 0.98
+_LEAST_SHARE = 0.3  # of the draws that must be effective once weighted
+_FAR = 40.0  # standard deviations
 _FLAT = 0.03  # of a normal's width: closer to zero its density no longer changes
 
 
@@ -72,19 +74,19 @@ def site_likelihood(draws: Array, prior: Any, *, logarithmic: bool) -> Tabulated
         If there are too few draws, or they are not finite, not positive or outside the prior.
     """
     values = _checked(np.asarray(draws, dtype=float).ravel(), prior, logarithmic)
-    if not logarithmic:
-        weight = np.ones(values.size) if prior is None else _inverse(prior.logpdf(values))
-        mixture = fit_mixture(values, weight, *_support(prior))
-        return _linear_table(mixture)
     if prior is None:
-        return _linear_table(fit_mixture(np.log(values), np.ones(values.size)))
-    density = prior.logpdf(values)
-    direct, inverse = _inverse(density), _inverse(density + 2 * np.log(values))
-    low, high = (max(float(b), 0.0) for b in prior.support())
-    if _effective(direct) >= 0.9 * _effective(inverse):
-        return _logarithmic_table(fit_mixture(values, direct, low, high))
-    turned = fit_mixture(1 / values, inverse, 1 / high, np.inf if low == 0 else 1 / low)
-    return _logarithmic_table(turned).mirrored()
+        x = np.log(values) if logarithmic else values
+        return _linear_table(fit_mixture(x, np.ones(x.size)))
+    density, enough = prior.logpdf(values), _LEAST_SHARE * values.size
+    direct, inverse = _inverse(density), _inverse(density + 2 * np.log(np.abs(values)))
+    low, high = (float(b) for b in prior.support())
+    if _effective(direct) >= max(enough, 0.9 * _effective(inverse) if logarithmic else 0.0):
+        mixture = fit_mixture(values, direct, max(low, 0.0) if logarithmic else low, high)
+        return _logarithmic_table(mixture) if logarithmic else _linear_table(mixture)
+    if logarithmic and _effective(inverse) >= enough:
+        turned = fit_mixture(1 / values, inverse, 1 / high, 1 / low if low > 0 else np.inf)
+        return _logarithmic_table(turned).mirrored()
+    return _divided_table(values, prior, logarithmic)
 
 
 def fit_mixture(y: Array, weight: Array, low: float = -np.inf, high: float = np.inf) -> Mixture:
@@ -150,13 +152,6 @@ def _effective(weight: Array) -> float:
     return float(weight.sum() ** 2 / (weight @ weight))
 
 
-def _support(prior: Any) -> tuple[float, float]:
-    if prior is None:
-        return -np.inf, np.inf
-    low, high = prior.support()
-    return float(low), float(high)
-
-
 def _guess(t: Array, share: Array, count: int) -> Mixture:
     """Cut the points at their largest gaps' side of equal shares: one normal for each part."""
     order = np.argsort(t)
@@ -202,6 +197,33 @@ def _hidden(now: Mixture, bounds: tuple[float, float]) -> tuple[Array, Array, Ar
     phi_a, phi_b = (np.exp(-0.5 * np.minimum(e * e, 1e4)) / np.sqrt(2 * np.pi) for e in (a, b))
     tail = np.where(np.isfinite(b), b, 0.0) * phi_b - np.where(np.isfinite(a), a, 0.0) * phi_a
     return inside, now.sd * (phi_b - phi_a), now.sd**2 * (1 - inside + tail)
+
+
+def _divided_table(values: Array, prior: Any, logarithmic: bool) -> Tabulated:
+    """Divide a mixture fitted to the draws themselves by the prior: for a prior that pulls so hard that weights fail.
+
+    Where the quotient still rises at the end of the range, the draws say nothing of what lies beyond, and it is held
+    constant from six standard deviations on.
+    """
+    x = np.log(values) if logarithmic else values
+    mixture, middle, sd = fit_mixture(x, np.ones(x.size)), float(x.mean()), float(x.std())
+
+    def log_quotient(at: Array) -> Array:
+        y = np.exp(at) if logarithmic else at
+        with np.errstate(divide="ignore", invalid="ignore"):
+            log = mixture.log(at) - prior.logpdf(y) - (at if logarithmic else 0.0)
+        return np.where(np.isfinite(log), log, -np.inf)
+
+    grid = np.linspace(middle - _FAR * sd, middle + _FAR * sd, 2001)
+    log = log_quotient(grid)
+    rises = bool(log[0] > log[1]), bool(log[-1] > log[-2])
+    low, high = (middle + side * (6 if up else _FAR) * sd for side, up in zip((-1, 1), rises, strict=True))
+    inside = log[(grid >= low) & (grid <= high)]
+    width = max(float((inside > inside.max() - 0.5).sum()) * (grid[1] - grid[0]) / 2, float(mixture.sd.min()))
+    fine = np.linspace(low, high, min(int((high - low) / width * PER_WIDTH) + 2, 4000))
+    log = log_quotient(fine) - inside.max()
+    ends = [float(value) if up else -np.inf for value, up in zip((log[0], log[-1]), rises, strict=True)]
+    return trimmed(Tabulated(float(low), float(fine[1] - fine[0]), log, ends[0], ends[1], width))
 
 
 def _linear_table(mixture: Mixture) -> Tabulated:

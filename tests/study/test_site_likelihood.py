@@ -50,6 +50,22 @@ def test_the_prior_makes_no_difference():
     assert first == pytest.approx(second, abs=0.015)
 
 
+def test_a_prior_as_narrow_as_the_data_is_divided_out():
+    """Normal in normal: a likelihood four of the prior's standard deviations away comes back."""
+    prior, mean, sd = stats.norm(0.0, 1.0), 4.0, 1.0
+    draws = np.random.default_rng(6).normal(mean / 2, np.sqrt(0.5), 4000)
+    found = site_likelihood(draws, prior, logarithmic=False).moments(-20, 20)
+    # The precision is a difference, 2 - 1, of which 2 is known to sqrt(2 / 4000): its square root to 2.2 %.
+    assert found[1] == pytest.approx(sd, abs=3.5 * 0.022)
+    assert found[0] == pytest.approx(mean, abs=3.5 * 2 * 0.045)
+
+
+def test_draws_that_follow_the_prior_say_nothing():
+    draws = stats.norm(0, 1).rvs(2000, random_state=np.random.default_rng(8))
+    table = site_likelihood(draws, stats.norm(0, 1), logarithmic=False)
+    assert np.ptp(table.interpolate(np.linspace(-2, 2, 9))) < 0.35
+
+
 def test_two_basins_stay_two():
     rng = np.random.default_rng(2)
     draws = np.concatenate([rng.normal(60, 0.2, 300), rng.normal(63, 0.2, 100)])
@@ -84,13 +100,14 @@ def test_a_signed_quantity_is_tabulated_as_it_is():
 @pytest.mark.parametrize(
     ("draws", "logarithmic", "message"),
     [
-        (np.ones(10), True, "got 10 draws; at least 50"),
+        (np.arange(1.0, 11.0), True, "got 10 draws, 10 of them distinct; at least 50"),
+        (np.ones(400), True, "got 400 draws, 1 of them distinct"),
         (
-            np.append(np.ones(60), np.inf),
+            np.append(SIXTY, np.inf),
             True,
             "1 of 61 draws are not finite.*compliance in place of the stiffness",
         ),
-        (np.append(SIXTY, -1.0), True, "1 of 61 draws are zero or negative.*scale='linear'"),
+        (np.append(SIXTY, -1.0), True, r"1 of 61 draws are zero or negative.*scale='linear'"),
         (np.append(SIXTY, -1.0), False, "outside the prior's support"),
     ],
 )
