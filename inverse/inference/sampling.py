@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any, Protocol
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.inference.basins import minima_record
 from inverse.inference.ensembles import EnsembleRun, run_ensembles
 from inverse.inference.independence import IndependenceMove, StudentMixture, adapt
 from inverse.inference.least_squares import Basin, Density, Fit
@@ -123,7 +124,7 @@ def sample_posterior(
         progress=progress,
         executor=executor,
     )
-    return inversion.result(run, seed, {"minima": _minima(fit)})
+    return inversion.result(run, seed, {"minima": minima_record(fit)})
 
 
 def prepare(
@@ -174,11 +175,3 @@ def problem_hash(inversion: Inversion) -> str:
 def _positive(covariance: Array) -> Array:
     size, vectors = np.linalg.eigh(covariance)
     return np.asarray((vectors * np.clip(size, 1e-12, 1.0)) @ vectors.T)
-
-
-def _minima(fit: Fit) -> list[dict[str, Any]]:
-    return [
-        {"values": dict(zip(fit.names, map(float, b.values), strict=True)), "weight": b.weight,
-         "log_posterior": b.log_posterior}
-        for b in fit.minima
-    ]  # fmt: skip
