@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
 from inverse.plot_style import COLUMN, MILLIMETRE, decade, new_figure, power_label, style
+from inverse.response.media import layers
 from inverse.response.rays import Arrival, arrivals
 from inverse.response.simulate import simulate
 from inverse.response.strain_map import known_sample, strain_map
@@ -88,8 +89,8 @@ def _strongest(back: Sequence[Arrival], most: int = 10) -> list[Arrival]:
 
 def _interfaces(stack: Stack, setup: PumpProbe, values: Mapping[str, float] | None) -> Array:
     """Depth of the top of every medium, nm."""
-    layers = known_sample(stack, setup, values or {}).media[:-1]
-    return np.concatenate([[0.0], np.cumsum([m.thickness.item() for m in layers])])
+    below = layers(known_sample(stack, setup, values or {}).media)
+    return np.concatenate([[0.0], np.cumsum([m.thickness.item() for m in below])])
 
 
 def _draw_map(figure: Figure, ax: Axes, extent: tuple[float, float, float, float], strain: Array) -> None:
@@ -225,14 +226,10 @@ def shares(
 
 
 def _largest(rows: Array, names: list[str], most: int) -> list[tuple[str, Array]]:
-    """Add contributions of equal name and sort them, the largest first; the rest becomes one."""
-    merged: dict[str, Array] = {}
-    for name, row in zip(names, rows, strict=True):
-        merged[name] = merged[name] + row if name in merged else row
-    order = sorted(merged, key=lambda n: -float(np.abs(merged[n]).max()))
-    largest = [n for n in order[:most] if np.abs(merged[n]).max() > 1e-3 * np.abs(merged[order[0]]).max()]
-    kept = [(n, merged[n]) for n in largest]
-    rest = [n for n in order[len(kept) :] if np.any(merged[n])]
-    if rest:
-        kept.append((f"{len(rest)} others", np.sum([merged[n] for n in rest], axis=0)))
-    return kept
+    """Sort contributions, the largest first; the rest becomes one."""
+    sizes = np.abs(rows).max(axis=1)
+    order = [i for i in np.argsort(-sizes) if sizes[i] > 0]
+    kept = [i for i in order[:most] if sizes[i] > 1e-3 * sizes[order[0]]]
+    rest = order[len(kept) :]
+    out = [(names[i], rows[i]) for i in kept]
+    return [*out, (f"{len(rest)} others", rows[rest].sum(axis=0))] if rest else out

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import dataclasses
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -52,7 +53,7 @@ class BoundStack:
     names : tuple of str
         Place names of the media.
     materials : tuple of str
-        Material (with orientation) of each medium: the key by which P and Q are shared.
+        Material (with orientation) of each medium but vacuum: the key by which P and Q are shared.
     instrument : dict
         What the bench adds, field -> `Slot`: ``stage_scale`` and ``overlap_drift`` where they are not zero.
     """
@@ -62,7 +63,7 @@ class BoundStack:
     ambient: Slots
     names: tuple[str, ...]
     materials: tuple[str, ...]
-    instrument: Slots = field(default_factory=dict)
+    instrument: Slots = dataclasses.field(default_factory=dict)
 
     @property
     def slots(self) -> tuple[Slot, ...]:
@@ -120,11 +121,15 @@ def bind(stack: Stack, setup: PumpProbe) -> BoundStack:
         ),
         ambient=ambient,
         names=stack.names,
-        materials=tuple(part.material.name for part in stack.media),
+        materials=tuple(part.material.name for part in stack.media if not _is_empty(part)),
         instrument=instrument_slots(setup),
     )
     _refuse_two_priors(bound)
     return bound
+
+
+def _is_empty(part: Medium) -> bool:
+    return isinstance(part, Substrate) and part.is_empty
 
 
 def _field_slot(place: str, material: Material, field: str, value: Any) -> Slot:
@@ -181,7 +186,7 @@ def _interface_slots(place: str, part: Interface, oblique: bool) -> Slots:
 
 
 def _substrate_slots(place: str, part: Medium, setup: PumpProbe) -> Slots:
-    if isinstance(part, Substrate) and part.is_empty:
+    if _is_empty(part):
         return _light_slots(place, part.material, setup)
     return _material_slots(place, part.material, setup, _density_slot(place, part.material))
 

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.response.light import Absorption
-from inverse.response.media import Ambient, Medium
+from inverse.response.media import Ambient, Medium, anchored, layers
 from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
 
 __all__ = ["HeatField", "heat_field"]
@@ -64,7 +64,7 @@ def heat_field(
     Parameters
     ----------
     media, resistance, ambient
-        The sample, coherent units.
+        The sample, coherent units; nothing leaves it below a last layer.
     profiles : sequence of Absorption
         Absorbed fraction per length of each medium.
     s : complex array, shape (1, frequencies)
@@ -79,18 +79,20 @@ def heat_field(
         Temperature of a liquid at its foot; None without a liquid.
     """
     capacity, lattice = zip(*(_capacity(m, s) for m in media), strict=True)
-    kappa = [_off_resonance(m.conductivity, c, s, f) for m, c, f in zip(media, capacity, profiles, strict=True)]
+    kappa = [
+        _off_resonance(m.conductivity, c, s, f) for m, c, f in zip(media, capacity, profiles, strict=True)
+    ]
     q = [np.sqrt(s * c / k) for c, k in zip(capacity, kappa, strict=True)]
     y = [k * qj for k, qj in zip(kappa, q, strict=True)]
     steep = [pulse / (c * s - k * f.p**2) for c, k, f in zip(capacity, kappa, profiles, strict=True)]
     beat = [pulse / (c * s + k * f.x**2) for c, k, f in zip(capacity, kappa, profiles, strict=True)]
-    decay = [np.exp(-qj * m.thickness) for qj, m in zip(q[:-1], media[:-1], strict=True)]
+    decay = [np.exp(-qj * m.thickness) for qj, m in zip(q, layers(media), strict=False)]
     ends = [_ends(f, k, a, b) for f, k, a, b in zip(profiles, kappa, steep, beat, strict=True)]
     below = ascend(y, decay, resistance, ends)
     load = _liquid_load(ambient, s)
     down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends)
-    zero = np.zeros((1, 1), dtype=complex)
-    fields = [HeatField(*parts) for parts in zip(q, [*decay, zero], down, up, steep, beat, lattice, strict=True)]
+    amplitudes = zip(q, anchored(decay, media), down, up, steep, beat, lattice, strict=True)
+    fields = [HeatField(*parts) for parts in amplitudes]
     if isinstance(load, float):
         return fields, None
     return fields, down[0] + below.gamma[0] * down[0] + below.beta[0] + ends[0].u_top

@@ -71,7 +71,7 @@ def _scaled(part: _Part, powers: Mapping[str, int], factor: Array) -> _Part:
     return replace(part, **{name: getattr(part, name) * factor**power for name, power in present.items()})
 
 
-def drift(bound: BoundStack, values: Mapping[str, Array], elapsed: Array) -> Array | float:
+def drift(bound: BoundStack, values: Mapping[str, Array], elapsed: Array) -> Array:
     """Return what the overlap of the spots makes of the signal.
 
     Parameters
@@ -85,10 +85,10 @@ def drift(bound: BoundStack, values: Mapping[str, Array], elapsed: Array) -> Arr
     Returns
     -------
     array, shape (sets or 1, 1, delays)
-        ``1 + overlap_drift x elapsed``; the number 1 where there is no drift.
+        ``1 + overlap_drift x elapsed``; of shape (1, 1, 1) where there is no drift.
     """
     if "overlap_drift" not in bound.instrument:
-        return 1.0
+        return np.ones((1, 1, 1))
     slope = np.atleast_1d(np.asarray(bound.instrument["overlap_drift"].fill(values), dtype=float))[:, None]
     return (1.0 + 1e-3 * slope * elapsed)[:, None, :]
 

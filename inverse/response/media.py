@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -80,10 +80,14 @@ class Ambient:
         return self.density is not None
 
 
+_EMPTY = Ambient(np.ones((1, 1), dtype=complex), np.ones((1, 1), dtype=complex))
+
+
 @dataclass(frozen=True)
 class Sample:
-    """A batch of stacks: media top to bottom (half-space last), interfaces, ambient.
+    """A batch of stacks: media top to bottom, interfaces, ambient.
 
+    A half-space stands last, or the last layer is free below and `backing` is the vacuum there.
     Where a layer is cut obliquely there are `solids`, one per medium, and the interfaces' compliance in their planes.
     """
 
@@ -93,6 +97,23 @@ class Sample:
     ambient: Ambient
     solids: tuple[DepthElastic, ...] | None = None
     tangential: tuple[Array, ...] = ()
+    backing: Ambient | None = None
+
+    def light(self, beam: str) -> tuple[list[Complex], list[Array]]:
+        """Return the index of every medium to ``"pump"`` or ``"probe"``, what is below last, and the thicknesses."""
+        below = () if self.backing is None else (self.backing,)
+        index = [getattr(part, f"n_{beam}") for part in (*self.media, *below)]
+        return index, [m.thickness for m in layers(self.media)]
+
+
+def layers(media: Sequence[Medium]) -> Sequence[Medium]:
+    """Return the media that have a lower face: all, where the last is free below."""
+    return media if np.all(np.isfinite(media[-1].thickness)) else media[:-1]
+
+
+def anchored(decay: Sequence[Complex], media: Sequence[Medium]) -> list[Complex]:
+    """Complete ``exp(-q d)`` of the layers by the half-space's zero, where there is one."""
+    return list(decay) if len(decay) == len(media) else [*decay, np.zeros((1, 1), dtype=complex)]
 
 
 def sample(bound: BoundStack, values: Mapping[str, Array]) -> Sample:
@@ -105,10 +126,11 @@ def sample(bound: BoundStack, values: Mapping[str, Array]) -> Sample:
         Unknown name -> array of shape (sets,), public units.
     """
     return Sample(
-        media=tuple(_medium(bound, slots, values) for slots in bound.media),
+        media=tuple(_medium(bound, slots, values) for slots in bound.media if "velocity" in slots),
         compliance=tuple(_compliance(bound, slots, values) for slots in bound.interfaces),
         resistance=tuple(_resistance(bound, slots, values) for slots in bound.interfaces),
         ambient=_ambient(bound, values),
+        backing=None if "velocity" in bound.media[-1] else _EMPTY,
         **_three_components(bound, values),
     )
 
@@ -199,8 +221,7 @@ def _resistance(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) ->
 
 def _ambient(bound: BoundStack, values: Mapping[str, Array]) -> Ambient:
     if not bound.ambient:
-        vacuum = np.ones((1, 1), dtype=complex)
-        return Ambient(vacuum, vacuum)
+        return _EMPTY
     filled = bound.fill(bound.ambient, values)
     return Ambient(
         n_pump=_index(filled, "pump"),

@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
 from inverse.response.light import absorption, light_field
-from inverse.response.media import Sample
+from inverse.response.media import Sample, layers
 from inverse.response.sound import modulus
 from inverse.response.strain_map import known_sample
 
@@ -120,15 +120,15 @@ def arrivals(
     """
     batch = known_sample(stack, setup, values or {})
     s = 2j * np.pi * frequency
-    layers = batch.media[:-1]
-    crossing = [m.thickness.item() / m.velocity.item() for m in layers]
+    below = layers(batch.media)
+    crossing = [m.thickness.item() / m.velocity.item() for m in below]
     loss = [
         _loss(
             m.thickness.item() / m.velocity.item(), modulus(m, np.array([[s]])) / m.density / m.velocity**2, s
         )
-        for m in layers
+        for m in below
     ]
-    depth = np.concatenate([[0.0], np.cumsum([m.thickness.item() for m in layers])])
+    depth = np.concatenate([[0.0], np.cumsum([m.thickness.item() for m in below])])
     coefficients = _boundaries(batch, s)
     start = _stressed_most(batch, setup) if source is None else source
     found = _trace(crossing, loss, depth, coefficients, last, smallest, start)
@@ -138,9 +138,7 @@ def arrivals(
 def _stressed_most(batch: Sample, setup: PumpProbe) -> int:
     """Return the medium with the largest stress at its top, stress coefficient x absorbed power / heat capacity."""
     media = batch.media
-    pump = light_field(
-        [m.n_pump for m in media], [m.thickness for m in media[:-1]], setup.pump, batch.ambient.n_pump
-    )
+    pump = light_field(*batch.light("pump"), setup.pump, batch.ambient.n_pump)
     profiles = [absorption(pump, j) for j in range(len(media))]
     power = [(f.top + f.bottom * f.decay + 2 * f.beat.real).item() for f in profiles]
     launched = [abs(m.stress.item()) * p / m.heat_capacity.item() for m, p in zip(media, power, strict=True)]
@@ -154,6 +152,8 @@ def _loss(time: float, ratio: NDArray[np.complex128], s: complex) -> float:
 
 def _boundaries(batch: Sample, s: complex) -> _Boundaries:
     z = [(m.density * m.velocity).item() for m in batch.media]
+    if batch.backing is not None:
+        z.append(0.0)
     above = 0.0
     if batch.ambient.density is not None and batch.ambient.velocity is not None:
         above = (batch.ambient.density * batch.ambient.velocity).item()

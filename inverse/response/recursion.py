@@ -41,7 +41,7 @@ class Interfaces:
     reflection, source : tuple of arrays
         R and b of ``B = R A E + b`` at the bottom of each layer.
     gamma, beta : tuple of arrays
-        ``B E = gamma A + beta`` at the top of each medium, the half-space last (zeros).
+        ``B E = gamma A + beta`` at the top of each medium, a half-space last (zeros).
     """
 
     reflection: tuple[Complex, ...]
@@ -51,6 +51,7 @@ class Interfaces:
 
 
 _ZERO = np.zeros((1, 1), dtype=complex)
+_ONE = np.ones((1, 1), dtype=complex)
 
 
 def ascend(
@@ -59,14 +60,14 @@ def ascend(
     compliance: Sequence[NDArray[np.float64]],
     ends: Sequence[Ends] | None = None,
 ) -> Interfaces:
-    """Sweep from the half-space to the top layer.
+    """Sweep from the half-space, or from a free back, to the top layer.
 
     Parameters
     ----------
     y : sequence of arrays
         Admittance of each medium, substrate last; all arrays broadcast to (sets, frequencies).
     decay : sequence of arrays
-        ``exp(-q d)`` of each layer (one fewer than media).
+        ``exp(-q d)`` of each layer: one fewer than media, or as many where the last is free below (no flux).
     compliance : sequence of arrays
         Inverse of the interface's stiffness or conductance, 0 to `OPEN`.
     ends : sequence of Ends, optional
@@ -79,7 +80,11 @@ def ascend(
     gamma, beta = [_ZERO], [_ZERO]
     reflection: list[Complex] = []
     source: list[Complex] = []
-    for j in range(len(decay) - 1, -1, -1):
+    if len(decay) == len(y):
+        free = _ZERO if ends is None else ends[-1].f_bottom / y[-1]
+        reflection, source = [_ONE], [free]
+        gamma, beta = [decay[-1] * decay[-1]], [free * decay[-1]]
+    for j in range(len(y) - 2, -1, -1):
         below = y[j + 1] if gamma[0] is _ZERO else y[j + 1] * (1 - gamma[0]) / (1 + gamma[0])
         shared = 1 / (1 + compliance[j] * below)
         w = below * shared
@@ -118,6 +123,8 @@ def descend(
     for j, e in enumerate(decay):
         arriving = down[j] * e
         up.append(below.reflection[j] * arriving + below.source[j])
+        if j == len(y) - 1:
+            return down, up
         flux = y[j] * (arriving - up[j])
         if ends is not None:
             flux = flux + ends[j].f_bottom - ends[j + 1].f_top + y[j + 1] * below.beta[j + 1]

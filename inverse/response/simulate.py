@@ -8,13 +8,16 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.limits import warn_if_not_plane
 from inverse.description.materials import Material
+from inverse.description.parts import Substrate
 from inverse.description.places import BoundStack, bind
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
 from inverse.response.basis import CHANNELS, displaced, fields
+from inverse.response.instrument import drift, measured_sample
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
-from inverse.response.media import Sample, sample
+from inverse.response.media import Sample
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -54,7 +57,7 @@ def simulate(
     time_zero : float
         ps.
     shares : bool
-        Add ``<channel>_share`` on (part, delay): strain and heat of every medium, displacement of every boundary.
+        Add ``<channel>_share`` on (part, delay): strain and heat of every place, displacement of every boundary.
         They add up to the channel.
 
     Returns
@@ -74,8 +77,11 @@ def simulate(
     bound = bind(stack, setup)
     known = _known(bound, values or {})
     grid = time_grid(delay, setup.pulse_rms, earliest=time_zero)
-    batch = sample(bound, known)
-    parts, names = _parts(bound, stack, batch, setup, grid, time_zero)
+    batch = measured_sample(bound, known)
+    warn_if_not_plane(stack, setup, float(delay.max()) - time_zero)
+    found, names = _merged(*_parts(bound, stack, batch, setup, grid, time_zero))
+    found *= drift(bound, known, delay[None] - time_zero)[0]
+    parts = {"reflectance_change": 2 * found.real, "optical_phase": found.imag}
     signals = {channel: setup.fluence * parts[channel] for channel in CHANNELS}
     sums = {channel: rows.sum(axis=0) for channel, rows in signals.items()}
     trace = make_trace(delay, **sums, measured=False)
@@ -101,11 +107,11 @@ def _known(bound: BoundStack, values: Mapping[str, float]) -> dict[str, Array]:
 
 def _parts(
     bound: BoundStack, stack: Stack, batch: Sample, setup: PumpProbe, grid: TimeGrid, time_zero: float
-) -> tuple[dict[str, Array], list[str]]:
-    """Return per channel the contribution of each part at unit fluence, and the parts' names."""
+) -> tuple[NDArray[np.complex128], list[str]]:
+    """Return the contribution of each part to delta r / r at unit fluence, and the parts' names."""
     found = fields(batch, (setup.pump, setup.probe), grid, np.full((1, 1), time_zero))
     media = _materials(stack)
-    owners = [*(["ambient"] if bound.ambient else []), *bound.names]
+    owners = [*(["ambient"] if bound.ambient else []), *bound.names][: len(media)]
     spectra: list[NDArray[np.complex128]] = []
     names: list[str] = []
     weights: list[complex] = []
@@ -124,13 +130,22 @@ def _parts(
     rows = np.stack([np.broadcast_to(spectrum, (1, size))[0] for spectrum in spectra])
     response = to_delays(grid, rows[None])[0]
     complex_parts = np.array(weights)[:, None] * (response[0::2] + 1j * response[1::2])
-    return {"reflectance_change": 2 * complex_parts.real, "optical_phase": complex_parts.imag}, names
+    return complex_parts, names
+
+
+def _merged(rows: NDArray[np.complex128], names: list[str]) -> tuple[NDArray[np.complex128], list[str]]:
+    """Add rows of the same name: the periods of a superlattice, the slices of a graded layer."""
+    unique = list(dict.fromkeys(names))
+    out = np.zeros((len(unique), rows.shape[1]), dtype=complex)
+    np.add.at(out, [unique.index(name) for name in names], rows)
+    return out, unique
 
 
 def _materials(stack: Stack) -> list[Material]:
     """Return what the probe crosses, top to bottom, a liquid above included."""
     liquid = [] if stack.ambient is None else [stack.ambient]
-    return [*liquid, *(part.material for part in stack.media)]
+    solids = (p.material for p in stack.media if not (isinstance(p, Substrate) and p.is_empty))
+    return [*liquid, *solids]
 
 
 def _coefficient(given: Any, default: complex) -> complex:

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
-from inverse.response.media import Ambient, Medium
+from inverse.response.media import Ambient, Medium, anchored, layers
 from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
 
 __all__ = ["SoundField", "modulus", "sound_field"]
@@ -82,7 +82,7 @@ def sound_field(
     Parameters
     ----------
     media, compliance, ambient
-        The sample, coherent units.
+        The sample, coherent units; a last layer is free below.
     profiles, heat
         Light and heat of each medium.
     s : complex array, shape (1, frequencies)
@@ -99,7 +99,7 @@ def sound_field(
     y = [s * np.sqrt(m.density * cj) for m, cj in zip(media, c, strict=True)]
     decay = [
         powers(sl.real * m.thickness) if plain else np.exp(-qj * m.thickness)
-        for sl, qj, m, plain in zip(slow[:-1], q[:-1], media[:-1], lossless[:-1], strict=True)
+        for sl, qj, m, plain in zip(slow, q, layers(media), lossless, strict=False)
     ]
     inertia = [m.density * s**2 for m in media]
     parts = [_particular(*group) for group in zip(media, c, inertia, profiles, heat, strict=True)]
@@ -107,10 +107,9 @@ def sound_field(
     below = ascend(y, decay, compliance, ends)
     load = s * (ambient.density * ambient.velocity) if ambient.density is not None else 0.0
     down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends)
-    zero = np.zeros((1, 1), dtype=complex)
     return [
         SoundField(qj, e, a, b, *p, u_top=a + b * e + end.u_top, u_bottom=a * e + b + end.u_bottom)
-        for qj, e, a, b, p, end in zip(q, [*decay, zero], down, up, parts, ends, strict=True)
+        for qj, e, a, b, p, end in zip(q, anchored(decay, media), down, up, parts, ends, strict=True)
     ]
 
 

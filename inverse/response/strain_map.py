@@ -65,7 +65,7 @@ def strain_map(
     Raises
     ------
     ValueError
-        If a depth is negative or not finite; a constant is missing; or `values`
+        If a depth is negative, not finite or below a free back; a constant is missing; or `values`
         names no unknown.
     """
     import xarray as xr
@@ -198,12 +198,14 @@ class _Moved:
 
 def _moved(batch: Sample, wavelengths: tuple[float, float], grid: TimeGrid, medium: int) -> _Moved:
     found = fields(batch, wavelengths, grid, np.zeros((1, 1)))
-    media = batch.media
-    pump = light_field(
-        [m.n_pump for m in media], [m.thickness for m in media[:-1]], wavelengths[0], batch.ambient.n_pump
-    )
+    media, sound = batch.media, found.sound[medium]
+    if not isinstance(sound, SoundField):
+        raise ValueError(
+            "Strain in a stack with an oblique cut has three components; only its trace is computed."
+        )
+    pump = light_field(*batch.light("pump"), wavelengths[0], batch.ambient.n_pump)
     profile = absorption(pump, medium)
-    return _Moved(media[medium], profile, found.heat[medium], found.sound[medium])
+    return _Moved(media[medium], profile, found.heat[medium], sound)
 
 
 def _in_time(grid: TimeGrid, spectra: Complex) -> Array:
@@ -216,5 +218,9 @@ def _locate(batch: Sample, depth: Array) -> tuple[NDArray[np.intp], Array]:
     tops = np.concatenate([[0.0], np.cumsum([m.thickness.item() for m in batch.media[:-1]])])
     if not np.all(np.isfinite(depth)) or np.any(depth < 0):
         raise ValueError("A depth is negative or not finite; give nm below the surface, 0 or more.")
+    if batch.backing is not None and np.any(depth > tops[-1] + batch.media[-1].thickness.item()):
+        raise ValueError(
+            f"A depth is in the vacuum below {tops[-1] + batch.media[-1].thickness.item():g} nm."
+        )
     number = np.clip(np.searchsorted(tops, depth, side="right") - 1, 0, None)
     return number, depth - tops[number]

@@ -131,20 +131,18 @@ def heating(stack: Stack, setup: PumpProbe, *, power: float) -> Heating:
 
 def _sample(stack: Stack, setup: PumpProbe) -> Sample:
     bound = bind(stack, setup)
-    if "velocity" not in bound.media[-1]:
+    batch = sample(bound, {name: np.array([float(prior.median())]) for name, prior in bound.priors.items()})
+    if batch.backing is not None:
         raise ValueError(
             f"heating got {stack}, which is free below: its steady temperature depends on what holds it at the edge."
         )
-    return sample(bound, {name: np.array([float(prior.median())]) for name, prior in bound.priors.items()})
+    return batch
 
 
 def _absorbed(batch: Sample, wavelength: float) -> list[Array]:
     """Absorbed fraction of each medium."""
-    media = batch.media
-    light = light_field(
-        [m.n_pump for m in media], [m.thickness for m in media[:-1]], wavelength, batch.ambient.n_pump
-    )
-    return [absorption(light, j).fraction() for j in range(len(media))]
+    light = light_field(*batch.light("pump"), wavelength, batch.ambient.n_pump)
+    return [absorption(light, j).fraction() for j in range(len(batch.media))]
 
 
 def _steady(batch: Sample, fractions: list[float], radius: float) -> float:

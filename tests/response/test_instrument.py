@@ -50,7 +50,7 @@ def bound(**bench):
 def test_a_perfect_bench_has_no_places():
     assert bound().instrument == {}
     assert stage_factor(bound(), {}) is None
-    assert drift(bound(), {}, DELAY[None]) == 1.0
+    assert drift(bound(), {}, DELAY[None]).item() == 1.0
 
 
 def test_unknowns_of_the_bench_go_by_their_bare_names():

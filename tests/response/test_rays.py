@@ -29,7 +29,9 @@ def test_one_layer_rings_down_by_its_own_reflection():
     assert found[1].times == pytest.approx((0, 10, 20, 30, 40)) and found[1].depths == (0, 60, 0, 60, 0)
 
 
-def test_a_liquid_takes_its_share():
+def test_a_membrane_keeps_all_and_a_liquid_takes_its_share():
+    free = inv.Stack(inv.Layer(SOFT, thickness=60.0), inv.Substrate("vacuum"))
+    assert [a.amplitude for a in arrivals(free, SETUP, 50.0, source=0)] == pytest.approx([1.0, 1.0])
     water = inv.Material("water", density=1.0, velocity=1.5, **FIELDS)
     wet = inv.Stack(inv.Layer(SOFT, thickness=60.0), inv.Substrate(HARD), ambient=water)
     one, two = (a.amplitude for a in arrivals(wet, SETUP, 50.0))

@@ -114,3 +114,12 @@ def test_depths_above_the_surface_are_refused(depth):
 def test_strange_values_are_named():
     with pytest.raises(ValueError, match=r"values names W\.thickness; the stack's unknowns are none"):
         strain_map(stack(), SETUP, [1.0], [1.0], values={"W.thickness": 3.0})
+
+
+def test_a_membrane_has_no_strain_below_it():
+    membrane = inv.Stack(inv.Layer("Al", thickness=40.0), inv.Substrate("vacuum"))
+    faces = strain_map(membrane, SETUP, np.arange(0.0, 20.0, 0.5), [1e-3, 20.0, 39.999]).elastic_strain
+    # free faces bear no stress; a layer between them is stretched and pressed in turn
+    assert np.abs(faces[[0, 2]]).max() < 1e-3 * np.abs(faces[1]).max()
+    with pytest.raises(ValueError, match="A depth is in the vacuum below 40 nm"):
+        strain_map(membrane, SETUP, [1.0], [41.0])
