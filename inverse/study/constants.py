@@ -260,15 +260,19 @@ def _rows(given: Any) -> tuple[Measurement, ...]:
     return velocities(given) if is_table else tuple(given)
 
 
+_RESTING = {
+    "density": "velocities give constants over density",
+    "thickness": "an echo time gives velocity over thickness",
+    "n_real": "a Brillouin shift gives velocity times refractive index",
+}
+
+
 def _resting(fields: Mapping[str, str]) -> Sequence[str]:
     """Name the priors that set the size of what is reached."""
-    said = {
-        "density": "velocities give constants over density",
-        "thickness": "an echo time gives velocity over thickness",
-        "n_real": "a Brillouin shift gives velocity times refractive index",
-    }
-    return [
-        f"The size of what is reached rests on the prior of {name}: {said[field]}."
-        for name, field in fields.items()
-        if field in said
-    ]
+    said = []
+    for field, reason in _RESTING.items():
+        *most, last = [name for name, found in fields.items() if found == field] or [""]
+        if last:
+            named = f"priors of {', '.join(most)} and {last}" if most else f"prior of {last}"
+            said.append(f"The size of what is reached rests on the {named}: {reason}.")
+    return said
