@@ -169,7 +169,8 @@ def _sheared(stack: Stack, media: list[Slots]) -> list[Slots]:
     known: dict[int, Slots] = {}
     for name, part, slots in zip(stack.names, stack.media, media, strict=True):
         if id(slots) not in known:
-            known[id(slots)] = slots | depth_slots(name, part.material, slots)
+            solid = "velocity" in slots
+            known[id(slots)] = slots | (depth_slots(name, part.material, slots) if solid else {})
     return [known[id(slots)] for slots in media]
 
 

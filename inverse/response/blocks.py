@@ -45,7 +45,7 @@ class BlockInterfaces:
     reflection, source : tuple of arrays
         R and b of ``B = R A E + b`` at the bottom of each layer: a matrix and a vector.
     gamma, beta : tuple of arrays
-        ``B E = gamma A + beta`` at the top of each medium, the half-space last (zeros).
+        ``B E = gamma A + beta`` at the top of each medium, a half-space last (zeros).
     """
 
     reflection: tuple[Complex, ...]
@@ -61,14 +61,14 @@ def ascend_blocks(
     compliance: Sequence[Array],
     ends: Sequence[BlockEnds],
 ) -> BlockInterfaces:
-    """Sweep from the half-space to the top layer.
+    """Sweep from the half-space, or from a free back, to the top layer.
 
     Parameters
     ----------
     y : sequence of arrays
         Admittance of each mode of each medium, substrate last.
     decay : sequence of arrays
-        ``exp(-q d)`` of each mode of each layer (one fewer than media).
+        ``exp(-q d)`` of each mode of each layer: one fewer than media, or as many where the last is free below.
     modes : sequence of arrays, shape (sets or 1, 1, 3, 3)
         Polarisations as columns, orthonormal, of each medium.
     compliance : sequence of arrays, shape (sets or 1, 1, 3)
@@ -82,7 +82,11 @@ def ascend_blocks(
     gamma, beta = [np.zeros((1, 1, 3, 3), dtype=complex)], [np.zeros((1, 1, 3), dtype=complex)]
     reflection: list[Complex] = []
     source: list[Complex] = []
-    for j in range(len(decay) - 1, -1, -1):
+    if len(decay) == len(y):
+        source = [ends[-1].f_bottom / y[-1]]
+        reflection = [_diagonal(np.ones_like(source[0]))]
+        gamma, beta = [_diagonal(decay[-1] * decay[-1])], [source[0] * decay[-1]]
+    for j in range(len(y) - 2, -1, -1):
         seen = _below(y[j + 1], modes[j + 1], gamma[0])
         offset = _turned(modes[j + 1], ends[j + 1].u_top + beta[0])
         pushed = _turned(modes[j + 1], ends[j + 1].f_top - y[j + 1] * beta[0])
@@ -132,6 +136,8 @@ def descend_blocks(
     for j, e in enumerate(decay):
         arriving = down[j] * e
         up.append(_apply(below.reflection[j], arriving) + below.source[j])
+        if j == len(y) - 1:
+            return down, up
         flux = _turned(modes[j], y[j] * (arriving - up[j]) + ends[j].f_bottom)
         flux = _back(modes[j + 1], flux) - ends[j + 1].f_top + y[j + 1] * below.beta[j + 1]
         down.append(_solve(_ONE - below.gamma[j + 1], flux / y[j + 1]))

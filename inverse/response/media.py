@@ -138,12 +138,8 @@ def sample(bound: BoundStack, values: Mapping[str, Array]) -> Sample:
 def _three_components(bound: BoundStack, values: Mapping[str, Array]) -> dict[str, Any]:
     if not any("depth_zz" in slots for slots in bound.media):
         return {}
-    if "depth_zz" not in bound.media[-1]:
-        raise ValueError(
-            "A stack with an oblique cut needs a solid substrate; vacuum below it is not modelled."
-        )
     return {
-        "solids": tuple(_solid(bound, slots, values) for slots in bound.media),
+        "solids": tuple(_solid(bound, slots, values) for slots in bound.media if "velocity" in slots),
         "tangential": tuple(_tangential(bound, slots, values) for slots in bound.interfaces),
     }
 

@@ -16,7 +16,7 @@ from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium, anchored, layers
 from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
 
-__all__ = ["SoundField", "modulus", "sound_field"]
+__all__ = ["SoundField", "modulus", "off_resonance", "particular", "particular_ends", "sound_field"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
@@ -90,9 +90,7 @@ def sound_field(
     powers : callable
         ``powers(t)`` is ``exp(-s t)`` for t of shape (sets, 1), cheap on the uniform grid.
     """
-    c = [
-        _off_resonance(m, modulus(m, s), f, h.q, s) for m, f, h in zip(media, profiles, heat, strict=True)
-    ]
+    c = [off_resonance(m, modulus(m, s), f, h.q, s) for m, f, h in zip(media, profiles, heat, strict=True)]
     lossless = [cj.shape[1] == 1 for cj in c]
     slow = [np.sqrt(m.density / cj) for m, cj in zip(media, c, strict=True)]
     q = [s * sl for sl in slow]
@@ -102,8 +100,8 @@ def sound_field(
         for sl, qj, m, plain in zip(slow, q, layers(media), lossless, strict=False)
     ]
     inertia = [m.density * s**2 for m in media]
-    parts = [_particular(*group) for group in zip(media, c, inertia, profiles, heat, strict=True)]
-    ends = [_ends(*group) for group in zip(profiles, heat, parts, inertia, strict=True)]
+    parts = [particular(*group) for group in zip(media, c, inertia, profiles, heat, strict=True)]
+    ends = [particular_ends(*group) for group in zip(profiles, heat, parts, inertia, strict=True)]
     below = ascend(y, decay, compliance, ends)
     load = s * (ambient.density * ambient.velocity) if ambient.density is not None else 0.0
     down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends)
@@ -113,7 +111,7 @@ def sound_field(
     ]
 
 
-def _off_resonance(m: Medium, c: Complex, f: Absorption, diffusing: Complex, s: Complex) -> Complex:
+def off_resonance(m: Medium, c: Complex, f: Absorption, diffusing: Complex, s: Complex) -> Complex:
     """Move the modulus by 2e-6 where light or diffusing heat is as steep as sound at the real frequency."""
     inertia, first = m.density * s[:, :1].real ** 2, c[:, :1].real
     close = np.abs(first * f.p**2 - inertia) < 1e-6 * inertia
@@ -121,7 +119,7 @@ def _off_resonance(m: Medium, c: Complex, f: Absorption, diffusing: Complex, s: 
     return np.where(close, c * (1 + 2e-6), c) if np.any(close) else c
 
 
-def _particular(
+def particular(
     m: Medium, c: Complex, inertia: Complex, f: Absorption, heat: HeatField
 ) -> tuple[Complex, Complex, Complex]:
     """Return p^2 g times the thermal stress of the diffusing, exponential and interference parts."""
@@ -133,7 +131,9 @@ def _particular(
     return hot, steep, beat
 
 
-def _ends(f: Absorption, heat: HeatField, parts: tuple[Complex, Complex, Complex], inertia: Complex) -> Ends:
+def particular_ends(
+    f: Absorption, heat: HeatField, parts: tuple[Complex, Complex, Complex], inertia: Complex
+) -> Ends:
     """Particular displacement (strain / p) and flux (-inertia strain / p^2) at both ends."""
     hot, steep, beat = parts
     end = f.beat * f.turn
@@ -146,11 +146,15 @@ def _ends(f: Absorption, heat: HeatField, parts: tuple[Complex, Complex, Complex
     a, b = heat.down, heat.up * heat.decay
     c, d = heat.down * heat.decay, heat.up
     return Ends(
-        u_top=hot_u * (b - a) + steep * (per_p * (f.bottom * f.decay - f.top)) + beat * (2 * f.beat.imag / f.x),
+        u_top=hot_u * (b - a)
+        + steep * (per_p * (f.bottom * f.decay - f.top))
+        + beat * (2 * f.beat.imag / f.x),
         f_top=hot_f * (a + b)
         + steep_f * (per_p**2 * (f.top + f.bottom * f.decay))
         + beat_f * (2 * f.beat.real / f.x**2),
-        u_bottom=hot_u * (d - c) + steep * (per_p * (f.bottom - f.top * f.decay)) + beat * (2 * end.imag / f.x),
+        u_bottom=hot_u * (d - c)
+        + steep * (per_p * (f.bottom - f.top * f.decay))
+        + beat * (2 * end.imag / f.x),
         f_bottom=hot_f * (c + d)
         + steep_f * (per_p**2 * (f.top * f.decay + f.bottom))
         + beat_f * (2 * end.real / f.x**2),

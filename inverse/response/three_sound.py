@@ -18,10 +18,10 @@ from numpy.typing import NDArray
 from inverse.response.blocks import BlockEnds, ascend_blocks, descend_blocks, surface_amplitudes
 from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
-from inverse.response.media import Ambient, Medium
+from inverse.response.media import Ambient, Medium, layers
 from inverse.response.recursion import Ends
 from inverse.response.solids import DepthElastic
-from inverse.response.sound import SoundField, _ends, _off_resonance, _particular, modulus
+from inverse.response.sound import SoundField, modulus, off_resonance, particular, particular_ends
 
 __all__ = ["ThreeSound", "three_sound_field"]
 
@@ -87,7 +87,7 @@ def three_sound_field(
     Parameters
     ----------
     media : sequence of Medium
-        Coherent units; their velocity and stress are not used.
+        Coherent units; their velocity and stress are not used. A last layer is free below.
     solids : sequence of DepthElastic
         One per medium.
     compliance : sequence of arrays, shape (sets or 1, 1, 3)
@@ -98,13 +98,13 @@ def three_sound_field(
     Returns
     -------
     list of ThreeSound
-        From the top, the half-space last.
+        From the top, a half-space last.
     """
     waves = [_waves(m, solid) for m, solid in zip(media, solids, strict=True)]
     polarisation = [w.polarisation for w in waves]
     scalars = [_scalars(w, f, h, s, powers) for w, f, h in zip(waves, profiles, heat, strict=True)]
     y = [_modal([one.y for one in three]) for three in scalars]
-    decay = [_modal([one.decay for one in three]) for three in scalars[:-1]]
+    decay = [_modal([one.decay for one in three]) for three, _ in zip(scalars, layers(media), strict=False)]
     ends = [_block_ends([one.ends for one in three]) for three in scalars]
     modes = [p[:, None] for p in polarisation]
     below = ascend_blocks(y, decay, modes, compliance, ends)
@@ -155,16 +155,16 @@ def _scalars(
 def _scalar(
     m: Medium, f: Absorption, heat: HeatField, s: Complex, powers: Callable[[Array], Complex]
 ) -> _Scalar:
-    c = _off_resonance(m, modulus(m, s), f, heat.q, s)
+    c = off_resonance(m, modulus(m, s), f, heat.q, s)
     slow = np.sqrt(m.density / c)
     q, inertia = s * slow, m.density * s**2
-    parts = _particular(m, c, inertia, f, heat)
+    parts = particular(m, c, inertia, f, heat)
     return _Scalar(
         q=q,
         y=s * np.sqrt(m.density * c),
         decay=_decay(m.thickness, slow, q, powers),
         parts=parts,
-        ends=_ends(f, heat, parts, inertia),
+        ends=particular_ends(f, heat, parts, inertia),
     )
 
 

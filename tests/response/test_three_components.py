@@ -1,8 +1,23 @@
 """Three-component sound: limits, conservation, conversion, and echoes where Christoffel's equation puts them."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
-from build import AT_ONCE, OPEN, crystal, liquid, metal, quick_grid, solve, stacked
+from build import (
+    AT_ONCE,
+    OPEN,
+    VACUUM,
+    Solved,
+    crystal,
+    gauss_legendre,
+    liquid,
+    metal,
+    quick_grid,
+    solve,
+    stacked,
+    strain,
+)
 from hypothesis import given
 from hypothesis import strategies as st
 from records import one
@@ -10,8 +25,11 @@ from records import one
 from inverse.elastic import StiffnessTensor, plane_waves, rotation_about_axis
 from inverse.response.blocks import BlockEnds, ascend_blocks
 from inverse.response.detection import medium_response
+from inverse.response.heat import heat_field
 from inverse.response.inverse_laplace import to_delays
+from inverse.response.light import absorption, light_field
 from inverse.response.solids import DepthElastic, depth_elastic, interface_compliance
+from inverse.response.sound import sound_field
 from inverse.response.three_detection import shear_response, three_response
 from inverse.response.three_sound import three_sound_field
 
@@ -68,6 +86,91 @@ def test_isotropic_layers_give_the_scalar_answer(name: str) -> None:
         for axis in (0, 1):
             shear = shear_response(solved.probe, j, depth, profile, heat, found, axis)
             assert np.all(np.abs(shear) < 1e-9 * np.abs(expected.strain))
+
+
+def membrane(*media, compliance=None) -> Solved:
+    """What `solve` gives, with vacuum below the last medium."""
+    sample = replace(stacked(*media, compliance=compliance), backing=VACUUM)
+    pump, probe = (
+        light_field(*sample.light(beam), w, VACUUM.n_pump) for beam, w in (("pump", 400.0), ("probe", 800.0))
+    )
+    profiles = [absorption(pump, j) for j in range(len(media))]
+    heat, surface = heat_field(
+        media, sample.resistance, VACUUM, profiles, AT_ONCE.s, np.ones((1, 1), dtype=complex)
+    )
+    sound = sound_field(
+        media, sample.compliance, VACUUM, profiles, heat, AT_ONCE.s, lambda t: np.exp(-AT_ONCE.s * t)
+    )
+    return Solved(sample, AT_ONCE, pump, probe, profiles, heat, surface, sound)
+
+
+def test_a_membrane_of_isotropic_layers_is_the_scalar_one() -> None:
+    solved = membrane(metal(60.0), crystal(40.0), compliance=[0.05])
+    fields = three(solved, [isotropic(m) for m in solved.sample.media])
+    for found, scalar in zip(fields, solved.sound, strict=True):
+        np.testing.assert_allclose(found.u_top, scalar.u_top, rtol=1e-10)
+        np.testing.assert_allclose(found.u_bottom, scalar.u_bottom, rtol=1e-10)
+
+
+def test_a_tilted_membrane_keeps_its_momentum() -> None:
+    # Nothing pulls at a free membrane: the integral of density x displacement stays zero in every component.
+    sample, solids = cut_film(35.0, 40.0, stress=(2e-3, 0.0, 5e-3))
+    film = sample.media[0]
+    solved = membrane(film, crystal(25.0, density=2.33))
+    fields = three(solved, solids)
+    s2 = AT_ONCE.s**2
+    for axis in (0, 2):
+        momentum = sum(
+            m.density * s2 * mean_displacement(solved, j, m.thickness.item(), found, axis)
+            for j, (m, found) in enumerate(zip(solved.sample.media, fields, strict=True))
+        )
+        scale = np.abs(fields[0].at_top(axis)) * np.abs(s2) * 6.10 * 40.0
+        assert np.all(np.abs(momentum) < 1e-10 * scale)
+
+
+def mean_displacement(solved, j: int, thickness: float, found, axis: int) -> np.ndarray:
+    """Integral of a displacement component over medium j, from its strain by parts."""
+    z, weight = gauss_legendre(0.0, thickness)
+    shear = strain_of(solved, j, z, found, axis)
+    # The integral of u is u(bottom) d less the integral of z u'.
+    return found.at_bottom(axis)[0] * thickness - (weight[:, None] * z[:, None] * shear).sum(axis=0)
+
+
+def strain_of(solved, j: int, z: np.ndarray, found, axis: int) -> np.ndarray:
+    """u_i' at depths z of medium j, the sum over the waves of what `strain` writes out for one."""
+    parts = [strain(replace(solved, sound=[mode] * (j + 1)), j, z) for mode in found.modes]
+    return sum(weight.item() * part for weight, part in zip(found.component(axis), parts, strict=True))
+
+
+@pytest.mark.parametrize("axis", [0, 1, 2])
+def test_detected_strain_is_the_integral_over_the_depth(axis: int) -> None:
+    # i k n / (n0 r) x integral of u_i' E^2 dz by quadrature; real and imaginary part in time as documented.
+    sample, solids = cut_film(35.0, 60.0, stress=(2e-3, 1e-3, 5e-3))
+    film = metal(60.0, density=6.10, n_probe=2.5 + 0.3j)
+    solved = solve(stacked(film, sample.media[1]), AT_ONCE)
+    found = three(solved, [DepthElastic(rotated_about_z(solids[0].stiffness), solids[0].stress), solids[1]])[
+        0
+    ]
+    seen = (
+        three_response(solved.probe, 0, film.thickness, solved.profiles[0], solved.heat[0], found).strain
+        if axis == 2
+        else shear_response(solved.probe, 0, film.thickness, solved.profiles[0], solved.heat[0], found, axis)
+    )
+    z, weight = gauss_legendre(0.0, 60.0, panels=80)
+    light = solved.probe
+    n, k = light.n[0].item(), light.k
+    field = light.a[0].item() * np.exp(1j * k * n * z) + light.b[0].item() * np.exp(1j * k * n * (60.0 - z))
+    optical = 1j * k * n / (light.n_ambient.item() * light.r.item()) * field**2
+    moved = strain_of(solved, 0, z, found, axis)
+    h = (weight[:, None] * optical[:, None] * moved).sum(axis=0)
+    conjugate = (weight[:, None] * np.conj(optical)[:, None] * moved).sum(axis=0)
+    np.testing.assert_allclose(seen[0, 0], (h + conjugate) / 2, rtol=1e-8)
+    np.testing.assert_allclose(seen[0, 1], (h - conjugate) / 2j, rtol=1e-8)
+
+
+def rotated_about_z(stiffness: np.ndarray) -> np.ndarray:
+    turn = rotation_about_axis([0, 0, 1], 20.0)
+    return turn @ stiffness @ turn.T
 
 
 def test_a_whole_trace_of_isotropic_layers_is_the_scalar_one() -> None:
