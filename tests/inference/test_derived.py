@@ -16,14 +16,17 @@ SI = Material("Si-100", density=2.3296, velocity=8.4358, **COMMON)
 SETUP = PumpProbe(pump=400, probe=800, pulse_rms=0.3)
 
 
-def quantities(values, frequency, interlayer=None, **layer):
-    stack = Stack(
+def stack(**layer):
+    return Stack(
         Layer(AL, **{"thickness": stats.uniform(50, 100), "velocity": stats.norm(6.42, 0.1), **layer}),
         Interface(compliance=stats.halfcauchy(scale=0.05), boundary_conductance=100.0),
         Substrate(SI),
     )
+
+
+def quantities(values, frequency, interlayer=None, **layer):
     arrays = {name: np.array(v, float) for name, v in values.items()}
-    return derived(bind(stack, SETUP), arrays, frequency=frequency, interlayer=interlayer)
+    return derived(bind(stack(**layer), SETUP), arrays, frequency=frequency, interlayer=interlayer)
 
 
 def values(thickness=100.0, velocity=6.42, compliance=0.1):
@@ -55,6 +58,12 @@ def test_reflection_of_the_spring(compliance, expected):
     for frequency, value in zip((0.05, 0.1, 0.2), expected, strict=True):
         found = quantities(values(compliance=compliance), frequency)["Al-film|Si-100.reflection"][0]
         assert found == pytest.approx(value, abs=6e-5)
+
+
+def test_reflection_is_reported_at_50_ghz():
+    arrays = {name: np.array(v, float) for name, v in values(compliance=0.1).items()}
+    found = derived(bind(stack(), SETUP), arrays)["Al-film|Si-100.reflection"][0]
+    assert found == pytest.approx(0.2844, abs=6e-5)
 
 
 def test_interface_quantities():
