@@ -161,7 +161,8 @@ def linearise(inversion: Inversion, z: Array, *, refit: bool = True) -> Linearis
     physical = [i for i, name in enumerate(inversion.names) if name not in inversion.noise_names]
     names = tuple(inversion.names[i] for i in physical)
     constants = fixed_constants(inversion)
-    parts = [_Part(inversion, member, z, physical, constants) for member in inversion.posterior.members]
+    members = inversion.posterior.as_gaussian(z).members
+    parts = [_Part(inversion, member, z, physical, constants) for member in members]
     information = sum(part.information for part in parts)
     covariance = np.asarray(np.linalg.inv(np.eye(len(names)) + information), dtype=float)
     scores: dict[str, Array] = {}

@@ -10,7 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import optimize
 
-from inverse.inference.minimise import Minimum, minimise
+from inverse.inference.likelihood import TraceModel
+from inverse.inference.minimise import Minimum, covariance_of, jacobian, minimise
 from inverse.inference.parameters import Parameters
 from inverse.inference.posterior import Posterior
 
@@ -177,14 +178,9 @@ class Projected:
         return np.nan_to_num(np.concatenate(parts, axis=1), nan=1e10, posinf=1e10, neginf=-1e10)
 
 
-def _residual(model: object, local: Mapping[str, Array], functions: Mapping[str, Array], i: int) -> Array:
+def _residual(model: TraceModel, local: Mapping[str, Array], functions: Mapping[str, Array], i: int) -> Array:
     values = {name: float(v[i]) for name, v in local.items()}
-    a, y = model.whitened(values, {name: f[i] for name, f in functions.items()})  # type: ignore[attr-defined]
-    try:
-        q, _ = np.linalg.qr(a)
-    except np.linalg.LinAlgError:
-        return np.full(y.size, np.nan)
-    return np.asarray(y - q @ (q.T @ y))
+    return model.residual(values, {name: f[i] for name, f in functions.items()})
 
 
 def _joined(z: Array, physical: NDArray[np.bool_], x: Array) -> Array:
@@ -273,8 +269,19 @@ def refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds: 
         minimum = minimise(Projected(posterior, physical, z), z[physical], max_evaluations=100)
         z = _joined(z, physical, minimum.x)
     assert minimum is not None
+    if any(member.model.has_outliers for member in posterior.members):
+        minimum = _with_own_curvature(posterior, physical, z, minimum)
     covariance = _laplace(posterior, physical, z, minimum)
     return make_basin(posterior, z, covariance, minimum)
+
+
+def _with_own_curvature(
+    posterior: Posterior, physical: NDArray[np.bool_], z: Array, minimum: Minimum
+) -> Minimum:
+    """Take the covariance from the noise's curvature: residuals that add up to its density curve too much."""
+    j = jacobian(Projected(posterior.as_gaussian(z), physical, z), z[physical])
+    covariance, condition, left_open = covariance_of(j)
+    return replace(minimum, covariance=covariance, condition=condition, open_directions=left_open)
 
 
 def _fit_noise(posterior: Posterior, physical: NDArray[np.bool_], z: Array) -> Array:
@@ -303,8 +310,6 @@ class _NoiseDensity:
         self.functions = [m.model.functions(m.local(named)) for m in posterior.members]
 
     def __call__(self, x: Array) -> Array:
-        from inverse.inference.elimination import eliminate
-
         z = np.repeat(self.z[None], len(x), axis=0)
         z[:, ~self.physical] = x
         named = self.posterior.parameters.named(self.posterior.parameters.to_values(z))
@@ -312,8 +317,8 @@ class _NoiseDensity:
         for member, functions in zip(self.posterior.members, self.functions, strict=True):
             repeated = {name: np.repeat(f, len(x), axis=0) for name, f in functions.items()}
             with np.errstate(all="ignore"):
-                gram, log_det = member.model.gram(repeated, member.local(named))
-            total = total + eliminate(gram, log_det, member.model.count).log_likelihood
+                found = member.model.marginal(repeated, member.local(named))
+            total = total + found.log_likelihood
         return np.where(np.isfinite(total), total, -1e300)
 
 

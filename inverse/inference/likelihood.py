@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from inverse.inference.elimination import Eliminated, eliminate
 from inverse.inference.noise import Noise
+from inverse.inference.robust import eliminate_student, gaussian_noise, student_residuals
 from inverse.description.places import BoundStack
 from inverse.response.basis import Columns, basis, take
 from inverse.response.inverse_laplace import TimeGrid, time_grid
@@ -187,6 +188,39 @@ class TraceModel:
         white = np.concatenate([white, prior], axis=1)
         return white[:-1].T, white[-1]
 
+    def residual(self, values: Mapping[str, float], functions: Mapping[str, Array]) -> Array:
+        """Return whitened residuals of one parameter set with the coefficients eliminated; arguments as `whitened`."""
+        if self.has_outliers:
+            return student_residuals(self.channels, self.used, functions, values)
+        a, y = self.whitened(values, functions)
+        try:
+            q, _ = np.linalg.qr(a)
+        except np.linalg.LinAlgError:
+            return np.full(y.size, np.nan)
+        return np.asarray(y - q @ (q.T @ y))
+
+    def marginal(self, functions: Mapping[str, Array], values: Mapping[str, Array]) -> Eliminated:
+        """Eliminate the coefficients of a batch whose `functions` are known."""
+        if self.has_outliers:
+            return eliminate_student(self.channels, self.used, functions, values)
+        gram, log_det = self.gram(functions, values)
+        return eliminate(gram, log_det, self.count)
+
+    def as_gaussian(self, values: Mapping[str, Array]) -> TraceModel:
+        """Return the model whose Gaussian noise has the curvature of its own at one parameter set."""
+        if not self.has_outliers:
+            return self
+        functions = {name: f[0] for name, f in self.functions(values).items()}
+        scalars = {name: float(v[0]) for name, v in values.items()}
+        noises = gaussian_noise(self.channels, self.used, functions, scalars)
+        channels = (replace(c, noise=noise) for c, noise in zip(self.channels, noises, strict=True))
+        return replace(self, channels=tuple(channels))
+
+    @property
+    def has_outliers(self) -> bool:
+        """Tell whether the white noise is of Student's t distribution."""
+        return self.channels[0].noise.model == "student"
+
     def gram(self, functions: Mapping[str, Array], values: Mapping[str, Array]) -> tuple[Array, Array]:
         """Return the Gram matrix of scaled basis and data, and log det K, summed over channels."""
         total: Array | float = 0.0
@@ -200,8 +234,7 @@ class TraceModel:
 
     def _eliminate(self, values: Mapping[str, Array]) -> Eliminated:
         with np.errstate(all="ignore"):
-            gram, log_det = self.gram(self.functions(values), values)
-        return eliminate(gram, log_det, self.count)
+            return self.marginal(self.functions(values), values)
 
     def _blocks(self, values: Mapping[str, Array]) -> Iterator[tuple[dict[str, Array], slice]]:
         sets = len(next(iter(values.values())))

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import optimize
 
-__all__ = ["Minimum", "jacobian", "minimise"]
+__all__ = ["Minimum", "covariance_of", "jacobian", "minimise"]
 
 Array = NDArray[np.float64]
 Residuals = Callable[[Array], Array]
@@ -105,7 +105,7 @@ def minimise(
         )  # fmt: skip
     except (np.linalg.LinAlgError, ValueError) as error:
         return _failed(start, float((one(start) ** 2).sum()), count[0], str(error))
-    covariance, condition, left_open = _covariance(np.asarray(found.jac))
+    covariance, condition, left_open = covariance_of(np.asarray(found.jac))
     return Minimum(
         found.x,
         2 * float(found.cost),
@@ -125,8 +125,18 @@ def _failed(start: Array, cost: float, evaluations: int, reason: str) -> Minimum
     )
 
 
-def _covariance(j: Array) -> tuple[Array, float, Array]:
-    """Invert J'J through the singular values of J with unit columns; leave the null space infinite."""
+def covariance_of(j: Array) -> tuple[Array, float, Array]:
+    """Invert J'J through the singular values of J with unit columns; leave the null space infinite.
+
+    Parameters
+    ----------
+    j : array, shape (residuals, unknowns)
+
+    Returns
+    -------
+    array, float, array
+        `Minimum.covariance`, `Minimum.condition` and `Minimum.open_directions`.
+    """
     length = np.sqrt((j * j).sum(axis=0))
     scale = np.where(length > 0, length, 1.0)
     _, singular, directions = np.linalg.svd(j / scale, full_matrices=False)

@@ -1,4 +1,4 @@
-"""Noise of a channel: white, or white plus a correlated discrepancy with an exponential kernel.
+"""Noise of a channel: white (Gaussian or Student's t), or white plus a correlated discrepancy, exponential kernel.
 
 ``K_ij = sigma^2 d_i^2 delta_ij + a^2 exp(-|t_i - t_j| / l)``; d is the relative noise per delay (ones, unless
 repeated scans tell it). The exponential kernel's inverse is tridiagonal (Ornstein-Uhlenbeck is Markov), so that
@@ -15,11 +15,14 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import lapack
 
-__all__ = ["NOISE_MODELS", "Noise", "noise_priors"]
+__all__ = ["FREEDOM", "NOISE_MODELS", "Noise", "noise_priors"]
 
 Array = NDArray[np.float64]
 
-NOISE_MODELS = ("correlated", "white")
+NOISE_MODELS = ("correlated", "white", "student")
+
+FREEDOM = 4.0
+"""Degrees of freedom of Student's t: heavy tails, a finite variance; a choice, as a trace says little about it."""
 
 # Beyond this ratio of variances the smaller part is lost in rounding and means nothing.
 _RATIO = 1e12
@@ -32,7 +35,8 @@ class Noise:
     Attributes
     ----------
     model : str
-        ``"correlated"`` or ``"white"``.
+        ``"correlated"``, ``"white"``, or ``"student"``: correlated with white noise of Student's t distribution,
+        whose likelihood is `inverse.inference.robust`'s; `gram` and `whiten` take it for Gaussian.
     delay : array, shape (delays,)
         ps, strictly increasing.
     relative : array, shape (delays,)
@@ -95,10 +99,14 @@ class Noise:
         if self.model == "white":
             return scaled / sigma
         f = self.discrepancy(rows, values) / self.relative
+        return np.concatenate([(scaled - f) / sigma, self.steps(f * self.relative, values)], axis=1)
+
+    def steps(self, discrepancy: Array, values: Mapping[str, float]) -> Array:
+        """Return independent standard normal steps that make a discrepancy, shape (rows, delays)."""
         rho = np.exp(-np.diff(self.delay) / values["correlation_time"])
-        g = f * self.relative / values["discrepancy"]
-        steps = (g[:, 1:] - rho * g[:, :-1]) / np.sqrt(-np.expm1(2 * np.log(rho)))
-        return np.concatenate([(scaled - f) / sigma, g[:, :1], steps], axis=1)
+        g = discrepancy / values["discrepancy"]
+        later = (g[:, 1:] - rho * g[:, :-1]) / np.sqrt(-np.expm1(2 * np.log(rho)))
+        return np.concatenate([g[:, :1], later], axis=1)
 
     def discrepancy(self, rows: Array, values: Mapping[str, float]) -> Array:
         """Return the posterior mean of the discrepancy under residual rows, shape (rows, delays)."""
@@ -112,7 +120,9 @@ class Noise:
 
     def draw(self, rng: np.random.Generator, values: Mapping[str, float], correlated: bool = True) -> Array:
         """Draw one realisation, shape (delays,)."""
-        white = values["white"] * self.relative * rng.standard_normal(self.delay.size)
+        size = self.delay.size
+        unit = rng.standard_t(FREEDOM, size) if self.model == "student" else rng.standard_normal(size)
+        white = values["white"] * self.relative * unit
         if self.model == "white" or not correlated:
             return white
         rho = np.exp(-np.diff(self.delay) / values["correlation_time"])
@@ -163,9 +173,11 @@ def noise_priors(model: str, level: float, delay: Array) -> dict[str, Any]:
     if model not in NOISE_MODELS:
         raise ValueError(f"noise={model!r} is not known; choose one of {', '.join(NOISE_MODELS)}.")
     if not (np.isfinite(level) and level > 0):
-        raise ValueError(f"The white noise level is {level!r}; it must be positive. Is the trace noise-free or constant?")
+        raise ValueError(
+            f"The white noise level is {level!r}; it must be positive. Is the trace noise-free or constant?"
+        )
     priors = {"white": stats.lognorm(np.log(2), scale=level)}
-    if model == "correlated":
+    if model != "white":
         step = float(np.median(np.diff(delay)))
         priors["discrepancy"] = stats.halfcauchy(scale=level)
         priors["correlation_time"] = stats.loguniform(3 * step, float(delay[-1] - delay[0]))

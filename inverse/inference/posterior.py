@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -65,6 +65,12 @@ class Posterior:
         with np.errstate(all="ignore"):
             prior = -0.5 * (z * z).sum(axis=1) - 0.5 * z.shape[1] * np.log(2 * np.pi)
             return prior + self.log_likelihood(self.parameters.to_values(z))
+
+    def as_gaussian(self, z: Array) -> Posterior:
+        """Return the problem whose Gaussian noise has the curvature of its own at one point z, shape (unknowns,)."""
+        named = self.parameters.named(self.parameters.to_values(z[None]))
+        members = (replace(m, model=m.model.as_gaussian(m.local(named))) for m in self.members)
+        return replace(self, members=tuple(members))
 
     def log_prob(self, values: Array) -> Array:
         """Return the log posterior density of values, shape (n,)."""

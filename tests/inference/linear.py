@@ -1,7 +1,7 @@
 """A trace model whose basis is linear in its unknowns, so that every answer follows by hand."""
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from types import SimpleNamespace
 
 import numpy as np
@@ -20,7 +20,7 @@ from inverse.response.inverse_laplace import time_grid
 class LinearModel(TraceModel):
     """The signal is c (start + a first + b second + (k - 2) third); c is eliminated, k a constant of 2(0.1)."""
 
-    shapes: np.ndarray
+    shapes: np.ndarray = field(kw_only=True)
 
     def functions(self, values, grid=None):
         start, first, second, third = self.shapes
