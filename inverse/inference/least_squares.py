@@ -255,7 +255,7 @@ def _move_to_echo(inversion: Inversion, z: Array) -> None:
         values = inversion.posterior.parameters.to_values(z)
         named = member.local(inversion.posterior.parameters.named(values))
         column = inversion.names.index(member.names[slots["thickness"].name])
-        velocity = named.get(slots["velocity"].name, slots["velocity"].value)
+        velocity = slots["velocity"].fill(named)
         values[:, column] = np.asarray(velocity) * time.value / 2
         moved = np.clip(inversion.posterior.parameters.to_z(values)[:, column], -3, 3)
         z[:, column] = np.where(np.isfinite(moved), moved, z[:, column])

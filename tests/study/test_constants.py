@@ -376,3 +376,20 @@ def test_equal_seeds_give_equal_draws_and_numpy_is_left_alone(silicon: tuple) ->
     other = problem.sample_posterior(seed=8, progress=False)
     assert not np.array_equal(other["posterior"]["c11"][:, :50], result["posterior"]["c11"][:, :50])
     np.testing.assert_array_equal(np.random.get_state()[1], before)
+
+
+def test_a_checkpoint_of_other_data_is_refused_and_ensembles_may_run_elsewhere(
+    silicon: tuple, tmp_path
+) -> None:
+    from concurrent.futures import ProcessPoolExecutor
+
+    problem, result = silicon
+    path = tmp_path / "run.h5"
+    with ProcessPoolExecutor(2) as pool:
+        elsewhere = problem.sample_posterior(seed=7, progress=False, checkpoint=path, executor=pool)
+    np.testing.assert_array_equal(elsewhere["posterior"]["c11"], result["posterior"]["c11"])
+    other = ConstantsInversion(
+        "cubic", table([8.5, 5.8, 9.1, 5.8, 4.7, 9.4, 5.1], 0.02), density=problem.density
+    )
+    with pytest.raises(ValueError, match="belongs to another run"):
+        other.sample_posterior(seed=7, progress=False, checkpoint=path)
