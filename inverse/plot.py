@@ -6,5 +6,17 @@ from inverse.plot_echoes import echoes, shares
 from inverse.plot_elastic import elastic_section
 from inverse.plot_fit import fit
 from inverse.plot_section import section
+from inverse.plot_splits import split_differences, splits, wafer_map
 
-__all__ = ["corner", "coverage", "echoes", "elastic_section", "fit", "section", "shares"]
+__all__ = [
+    "corner",
+    "coverage",
+    "echoes",
+    "elastic_section",
+    "fit",
+    "section",
+    "shares",
+    "split_differences",
+    "splits",
+    "wafer_map",
+]

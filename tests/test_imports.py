@@ -10,7 +10,7 @@ import pytest
 
 ROOMS = ("elastic", "description", "response", "inference", "study", "report")
 REPORT = {
-    *("report", "report_header", "summary", "sheet", "__main__"),
+    *("report", "report_header", "report_splits", "summary", "sheet", "__main__"),
     *(
         "plot",
         "plot_fit",
@@ -20,6 +20,7 @@ REPORT = {
         "plot_elastic",
         "plot_echoes",
         "plot_coverage",
+        "plot_splits",
     ),
     *("rounding", "unit_text", "propagation", "finite_differences"),
 }

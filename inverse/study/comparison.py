@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.study.hierarchy import HierarchyDraws
-from inverse.study.scatter import Priors
+from inverse.study.scatter import SplitPriors
 from inverse.study.split_data import Site
 
 __all__ = ["Comparison", "Interval", "Pair", "Question", "SplitEstimate", "WaferEstimate", "interval"]
@@ -150,7 +150,7 @@ class Comparison:
     sites : tuple of Site
     verdict, warnings : tuple of str
         Sentences.
-    priors : Priors
+    priors : SplitPriors
     posterior : HierarchyDraws
         Draws in the variable compared.
     """
@@ -163,7 +163,7 @@ class Comparison:
     sites: tuple[Site, ...]
     verdict: tuple[str, ...]
     warnings: tuple[str, ...]
-    priors: Priors
+    priors: SplitPriors
     posterior: HierarchyDraws = field(repr=False)
 
     def __repr__(self) -> str:

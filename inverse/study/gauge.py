@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from inverse.study.comparison import Interval, interval
 from inverse.study.hierarchy import HierarchyDraws, Wafer, sample_hierarchy
-from inverse.study.scatter import Priors
+from inverse.study.scatter import SplitPriors
 from inverse.study.split_data import Site, collect
 from inverse.study.wording import number
 
@@ -18,7 +18,7 @@ __all__ = ["ReferenceStudy", "reference_wafer"]
 
 Array = NDArray[np.float64]
 
-GAUGE_PRIORS = Priors(between=0.05, within=0.05)
+GAUGE_PRIORS = SplitPriors(between=0.05, within=0.05)
 
 
 @dataclass(frozen=True, repr=False)
@@ -111,7 +111,7 @@ def reference_wafer(
     reference_uncertainty: float = 0.0,
     labels: Any = None,
     scale: str | None = None,
-    priors: Priors = GAUGE_PRIORS,
+    priors: SplitPriors = GAUGE_PRIORS,
     prior: Any = None,
     draws: int = 20000,
 ) -> ReferenceStudy:
@@ -130,7 +130,7 @@ def reference_wafer(
     labels : table, optional
         Columns ``site`` and ``tool``; without it (and without tools in a batch) all are of one tool.
     scale : {"log", "linear"}, optional
-    priors : Priors
+    priors : SplitPriors
         ``between`` of tools, ``within`` of repetitions.
     prior : frozen distribution or mapping, optional
         Under which draws given as arrays were sampled.

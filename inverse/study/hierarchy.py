@@ -17,7 +17,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.study.normal_sites import NormalWafer, SplitNodes, normal_nodes
-from inverse.study.scatter import Cells, Priors, cells
+from inverse.study.scatter import Cells, SplitPriors, cells
 from inverse.study.tabulated import Tabulated, product
 
 __all__ = ["HierarchyDraws", "Wafer", "sample_hierarchy", "sample_normal_hierarchy"]
@@ -119,7 +119,7 @@ class _TabulatedSplit:
 
 def sample_hierarchy(
     splits: Sequence[Sequence[Wafer]],
-    priors: Priors,
+    priors: SplitPriors,
     *,
     seed: int | np.random.SeedSequence,
     draws: int = 20000,
@@ -131,7 +131,7 @@ def sample_hierarchy(
     ----------
     splits : sequence of sequence of Wafer
         Wafers of each split.
-    priors : Priors
+    priors : SplitPriors
         With a centre.
     seed : int or SeedSequence
     draws : int
@@ -159,7 +159,7 @@ def sample_hierarchy(
 
 def sample_normal_hierarchy(
     splits: Sequence[Sequence[NormalWafer]],
-    priors: Priors,
+    priors: SplitPriors,
     *,
     seed: int | np.random.SeedSequence,
     draws: int = 20000,
@@ -169,7 +169,7 @@ def sample_normal_hierarchy(
     Parameters
     ----------
     splits : sequence of sequence of NormalWafer
-    priors : Priors
+    priors : SplitPriors
     seed : int or SeedSequence
     draws : int
 
@@ -187,7 +187,7 @@ def sample_normal_hierarchy(
     return _draw(made, between, within, priors.difference, draws, np.random.default_rng(seed))[0]
 
 
-def _grids(splits: Sequence[Sequence[Wafer]], priors: Priors) -> tuple[float, Cells, Cells]:
+def _grids(splits: Sequence[Sequence[Wafer]], priors: SplitPriors) -> tuple[float, Cells, Cells]:
     """Find the centre of the prior, and grids that hold what the normal approximation deems possible."""
     wide = 10 * priors.centre_sd
     tables = [t for wafers in splits for w in wafers for t in w.sites]
@@ -202,14 +202,14 @@ def _as_normal(wafer: Wafer, low: float, high: float) -> NormalWafer:
     return NormalWafer(moments[:, 0], moments[:, 1])
 
 
-def _middle(splits: Sequence[Sequence[NormalWafer]], priors: Priors) -> float:
+def _middle(splits: Sequence[Sequence[NormalWafer]], priors: SplitPriors) -> float:
     if priors.centre is not None:
         return priors.centre
     return float(np.median(np.concatenate([w.mean for wafers in splits for w in wafers])))
 
 
 def _normal_grids(
-    splits: Sequence[Sequence[NormalWafer]], priors: Priors, centre: float, count: int
+    splits: Sequence[Sequence[NormalWafer]], priors: SplitPriors, centre: float, count: int
 ) -> tuple[Cells, Cells]:
     means = np.concatenate([w.mean for wafers in splits for w in wafers])
     finest = 0.3 * min(float(w.sd.min()) / np.sqrt(w.sd.size) for wafers in splits for w in wafers)

@@ -13,7 +13,7 @@ from inverse.study.comparison import Comparison
 from inverse.study.decisions import decided, pairs_of, tail_probability
 from inverse.study.hierarchy import sample_normal_hierarchy
 from inverse.study.normal_sites import NormalWafer
-from inverse.study.scatter import Priors
+from inverse.study.scatter import SplitPriors
 
 __all__ = ["Design", "PowerStudy", "comparison_power"]
 
@@ -253,7 +253,7 @@ def _is_decided(
     return bool(decided(tails, centres.size, comparison.question.level)[at] and right)
 
 
-def _priors(comparison: Comparison) -> Priors:
+def _priors(comparison: Comparison) -> SplitPriors:
     return replace(comparison.priors, centre=None)
 
 

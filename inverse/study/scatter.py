@@ -8,14 +8,14 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import ndtr
 
-__all__ = ["Cells", "Priors", "cells"]
+__all__ = ["Cells", "SplitPriors", "cells"]
 
 Array = NDArray[np.float64]
 
 
 @dataclass(frozen=True)
-class Priors:
-    """Priors of a comparison, in the variable compared (a logarithm unless the scale is linear).
+class SplitPriors:
+    """SplitPriors of a comparison, in the variable compared (a logarithm unless the scale is linear).
 
     Parameters
     ----------
@@ -53,7 +53,7 @@ class Priors:
             value = getattr(self, name)
             if not (np.isfinite(value) and value >= 0) or (name == "centre_sd" and value == 0):
                 kind = "positive" if name == "centre_sd" else "zero or positive"
-                raise ValueError(f"Priors got {name}={value!r}; give a finite number, {kind}.")
+                raise ValueError(f"SplitPriors got {name}={value!r}; give a finite number, {kind}.")
 
     def text(self) -> str:
         """State the priors in one sentence."""

@@ -19,7 +19,7 @@ from inverse.study.comparison import (
 )
 from inverse.study.decisions import decided, pairs_of, tail_probability
 from inverse.study.hierarchy import HierarchyDraws, Wafer, sample_hierarchy
-from inverse.study.scatter import Priors
+from inverse.study.scatter import SplitPriors
 from inverse.study.split_data import Site, SiteData, collect
 from inverse.study.wording import verdict, warnings_for
 
@@ -45,7 +45,7 @@ def compare_splits(
     better: str | None = None,
     level: float = 0.05,
     scale: str | None = None,
-    priors: Priors | None = None,
+    priors: SplitPriors | None = None,
     prior: Any = None,
     reference: ReferenceStudy | None = None,
     interlayer: tuple[str, float] = SILICA,
@@ -71,7 +71,7 @@ def compare_splits(
         Familywise error of the pairs called different.
     scale : {"log", "linear"}, optional
         Variable compared; by default the logarithm of what cannot be negative.
-    priors : Priors, optional
+    priors : SplitPriors, optional
         Of centres and scatters.
     prior : frozen distribution or mapping from site to such, optional
         Under which draws given as arrays were sampled; without it they count as the likelihood itself in the variable
@@ -94,12 +94,12 @@ def compare_splits(
     Notes
     -----
     With x the (log) quantity, :math:`x_{ij} \sim N(w_i, \sigma_s^2)`, :math:`w_i \sim N(\mu_s, \tau_s^2)`; the splits'
-    scatters vary about typical ones (`Priors`). Each site enters by its draws, its own prior and its Jacobian divided
+    scatters vary about typical ones. Each site enters by its draws, its own prior and its Jacobian divided
     out, with whatever shape they have; a site that sets no bound keeps its plateau. The centre :math:`\exp \mu_s` is a
     median. Pairs are decided by a step-down rule, see `decisions.levels`.
     """
     _check(level, margin, better, draws)
-    priors = Priors() if priors is None else priors
+    priors = SplitPriors() if priors is None else priors
     data = collect(results, quantity, labels, scale, prior, ("split", "wafer"))
     names = tuple(dict.fromkeys(site.split for site in data.sites))
     if len(names) < 2:
@@ -174,7 +174,7 @@ def _described(
     names: tuple[str, ...],
     groups: list[list[Wafer]],
     posterior: HierarchyDraws,
-    priors: Priors,
+    priors: SplitPriors,
 ) -> Comparison:
     value = np.exp(posterior.centre) if question.logarithmic else posterior.centre
     return Comparison(

@@ -7,7 +7,7 @@ import numpy as np
 from inverse.study.decisions import decided, pairs_of, tail_probability
 from inverse.study.hierarchy import sample_normal_hierarchy
 from inverse.study.normal_sites import NormalWafer
-from inverse.study.scatter import Priors
+from inverse.study.scatter import SplitPriors
 
 
 def normal_experiment(rng, centres, wafers=4, sites=2, between=0.1, within=0.03, noise=0.02):
@@ -22,7 +22,7 @@ def normal_experiment(rng, centres, wafers=4, sites=2, between=0.1, within=0.03,
 
 def decisions(splits, seed, level=0.05, draws=4000):
     """Which pairs of splits the library calls different."""
-    centre = sample_normal_hierarchy(splits, Priors(), seed=seed, draws=draws).centre
+    centre = sample_normal_hierarchy(splits, SplitPriors(), seed=seed, draws=draws).centre
     tails = [tail_probability(centre[:, a] - centre[:, b]) for a, b in pairs_of(len(splits))]
     return decided(tails, len(splits), level)
 

@@ -7,13 +7,13 @@ from scipy import stats
 
 from inverse.study.hierarchy import Wafer, sample_hierarchy, sample_normal_hierarchy
 from inverse.study.normal_sites import NormalWafer, normal_nodes
-from inverse.study.scatter import Priors, cells
+from inverse.study.scatter import SplitPriors, cells
 from inverse.study.tabulated import Tabulated, normal_table, product, trimmed
 
 # Eight schools: data and model (mu ~ N(0, 5), tau ~ half-Cauchy(0, 5)) as in posteriordb, eight_schools_noncentered.
 EFFECT = (28, 8, -3, 7, -1, 1, 18, 12)
 ERROR = (15, 10, 16, 11, 9, 11, 10, 18)
-SCHOOLS = Priors(centre=0, centre_sd=5, between=5, within=0, difference=0)
+SCHOOLS = SplitPriors(centre=0, centre_sd=5, between=5, within=0, difference=0)
 # Exact by quadrature, stable to 1e-9; posteriordb's own means agree within its Monte Carlo errors.
 CENTRE = (4.396821, 3.317704)
 SCATTER = (3.597705, 3.219958)
@@ -83,8 +83,8 @@ def test_evidence_of_normal_sites_is_the_joint_normal_density():
 
 def test_tables_and_closed_form_agree_on_a_full_hierarchy():
     splits = normal_experiment(np.random.default_rng(6), [0.0, 0.2], wafers=3, sites=3)
-    closed = sample_normal_hierarchy(splits, Priors(), seed=1, draws=40000)
-    tables = sample_hierarchy(tabulated(splits), Priors(), seed=2, draws=40000, wafer_draws=0)
+    closed = sample_normal_hierarchy(splits, SplitPriors(), seed=1, draws=40000)
+    tables = sample_hierarchy(tabulated(splits), SplitPriors(), seed=2, draws=40000, wafer_draws=0)
     for name in ("centre", "between", "within"):
         a, b = getattr(closed, name), getattr(tables, name)
         error = np.sqrt(2) * monte_carlo_error(a)[0]
@@ -130,14 +130,14 @@ def test_cells_hold_the_whole_prior():
 def test_equal_seeds_give_equal_draws_and_leave_numpy_alone():
     splits = tabulated(normal_experiment(np.random.default_rng(1), [0.0, 0.1]))
     before = np.random.get_state()[1].copy()
-    first, second = (sample_hierarchy(splits, Priors(), seed=3, draws=2000) for _ in range(2))
+    first, second = (sample_hierarchy(splits, SplitPriors(), seed=3, draws=2000) for _ in range(2))
     assert np.array_equal(first.centre, second.centre) and np.array_equal(first.wafers[1], second.wafers[1])
     assert np.array_equal(before, np.random.get_state()[1])
 
 
 def ranks(rng, seed, table):
     """Ranks of the true centres and scatters among the draws of one experiment made from the priors."""
-    priors = Priors(centre=-3.0, centre_sd=0.7, between=0.2, within=0.1, difference=0.3)
+    priors = SplitPriors(centre=-3.0, centre_sd=0.7, between=0.2, within=0.1, difference=0.3)
     typical = [abs(scale * stats.cauchy.rvs(random_state=rng)) for scale in (0.2, 0.1)]
     splits, truth = [], []
     for _ in range(2):

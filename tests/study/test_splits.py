@@ -9,7 +9,7 @@ from experiments import site_draws
 from scipy import stats
 
 from inverse.description.unknowns import describe_prior
-from inverse.study.scatter import Priors
+from inverse.study.scatter import SplitPriors
 from inverse.study.splits import compare_splits
 
 COMPLIANCE = "Al|Si.compliance"
@@ -301,5 +301,5 @@ def test_an_unknown_split_or_a_split_against_itself_is_refused(compared):
 
 @pytest.mark.parametrize("change", [{"between": -1.0}, {"centre_sd": 0.0}, {"within": np.nan}])
 def test_priors_that_make_no_sense_are_refused(change):
-    with pytest.raises(ValueError, match=f"Priors got {next(iter(change))}="):
-        Priors(**change)
+    with pytest.raises(ValueError, match=f"SplitPriors got {next(iter(change))}="):
+        SplitPriors(**change)
