@@ -139,7 +139,8 @@ def depth_slots(place: str, material: Material, slots: Slots) -> Slots:
     Returns
     -------
     dict
-        ``depth_xx`` to ``depth_xy`` in GPa, and ``thermal_stress_xz`` and ``thermal_stress_yz`` in GPa/K.
+        ``depth_xx`` to ``depth_xy`` in GPa, ``thermal_stress_xz`` and ``thermal_stress_yz`` in GPa/K, and
+        ``photoelastic_xz`` and ``photoelastic_yz``.
 
     Raises
     ------
@@ -153,7 +154,7 @@ def depth_slots(place: str, material: Material, slots: Slots) -> Slots:
         )
     shears = {
         field: slot_of(field, getattr(material, field) or 0.0, place, "given by the user", 0.0)
-        for field in ("thermal_stress_xz", "thermal_stress_yz")
+        for field in ("thermal_stress_xz", "thermal_stress_yz", "photoelastic_xz", "photoelastic_yz")
     }
     return {
         **(_sums(place, material, slots) if is_cut(material) else _scaled(place, material, slots)),

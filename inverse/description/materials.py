@@ -33,6 +33,8 @@ _REAL = (
     "quality_frequency",
     "thermal_stress_xz",
     "thermal_stress_yz",
+    "photoelastic_xz",
+    "photoelastic_yz",
 )
 _COMPLEX = ("dn_dstrain", "dn_dT")
 
@@ -80,7 +82,12 @@ class Material:
         Crystal direction of the depth, as `inverse.elastic.crystal_direction` takes it.
     thermal_stress_xz, thermal_stress_yz : float
         Shear stress per kelvin at zero strain in GPa/K, in an obliquely cut layer (x and y as in
-        `inverse.elastic.rotation_to_z`); 0 by default, as in every cubic crystal.
+        `inverse.elastic.rotation_to_z`); 0 by default, as in every cubic crystal. See
+        `inverse.elastic.thermal_stress`.
+    photoelastic_xz, photoelastic_yz : float
+        Index change by shear strain u_x' and u_y' over that by strain along the depth, for the probe's
+        polarisation, in an obliquely cut layer; 0 by default: shear is not seen. See
+        `inverse.elastic.photoelastic_ratios`.
     sources : mapping of str to str
         Text of the source of each field.
     spread : mapping of str to float
@@ -119,6 +126,8 @@ class Material:
     quality_frequency: Any = None
     thermal_stress_xz: Any = None
     thermal_stress_yz: Any = None
+    photoelastic_xz: Any = None
+    photoelastic_yz: Any = None
     orientation: Any = None
     stiffness: Mapping[str, Any] | None = None
     sources: Mapping[str, str] = field(default_factory=dict, repr=False)

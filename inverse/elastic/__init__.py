@@ -14,6 +14,7 @@ from .christoffel import (
     phase_velocities,
     plane_waves,
 )
+from .cut_properties import photoelastic_ratios, thermal_stress
 from .directions import (
     crystal_direction,
     direction_from_c_axis,
@@ -57,6 +58,8 @@ __all__ = [
     "phase_velocities",
     "plane_waves",
     "longitudinal_velocity",
+    "photoelastic_ratios",
+    "thermal_stress",
     "Section",
     "plane_section",
     "Reach",

@@ -151,8 +151,11 @@ def _solid(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Dept
     # The velocity is no number where the constants are unstable; the stress takes that into the response.
     mark = 0.0 * np.asarray(filled["velocity"])
     stress = ("thermal_stress_xz", "thermal_stress_yz", "thermal_stress_coefficient")
+    seen = (filled["photoelastic_xz"], filled["photoelastic_yz"], 1.0)
     return DepthElastic(
-        np.stack(rows, axis=-2), np.stack(_together(*(filled[name] + mark for name in stress)), axis=-1)
+        np.stack(rows, axis=-2),
+        np.stack(_together(*(filled[name] + mark for name in stress)), axis=-1),
+        np.stack(_together(*seen), axis=-1),
     )
 
 

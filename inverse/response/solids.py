@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,10 +25,13 @@ class DepthElastic:
         c_{i3k3} in GPa, symmetric and positive definite.
     stress : array, shape (sets or 1, 3)
         Thermal stress S_i3 per kelvin at zero strain in GPa/K, tension positive.
+    photoelastic : array, shape (sets or 1, 3)
+        Index change by u_x', u_y' and u_z' over that by u_z', for the probe's polarisation: the last is 1.
     """
 
     stiffness: Array
     stress: Array
+    photoelastic: Array = field(default_factory=lambda: np.array([[0.0, 0.0, 1.0]]))
 
 
 def depth_elastic(voigt: Array, stress: Array) -> DepthElastic:

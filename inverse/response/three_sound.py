@@ -39,15 +39,23 @@ class ThreeSound:
         Fast to slow; each holds the wave's own amplitude along its polarisation.
     polarisation : array, shape (sets or 1, 3, 3)
         Unit vectors (x, y, z of the sample) as columns, in the order of `modes`.
+    photoelastic : array, shape (sets or 1, 3)
+        See `DepthElastic`.
     """
 
     modes: tuple[SoundField, SoundField, SoundField]
     polarisation: Array
+    photoelastic: Array
 
     def component(self, axis: int) -> tuple[Array, Array, Array]:
         """Return the weights, shape (sets or 1, 1), with which the modes enter a displacement component."""
         a, b, c = (self.polarisation[:, axis, mode, None] for mode in range(3))
         return a, b, c
+
+    def seen(self) -> tuple[Array, Array, Array]:
+        """Return the weights, shape (sets or 1, 1), with which the strains of the modes change the index."""
+        row = (self.photoelastic[:, None, :] @ self.polarisation)[:, 0]
+        return row[:, 0, None], row[:, 1, None], row[:, 2, None]
 
     def at_top(self, axis: int) -> Complex:
         """Return a displacement component at the top, nm."""
@@ -111,8 +119,8 @@ def three_sound_field(
     first = surface_amplitudes(y[0], modes[0], below, ends[0], _load(ambient, s))
     down, up = descend_blocks(first, y, decay, modes, below, ends)
     return [
-        ThreeSound(_fields(three, a, b), p)
-        for three, a, b, p in zip(scalars, down, up, polarisation, strict=True)
+        ThreeSound(_fields(three, a, b), p, solid.photoelastic)
+        for three, a, b, p, solid in zip(scalars, down, up, polarisation, solids, strict=True)
     ]
 
 

@@ -64,6 +64,21 @@ def test_a_tangential_spring_changes_the_trace_of_an_oblique_cut_only_there() ->
     assert np.abs(loose - same).max() > 1e-4 * np.abs(same).max()
 
 
+def test_a_photoelastic_ratio_shows_shear_to_polarised_light() -> None:
+    # The trace is linear in the ratio, and a symmetry cut has no shear to show.
+    axis = [0.0, 1.0, 2.0]
+    none, one, two = (trace(cut(axis, photoelastic_xz=r, photoelastic_yz=r)) for r in (0.0, 1.0, 2.0))
+    assert np.abs(one - none).max() > 1e-3 * np.abs(none).max()
+    np.testing.assert_allclose(two - none, 2 * (one - none), atol=1e-10 * np.abs(none).max())
+    np.testing.assert_array_equal(trace(cut("111", photoelastic_xz=1.0)), trace(cut("111")))
+
+
+def test_a_shear_stress_launches_a_shear_wave() -> None:
+    axis = [0.0, 1.0, 2.0]
+    plain, sheared = trace(cut(axis)), trace(cut(axis, thermal_stress_xz=2e-3, thermal_stress_yz=2e-3))
+    assert np.abs(sheared - plain).max() > 1e-3 * np.abs(plain).max()
+
+
 def test_shares_of_an_oblique_stack_add_up() -> None:
     interface = inv.Interface(boundary_conductance=100.0, compliance=0.02)
     found = inv.simulate(inv.Stack(cut([1, 2, 3]), interface, SUBSTRATE), SETUP, DELAY, shares=True)
