@@ -25,6 +25,8 @@ __all__ = ["Detected", "ambient_response", "boundary_steps", "medium_response"]
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
+_ONE = np.ones((1, 1), dtype=complex)
+
 
 @dataclass(frozen=True)
 class Detected:
@@ -93,8 +95,12 @@ def medium_response(
     hot = overlap(probe, heat, heat.down, 0)
     light_left = _parts(*_profile_integrals(probe, profile))
     strain = overlap(probe, sound, -sound.down, 1)
-    strain = strain + sound.hot[:, None] * hot + weighted_sum(light_left, sound.steep, sound.beat)
-    temperature = heat.lattice[:, None] * (hot + weighted_sum(light_left, heat.steep, heat.beat))
+    strain = (
+        strain + sound.hot[:, None] * hot + weighted_sum(light_left, (sound.steep, _ONE), (sound.beat, _ONE))
+    )
+    temperature = heat.lattice[:, None] * (
+        hot + weighted_sum(light_left, (heat.steep, _ONE), (heat.beat, _ONE))
+    )
     return Detected(strain, temperature)
 
 
@@ -166,7 +172,7 @@ def _half_space_overlap(probe: _Probe, field: HeatField | SoundField, down: Comp
     q, g = field.q, probe.g
     table = 1 / ((q - 2 * g.real) * q + np.abs(g) ** 2)
     table = table if order == 0 else table * q
-    return weighted_sum(_parts(probe.forth, -probe.forth * np.conj(g)), down * (table * q), down * table)
+    return weighted_sum(_parts(probe.forth, -probe.forth * np.conj(g)), (down, table * q), (down, table))
 
 
 def _layer_overlap(probe: _Probe, field: HeatField | SoundField, down: Complex, order: int) -> Complex:
@@ -183,12 +189,12 @@ def _layer_overlap(probe: _Probe, field: HeatField | SoundField, down: Complex, 
     middle = q * q + np.abs(g) ** 2
     lean = (2 * g.real) * q
     near, far = 1 / (middle - lean), 1 / (middle + lean)
-    level = np.ones((1, 1)) if order == 1 else 1 / q
+    level = _ONE if order == 1 else 1 / q
     if order == 1:
         near, far = near * q, far * q
-    terms = [table * end for table in (near * q, near, far * q, far) for end in ends]
-    still = (ends[0] - ends[1] + ends[2] - ends[3]) * level
-    return weighted_sum(_end_weights(probe), *terms, still)
+    terms = [(table, end) for table in (near * q, near, far * q, far) for end in ends]
+    still = ends[0] - ends[1] + ends[2] - ends[3]
+    return weighted_sum(_end_weights(probe), *terms, (level, still))
 
 
 def _ends(field: HeatField | SoundField, down: Complex) -> tuple[Complex, Complex, Complex, Complex]:

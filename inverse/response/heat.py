@@ -15,11 +15,14 @@ from numpy.typing import NDArray
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium, anchored, layers
 from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
+from inverse.response.sums import weight_rows, weighted_sum
 
 __all__ = ["HeatField", "heat_field"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
+
+_ONE = np.ones((1, 1), dtype=complex)
 
 
 @dataclass(frozen=True)
@@ -114,14 +117,17 @@ def _off_resonance(kappa: Array, capacity: Complex, s: Complex, profile: Absorpt
 
 
 def _ends(f: Absorption, kappa: Array, steep: Complex, beat: Complex) -> Ends:
+    """Temperature and flux of the two parts at both ends."""
     end = f.beat * f.turn
     slope, wave = kappa * f.p, 2 * kappa * f.x
-    return Ends(
-        u_top=steep * (f.top + f.bottom * f.decay) + beat * (2 * f.beat.real),
-        f_top=steep * (slope * (f.top - f.bottom * f.decay)) + beat * (wave * f.beat.imag),
-        u_bottom=steep * (f.top * f.decay + f.bottom) + beat * (2 * end.real),
-        f_bottom=steep * (slope * (f.top * f.decay - f.bottom)) + beat * (wave * end.imag),
+    weights = weight_rows(
+        (f.top + f.bottom * f.decay, 2 * f.beat.real),
+        (slope * (f.top - f.bottom * f.decay), wave * f.beat.imag),
+        (f.top * f.decay + f.bottom, 2 * end.real),
+        (slope * (f.top * f.decay - f.bottom), wave * end.imag),
     )
+    sums = weighted_sum(weights, (steep, _ONE), (beat, _ONE))
+    return Ends(*(sums[:, i] for i in range(4)))
 
 
 def _liquid_load(ambient: Ambient, s: Complex) -> Complex | float:

@@ -54,7 +54,9 @@ class LightField:
         return np.abs(self.a[-1]) ** 2 * self.n[-1].real / self.n_ambient.real
 
 
-def light_field(n: Sequence[Complex], thickness: Sequence[Array], wavelength: float, n_ambient: Complex) -> LightField:
+def light_field(
+    n: Sequence[Complex], thickness: Sequence[Array], wavelength: float, n_ambient: Complex
+) -> LightField:
     """Solve for the light of a unit wave from the ambient.
 
     Parameters

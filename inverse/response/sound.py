@@ -15,11 +15,14 @@ from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium, anchored, layers
 from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
+from inverse.response.sums import weight_rows, weighted_sum
 
 __all__ = ["SoundField", "modulus", "off_resonance", "particular", "particular_ends", "sound_field"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
+
+_ONE = np.ones((1, 1), dtype=complex)
 
 
 @dataclass(frozen=True)
@@ -136,26 +139,35 @@ def particular_ends(
 ) -> Ends:
     """Particular displacement (strain / p) and flux (-inertia strain / p^2) at both ends."""
     hot, steep, beat = parts
-    end = f.beat * f.turn
     hot_u = hot / heat.q
-    hot_f = -inertia * hot_u / heat.q
+    hot_f = hot_u / heat.q
+    down_below, up_above = heat.down * heat.decay, heat.up * heat.decay
+    with_steep, with_beat = _end_weights(f)
+    u = weighted_sum(
+        with_steep, (hot_u, up_above - heat.down), (hot_u, heat.up - down_below), (steep, _ONE), (beat, _ONE)
+    )
+    flux = weighted_sum(
+        with_beat, (hot_f, heat.down + up_above), (hot_f, down_below + heat.up), (steep, _ONE), (beat, _ONE)
+    )
+    flux *= inertia[:, None]
+    return Ends(u_top=u[:, 0], f_top=flux[:, 0], u_bottom=u[:, 1], f_bottom=flux[:, 1])
+
+
+def _end_weights(f: Absorption) -> tuple[Array, Array]:
+    """Weights of heat's ends, the exponential and the interference part in displacement and flux, top and bottom.
+
+    A transparent medium absorbs nothing: its profile is zero and so is what it launches.
+    """
     with np.errstate(divide="ignore", invalid="ignore"):
         per_p = np.where(f.p > 0, 1 / f.p, 0.0)
-    # A transparent medium absorbs nothing: its profile is zero and so is what it launches.
-    steep_f, beat_f = -inertia * steep, inertia * beat
-    a, b = heat.down, heat.up * heat.decay
-    c, d = heat.down * heat.decay, heat.up
-    return Ends(
-        u_top=hot_u * (b - a)
-        + steep * (per_p * (f.bottom * f.decay - f.top))
-        + beat * (2 * f.beat.imag / f.x),
-        f_top=hot_f * (a + b)
-        + steep_f * (per_p**2 * (f.top + f.bottom * f.decay))
-        + beat_f * (2 * f.beat.real / f.x**2),
-        u_bottom=hot_u * (d - c)
-        + steep * (per_p * (f.bottom - f.top * f.decay))
-        + beat * (2 * end.imag / f.x),
-        f_bottom=hot_f * (c + d)
-        + steep_f * (per_p**2 * (f.top * f.decay + f.bottom))
-        + beat_f * (2 * end.real / f.x**2),
+    end = f.beat * f.turn
+    one, none = np.ones_like(f.x), np.zeros_like(f.x)
+    u = (
+        (one, none, per_p * (f.bottom * f.decay - f.top), 2 * f.beat.imag / f.x),
+        (none, one, per_p * (f.bottom - f.top * f.decay), 2 * end.imag / f.x),
     )
+    flux = (
+        (-one, none, -(per_p**2) * (f.top + f.bottom * f.decay), 2 * f.beat.real / f.x**2),
+        (none, -one, -(per_p**2) * (f.top * f.decay + f.bottom), 2 * end.real / f.x**2),
+    )
+    return weight_rows(*u), weight_rows(*flux)

@@ -217,7 +217,8 @@ def test_material_in_two_places_has_one_pair_of_coefficients():
     sample = layered()
     apart = basis(sample, (400.0, PROBE), GRID, one(0.0), columns(["a", "b", "c", "d"]), sets=1)[0]
     shared = basis(sample, (400.0, PROBE), GRID, one(0.0), columns(["a", "b", "a", "d"]), sets=1)[0]
-    np.testing.assert_allclose(shared[:4], apart[:4] + apart[8:12], rtol=0, atol=1e-12 * np.abs(apart).max())
+    # Rounding, magnified by up to 10^6 at the end of the window
+    np.testing.assert_allclose(shared[:4], apart[:4] + apart[8:12], rtol=0, atol=1e-11 * np.abs(apart).max())
     np.testing.assert_allclose(shared[4:], np.concatenate([apart[4:8], apart[12:]]), rtol=1e-12)
 
 
