@@ -155,6 +155,14 @@ def test_settling_step_finds_the_slowest_ensemble():
     assert burn_in_steps(log_prob, 40.2) == 201
 
 
+def test_settling_is_within_two_deviations_of_the_ensembles_median():
+    # The median of 16 normal walkers scatters by 0.31: two below is six deviations
+    rng = np.random.default_rng(10)
+    log_prob = rng.standard_normal((3, 400, 16))
+    log_prob[1, :60] -= 2.0
+    assert settling_step(log_prob) == pytest.approx(60, abs=2)
+
+
 def assessed(chain):
     log_prob = -0.5 * np.sum(chain**2, axis=3)
     return assess(chain, log_prob, find_burn_in(chain, log_prob))

@@ -14,11 +14,16 @@ WIDTH = 0.01
 
 
 def draws(centre: float, prior, seed: int, shape=(4, 1000)) -> np.ndarray:
-    """Independent draws of prior x normal likelihood, by inverting the distribution function on a grid."""
+    """Independent draws of prior x normal likelihood."""
+    return quantiles(centre, prior, np.random.default_rng(seed).uniform(size=shape))
+
+
+def quantiles(centre: float, prior, share: np.ndarray) -> np.ndarray:
+    """Quantiles of prior x normal likelihood, by inverting the distribution function on a grid."""
     low, high = prior.support()
     x = np.linspace(max(low, centre - 9 * WIDTH), min(high, max(centre, 0) + 9 * WIDTH), 200001)
     mass = np.cumsum(prior.pdf(x) * np.exp(-0.5 * ((x - centre) / WIDTH) ** 2))
-    return np.interp(np.random.default_rng(seed).uniform(size=shape), mass / mass[-1], x)
+    return np.interp(share, mass / mass[-1], x)
 
 
 def exact(centre: float, prior, at: float = 0.0) -> float:
@@ -45,6 +50,15 @@ def test_ratio_at_the_edge_agrees_with_quadrature(centre: float, family: str) ->
     assert found.error < (0.12 if centre < 0.015 else 0.5)
 
 
+@pytest.mark.parametrize("centre", [0.0, 0.01])
+def test_without_sampling_noise_the_ratio_is_exact(centre: float) -> None:
+    """Draws at even shares of the posterior, in random order: what is left is the fit's own bias."""
+    prior = stats.halfcauchy(scale=SCALE)
+    share = np.random.default_rng(4).permutation((np.arange(200_000) + 0.5) / 200_000).reshape(4, -1)
+    found = savage_dickey(result(quantiles(centre, prior, share), prior), NAME)
+    assert found.ratio == pytest.approx(exact(centre, prior), rel=5e-3)
+
+
 def test_the_stated_error_is_that_of_repetitions() -> None:
     """Forty sets of draws: standardised errors have mean 0 and deviation 1 within their own errors."""
     prior = stats.halfcauchy(scale=SCALE)
@@ -53,6 +67,19 @@ def test_the_stated_error_is_that_of_repetitions() -> None:
     score = np.array([(np.log(f.ratio) - truth) / f.error for f in found])
     assert abs(score.mean()) < 3 / np.sqrt(40)
     assert 0.6 < score.std() < 1.4
+
+
+def test_the_stated_error_of_one_ensemble_and_of_repeated_draws() -> None:
+    """One ensemble has no spread between ensembles: the regression's own error must do, correlation counted in."""
+    prior = stats.halfcauchy(scale=SCALE)
+    truth = np.log(exact(0.01, prior))
+    single = [draws(0.01, prior, seed, shape=(1, 2000)) for seed in range(30)]
+    found = [savage_dickey(result(values, prior), NAME) for values in single]
+    score = np.array([(np.log(f.ratio) - truth) / f.error for f in found])
+    assert 0.6 < score.std() < 1.5
+    # Every draw five times in a row: no more is known, and five times as many draws are stated
+    repeated = savage_dickey(result(np.repeat(single[0], 5, axis=1), prior), NAME)
+    assert repeated.error == pytest.approx(found[0].error, rel=0.25)
 
 
 def test_dependence_on_the_priors_scale_agrees_with_quadrature_over_two_decades() -> None:
@@ -82,6 +109,15 @@ def test_far_from_the_value_a_bound_is_given_and_no_number() -> None:
     assert "odds under" in str(found)
     truth = np.array([exact(0.07, stats.halfcauchy(scale=s)) for s in found.scales])
     assert np.all(truth < found.ratios)
+
+
+def test_bound_by_hand() -> None:
+    """No draw of 4000 below 0.5: at most 3 to 5 in 4000 (95 %) of the posterior lie where 0.383 of the prior does."""
+    values = np.random.default_rng(2).uniform(0.5, 0.6, size=(4, 1000))
+    found = savage_dickey(result(values, stats.halfnorm(scale=1.0)), NAME)
+    assert found.is_bound
+    assert 3 / 4000 / 0.383 < 1.05 * found.ratio
+    assert found.ratio < 5 / 4000 / 0.383
 
 
 def test_wrong_arguments_are_refused() -> None:
