@@ -18,6 +18,7 @@ from inverse.inference.likelihood import HEAT_WIDTH, SCALE_WIDTH, STRAIN_WIDTH, 
 from inverse.inference.noise import Noise, noise_priors
 from inverse.inference.parameters import parameters
 from inverse.inference.posterior import Member, Posterior
+from inverse.inference.scans import relative_noise
 from inverse.inference.reach import refuse_what_no_trace_can_tell
 from inverse.inference.result import result_tree
 from inverse.inference.sampling import problem_hash, sample_posterior
@@ -52,9 +53,12 @@ class Inversion:
     mask : "overlap", None, (float, float) or bool array
         ``"overlap"`` leaves out the pulse overlap and the 2.5 ps after it; a pair leaves out the delays between
         two times relative to time zero; an array is True where a delay is fitted; None fits all.
-    noise : {"correlated", "white"} or mapping
-        Noise model; or a mapping of ``white``, ``discrepancy``, ``correlation_time`` to priors that replace
-        the defaults of the correlated model.
+    noise : {"correlated", "white", "student"} or mapping
+        Noise model: white noise and a correlated discrepancy; white noise alone; or, where some delays are outliers,
+        the correlated model with white noise of Student's t distribution (approximate, see
+        `inverse.inference.robust`). Or a mapping of ``white``, ``discrepancy``, ``correlation_time`` to priors that
+        replace the defaults of the correlated model. Standard errors of repeated scans in the trace set the
+        white noise per delay (`inverse.inference.scans`).
 
     Raises
     ------
@@ -328,10 +332,10 @@ def _channel(
     if strange:
         raise ValueError(f"noise names {', '.join(strange)}; it may give priors for {', '.join(priors)}.")
     data = trace[name].values.astype(float)
-    scatter = trace.get(f"{name}_scatter")
+    scatter, scans = trace.get(f"{name}_scatter"), trace.get(f"{name}_scans")
     relative = np.ones(delay.size)
     if scatter is not None:
-        relative = scatter.values[used] / np.sqrt(np.mean(scatter.values[used] ** 2))
+        relative = relative_noise(scatter.values[used], None if scans is None else scans.values[used])
     channel = Channel(
         name=name,
         unit=str(trace[name].attrs.get("units", "1")),

@@ -37,8 +37,10 @@ Array = NDArray[np.float64]
 
 _LARGEST_RATIO = 1e12
 _ITERATIONS = 100
-# Of the log density; each step leaves about a tenth of what is missing.
-_TOLERANCE = 1e-6
+# Rise of the log density at which to stop; each step leaves about a tenth of what is missing. Residuals are
+# differentiated, so that they take more.
+_TOLERANCE = 1e-5
+_FINE = 1e-8
 # Curvature, relative to a Gaussian's, of points that have none.
 _FLAT = 1e-9
 _NODES, _WEIGHTS = np.polynomial.hermite_e.hermegauss(15)
@@ -173,7 +175,7 @@ def student_residuals(
     """
     batch = {name: np.full(1, v) for name, v in values.items()}
     parts = [_part(c, used, functions[c.name][None], c.noise_values(batch)) for c in channels]
-    mode = _mode(parts)
+    mode = _mode(parts, _FINE)
     out = [mode.coefficients[0]]
     for channel, u, f in zip(channels, mode.scaled, mode.discrepancy, strict=True):
         noise = {name: float(v[0]) for name, v in channel.noise_values(batch).items()}
@@ -191,7 +193,7 @@ def gaussian_noise(
     """Return the Gaussian noise that has, at the mode of one parameter set, the curvature of each channel's."""
     batch = {name: np.full(1, v) for name, v in values.items()}
     parts = [_part(c, used, functions[c.name][None], c.noise_values(batch)) for c in channels]
-    mode = _mode(parts)
+    mode = _mode(parts, _FINE)
     return [
         Noise("correlated", c.noise.delay, c.noise.relative / np.sqrt(np.maximum(_curvature(u)[0], 1e-6)))
         for c, u in zip(channels, mode.scaled, strict=True)
@@ -217,7 +219,7 @@ def _part(channel: Channel, used: NDArray[np.bool_], rows: Array, noise: Mapping
     )
 
 
-def _mode(parts: Sequence[_Part]) -> _Mode:
+def _mode(parts: Sequence[_Part], tolerance: float = _TOLERANCE) -> _Mode:
     """Reweight until the density rises no more; sets that are done are left out of further steps."""
     sets = len(parts[0].sigma)
     mode = _step(parts, [np.ones(p.diagonal.shape) for p in parts])
@@ -229,7 +231,7 @@ def _mode(parts: Sequence[_Part]) -> _Mode:
         new = better.log_density(chosen)
         _put(mode, active, better)
         rise, density[active] = new - density[active], new
-        active[active] = rise > _TOLERANCE
+        active[active] = rise > tolerance
         if not active.any():
             break
     return mode
