@@ -56,12 +56,15 @@ def eliminate(gram: Array, log_det: Array, count: int) -> Eliminated:
     """
     size = gram.shape[1] - 1
     good = np.isfinite(gram).all(axis=(1, 2)) & np.isfinite(log_det)
-    safe = np.where(good[:, None, None], gram, np.eye(size + 1))
-    matrix = safe[:, :size, :size] + np.eye(size)
-    factor = np.linalg.cholesky(matrix)
-    half = np.linalg.solve(factor, safe[:, :size, size:])
-    mean = np.linalg.solve(factor.swapaxes(1, 2), half)[..., 0]
-    misfit = safe[:, size, size] - (half[..., 0] ** 2).sum(axis=1)
+    matrix = np.where(good[:, None, None], gram, np.eye(size + 1))
+    data = matrix[:, size, size].copy()
+    # The factor's last row is L^-1 b whatever stands in the corner; this keeps the matrix positive definite.
+    matrix[:, size, size] += data
+    matrix += np.eye(size + 1)
+    whole = np.linalg.cholesky(matrix)
+    factor, half = whole[:, :size, :size], whole[:, size, :size]
+    mean = np.linalg.solve(factor.swapaxes(1, 2), half[..., None])[..., 0]
+    misfit = data - (half**2).sum(axis=1)
     log_volume = np.log(np.diagonal(factor, axis1=1, axis2=2)).sum(axis=1)
     value = -0.5 * (misfit + log_det + count * np.log(2 * np.pi)) - log_volume
     return Eliminated(np.where(good, value, -np.inf), mean, factor)

@@ -63,19 +63,21 @@ class Noise:
         array, shape (sets,)
         """
         sigma = values["white"]
-        scaled = rows / self.relative
         log_det = 2 * self.delay.size * np.log(sigma) + 2 * np.log(self.relative).sum()
         if self.model == "white":
+            scaled = rows / self.relative
             return scaled @ scaled.swapaxes(1, 2) / sigma[:, None, None] ** 2, log_det
-        solved = np.empty_like(scaled)
-        extra = np.empty(len(sigma))
         ratio = np.minimum((sigma / np.maximum(values["discrepancy"], 1e-300)) ** 2, _RATIO)
+        diagonal, off, log_prior_det = self._precision(values["correlation_time"])
+        pivots, multipliers = 1 + ratio[:, None] * diagonal, ratio[:, None] * off
+        product = np.empty((len(sigma), rows.shape[1], rows.shape[1]))
+        # Set by set: one set's rows stay in a core's cache from the first step to the last.
         for b in range(len(sigma)):
-            diagonal, off, log_prior_det = self._precision(values["correlation_time"][b])
-            factor = lapack.dpttrf(1 + ratio[b] * diagonal, ratio[b] * off)
-            solved[b] = lapack.dpttrs(factor[0], factor[1], scaled[b].T)[0].T
-            extra[b] = np.log(factor[0]).sum() - log_prior_det - self.delay.size * np.log(ratio[b])
-        product = scaled @ (scaled - solved).swapaxes(1, 2)
+            scaled = rows[b] / self.relative
+            lapack.dpttrf(pivots[b], multipliers[b], overwrite_d=True, overwrite_e=True)
+            solved = lapack.dpttrs(pivots[b], multipliers[b], scaled.T)[0].T
+            np.matmul(scaled, np.subtract(scaled, solved, out=solved).T, out=product[b])
+        extra = np.log(pivots).sum(axis=1) - log_prior_det - self.delay.size * np.log(ratio)
         return (product + product.swapaxes(1, 2)) / (2 * sigma[:, None, None] ** 2), log_det + extra
 
     def whiten(self, rows: Array, values: Mapping[str, float]) -> Array:
@@ -113,8 +115,8 @@ class Noise:
         if self.model == "white":
             return np.zeros_like(rows)
         ratio = min((values["white"] / max(values["discrepancy"], 1e-300)) ** 2, _RATIO)
-        diagonal, off, _ = self._precision(float(values["correlation_time"]))
-        factor = lapack.dpttrf(1 + ratio * diagonal, ratio * off)
+        diagonal, off, _ = self._precision(np.array([values["correlation_time"]]))
+        factor = lapack.dpttrf(1 + ratio * diagonal[0], ratio * off[0])
         scaled = rows / self.relative
         return lapack.dpttrs(factor[0], factor[1], scaled.T)[0].T * self.relative
 
@@ -133,15 +135,17 @@ class Noise:
             path[i + 1] = r * path[i] + np.sqrt(1 - r * r) * kick
         return white + values["discrepancy"] * path
 
-    def _precision(self, length: float) -> tuple[Array, Array, float]:
-        """Diagonal, off-diagonal and log det of the unit discrepancy's inverse covariance, scaled by d."""
-        rho = np.exp(-np.diff(self.delay) / length)
-        gap = -np.expm1(-2 * np.diff(self.delay) / length)
-        diagonal = np.ones(self.delay.size)
-        diagonal[1:] = 1 / gap
-        diagonal[:-1] += rho * rho / gap
+    def _precision(self, length: Array) -> tuple[Array, Array, Array]:
+        """Diagonal, off-diagonal and log det of the unit discrepancy's inverse covariance, scaled by d, per set."""
+        drop = np.expm1(-np.diff(self.delay) / length[:, None])
+        rho, gap = 1 + drop, -drop * (2 + drop)
+        inverse = 1 / gap
+        diagonal = np.ones((length.size, self.delay.size))
+        diagonal[:, 1:] = inverse
+        diagonal[:, :-1] += rho * rho * inverse
         d = self.relative
-        return diagonal * d * d, -rho / gap * d[1:] * d[:-1], 2 * np.log(d).sum() - np.log(gap).sum()
+        log_det = 2 * np.log(d).sum() - np.log(gap).sum(axis=1)
+        return diagonal * (d * d), -rho * inverse * (d[1:] * d[:-1]), log_det
 
 
 def noise_priors(model: str, level: float, delay: Array) -> dict[str, Any]:
