@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.limits import warn_if_not_plane
 from inverse.description.places import BoundStack, bind
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import check, quantity
@@ -25,6 +26,7 @@ from inverse.inference.sampling import problem_hash, sample_posterior
 from inverse.response.basis import CHANNELS, basis, columns, take
 from inverse.response.inverse_laplace import time_grid
 from inverse.response.media import sample
+from inverse.response.pulse_train import pulse_train
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -261,6 +263,7 @@ def _member(
         (fixed["time_zero"],) * 2 if zero is None else (float(zero.median()), float(zero.ppf(1e-9)))
     )
     delay = trace["delay"].values.astype(float)
+    warn_if_not_plane(stack, setup, float(delay.max()) - centre)
     used = _used(mask, delay, centre, setup.pulse_rms)
     refuse_what_no_trace_can_tell(bound, float(delay[used].max()) - centre, setup.pulse_rms, setup.probe)
     look = first_look(trace)
@@ -381,6 +384,7 @@ def _trace_model(
         widths=widths * scale,
         pulse_rms=setup.pulse_rms,
         earliest=early,
+        train=pulse_train(setup),
     )
 
 

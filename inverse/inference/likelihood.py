@@ -8,13 +8,14 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.places import BoundStack
 from inverse.inference.elimination import Eliminated, eliminate
 from inverse.inference.noise import Noise
 from inverse.inference.robust import eliminate_student, gaussian_noise, student_residuals
-from inverse.description.places import BoundStack
 from inverse.response.basis import Columns, basis, take
+from inverse.response.instrument import drift, measured_sample
 from inverse.response.inverse_laplace import TimeGrid, time_grid
-from inverse.response.media import sample
+from inverse.response.pulse_train import PulseTrain, residual
 
 __all__ = ["Channel", "TraceModel"]
 
@@ -85,6 +86,8 @@ class TraceModel:
         ps.
     earliest : float
         Earliest time zero the grid admits, ps.
+    train : PulseTrain, optional
+        Where the trace is a lock-in's channel.
     """
 
     bound: BoundStack
@@ -97,6 +100,7 @@ class TraceModel:
     widths: Array
     pulse_rms: float
     earliest: float
+    train: PulseTrain | None = None
 
     @property
     def coefficient_names(self) -> tuple[str, ...]:
@@ -143,9 +147,14 @@ class TraceModel:
         """
         grid = grid or self.grid
         sets = len(next(iter(values.values())))
-        parts = basis(
-            sample(self.bound, values), self.wavelengths, grid, values["time_zero"][:, None], self.layout, sets
-        )
+        zero = values["time_zero"][:, None]
+        batch = measured_sample(self.bound, values)
+        parts = basis(batch, self.wavelengths, grid, zero, self.layout, sets)
+        if self.train is not None:
+            earlier = residual(batch, self.wavelengths, grid.delay, self.train, zero, self.layout, sets)
+            parts = self.train.detected(parts, earlier)
+        if "overlap_drift" in self.bound.instrument:
+            parts = parts * drift(self.bound, values, grid.delay - zero)
         scale = self.widths[:, None]
         out = {}
         for i, channel in enumerate(self.channels):

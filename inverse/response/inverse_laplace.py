@@ -28,7 +28,7 @@ _DEGREE = 7
 # Points of the uniform grid per frequency; 2 would be the least.
 _OVERSAMPLING = 2.1
 # Functions of delay whose transforms stay in a core's cache together.
-_ROWS = 32
+_ROWS = 64
 
 
 @dataclass(frozen=True)
@@ -62,11 +62,14 @@ class TimeGrid(LaplaceGrid):
         Points of the uniform grid.
     weights : sparse array, shape (delays, size)
         B-spline weights times ``exp(gamma t)``.
+    delay : array, shape (delays,)
+        ps.
     """
 
     spline: Array
     size: int
     weights: sparse.csr_array
+    delay: Array
 
     @property
     def block(self) -> int:
@@ -108,7 +111,7 @@ def time_grid(delay: Array, pulse_rms: float, earliest: float, stretch: float = 
     # The transform of a B-spline of degree p is sinc^(p + 1).
     spline = np.sinc(w * step / (2 * np.pi)) ** -(_DEGREE + 1) / step
     weights = _weights((delay - origin) / step, np.exp(gamma * (delay - origin)), size)
-    return TimeGrid(s, np.exp((s * pulse_rms) ** 2 / 2), origin, spline[None, None, :], size, weights)
+    return TimeGrid(s, np.exp((s * pulse_rms) ** 2 / 2), origin, spline[None, None, :], size, weights, delay)
 
 
 def _weights(place: Array, growth: Array, size: int) -> sparse.csr_array:

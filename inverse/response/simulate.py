@@ -14,10 +14,11 @@ from inverse.description.parts import Substrate
 from inverse.description.places import BoundStack, bind
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
-from inverse.response.basis import CHANNELS, displaced, fields
+from inverse.response.basis import CHANNELS, columns, displaced, fields
 from inverse.response.instrument import drift, measured_sample
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.media import Sample
+from inverse.response.pulse_train import PulseTrain, pulse_train, residual
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -80,6 +81,9 @@ def simulate(
     batch = measured_sample(bound, known)
     warn_if_not_plane(stack, setup, float(delay.max()) - time_zero)
     found, names = _merged(*_parts(bound, stack, batch, setup, grid, time_zero))
+    if train := pulse_train(setup):
+        earlier = _earlier(stack, batch, setup, train, delay, time_zero)
+        found, names = train.with_earlier(found, earlier), [*names, "earlier pulses"]
     found *= drift(bound, known, delay[None] - time_zero)[0]
     parts = {"reflectance_change": 2 * found.real, "optical_phase": found.imag}
     signals = {channel: setup.fluence * parts[channel] for channel in CHANNELS}
@@ -131,6 +135,26 @@ def _parts(
     response = to_delays(grid, rows[None])[0]
     complex_parts = np.array(weights)[:, None] * (response[0::2] + 1j * response[1::2])
     return complex_parts, names
+
+
+def _earlier(
+    stack: Stack, batch: Sample, setup: PumpProbe, train: PulseTrain, delay: Array, time_zero: float
+) -> NDArray[np.complex128]:
+    """Return delta r / r that earlier pulses leave in the lock-in's channel, at unit fluence, shape (1, delays)."""
+    materials = _materials(stack)
+    layout = columns([m.name for m in materials])
+    left = residual(batch, (setup.pump, setup.probe), delay, train, np.full((1, 1), time_zero), layout, 1)[0]
+    rows = train.channel_of(left)
+    known = {m.name: m for m in materials}
+    weights = [
+        coefficient
+        for group in layout.groups
+        for coefficient in (
+            _coefficient(known[group].dn_dstrain, DEFAULT_STRAIN),
+            _coefficient(known[group].dn_dT, DEFAULT_HEAT),
+        )
+    ]
+    return np.array([*weights, 1.0])[None] @ (rows[0::2] + 1j * rows[1::2])
 
 
 def _merged(rows: NDArray[np.complex128], names: list[str]) -> tuple[NDArray[np.complex128], list[str]]:
