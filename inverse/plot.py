@@ -2,6 +2,7 @@
 
 from inverse.plot_corner import corner
 from inverse.plot_coverage import coverage
+from inverse.plot_diagnostics import learned, profile, residuals
 from inverse.plot_echoes import echoes, shares
 from inverse.plot_elastic import elastic_section
 from inverse.plot_fit import fit
@@ -14,6 +15,9 @@ __all__ = [
     "echoes",
     "elastic_section",
     "fit",
+    "learned",
+    "profile",
+    "residuals",
     "section",
     "shares",
     "split_differences",

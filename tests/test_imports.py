@@ -20,6 +20,7 @@ REPORT = {
         "plot_elastic",
         "plot_echoes",
         "plot_coverage",
+        "plot_diagnostics",
         "plot_splits",
     ),
     *("rounding", "unit_text", "propagation", "finite_differences"),

@@ -16,22 +16,17 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import chdtrc, log_ndtr
 
+from inverse.inference.drift_test import DriftTest, drift_tests
 from inverse.inference.inversion import Inversion
 from inverse.inference.posterior_draws import posterior_draws
-from inverse.inference.residuals import (
-    Correlation,
-    Replicates,
-    autocorrelation,
-    fit_correlation,
-    replicates,
-)
+from inverse.inference.residuals import Replicates, autocorrelation, replicates
 
 __all__ = ["ChannelCheck", "ModelCheck", "check_model", "ljung_box", "noise_warnings"]
 
 Array = NDArray[np.float64]
 
 CORRELATED = 0.01
-"""Residuals count as autocorrelated where the Ljung-Box p is below this."""
+"""Residuals count as autocorrelated where the Ljung-Box p is below this, or that of the drift test below twice it."""
 
 FAR = 4.0
 """A point this many deviations off is an outlier."""
@@ -68,11 +63,14 @@ class ChannelCheck:
     noise_model : str
     white : float
         Median white noise level.
-    correlation : Correlation or None
-        The correlated part: of the noise model (medians), or under white noise fitted to residuals that are
-        autocorrelated. None where there is none.
+    p_drift : float
+        p of the likelihood-ratio test for a correlated part (`inverse.inference.drift_test`) under white noise; it
+        sees a drift that the fitted curve has bent towards. NaN under correlated noise.
+    size, time : float
+        Correlated part over the white one, and its correlation time in ps: medians of the noise model, or under white
+        noise the best ones of the drift test.
     excess : float
-        5 % quantile of discrepancy over white noise under correlated noise; NaN under white noise.
+        5 % quantile of `size` under correlated noise; NaN under white noise.
     """
 
     name: str
@@ -89,7 +87,9 @@ class ChannelCheck:
     outliers: Array
     noise_model: str
     white: float
-    correlation: Correlation | None
+    p_drift: float
+    size: float
+    time: float
     excess: float
 
     @property
@@ -98,20 +98,16 @@ class ChannelCheck:
         return (*self._correlation_problems(), *self._tail_problems())
 
     def _correlation_problems(self) -> list[str]:
-        c = self.correlation
+        found = f"residuals are correlated over {self.time:.2g} ps and {self.size:.2g} times the noise"
+        if self.noise_model == "white" and (self.p_drift < 2 * CORRELATED or self.p_correlation < CORRELATED):
+            p = min(self.p_drift, self.p_correlation)
+            return [f'{found} (p {_p(p)}): the intervals are too narrow; use noise="correlated"']
         if self.p_correlation < CORRELATED:
-            size = "" if c is None else f" over {c.time:.2g} ps and {c.size / c.white:.2g} times the noise"
-            rest = (
-                'the intervals are too narrow; use noise="correlated"'
-                if self.noise_model == "white"
-                else "the noise model does not hold"
-            )
-            return [f"residuals are correlated{size} (Ljung-Box p {_p(self.p_correlation)}): {rest}"]
-        if self.excess > 1 and c is not None:
+            return [f"residuals are correlated beyond the noise model (Ljung-Box p {_p(self.p_correlation)})"]
+        if self.excess > 1:
             return [
-                f"residuals are correlated over {c.time:.2g} ps and {c.size / c.white:.2g} times the noise; the "
-                "discrepancy term carries them and the intervals allow for it, but the stack or its constants are not "
-                "right"
+                f"{found}; the discrepancy term carries them and the intervals allow for it, but the stack or its "
+                "constants are not right"
             ]
         return []
 
@@ -195,7 +191,7 @@ def check_model(result: Any, *, draws: int = _DRAWS, seed: int = 0) -> ModelChec
     if draws < 1:
         raise ValueError(f"draws={draws}; give 1 or more.")
     found = posterior_draws(result, seed=seed, count=draws).thinned(draws)
-    return ModelCheck(tuple(_channel_check(r, seed) for r in replicates(found.inversion, found.flat, seed)))
+    return ModelCheck(_checks(found.inversion, found.flat, seed))
 
 
 def noise_warnings(inversion: Inversion, values: Array, *, seed: int = 0) -> list[str]:
@@ -214,8 +210,15 @@ def noise_warnings(inversion: Inversion, values: Array, *, seed: int = 0) -> lis
         One sentence per problem; empty where there is none.
     """
     keep = np.unique(np.linspace(0, len(values) - 1, min(_DRAWS, len(values))).round().astype(int))
-    checks = [_channel_check(r, seed) for r in replicates(inversion, np.asarray(values)[keep], seed)]
+    checks = _checks(inversion, np.asarray(values)[keep], seed)
     return [f"{c.name}: {problem}." for c in checks for problem in c.problems]
+
+
+def _checks(inversion: Inversion, values: Array, seed: int) -> tuple[ChannelCheck, ...]:
+    best = values[int(np.argmax(inversion.posterior.log_prob(values)))]
+    drifts = drift_tests(inversion, best, seed=seed)
+    found = replicates(inversion, values, seed)
+    return tuple(_channel_check(r, drift, seed) for r, drift in zip(found, drifts, strict=True))
 
 
 def ljung_box(series: Array, lags: int) -> Array:
@@ -230,7 +233,7 @@ def ljung_box(series: Array, lags: int) -> Array:
     return np.asarray(n * (n + 2) * (r**2 / (n - np.arange(1, lags + 1))).sum(axis=1))
 
 
-def _channel_check(r: Replicates, seed: int) -> ChannelCheck:
+def _channel_check(r: Replicates, drift: DriftTest | None, seed: int) -> ChannelCheck:
     u, n = r.innovation, r.delay.size
     lags = max(1, min(_LAGS, n // 5))
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(1)[0])
@@ -238,10 +241,8 @@ def _channel_check(r: Replicates, seed: int) -> ChannelCheck:
     p_correlation = _upper(reference, ljung_box(u, lags))
     largest = np.abs(u).max(axis=1)
     bands = np.quantile(r.replicate, _QUANTILES, axis=0)
-    excess = (
-        r.noise["discrepancy"] / r.noise["white"] if r.channel.noise.model != "white" else np.array([np.nan])
-    )
     mean = u.mean(axis=0)
+    size, time, excess = _correlated_part(r, drift)
     return ChannelCheck(
         name=r.name,
         unit=r.channel.unit,
@@ -257,8 +258,10 @@ def _channel_check(r: Replicates, seed: int) -> ChannelCheck:
         outliers=r.delay[np.abs(mean) > FAR],
         noise_model=r.channel.noise.model,
         white=float(np.median(r.noise["white"])),
-        correlation=_correlation(r, p_correlation),
-        excess=float(np.quantile(excess, 0.05)),
+        p_drift=np.nan if drift is None else drift.p,
+        size=size,
+        time=time,
+        excess=excess,
     )
 
 
@@ -268,12 +271,16 @@ def _upper(reference: Array, statistic: Array) -> float:
     return float(np.mean((above + 1) / (reference.size + 1)))
 
 
-def _correlation(r: Replicates, p: float) -> Correlation | None:
-    if r.channel.noise.model != "white":
-        return Correlation(
-            *(float(np.median(r.noise[k])) for k in ("white", "discrepancy", "correlation_time"))
-        )
-    return fit_correlation(r.channel.noise, r.residual.mean(axis=0)) if p < CORRELATED else None
+def _correlated_part(r: Replicates, drift: DriftTest | None) -> tuple[float, float, float]:
+    """Return size over white noise, correlation time, and the 5 % quantile of the size."""
+    if drift is not None:
+        return drift.size, drift.time, np.nan
+    size = r.noise["discrepancy"] / r.noise["white"]
+    return (
+        float(np.median(size)),
+        float(np.median(r.noise["correlation_time"])),
+        float(np.quantile(size, 0.05)),
+    )
 
 
 def _share(data: Array, low: Array, high: Array) -> float:
@@ -291,7 +298,8 @@ def _line(c: ChannelCheck) -> str:
         f"sum of squares p {_p(c.p_chi_square)}",
         f"largest {np.abs(c.innovation).max():.1f} deviations, p {_p(c.p_largest)}",
     ]
-    if c.correlation is not None:
-        ratio = c.correlation.size / c.correlation.white
-        parts.append(f"discrepancy {ratio:.2g} times the white noise over {c.correlation.time:.2g} ps")
+    if c.noise_model == "white":
+        parts.append(f"drift test p {_p(c.p_drift)}")
+    else:
+        parts.append(f"discrepancy {c.size:.2g} times the white noise over {c.time:.2g} ps")
     return f"{c.name}: {'; '.join(parts)}"

@@ -7,14 +7,13 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import optimize
 
 from inverse.inference.elimination import eliminate
 from inverse.inference.inversion import Inversion
 from inverse.inference.likelihood import Channel
 from inverse.inference.noise import Noise
 
-__all__ = ["Correlation", "Replicates", "autocorrelation", "fit_correlation", "innovations", "replicates"]
+__all__ = ["Replicates", "autocorrelation", "innovations", "replicates"]
 
 Array = NDArray[np.float64]
 
@@ -51,23 +50,6 @@ class Replicates:
     innovation: Array
     replicate: Array
     noise: Mapping[str, Array]
-
-
-@dataclass(frozen=True)
-class Correlation:
-    """Best Ornstein-Uhlenbeck part of a residual: ``K_ij = white^2 delta_ij + size^2 exp(-|t_i - t_j| / time)``.
-
-    Attributes
-    ----------
-    white, size : float
-        In the residual's unit.
-    time : float
-        ps.
-    """
-
-    white: float
-    size: float
-    time: float
 
 
 def innovations(noise: Noise, residual: Array, values: Mapping[str, Array]) -> Array:
@@ -165,28 +147,3 @@ def autocorrelation(series: Array, lags: int) -> Array:
     return np.stack(
         [(series[:, k:] * series[:, :-k]).sum(axis=1) / power for k in range(1, lags + 1)], axis=1
     )
-
-
-def fit_correlation(noise: Noise, residual: Array) -> Correlation:
-    """Fit white noise and an Ornstein-Uhlenbeck part to one residual by maximum likelihood.
-
-    Parameters
-    ----------
-    noise : Noise
-        Its delays and relative noise are used.
-    residual : array, shape (delays,)
-    """
-    correlated = Noise("correlated", noise.delay, noise.relative)
-    span, scale = float(np.ptp(noise.delay)), float(np.std(residual))
-    step = float(np.median(np.diff(noise.delay)))
-
-    def minus_log_likelihood(x: Array) -> float:
-        white, size, time = np.exp(np.clip(x, -50, 50))[:, None] * np.array([[scale], [scale], [1.0]])
-        values = {"white": white, "discrepancy": size, "correlation_time": np.clip(time, step / 2, span)}
-        gram, log_det = correlated.gram(residual[None, None], values)
-        return 0.5 * float(gram[0, 0, 0] + log_det[0])
-
-    starts = [np.array([-0.7, -0.3, np.log(time)]) for time in np.geomspace(2 * step, span / 4, 3)]
-    found = [optimize.minimize(minus_log_likelihood, s, method="Nelder-Mead") for s in starts]
-    white, size, time = np.exp(min(found, key=lambda f: float(f.fun)).x)
-    return Correlation(white * scale, size * scale, float(np.clip(time, step / 2, span)))

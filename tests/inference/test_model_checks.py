@@ -6,9 +6,10 @@ from problems import SETUP, bonded, noisy, normal_draws, sampled
 from scipy import stats
 
 import inverse as inv
+from inverse.inference.drift_test import drift_tests
 from inverse.inference.model_checks import check_model, ljung_box, noise_warnings
 from inverse.inference.noise import Noise
-from inverse.inference.residuals import autocorrelation, fit_correlation, innovations, replicates
+from inverse.inference.residuals import autocorrelation, innovations, replicates
 
 TRUTH = {"Al.thickness": 60.0, "Al.velocity": 6.42, "Al|Si.compliance": 0.02}
 UNEVEN = np.concatenate([np.arange(-5, 8, 0.25), np.arange(8, 60, 0.5)])
@@ -74,27 +75,61 @@ def test_ljung_box_of_white_noise_has_mean_of_chi_square() -> None:
     assert abs(q.mean() - 20) < 4 * q.std() / np.sqrt(4000)
 
 
-def test_the_correlated_part_of_a_residual_is_found() -> None:
-    """White 1, correlated 3 over 4 ps, 800 points over 50 correlation times."""
-    noise = Noise("correlated", np.arange(0, 200, 0.25), np.ones(800))
-    true = {"white": 1.0, "discrepancy": 3.0, "correlation_time": 4.0}
-    draws = [fit_correlation(noise, noise.draw(np.random.default_rng(s), true)) for s in range(6)]
-    found = np.array([[d.white, d.size, d.time] for d in draws])
-    error = found.std(axis=0, ddof=1) / np.sqrt(6)
-    assert np.all(np.abs(found.mean(axis=0) - [1.0, 3.0, 4.0]) < 4 * error)
-    assert np.all(error < [0.05, 0.4, 1.2])
+@pytest.mark.slow
+def test_drift_test_of_white_noise_has_uniform_p_at_its_low_end() -> None:
+    """Forty traces without drift: p below 0.2 in a fifth of them, within three binomial deviations."""
+    low = 0
+    for seed in range(40):
+        inversion = problem("white", seed=seed)
+        (test,) = drift_tests(inversion, at_truth(inversion, white_level(), 1)[0], seed=seed)
+        low += test.p < 0.2
+    assert abs(low - 8) < 3 * np.sqrt(40 * 0.2 * 0.8)
 
 
+def test_drift_test_finds_the_drift() -> None:
+    """Twice the white noise over 3 ps, twelve traces: size^2 / time is what a curve that bends leaves to be seen."""
+    found = []
+    for seed in range(12):
+        inversion = problem("white", seed=seed, drift=(0.02, 3.0))
+        (test,) = drift_tests(inversion, at_truth(inversion, white_level(), 1)[0], seed=seed)
+        found.append((test.p, test.size, test.time))
+    p, size, time = np.array(found).T
+    assert (p < 0.02).sum() >= 10
+    assert 0.5 < np.median(size**2 / time) / (2**2 / 3) < 2
+
+
+def test_drift_test_is_left_out_under_correlated_noise() -> None:
+    inversion = problem("correlated", seed=1)
+    assert drift_tests(inversion, inversion.posterior.parameters.to_values(np.zeros((1, 7)))[0]) == (None,)
+
+
+def test_a_drift_that_the_curve_has_bent_towards_is_still_seen(splits) -> None:
+    """C21 of the splits, drift of a third of its white noise: the innovations of the fit look nearly white."""
+    trace = inv.read_trace(splits / "C21.csv")
+    film = {"velocity": stats.norm(6.42, 0.1), "density_ratio": 2.7 / 2.33}
+    stack = bonded(**film, boundary_conductance=stats.loguniform(20, 500))
+    (test,) = drift_tests(*_fitted_white(stack, trace))
+    assert test.p < 0.01
+
+
+def _fitted_white(stack, trace):
+    fit = inv.Inversion(stack, SETUP, trace, noise="white").least_squares(seed=1, starts=3)
+    return fit.inversion, fit.values
+
+
+@pytest.mark.slow
 def test_right_noise_gives_no_warning_and_uniform_p() -> None:
     """Forty traces with white noise: p of single draws is uniform, and none of the mean p is small."""
     single, warned = [], 0
     for seed in range(40):
         inversion = problem("white", seed=seed)
         values = at_truth(inversion, white_level())
-        warned += len(noise_warnings(inversion, values, seed=seed))
+        warned += len(
+            noise_warnings(inversion, values, seed=seed)
+        )  # each of two tests fails one trace in fifty
         (r,) = replicates(inversion, values[:1], seed)
         single.append(float(stats.chi2.sf((r.innovation**2).sum(), r.delay.size)))
-    assert warned == 0
+    assert warned <= 4
     assert stats.kstest(single, "uniform").pvalue > 0.01
 
 
@@ -107,8 +142,8 @@ def test_drift_under_white_noise_is_warned_of_in_plain_words() -> None:
     assert check.verdict.startswith("The model does not describe the trace: residuals are correlated over")
     assert 'use noise="correlated"' in check.verdict
     (channel,) = check.channels
-    assert channel.correlation is not None
-    assert 1.0 < channel.correlation.time < 12.0
+    assert channel.p_drift < 0.02
+    assert 0.3 < channel.size**2 / channel.time / (2**2 / 4) < 3
     assert channel.autocorrelation[0] > 0.3
     (warning,) = noise_warnings(inversion, np.repeat(fit.values[None], 30, axis=0))
     assert warning.startswith("reflectance_change: residuals are correlated over")
