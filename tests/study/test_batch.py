@@ -132,7 +132,9 @@ def test_an_executor_that_dies_leaves_marked_rows_and_a_store_to_go_on_from(tmp_
     assert list(found["status"].values) == ["ok", "ok", "failed", "failed", "failed"]
     assert "run the batch again with the same path" in found["reason"].values[2]
     assert list(quiet(toy, traces, path=path)["status"].values) == ["ok"] * 5
-    assert list(quiet(toy, traces, executor=DyingExecutor(0, refuses=True))["status"].values) == ["failed"] * 5
+    assert (
+        list(quiet(toy, traces, executor=DyingExecutor(0, refuses=True))["status"].values) == ["failed"] * 5
+    )
 
 
 def test_what_is_not_converged_is_said_and_kept():
@@ -345,21 +347,19 @@ def test_dask_runs_a_batch():
 
 @pytest.mark.slow
 @pytest.mark.benchmark
-def test_two_processes_do_nearly_twice_as_much():
-    """200 sites, each busy for a fixed time: what is measured is the sharing out, not the machine's other load."""
-    import time
+def test_two_processes_do_nearly_twice_as_much(tmp_path):
+    """200 sites, each busy for a fixed time and noting when: on average more than 1.7 of them are under way at once.
 
+    That is the throughput over one process, and does not depend on what else the machine does.
+    """
     traces = {f"s{k}": toy_trace(0.1, k) for k in range(200)}
-    table = {s: {"sleep": 0.1} for s in traces}
-
-    def seconds(workers):
-        with worker_pool(workers) as pool:
-            list(pool.map(abs, range(2 * workers)))
-            start = time.monotonic()
-            quiet(toy, traces, table=table, executor=pool)
-            return time.monotonic() - start
-
-    assert seconds(1) / seconds(2) > 1.7
+    table = {s: {"sleep": 0.1, "note": str(tmp_path / s)} for s in traces}
+    with worker_pool(2) as pool:
+        list(pool.map(abs, range(4)))
+        quiet(toy, traces, table=table, executor=pool)
+    times = np.array([np.loadtxt(tmp_path / s) for s in traces])
+    start, end = times.T
+    assert (end - start).sum() / (end.max() - start.min()) > 1.7
 
 
 def test_the_prior_of_a_derived_quantity_is_stored():

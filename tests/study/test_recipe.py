@@ -2,6 +2,7 @@
 
 import pickle
 
+import numpy as np
 import pytest
 from scipy import stats
 
@@ -73,3 +74,19 @@ def test_it_travels_to_workers_and_has_a_written_form(recipe):
 def test_columns_that_make_no_sense(recipe, trace, row, message):
     with pytest.raises(ValueError, match=message):
         recipe(trace, row)
+
+
+def test_real_poisoned_traces_end_as_marked_rows(recipe, trace):
+    """NaN, wrong units, and noise thirty times the signal, each refused before any fitting."""
+    holes, units, noisy = (trace.copy(deep=True) for _ in range(3))
+    holes["reflectance_change"][50:60] = np.nan
+    units = units.assign_coords(delay=("delay", trace["delay"].values * 1e3, {"units": "ps"}))
+    size = 30 * float(np.abs(trace["reflectance_change"]).max())
+    noisy["reflectance_change"] += size * np.random.default_rng(0).standard_normal(trace["delay"].size)
+    traces = {"holes": holes, "units": units, "noisy": noisy}
+    found = inv.batch(recipe, traces, seed=1, workers=0, progress=False)
+    assert list(found["status"].values) == ["failed"] * 3
+    for reason, said in zip(
+        found["reason"].values, ("10 NaN", "looks like femtoseconds", "no rising edge"), strict=True
+    ):
+        assert said in reason

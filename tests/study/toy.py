@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import os
 import time
+from pathlib import Path
 from types import SimpleNamespace
 
 import numpy as np
@@ -25,6 +26,7 @@ class ToyInversion:
     noise_names = ()
 
     def __init__(self, trace: xr.Dataset, row: dict) -> None:
+        self.start = time.time()
         values = trace["reflectance_change"].values
         if np.isnan(values).any():
             raise ValueError(f"reflectance_change is NaN at {int(np.isnan(values).sum())} delays; drop them.")
@@ -67,6 +69,8 @@ class ToyInversion:
         )
         converged = max_steps > 10
         message = "" if converged else "10 steps did not suffice"
+        if "note" in self.row:
+            Path(self.row["note"]).write_text(f"{self.start!r} {time.time()!r}")
         tree.attrs["inverse"] = json.dumps({"convergence": {"converged": converged, "message": message}})
         return tree
 
