@@ -90,7 +90,7 @@ def fit(result: Any, *, axes: Sequence[Axes] | None = None) -> Figure:
     Raises
     ------
     ValueError
-        If the result lacks a group, or the number of axes is not two per channel.
+        If the result lacks a group or is not of traces, or the number of axes is not two per channel.
     """
     views = channel_views(result)
     with style():
@@ -139,6 +139,8 @@ def channel_views(result: Any) -> tuple[ChannelView, ...]:
 
 def _views_of_tree(tree: Any) -> tuple[ChannelView, ...]:
     observed = tree["observed_data"].to_dataset()
+    if "delay" not in observed.coords:
+        raise ValueError("plot.fit draws traces; a result without delays shows itself by table and plot.corner.")
     predictive = tree["posterior_predictive"].to_dataset()
     posterior = tree["posterior"].to_dataset() if "posterior" in tree.children else {}
     constant = tree["constant_data"].to_dataset() if "constant_data" in tree.children else {}

@@ -199,10 +199,20 @@ def rebuild(result: xr.DataTree) -> Inversion:
     ----------
     result : xarray.DataTree
         From `sample_posterior` or `load`.
+
+    Raises
+    ------
+    ValueError
+        If the result is not one of traces.
     """
     from inverse.inference.inversion import Inversion
 
     record = json.loads(result.attrs["inverse"])["record"]
+    if "parts" not in record:
+        raise ValueError(
+            f"This is a result of {', '.join(record)}, not of traces; constants are rebuilt by "
+            "ConstantsInversion.from_result, and their table and warnings say what the data added."
+        )
     shared: dict[str, Any] = {}
     parts = []
     for entry in record["parts"]:

@@ -340,6 +340,15 @@ def test_another_kind_of_result_cannot_be_rebuilt_as_constants(silicon: tuple) -
         ConstantsInversion.from_result(other)
 
 
+def test_what_is_for_traces_says_so(silicon: tuple) -> None:
+    with pytest.raises(
+        ValueError, match=r"not of traces; constants are rebuilt by ConstantsInversion\.from_result"
+    ):
+        inv.what_data_added(silicon[1])
+    with pytest.raises(ValueError, match=r"plot\.fit draws traces"):
+        inv.plot.fit(silicon[1])
+
+
 def test_the_corner_plot_shows_constants_and_their_priors(silicon: tuple) -> None:
     figure = inv.plot.corner(silicon[1], names=["c11", "c12", "c44"])
     assert len(figure.axes) == 9
