@@ -66,6 +66,8 @@ def test_asymmetric_uncertainty():
     assert format_value(5.23e8, (6.1e7, 4.8e7), style="latex") == r"$5.23^{+0.61}_{-0.48} \times 10^{8}$"
     assert format_value(5.23e8, (6.1e7, 4.8e7), unit="K") == "(5.23 +0.61 -0.48)e8 K"
     assert format_value(0.5, (0.2, 0.0)) == "0.50 +0.20 -0.00"
+    # The smaller of the two sets the place: it would vanish at the place of the larger
+    assert format_value(52.347, (12.3, 0.48)) == "52.35 +12.30 -0.48"
 
 
 @pytest.mark.parametrize(

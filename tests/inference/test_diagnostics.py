@@ -56,6 +56,13 @@ def test_information_from_draws_agrees_with_the_closed_form_for_normals(mean: fl
     assert information_bits(z, 8000) == pytest.approx(normal_bits(mean, sd**2), abs=0.06)
 
 
+def test_information_from_draws_of_the_prior_is_nearly_zero_in_the_mean() -> None:
+    """400 draws in 20 bins pretend to about 19 / (800 ln 2) = 0.034 bits, taken off; a quarter may remain."""
+    draws = np.random.default_rng(7).standard_normal((300, 400))
+    found = np.array([information_bits(z, 400) for z in draws])
+    assert abs(found.mean()) < 0.034 / 4
+
+
 def test_information_from_draws_is_that_of_a_cut_prior_where_the_normal_formula_is_wrong() -> None:
     """Half of a prior is worth one bit exactly; the normal formula says another number."""
     z = np.abs(np.random.default_rng(6).standard_normal(8000))
