@@ -13,11 +13,13 @@ from numpy.typing import NDArray
 from inverse.description.cuts import cut_slots, depth_slots, is_cut, is_oblique
 from inverse.description.instrument import instrument_slots
 from inverse.description.materials import Material
+from inverse.description.optic_slots import optic_slots
 from inverse.description.parts import Graded, Interface, Layer, Medium, Slice, Substrate
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import QUANTITIES
-from inverse.description.slots import Slot, Slots, slot_of
+from inverse.description.slots import ComputedSlot, Slot, Slots, slot_of
 from inverse.description.stack import Stack
+from inverse.description.unknowns import is_unknown
 
 __all__ = ["BoundStack", "Slot", "Slots", "bind"]
 
@@ -189,7 +191,8 @@ def _interface_slots(place: str, part: Interface, oblique: bool) -> Slots:
 def _substrate_slots(place: str, part: Medium, setup: PumpProbe) -> Slots:
     if _is_empty(part):
         return _light_slots(place, part.material, setup)
-    return _material_slots(place, part.material, setup, _density_slot(place, part.material))
+    slots = _material_slots(place, part.material, setup, _density_slot(place, part.material))
+    return slots | optic_slots(part.material)
 
 
 def _layer_slots(place: str, part: Layer, setup: PumpProbe, below: Slot | None) -> Slots:
@@ -204,7 +207,7 @@ def _layer_slots(place: str, part: Layer, setup: PumpProbe, below: Slot | None) 
     else:
         slots["density_ratio"] = slot_of("density_ratio", part.density_ratio, place, "given by the user", 0.0)
         slots["substrate_density"] = below
-    return _material_slots(place, part.material, setup, slots)
+    return _material_slots(place, part.material, setup, slots) | optic_slots(part.material)
 
 
 def _faces(place: str, whole: Graded, setup: PumpProbe) -> tuple[Slots, Slots]:
@@ -269,8 +272,16 @@ def _light_slots(place: str, material: Material, setup: PumpProbe) -> Slots:
 
 
 def _stress_slot(place: str, material: Material) -> Slot:
-    field = "thermal_stress_coefficient"
+    field, parts = "thermal_stress_coefficient", ("expansion", "bulk_modulus")
+    values = [getattr(material, part) for part in parts]
+    if material.thermal_stress_coefficient is None and None not in values and any(map(is_unknown, values)):
+        inputs = tuple(_field_slot(place, material, p, v) for p, v in zip(parts, values, strict=True))
+        return ComputedSlot(f"{place}.{field}", field, np.nan, inputs=inputs, formula=_thermal_stress)
     return _field_slot(place, material, field, _need(place, material, field))
+
+
+def _thermal_stress(expansion: Any, bulk_modulus: Any) -> Any:
+    return 3 * expansion * bulk_modulus
 
 
 def _electron_pair(place: str, material: Material) -> None:
