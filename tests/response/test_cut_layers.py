@@ -117,3 +117,43 @@ def test_derived_quantities_of_a_cut_layer() -> None:
         found["Cu.longitudinal_modulus"], (np.array([168.3, 170.0]) + 121.2 + 2 * 75.7) / 2
     )
     assert "Cu.c33" not in found
+
+
+@pytest.mark.parametrize("thickness", [0.5, 60.0, 1e5])
+@pytest.mark.parametrize("compliance", [0.0, 0.02, np.inf])
+@pytest.mark.parametrize("tangential", [0.0, np.inf])
+def test_an_oblique_layer_is_finite_throughout_the_range(
+    thickness: float, compliance: float, tangential: float
+) -> None:
+    found = trace(
+        cut([1, 2, 3], thickness=thickness), compliance=compliance, tangential_compliance=tangential
+    )
+    assert np.all(np.isfinite(found)) and np.ptp(found) > 0
+
+
+def test_two_hundred_oblique_layers_are_finite_and_thin_ones_are_one() -> None:
+    # Cutting one layer into 200 welded slices changes nothing.
+    axis = [1.0, 2.0, 3.0]
+    sliced = inv.Stack(inv.Repeat(200, cut(axis, thickness=0.3)), SUBSTRATE)
+    whole = inv.Stack(cut(axis, thickness=60.0), SUBSTRATE)
+    first, second = (inv.simulate(s, SETUP, DELAY)["reflectance_change"].to_numpy() for s in (sliced, whole))
+    assert np.abs(first - second).max() < 1e-7 * np.abs(second).max()
+
+
+def test_an_oblique_membrane_rings_at_the_thickness_modes_of_its_waves() -> None:
+    # Between free faces nothing converts at normal incidence: modes at v / 2 d of either wave that moves in z.
+    axis, thickness = [0.0, 1.0, 2.0], 40.0
+    film = cut(axis, thickness=thickness)
+    delay = np.arange(-4.0, 1000.0, 0.2)
+    found = inv.simulate(inv.Stack(film, inv.Substrate("vacuum")), SETUP, delay)[
+        "reflectance_change"
+    ].to_numpy()
+    ringing = np.diff(found[delay > 20.0], 2)
+    spectrum = np.abs(np.fft.rfft(ringing * np.hanning(ringing.size), 8 * ringing.size))
+    frequency = np.fft.rfftfreq(8 * ringing.size, 0.2)
+    waves = plane_waves(TENSOR, film.material.density, axis)
+    for k in np.flatnonzero(waves.longitudinal_part > 1e-3):
+        mode = float(waves.phase_velocity[k]) / (2 * thickness)
+        near = np.abs(frequency / mode - 1) < 0.06
+        assert frequency[near][np.argmax(spectrum[near])] == pytest.approx(mode, rel=3e-3)
+        assert spectrum[near].max() > 5 * np.median(spectrum[frequency < 0.1])
