@@ -254,7 +254,17 @@ def block_log_density(inversion: Inversion, values: Array, length: float) -> Arr
     -------
     array, shape (draws, blocks)
         Of all traces of a joint problem, one after the other.
+
+    Raises
+    ------
+    ValueError
+        If the noise is of Student's t distribution, for which there is no closed form, or fewer than two blocks
+        result.
     """
+    if any(member.model.has_outliers for member in inversion.posterior.members):
+        raise ValueError(
+            'With noise="student" a block has no density in closed form; compare fits with noise="correlated".'
+        )
     named = inversion.posterior.parameters.named(values)
     parts = []
     for member in inversion.posterior.members:

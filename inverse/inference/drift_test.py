@@ -19,7 +19,6 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.inference.elimination import eliminate
 from inverse.inference.inversion import Inversion
 from inverse.inference.likelihood import Channel, TraceModel
 from inverse.inference.noise import Noise
@@ -95,9 +94,7 @@ def _designs(inversion: Inversion, member: Member, values: Array) -> dict[str, _
     local = member.local(parameters.named(points))
     functions = member.model.functions(local)
     first = {k: v[:1] for k, v in local.items()}
-    weights = eliminate(
-        *member.model.gram({k: f[:1] for k, f in functions.items()}, first), member.model.count
-    ).mean[0]
+    weights = member.model.marginal({k: f[:1] for k, f in functions.items()}, first).mean[0]
     out = {}
     for channel in member.model.channels:
         f = functions[channel.name]

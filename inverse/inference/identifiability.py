@@ -90,7 +90,7 @@ def local_covariances(inversion: Inversion, z: Array) -> Local:
     to_values = inversion.posterior.parameters.to_values
     covariance = []
     for point in z:
-        residuals = Projected(inversion.posterior, physical, point)
+        residuals = Projected(inversion.posterior.as_gaussian(point), physical, point)
         x = point[physical]
         shifted = x + _STEP * np.concatenate([np.eye(x.size), -np.eye(x.size)])
         found = residuals(shifted)

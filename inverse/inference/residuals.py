@@ -8,10 +8,9 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.inference.elimination import eliminate
 from inverse.inference.inversion import Inversion
 from inverse.inference.likelihood import Channel
-from inverse.inference.noise import Noise
+from inverse.inference.noise import FREEDOM, Noise
 
 __all__ = ["Replicates", "autocorrelation", "innovations", "replicates"]
 
@@ -66,8 +65,11 @@ def innovations(noise: Noise, residual: Array, values: Mapping[str, Array]) -> A
     -------
     array, shape (draws, delays)
         Independent N(0, 1) if K is right, for delays of any spacing (Kalman filter of the Markov kernel; O(delays)).
+        Under Student's t noise K has its variance, and u is uncorrelated but not normal.
     """
     white = values["white"][:, None] * noise.relative
+    if noise.model == "student":
+        white = white * np.sqrt(FREEDOM / (FREEDOM - 2))
     if noise.model == "white":
         return residual / white
     size2, time = values["discrepancy"] ** 2, values["correlation_time"]
@@ -107,7 +109,7 @@ def _batch(inversion: Inversion, values: Array, rng: np.random.Generator) -> lis
     for member in inversion.posterior.members:
         model, local = member.model, member.local(named)
         functions = model.functions(local)
-        weights = eliminate(*model.gram(functions, local), model.count).draw(rng)
+        weights = model.marginal(functions, local).draw(rng)
         for channel in model.channels:
             predicted = np.einsum("nc,ncd->nd", weights, functions[channel.name])
             noise = channel.noise_values(local)

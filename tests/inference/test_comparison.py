@@ -171,6 +171,12 @@ def test_blocks_shorter_than_the_correlation_time_are_warned_of() -> None:
     assert any("are shorter than the correlation time" in w for w in found.warnings)
 
 
+def test_students_t_noise_is_refused() -> None:
+    inversion = problem(0.02, compliance=0.02, noise="student")
+    with pytest.raises(ValueError, match='compare fits with noise="correlated"'):
+        block_log_density(inversion, np.array([[p.median() for p in inversion.priors.values()]]), BLOCK)
+
+
 def test_wrong_arguments_are_refused() -> None:
     inversion = problem(0.02, compliance=0.02)
     other = problem(0.02, compliance=0.02, seed=2)

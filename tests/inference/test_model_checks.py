@@ -171,6 +171,14 @@ def test_an_outlier_is_named() -> None:
     assert "too large for normal noise" in check.verdict
 
 
+def test_an_outlier_under_students_t_noise_is_no_fault_of_the_model() -> None:
+    check = check_model(problem("student", seed=5, spike=8.0).least_squares(seed=1, starts=2))
+    (channel,) = check.channels
+    assert check.describes
+    assert np.isnan(channel.p_largest)
+    assert channel.outliers.tolist() == [UNEVEN[120]]
+
+
 def test_bands_hold_what_they_say() -> None:
     """The data of a right model: within three binomial deviations of 68 and 95 %."""
     inversion = problem("white", seed=6)
