@@ -3,6 +3,7 @@
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from types import SimpleNamespace
+from typing import Any
 
 import numpy as np
 from scipy import stats
@@ -36,12 +37,13 @@ def linear_problem(
     delay: np.ndarray,
     shapes: np.ndarray,
     data: np.ndarray,
-    noise: Mapping[str, float],
+    noise: Mapping[str, Any],
     *,
     width: float = 100.0,
+    model: str | None = None,
 ) -> SimpleNamespace:
-    """Put the model into what an `Inversion` offers, with known noise and standard normal priors."""
-    model = "correlated" if "discrepancy" in noise else "white"
+    """Put the model into what an `Inversion` offers; noise holds numbers where known, else priors."""
+    model = model or ("correlated" if "discrepancy" in noise else "white")
     channel = Channel(
         "reflectance_change", "1", data, Noise(model, delay, np.ones(delay.size)), "noise.", baseline=1e-9
     )
@@ -59,13 +61,15 @@ def linear_problem(
         earliest=0.0,
         shapes=shapes,
     )
+    own = {f"noise.{name}": value for name, value in noise.items()}
     priors = {"film.velocity": stats.norm(0, 1), "film.density": stats.norm(0, 1)}
-    fixed = {f"noise.{name}": value for name, value in noise.items()}
+    priors |= {name: value for name, value in own.items() if not isinstance(value, float)}
+    fixed = {name: value for name, value in own.items() if isinstance(value, float)}
     member = Member(trace_model, "", {name: name for name in priors}, fixed)
-    unbounded = np.full(2, np.inf)
+    unbounded = np.full(len(priors), np.inf)
     return SimpleNamespace(
         names=tuple(priors),
-        noise_names=(),
+        noise_names=tuple(name for name in priors if name.startswith("noise.")),
         units=dict.fromkeys(priors, "1"),
         posterior=Posterior(parameters(priors), (member,), -unbounded, unbounded),
     )
