@@ -102,7 +102,7 @@ def batch(
     identity = _identity(problem, seed, effort, neighbours)
     target = None if path is None else _target(path)
     store = SiteStore(None if target is None else target.with_name(target.name + ".sites"), identity)
-    watch = _Watch(progress, len(jobs), store)
+    watch = _Watch(progress, len(jobs))
     lost: dict[str, SiteRecord] = {}
     with ExitStack() as stack:
         stack.callback(watch.close)
@@ -293,9 +293,7 @@ def _write(results: xr.Dataset, target: Path) -> None:
 class _Watch:
     """Stores what is finished and shows how far the batch has come."""
 
-    def __init__(
-        self, progress: bool | Callable[[dict[str, Any]], object], total: int, store: SiteStore
-    ) -> None:
+    def __init__(self, progress: bool | Callable[[dict[str, Any]], object], total: int) -> None:
         self.progress, self.total, self.failed, self.bar = progress, total, 0, None
         self.count = 0
         if progress is True and (sys.stderr.isatty() or "ipykernel" in sys.modules):
