@@ -74,7 +74,7 @@ class TimeGrid(LaplaceGrid):
     @property
     def block(self) -> int:
         """Parameter sets whose arrays stay in a core's cache together."""
-        return max(1, 8192 // self.s.shape[1])
+        return max(1, 16384 // self.s.shape[1])
 
 
 def time_grid(delay: Array, pulse_rms: float, earliest: float, stretch: float = 1.3) -> TimeGrid:

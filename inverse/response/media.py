@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -170,8 +171,21 @@ def _tangential(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) ->
 
 
 def _coherent(field: str, value: Array | float) -> Array:
-    factor = QUANTITIES[field].to_coherent if field in QUANTITIES else 1.0
-    return np.atleast_1d(np.asarray(value, dtype=float))[:, None] * factor
+    if isinstance(value, float):
+        return _constant(field, value)
+    return np.atleast_1d(np.asarray(value, dtype=float))[:, None] * _factor(field)
+
+
+@lru_cache(maxsize=4096)
+def _constant(field: str, value: float) -> Array:
+    """Convert a number that every call meets again; not to be written to."""
+    out = np.full((1, 1), value * _factor(field))
+    out.flags.writeable = False
+    return out
+
+
+def _factor(field: str) -> float:
+    return QUANTITIES[field].to_coherent if field in QUANTITIES else 1.0
 
 
 def _index(filled: Mapping[str, Array | float], light: str) -> Complex:

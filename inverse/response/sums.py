@@ -7,7 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["weight_rows", "weighted_sum"]
+__all__ = ["product", "weight_rows", "weighted_sum"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
@@ -36,9 +36,15 @@ def weighted_sum(weights: Array, *terms: tuple[Complex, Complex]) -> Complex:
     -------
     complex array, shape (sets, rows, frequencies)
     """
-    sets, size = (max(factor.shape[axis] for pair in terms for factor in pair) for axis in (0, 1))
+    factors = [factor for pair in terms for factor in pair]
+    sets, size = max(map(len, factors)), max([factor.shape[1] for factor in factors])
     stacked = np.empty((sets, len(terms), size), dtype=complex)
     for i, (first, second) in enumerate(terms):
         np.multiply(first, second, out=stacked[:, i])
+    return product(weights, stacked)
+
+
+def product(weights: Array, terms: Complex) -> Complex:
+    """Multiply real weights (sets or 1, rows, terms) into complex terms (sets, terms, frequencies)."""
     # Real and imaginary parts are neighbours in memory: a real matrix acts on both at once.
-    return np.matmul(weights, stacked.view(float)).view(complex)
+    return np.matmul(weights, terms.view(float)).view(complex)
