@@ -8,7 +8,7 @@ from typing import Any
 from inverse.description.quantities import check
 from inverse.description.unknowns import checked
 
-__all__ = ["INSTRUMENT", "PumpProbe"]
+__all__ = ["INSTRUMENT", "Beam", "PumpProbe"]
 
 LOCKIN_CHANNELS = ("in-phase", "out-of-phase")
 
@@ -17,8 +17,26 @@ INSTRUMENT = ("stage_scale", "overlap_drift")
 
 
 @dataclass(frozen=True)
+class Beam:
+    """A plane wave of light.
+
+    Attributes
+    ----------
+    wavelength : float
+        In vacuum, nm.
+    angle : float
+        Of incidence in the ambient, degrees.
+    polarisation : {"s", "p"}
+    """
+
+    wavelength: float
+    angle: float = 0.0
+    polarisation: str = "s"
+
+
+@dataclass(frozen=True)
 class PumpProbe:
-    """A pump-probe measurement at normal incidence.
+    """A pump-probe measurement.
 
     Parameters
     ----------
@@ -35,6 +53,10 @@ class PumpProbe:
         Pulses per time in MHz.
     modulation_frequency : float, optional
         Frequency at which the pump is modulated and the lock-in listens, in MHz.
+    pump_angle, probe_angle : float
+        Angles of incidence in the ambient in degrees.
+    pump_polarisation, probe_polarisation : {"s", "p"}
+        Electric field across (s) or in (p) the plane of incidence.
     lockin_channel : {"in-phase", "out-of-phase"}, optional
         The trace is this output of a lock-in, with the heat that earlier pulses of the train leave: it needs
         `repetition_rate` and `modulation_frequency`. By default the trace is that of single pulses.
@@ -65,6 +87,10 @@ class PumpProbe:
     probe_spot_radius: float | None = None
     repetition_rate: float | None = None
     modulation_frequency: float | None = None
+    pump_angle: float = 0.0
+    probe_angle: float = 0.0
+    pump_polarisation: str = "s"
+    probe_polarisation: str = "s"
     lockin_channel: str | None = None
     stage_scale: Any = 0.0
     overlap_drift: Any = 0.0
@@ -79,14 +105,27 @@ class PumpProbe:
             ("probe_spot_radius", "spot_radius"),
             ("repetition_rate", "repetition_rate"),
             ("modulation_frequency", "modulation_frequency"),
+            ("pump_angle", "angle"),
+            ("probe_angle", "angle"),
         ):
             value = getattr(self, field)
             if value is not None:
                 object.__setattr__(self, field, check(name, value, f"PumpProbe.{field}"))
+        for name in ("pump_polarisation", "probe_polarisation"):
+            if getattr(self, name) not in ("s", "p"):
+                raise ValueError(f"PumpProbe.{name} = {getattr(self, name)!r}; give 's' or 'p'.")
         for name in INSTRUMENT:
             checked(name, getattr(self, name), "PumpProbe")
         if self.lockin_channel is not None:
             self._check_train()
+
+    @property
+    def beams(self) -> tuple[Beam, Beam]:
+        """Pump and probe."""
+        return (
+            Beam(self.pump, self.pump_angle, self.pump_polarisation),
+            Beam(self.probe, self.probe_angle, self.probe_polarisation),
+        )
 
     def _check_train(self) -> None:
         if self.lockin_channel not in LOCKIN_CHANNELS:

@@ -166,6 +166,7 @@ QUANTITIES: dict[str, Quantity] = {
             suspect="fs",
         ),
         Quantity("wavelength", "nm", r"\lambda", 10.0, 2e4, "vacuum wavelength", suspect="m or um"),
+        Quantity("angle", "degrees", r"\theta", 0.0, 89.9, "angle of incidence"),
         Quantity("fluence", "J/m2", "F", 1e-9, 1e6, "incident pump fluence"),
         Quantity(
             "spot_radius", "um", "w", 0.1, 1e4, "radius at 1/e2 of the peak intensity", suspect="m or mm"

@@ -24,7 +24,7 @@ from inverse.inference.tied import tie
 from inverse.inference.reach import refuse_what_no_trace_can_tell
 from inverse.inference.result import result_tree
 from inverse.inference.sampling import problem_hash, sample_posterior
-from inverse.response.basis import CHANNELS, basis, columns, take
+from inverse.response.basis import CHANNELS, PORTS, basis, columns, take
 from inverse.response.inverse_laplace import time_grid
 from inverse.response.media import sample
 from inverse.response.pulse_train import pulse_train
@@ -368,16 +368,18 @@ def _trace_model(
     }
     middle = middle or {"time_zero": np.array([centre])}
     widths = np.array([_width(name) for name in layout.names])
-    parts = basis(sample(bound, middle), (setup.pump, setup.probe), grid, np.full((1, 1), centre), layout, 1)
+    batch, zero = sample(bound, middle), np.full((1, 1), centre)
+    ports = dict.fromkeys(PORTS[channel.name] for channel in channels)
+    parts = {port: basis(batch, setup.beams, grid, zero, layout, 1, port) for port in ports}
     predicted, measured = 0.0, 0.0
     for channel in channels:
-        rows = tie(take(parts, channel.name), layout, bound, middle)[0]
+        rows = tie(take(parts[PORTS[channel.name]], channel.name), layout, bound, middle)[0]
         predicted += float(((rows * widths[:, None]) ** 2).sum(axis=0).mean())
         measured += float((channel.data[used] ** 2).mean())
     scale = SCALE_WIDTH * np.sqrt(measured / predicted)
     return TraceModel(
         bound=bound,
-        wavelengths=(setup.pump, setup.probe),
+        beams=setup.beams,
         channels=channels,
         delay=delay,
         used=used,

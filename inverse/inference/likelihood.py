@@ -13,9 +13,10 @@ from inverse.inference.elimination import Eliminated, eliminate
 from inverse.inference.noise import Noise
 from inverse.inference.robust import eliminate_student, gaussian_noise, student_residuals
 from inverse.inference.tied import tie
-from inverse.response.basis import Columns, basis, take
+from inverse.response.basis import PORTS, Beams, Columns, basis, take
 from inverse.response.instrument import drift, measured_sample
 from inverse.response.inverse_laplace import TimeGrid, time_grid
+from inverse.response.media import Sample
 from inverse.response.pulse_train import PulseTrain, residual
 
 __all__ = ["Channel", "TraceModel"]
@@ -71,8 +72,8 @@ class TraceModel:
     Attributes
     ----------
     bound : BoundStack
-    wavelengths : tuple of float
-        Pump and probe, nm.
+    beams : tuple of Beam
+        Pump and probe.
     channels : tuple of Channel
     delay : array
         All delays, ps.
@@ -92,7 +93,7 @@ class TraceModel:
     """
 
     bound: BoundStack
-    wavelengths: tuple[float, float]
+    beams: Beams
     channels: tuple[Channel, ...]
     delay: Array
     used: NDArray[np.bool_]
@@ -148,22 +149,29 @@ class TraceModel:
         """
         grid = grid or self.grid
         sets = len(next(iter(values.values())))
-        zero = values["time_zero"][:, None]
         batch = measured_sample(self.bound, values)
-        parts = basis(batch, self.wavelengths, grid, zero, self.layout, sets)
-        if self.train is not None:
-            earlier = residual(batch, self.wavelengths, grid.delay, self.train, zero, self.layout, sets)
-            parts = self.train.detected(parts, earlier)
-        if "overlap_drift" in self.bound.instrument:
-            parts = parts * drift(self.bound, values, grid.delay - zero)
+        ports = dict.fromkeys(PORTS[c.name] for c in self.channels)
+        seen = {port: self._seen(port, batch, values, grid, sets) for port in ports}
         scale = self.widths[:, None]
         out = {}
         for i, channel in enumerate(self.channels):
+            parts = seen[PORTS[channel.name]]
             offsets = np.zeros((sets, len(self.channels), parts.shape[2]))
             offsets[:, i] = channel.baseline
             rows = tie(take(parts, channel.name), self.layout, self.bound, values)
             out[channel.name] = np.concatenate([rows * scale, offsets], axis=1)
         return out
+
+    def _seen(self, port: str, batch: Sample, values: Mapping[str, Array], grid: TimeGrid, sets: int) -> Array:
+        """Return the basis of a port as the bench measures it."""
+        zero = values["time_zero"][:, None]
+        parts = basis(batch, self.beams, grid, zero, self.layout, sets, port)
+        if self.train is not None:
+            earlier = residual(batch, self.beams, grid.delay, self.train, zero, self.layout, sets, port)
+            parts = self.train.detected(parts, earlier)
+        if "overlap_drift" in self.bound.instrument:
+            parts = parts * drift(self.bound, values, grid.delay - zero)
+        return parts
 
     def at(self, delay: Array) -> TimeGrid:
         """Return a grid for other delays."""

@@ -13,8 +13,9 @@ from numpy.typing import NDArray
 
 from inverse.response.detection import Detected, medium_response
 from inverse.response.heat import HeatField
-from inverse.response.light import Absorption, LightField
+from inverse.response.light import Absorption
 from inverse.response.media import Sample
+from inverse.response.port import Port
 from inverse.response.solids import interface_compliance
 from inverse.response.sound import SoundField, sound_field
 from inverse.response.three_detection import three_response
@@ -44,7 +45,7 @@ def any_sound(
 
 
 def any_response(
-    light: LightField,
+    port: Port,
     medium: int,
     thickness: Array,
     profile: Absorption,
@@ -53,5 +54,5 @@ def any_response(
 ) -> Detected:
     """Return the response of one medium; see `medium_response` and `three_response`."""
     if isinstance(sound, ThreeSound):
-        return three_response(light, medium, thickness, profile, heat, sound)
-    return medium_response(light, medium, thickness, profile, heat, sound)
+        return three_response(port, medium, thickness, profile, heat, sound)
+    return medium_response(port, medium, thickness, profile, heat, sound)

@@ -8,25 +8,49 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.pumpprobe import Beam
 from inverse.response.any_sound import any_response, any_sound
-from inverse.response.detection import Detected, ambient_response, boundary_steps
+from inverse.response.detection import Detected, ambient_response
 from inverse.response.heat import HeatField, heat_field
 from inverse.response.inverse_laplace import LaplaceGrid, TimeGrid, powers, to_delays
-from inverse.response.light import LightField, absorption, light_field
+from inverse.response.light import absorption, light_field
 from inverse.response.media import Sample
+from inverse.response.port import Port, reflection, transmission
 from inverse.response.sound import SoundField
 from inverse.response.three_sound import ThreeSound
 
-__all__ = ["CHANNELS", "Columns", "arrival", "basis", "columns", "displaced", "fields", "spectra", "take"]
+__all__ = [
+    "CHANNELS",
+    "PORTS",
+    "Beams",
+    "Columns",
+    "arrival",
+    "basis",
+    "columns",
+    "displaced",
+    "fields",
+    "spectra",
+    "take",
+]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
-CHANNELS = ("reflectance_change", "optical_phase")
+Beams = tuple[Beam | float, Beam | float]
+
+CHANNELS = ("reflectance_change", "optical_phase", "transmission_change")
 
 # The GNU C library maps every large block anew, and clears it, until one as large has been freed once. This one
 # is never touched, so it costs microseconds; it halves the time of a likelihood. Elsewhere it does nothing.
 np.empty(3 << 20)
+
+
+PORTS = {
+    "reflectance_change": "reflection",
+    "optical_phase": "reflection",
+    "transmission_change": "transmission",
+}
+"""The light in which each channel is measured."""
 
 
 @dataclass(frozen=True)
@@ -57,17 +81,20 @@ def columns(groups: Sequence[str]) -> Columns:
 
 @dataclass(frozen=True)
 class Fields:
-    """Everything the pump sets in motion, before detection."""
+    """Everything the pump sets in motion, and what a port detects of it."""
 
-    probe: LightField
     heat: list[HeatField]
     sound: Sequence[SoundField | ThreeSound]
     detected: list[Detected]
-    steps: list[Complex]
+    steps: Sequence[Complex]
 
 
 def fields(
-    sample: Sample, wavelengths: tuple[float, float], grid: LaplaceGrid, time_zero: Array | None = None
+    sample: Sample,
+    beams: Beams,
+    grid: LaplaceGrid,
+    time_zero: Array | None = None,
+    port: str = "reflection",
 ) -> Fields:
     """Solve light, heat and sound and detect them medium by medium.
 
@@ -75,26 +102,34 @@ def fields(
     ----------
     sample : Sample
         A batch of stacks.
-    wavelengths : tuple of float
-        Pump and probe, nm.
+    beams : tuple of Beam or float
+        Pump and probe; a vacuum wavelength in nm stands for normal incidence.
     grid : LaplaceGrid
     time_zero : array, shape (sets or 1, 1), optional
         ps. Without it the stack is heated in an instant at the origin, and `arrival` is still to be applied.
+    port : {"reflection", "transmission"}
+        Which light is detected.
     """
     media = sample.media
-    pump = light_field(*sample.light("pump"), wavelengths[0], sample.ambient.n_pump)
-    probe = light_field(*sample.light("probe"), wavelengths[1], sample.ambient.n_probe)
+    pump = light_field(*sample.light("pump"), beams[0], sample.ambient.n_pump)
+    seen = _port(sample, beams[1], port)
     profiles = [absorption(pump, j) for j in range(len(media))]
     source = np.ones((1, 1), dtype=complex) if time_zero is None else arrival(grid, time_zero)
     heat, liquid = heat_field(media, sample.resistance, sample.ambient, profiles, grid.s, source)
     sound = any_sound(sample, profiles, heat, grid.s, lambda t: powers(grid, t))
     detected = [
-        any_response(probe, j, m.thickness, *trio)
+        any_response(seen, j, m.thickness, *trio)
         for j, (m, trio) in enumerate(zip(media, zip(profiles, heat, sound, strict=True), strict=True))
     ]
     if liquid is not None:
-        detected.insert(0, ambient_response(probe, sample.ambient, grid.s, sound[0].u_top, liquid))
-    return Fields(probe, heat, sound, detected, boundary_steps(probe))
+        detected.insert(0, ambient_response(seen, sample.ambient, grid.s, sound[0].u_top, liquid))
+    return Fields(heat, sound, detected, seen.steps)
+
+
+def _port(sample: Sample, beam: Beam | float, port: str) -> Port:
+    index, thickness = sample.light("probe")
+    light = light_field(index, thickness, beam, sample.ambient.n_probe)
+    return reflection(light) if port == "reflection" else transmission(light, thickness)
 
 
 def arrival(grid: LaplaceGrid, time_zero: Array) -> Complex:
@@ -116,13 +151,14 @@ def displaced(found: Fields) -> tuple[list[Complex], list[Complex]]:
 
 def basis(
     sample: Sample,
-    wavelengths: tuple[float, float],
+    beams: Beams,
     grid: TimeGrid,
     time_zero: Array,
     layout: Columns,
     sets: int,
+    port: str = "reflection",
 ) -> Array:
-    """Return real and imaginary parts of every complex response at the delays.
+    """Return real and imaginary parts of every complex response of a port at the delays.
 
     Returns
     -------
@@ -130,15 +166,15 @@ def basis(
         Per group Re and Im of d(delta r / r)/dP, Re and Im of d(delta r / r)/dQ; then Re and Im of the
         displacement's, all for an incident fluence of 1 J/m2.
     """
-    found = spectra(sample, wavelengths, grid, layout, sets)
+    found = spectra(sample, beams, grid, layout, sets, port)
     return to_delays(grid, found, arrival(grid, time_zero))
 
 
 def spectra(
-    sample: Sample, wavelengths: tuple[float, float], grid: LaplaceGrid, layout: Columns, sets: int
+    sample: Sample, beams: Beams, grid: LaplaceGrid, layout: Columns, sets: int, port: str = "reflection"
 ) -> Complex:
     """Return the transforms of `basis`, heated in an instant at the origin, (sets, functions, frequencies)."""
-    found = fields(sample, wavelengths, grid)
+    found = fields(sample, beams, grid, port=port)
     out = np.zeros((sets, 4 * len(layout.groups) + 2, grid.s.shape[1]), dtype=complex)
     for part, group in zip(found.detected, layout.of_medium, strict=True):
         out[:, 4 * group : 4 * group + 2] += part.strain
@@ -153,11 +189,12 @@ def take(parts: Array, channel: str) -> Array:
     """Turn real and imaginary parts into the columns of a channel, one per name in `Columns`.
 
     Reflectance change 2 Re(delta r / r): ``[2 Re h, -2 Im h]`` for the real and imaginary part of a coefficient,
-    ``2 Re h`` for the displacement. Optical phase Im(delta r / r): ``[Im h, Re h]`` and ``Im h``.
+    ``2 Re h`` for the displacement; transmission change likewise, from its own port. Optical phase
+    Im(delta r / r): ``[Im h, Re h]`` and ``Im h``.
     """
     out = np.empty((parts.shape[0], parts.shape[1] - 1, parts.shape[2]))
     real, imag = parts[:, 0:-2:2], parts[:, 1:-2:2]
-    if channel == "reflectance_change":
+    if channel in ("reflectance_change", "transmission_change"):
         out[:, 0:-1:2], out[:, 1:-1:2], out[:, -1] = 2 * real, -2 * imag, 2 * parts[:, -2]
     else:
         out[:, 0:-1:2], out[:, 1:-1:2], out[:, -1] = imag, real, parts[:, -1]

@@ -1,7 +1,7 @@
-"""What the probe sees: first-order change of the reflection coefficient, split into basis functions.
+"""What the probe sees: first-order change of the reflection or transmission coefficient, split into basis functions.
 
-``delta r / r = sum over media of weight * integral (P eta + Q T) E^2 dz
-+ sum over boundaries of step * u``, with ``weight = i k n / (n_0 r)`` and
+``delta c / c = sum over media of integral (P eta + Q T) w dz + sum over boundaries of step * u``, with the weights w
+and steps of `Port`; at normal incidence in reflection ``w = i k n E^2 / (n_0 r)`` and
 ``step = i k (eps_above - eps_below) E^2 / (2 n_0 r)``.
 A quantity h with complex optical factors has a real and an imaginary part in time. Their transforms are
 ``(H + H*) / 2`` and ``(H - H*) / 2i``, H* being H with every optical factor conjugated.
@@ -15,12 +15,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.response.heat import HeatField
-from inverse.response.light import Absorption, LightField
+from inverse.response.light import Absorption
 from inverse.response.media import Ambient
+from inverse.response.port import Overlap, Port
 from inverse.response.sound import SoundField
 from inverse.response.sums import weighted_sum
 
-__all__ = ["Detected", "ambient_response", "boundary_steps", "medium_response"]
+__all__ = ["Detected", "ambient_response", "medium_response"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
@@ -64,7 +65,7 @@ class Detected:
 
 @dataclass(frozen=True)
 class _Probe:
-    """E^2 of one medium: ``forth exp(g z) + back exp(g (d - z)) + still``, weight included; g = 2 i k n."""
+    """Weight in one medium, ``forth exp(g z) + back exp(g (d - z)) + still``; see `Overlap`."""
 
     g: Complex
     decay: Complex
@@ -75,23 +76,24 @@ class _Probe:
 
 
 def medium_response(
-    light: LightField, medium: int, thickness: Array, profile: Absorption, heat: HeatField, sound: SoundField
+    port: Port, medium: int, thickness: Array, profile: Absorption, heat: HeatField, sound: SoundField
 ) -> Detected:
     """Return the response of one medium to strain and temperature.
 
     Parameters
     ----------
-    light : LightField
-        Of the probe.
+    port : Port
+        The detector's.
     medium : int
-        Index of the medium; the last is the half-space.
+        Index of the medium.
     thickness : array
         nm; inf for the half-space.
     profile, heat, sound
         The pump's absorbed profile and the fields of the medium.
     """
-    probe = _probe(light, medium, thickness)
-    overlap = _layer_overlap if medium < len(light.decay) else _half_space_overlap
+    at = port.media[medium]
+    probe = _Probe(at.g, at.decay, at.forth, at.back, at.still, thickness)
+    overlap = _layer_overlap if np.all(np.isfinite(thickness)) else _half_space_overlap
     hot = overlap(probe, heat, heat.down, 0)
     light_left = _parts(*_profile_integrals(probe, profile))
     strain = overlap(probe, sound, -sound.down, 1)
@@ -104,21 +106,8 @@ def medium_response(
     return Detected(strain, temperature)
 
 
-def boundary_steps(light: LightField) -> list[Complex]:
-    """Return the complex factor of the displacement of the surface and of each interface, 1/nm."""
-    factor = 1j * light.k / (2 * light.n_ambient * light.r)
-    above = light.n_ambient
-    steps = []
-    for j, n in enumerate(light.n):
-        e = light.decay[j] if j < len(light.decay) else np.zeros((1, 1))
-        field = light.a[j] + light.b[j] * e
-        steps.append(factor * (above**2 - n**2) * field**2)
-        above = n
-    return steps
-
-
 def ambient_response(
-    light: LightField, ambient: Ambient, s: Complex, surface_u: Complex, surface_t: Complex
+    port: Port, ambient: Ambient, s: Complex, surface_u: Complex, surface_t: Complex
 ) -> Detected:
     """Return the response of a liquid above: strain ``q_0 u(0) exp(q_0 z)``, temperature likewise, z < 0."""
     if ambient.velocity is None or ambient.conductivity is None or ambient.heat_capacity is None:
@@ -126,7 +115,10 @@ def ambient_response(
     q_sound = s / ambient.velocity
     q_heat = np.sqrt(s * ambient.heat_capacity / ambient.conductivity)
     parts = [
-        (q_sound * surface_u * _overlap(light, q_sound, conj), surface_t * _overlap(light, q_heat, conj))
+        (
+            q_sound * surface_u * _overlap(port.ambient, q_sound, conj),
+            surface_t * _overlap(port.ambient, q_heat, conj),
+        )
         for conj in (False, True)
     ]
     (strain, heat), (strain_c, heat_c) = parts
@@ -137,28 +129,12 @@ def _real_and_imaginary(h: Complex, conjugate: Complex) -> Complex:
     return np.stack([(h + conjugate) / 2, (h - conjugate) / 2j], axis=1)
 
 
-def _overlap(light: LightField, q: Complex, conjugate: bool) -> Complex:
-    """Integral of exp(q z) E^2 over z < 0, weight included."""
-    weight = 1j * light.k / light.r
-    g, r = 2j * light.k * light.n_ambient, light.r
+def _overlap(at: Overlap, q: Complex, conjugate: bool) -> Complex:
+    """Integral of exp(q z) times the weight over z < 0."""
+    g, forth, back, still = at.g, at.forth, at.back, at.still
     if conjugate:
-        weight, g, r = np.conj(weight), np.conj(g), np.conj(r)
-    return weight * (1 / (q + g) + 2 * r / q + r * r / (q - g))
-
-
-def _probe(light: LightField, medium: int, thickness: Array) -> _Probe:
-    n, a, b = light.n[medium], light.a[medium], light.b[medium]
-    weight = 1j * light.k * n / (light.n_ambient * light.r)
-    layer = medium < len(light.decay)
-    e = light.decay[medium] if layer else np.zeros((1, 1), dtype=complex)
-    return _Probe(
-        g=2j * light.k * n,
-        decay=e * e,
-        forth=weight * a * a,
-        back=weight * b * b,
-        still=weight * 2 * a * b * e if layer else np.zeros((1, 1), dtype=complex),
-        thickness=thickness,
-    )
+        g, forth, back, still = (np.conj(v) for v in (g, forth, back, still))
+    return forth / (q + g) + still / q + back / (q - g)
 
 
 def _parts(*terms: Complex) -> Array:
@@ -172,7 +148,11 @@ def _half_space_overlap(probe: _Probe, field: HeatField | SoundField, down: Comp
     q, g = field.q, probe.g
     table = 1 / ((q - 2 * g.real) * q + np.abs(g) ** 2)
     table = table if order == 0 else table * q
-    return weighted_sum(_parts(probe.forth, -probe.forth * np.conj(g)), (down, table * q), (down, table))
+    running = _parts(probe.forth, -probe.forth * np.conj(g)), (down, table * q), (down, table)
+    if not np.any(probe.still):
+        return weighted_sum(*running)
+    level = _ONE if order == 1 else 1 / q
+    return weighted_sum(*running) + weighted_sum(_parts(probe.still), (down, level))
 
 
 def _layer_overlap(probe: _Probe, field: HeatField | SoundField, down: Complex, order: int) -> Complex:

@@ -18,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.pumpprobe import PumpProbe
-from inverse.response.basis import Columns, arrival, basis, spectra
+from inverse.response.basis import Beams, Columns, arrival, basis, spectra
 from inverse.response.inverse_laplace import LaplaceGrid, time_grid
 from inverse.response.media import Sample
 
@@ -73,26 +73,27 @@ def pulse_train(setup: PumpProbe) -> PulseTrain | None:
 
 def residual(
     sample: Sample,
-    wavelengths: tuple[float, float],
+    beams: Beams,
     delay: Array,
     train: PulseTrain,
     time_zero: Array,
     layout: Columns,
     sets: int,
+    port: str = "reflection",
 ) -> Complex:
     """Return what earlier pulses leave in every basis function.
 
     Parameters
     ----------
     sample : Sample
-    wavelengths : tuple of float
-        Pump and probe, nm.
+    beams : tuple of Beam or float
+        Pump and probe; a vacuum wavelength in nm stands for normal incidence.
     delay : array, shape (delays,)
         ps.
     train : PulseTrain
     time_zero : array, shape (sets or 1, 1)
         ps.
-    layout, sets
+    layout, sets, port
         As for `basis`.
 
     Returns
@@ -112,7 +113,7 @@ def residual(
             f"train ({train.period:g} ps); cut it, or mend the repetition rate."
         )
     single = basis(
-        sample, wavelengths, time_grid(delay, rms, float(time_zero.min())), time_zero, layout, sets
+        sample, beams, time_grid(delay, rms, float(time_zero.min())), time_zero, layout, sets, port
     )
     step = 2 * np.pi / train.period
     count = int(np.ceil(_CUTOFF / rms / step))
@@ -120,7 +121,7 @@ def residual(
     below = _side_bands(step - train.modulation, step, count, rms)
     total = np.zeros(single.shape, dtype=complex)
     for grid, conjugate in ((above, False), (below, True)):
-        lines = spectra(sample, wavelengths, grid, layout, sets) * arrival(grid, time_zero)[:, None]
+        lines = spectra(sample, beams, grid, layout, sets, port) * arrival(grid, time_zero)[:, None]
         part = lines @ np.exp(grid.s.T * delay) / train.period
         total += np.conj(part) if conjugate else part
     return np.asarray(total - single, dtype=complex)

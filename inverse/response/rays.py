@@ -138,7 +138,7 @@ def arrivals(
 def _stressed_most(batch: Sample, setup: PumpProbe) -> int:
     """Return the medium with the largest stress at its top, stress coefficient x absorbed power / heat capacity."""
     media = batch.media
-    pump = light_field(*batch.light("pump"), setup.pump, batch.ambient.n_pump)
+    pump = light_field(*batch.light("pump"), setup.beams[0], batch.ambient.n_pump)
     profiles = [absorption(pump, j) for j in range(len(media))]
     power = [(f.top + f.bottom * f.decay + 2 * f.beat.real).item() for f in profiles]
     launched = [abs(m.stress.item()) * p / m.heat_capacity.item() for m, p in zip(media, power, strict=True)]

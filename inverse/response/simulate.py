@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -14,7 +15,7 @@ from inverse.description.parts import Substrate
 from inverse.description.places import BoundStack, bind
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
-from inverse.response.basis import CHANNELS, columns, displaced, fields
+from inverse.response.basis import CHANNELS, PORTS, columns, displaced, fields
 from inverse.response.instrument import drift, measured_sample
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.media import Sample
@@ -42,6 +43,7 @@ def simulate(
     values: Mapping[str, float] | None = None,
     time_zero: float = 0.0,
     shares: bool = False,
+    channels: Sequence[str] = ("reflectance_change", "optical_phase"),
 ) -> xr.Dataset:
     """Compute the noise-free trace of a stack.
 
@@ -60,11 +62,14 @@ def simulate(
     shares : bool
         Add ``<channel>_share`` on (part, delay): strain and heat of every place, displacement of every boundary.
         They add up to the channel.
+    channels : sequence of str
+        Of ``reflectance_change``, ``optical_phase`` and ``transmission_change``; the last needs a stack that light
+        gets through.
 
     Returns
     -------
     xarray.Dataset
-        ``reflectance_change`` and ``optical_phase`` (rad) on ``delay``; attrs tell every coefficient used and
+        The channels (rad for the phase) on ``delay``; attrs tell every coefficient used and
         where it comes from.
 
     Raises
@@ -80,13 +85,17 @@ def simulate(
     grid = time_grid(delay, setup.pulse_rms, earliest=time_zero)
     batch = measured_sample(bound, known)
     warn_if_not_plane(stack, setup, float(delay.max()) - time_zero)
-    found, names = _merged(*_parts(bound, stack, batch, setup, grid, time_zero))
-    if train := pulse_train(setup):
-        earlier = _earlier(stack, batch, setup, train, delay, time_zero)
-        found, names = train.with_earlier(found, earlier), [*names, "earlier pulses"]
-    found *= drift(bound, known, delay[None] - time_zero)[0]
-    parts = {"reflectance_change": 2 * found.real, "optical_phase": found.imag}
-    signals = {channel: setup.fluence * parts[channel] for channel in CHANNELS}
+    strange = sorted(set(channels) - set(CHANNELS))
+    if strange or not channels:
+        raise ValueError(f"simulate got channels={tuple(channels)!r}; give some of {', '.join(CHANNELS)}.")
+    one = _Run(stack, setup, bound, batch, grid, time_zero)
+    signals = {}
+    for port in dict.fromkeys(PORTS[channel] for channel in channels):
+        found, names = one.parts(port)
+        found *= setup.fluence * drift(bound, known, delay[None] - time_zero)[0]
+        for channel in channels:
+            if PORTS[channel] == port:
+                signals[channel] = found.imag if channel == "optical_phase" else 2 * found.real
     sums = {channel: rows.sum(axis=0) for channel, rows in signals.items()}
     trace = make_trace(delay, **sums, measured=False)
     if shares:
@@ -109,52 +118,56 @@ def _known(bound: BoundStack, values: Mapping[str, float]) -> dict[str, Array]:
     }
 
 
-def _parts(
-    bound: BoundStack, stack: Stack, batch: Sample, setup: PumpProbe, grid: TimeGrid, time_zero: float
-) -> tuple[NDArray[np.complex128], list[str]]:
-    """Return the contribution of each part to delta r / r at unit fluence, and the parts' names."""
-    found = fields(batch, (setup.pump, setup.probe), grid, np.full((1, 1), time_zero))
-    media = _materials(stack)
-    owners = [*(["ambient"] if bound.ambient else []), *bound.names][: len(media)]
-    spectra: list[NDArray[np.complex128]] = []
-    names: list[str] = []
-    weights: list[complex] = []
-    for owner, material, part in zip(owners, media, found.detected, strict=True):
-        names += [f"{owner} strain", f"{owner} heat"]
-        weights += [
-            _coefficient(material.dn_dstrain, DEFAULT_STRAIN),
-            _coefficient(material.dn_dT, DEFAULT_HEAT),
-        ]
-        spectra += [part.strain_real, part.strain_imag, part.heat_real, part.heat_imag]
-    for boundary, real, imag in zip(("surface", *stack.interface_names), *displaced(found), strict=True):
-        names.append(f"{boundary} displacement")
-        weights.append(1.0)
-        spectra += [real, imag]
-    size = grid.s.shape[1]
-    rows = np.stack([np.broadcast_to(spectrum, (1, size))[0] for spectrum in spectra])
-    response = to_delays(grid, rows[None])[0]
-    complex_parts = np.array(weights)[:, None] * (response[0::2] + 1j * response[1::2])
-    return complex_parts, names
+@dataclass(frozen=True)
+class _Run:
+    """A stack with its measurement, ready to be detected."""
 
+    stack: Stack
+    setup: PumpProbe
+    bound: BoundStack
+    batch: Sample
+    grid: TimeGrid
+    time_zero: float
 
-def _earlier(
-    stack: Stack, batch: Sample, setup: PumpProbe, train: PulseTrain, delay: Array, time_zero: float
-) -> NDArray[np.complex128]:
-    """Return delta r / r that earlier pulses leave in the lock-in's channel, at unit fluence, shape (1, delays)."""
-    materials = _materials(stack)
-    layout = columns([m.name for m in materials])
-    left = residual(batch, (setup.pump, setup.probe), delay, train, np.full((1, 1), time_zero), layout, 1)[0]
-    rows = train.channel_of(left)
-    known = {m.name: m for m in materials}
-    weights = [
-        coefficient
-        for group in layout.groups
-        for coefficient in (
-            _coefficient(known[group].dn_dstrain, DEFAULT_STRAIN),
-            _coefficient(known[group].dn_dT, DEFAULT_HEAT),
-        )
-    ]
-    return np.array([*weights, 1.0])[None] @ (rows[0::2] + 1j * rows[1::2])
+    def parts(self, port: str) -> tuple[NDArray[np.complex128], list[str]]:
+        """Return delta c / c of each place and mechanism at unit fluence, and their names."""
+        found, names = _merged(*self._of_one_pulse(port))
+        train = pulse_train(self.setup)
+        if train is None:
+            return found, names
+        return train.with_earlier(found, self._earlier(train, port)), [*names, "earlier pulses"]
+
+    def _of_one_pulse(self, port: str) -> tuple[NDArray[np.complex128], list[str]]:
+        found = fields(self.batch, self.setup.beams, self.grid, np.full((1, 1), self.time_zero), port)
+        media = _materials(self.stack)
+        owners = [*(["ambient"] if self.bound.ambient else []), *self.bound.names][: len(media)]
+        spectra: list[NDArray[np.complex128]] = []
+        names: list[str] = []
+        weights: list[complex] = []
+        for owner, material, part in zip(owners, media, found.detected, strict=True):
+            names += [f"{owner} strain", f"{owner} heat"]
+            weights += _coefficients(material)
+            spectra += [part.strain_real, part.strain_imag, part.heat_real, part.heat_imag]
+        for boundary, real, imag in zip(
+            ("surface", *self.stack.interface_names), *displaced(found), strict=True
+        ):
+            names.append(f"{boundary} displacement")
+            weights.append(1.0)
+            spectra += [real, imag]
+        size = self.grid.s.shape[1]
+        rows = np.stack([np.broadcast_to(spectrum, (1, size))[0] for spectrum in spectra])
+        response = to_delays(self.grid, rows[None])[0]
+        return np.array(weights)[:, None] * (response[0::2] + 1j * response[1::2]), names
+
+    def _earlier(self, train: PulseTrain, port: str) -> NDArray[np.complex128]:
+        """Return what earlier pulses leave in the lock-in's channel, shape (1, delays)."""
+        known = {m.name: m for m in _materials(self.stack)}
+        layout = columns([m.name for m in _materials(self.stack)])
+        zero = np.full((1, 1), self.time_zero)
+        left = residual(self.batch, self.setup.beams, self.grid.delay, train, zero, layout, 1, port)[0]
+        rows = train.channel_of(left)
+        weights = [c for group in layout.groups for c in _coefficients(known[group])]
+        return np.array([*weights, 1.0])[None] @ (rows[0::2] + 1j * rows[1::2])
 
 
 def _merged(rows: NDArray[np.complex128], names: list[str]) -> tuple[NDArray[np.complex128], list[str]]:
@@ -170,6 +183,10 @@ def _materials(stack: Stack) -> list[Material]:
     liquid = [] if stack.ambient is None else [stack.ambient]
     solids = (p.material for p in stack.media if not (isinstance(p, Substrate) and p.is_empty))
     return [*liquid, *solids]
+
+
+def _coefficients(material: Material) -> list[complex]:
+    return [_coefficient(material.dn_dstrain, DEFAULT_STRAIN), _coefficient(material.dn_dT, DEFAULT_HEAT)]
 
 
 def _coefficient(given: Any, default: complex) -> complex:

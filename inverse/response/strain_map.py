@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from inverse.description.places import bind
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
-from inverse.response.basis import fields
+from inverse.response.basis import Beams, fields
 from inverse.response.heat import HeatField
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.light import Absorption, absorption, light_field
@@ -75,10 +75,10 @@ def strain_map(
     number, below_top = _locate(batch, depth)
     grid = time_grid(delay, setup.pulse_rms, earliest=0.0)
     found = np.empty((4, depth.size, delay.size))
-    wavelengths = (setup.pump, setup.probe)
+    beams = setup.beams
     for j in np.unique(number):
         inside = number == j
-        moved = _moved(batch, wavelengths, grid, int(j))
+        moved = _moved(batch, beams, grid, int(j))
         found[:, inside] = _in_time(grid, moved.everything(below_top[inside], grid.s)).reshape(
             4, inside.sum(), -1
         )
@@ -122,7 +122,7 @@ def known_sample(stack: Stack, setup: PumpProbe, values: Mapping[str, float]) ->
 
 
 def temperatures(
-    batch: Sample, wavelengths: tuple[float, float], grid: TimeGrid, medium: int, depth: Array
+    batch: Sample, beams: Beams, grid: TimeGrid, medium: int, depth: Array
 ) -> tuple[Array, Array]:
     """Return the rise of the lattice and of the heated (electron) system in one medium at unit fluence.
 
@@ -130,8 +130,8 @@ def temperatures(
     ----------
     batch : Sample
         Of one stack.
-    wavelengths : tuple of float
-        Pump and probe, nm.
+    beams : tuple of Beam or float
+        Pump and probe; a vacuum wavelength in nm stands for normal incidence.
     grid : TimeGrid
     medium : int
     depth : array, shape (depths,)
@@ -142,7 +142,7 @@ def temperatures(
     tuple of array, shape (depths, delays)
         K for 1 J/m2.
     """
-    lattice, hot = _moved(batch, wavelengths, grid, medium).heated(depth)
+    lattice, hot = _moved(batch, beams, grid, medium).heated(depth)
     return _in_time(grid, lattice), _in_time(grid, hot)
 
 
@@ -196,14 +196,14 @@ class _Moved:
         return self.profile.top * down + self.profile.bottom * up, beat.astype(complex)
 
 
-def _moved(batch: Sample, wavelengths: tuple[float, float], grid: TimeGrid, medium: int) -> _Moved:
-    found = fields(batch, wavelengths, grid, np.zeros((1, 1)))
+def _moved(batch: Sample, beams: Beams, grid: TimeGrid, medium: int) -> _Moved:
+    found = fields(batch, beams, grid, np.zeros((1, 1)))
     media, sound = batch.media, found.sound[medium]
     if not isinstance(sound, SoundField):
         raise ValueError(
             "Strain in a stack with an oblique cut has three components; only its trace is computed."
         )
-    pump = light_field(*batch.light("pump"), wavelengths[0], batch.ambient.n_pump)
+    pump = light_field(*batch.light("pump"), beams[0], batch.ambient.n_pump)
     profile = absorption(pump, medium)
     return _Moved(media[medium], profile, found.heat[medium], sound)
 

@@ -14,7 +14,8 @@ from numpy.typing import NDArray
 
 from inverse.response.detection import Detected, medium_response
 from inverse.response.heat import HeatField
-from inverse.response.light import Absorption, LightField
+from inverse.response.light import Absorption
+from inverse.response.port import Port
 from inverse.response.three_sound import ThreeSound
 
 __all__ = ["three_response"]
@@ -23,17 +24,17 @@ Array = NDArray[np.float64]
 
 
 def three_response(
-    light: LightField, medium: int, thickness: Array, profile: Absorption, heat: HeatField, sound: ThreeSound
+    port: Port, medium: int, thickness: Array, profile: Absorption, heat: HeatField, sound: ThreeSound
 ) -> Detected:
     """Return the response of one medium to strain, shear included, and to temperature.
 
     Parameters
     ----------
-    light, medium, thickness, profile, heat
+    port, medium, thickness, profile, heat
         As in `inverse.response.detection.medium_response`.
     sound : ThreeSound
         Its `photoelastic` weighs the components of strain.
     """
-    parts = [medium_response(light, medium, thickness, profile, heat, mode) for mode in sound.modes]
+    parts = [medium_response(port, medium, thickness, profile, heat, mode) for mode in sound.modes]
     strain = sum(w[..., None] * part.strain for w, part in zip(sound.seen(), parts, strict=True))
     return Detected(np.asarray(strain), parts[0].heat)

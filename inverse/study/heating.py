@@ -18,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.places import bind
-from inverse.description.pumpprobe import PumpProbe
+from inverse.description.pumpprobe import Beam, PumpProbe
 from inverse.description.quantities import check
 from inverse.description.stack import Stack
 from inverse.response.inverse_laplace import time_grid
@@ -111,7 +111,7 @@ def heating(stack: Stack, setup: PumpProbe, *, power: float) -> Heating:
     if setup.spot_radius is None or setup.repetition_rate is None:
         raise ValueError("heating needs PumpProbe(spot_radius=..., repetition_rate=...), in um and MHz.")
     batch = _sample(stack, setup)
-    profiles = _absorbed(batch, setup.pump)
+    profiles = _absorbed(batch, setup.beams[0])
     radius = 1e3 * setup.spot_radius
     # In coherent units 1 mW is 1e3 GPa nm^3/ps and 1 MHz is 1e-6/ps.
     fluence = 2e9 * power / (np.pi * radius**2 * setup.repetition_rate)
@@ -139,9 +139,9 @@ def _sample(stack: Stack, setup: PumpProbe) -> Sample:
     return batch
 
 
-def _absorbed(batch: Sample, wavelength: float) -> list[Array]:
+def _absorbed(batch: Sample, beam: Beam) -> list[Array]:
     """Absorbed fraction of each medium."""
-    light = light_field(*batch.light("pump"), wavelength, batch.ambient.n_pump)
+    light = light_field(*batch.light("pump"), beam, batch.ambient.n_pump)
     return [absorption(light, j).fraction() for j in range(len(batch.media))]
 
 
@@ -176,6 +176,6 @@ def _peak(batch: Sample, setup: PumpProbe) -> tuple[float, float]:
     )
     grid = time_grid(delay, setup.pulse_rms, earliest=0.0)
     rises = [
-        temperatures(batch, (setup.pump, setup.probe), grid, j, np.zeros(1)) for j in range(len(batch.media))
+        temperatures(batch, setup.beams, grid, j, np.zeros(1)) for j in range(len(batch.media))
     ]
     return max(float(lattice.max()) for lattice, _ in rises), max(float(hot.max()) for _, hot in rises)

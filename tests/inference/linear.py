@@ -50,7 +50,7 @@ def linear_problem(
     constant = Slot("film.heat_capacity", "heat_capacity", 2.0, None, "a table", 0.1)
     trace_model = LinearModel(
         bound=BoundStack((), (), {"heat_capacity": constant}, (), ()),
-        wavelengths=(400.0, 800.0),
+        beams=(400.0, 800.0),
         channels=(channel,),
         delay=delay,
         used=np.ones(delay.size, dtype=bool),

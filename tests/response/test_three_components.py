@@ -28,6 +28,7 @@ from inverse.response.detection import medium_response
 from inverse.response.heat import heat_field
 from inverse.response.inverse_laplace import to_delays
 from inverse.response.light import absorption, light_field
+from inverse.response.port import reflection
 from inverse.response.solids import DepthElastic, depth_elastic, interface_compliance
 from inverse.response.sound import sound_field
 from inverse.response.three_detection import three_response
@@ -79,8 +80,8 @@ def test_isotropic_layers_give_the_scalar_answer(name: str) -> None:
         for axis in (0, 1):
             assert np.all(np.abs(found.at_top(axis)) < 1e-10 * scale)
         profile, heat, depth = solved.profiles[j], solved.heat[j], solved.sample.media[j].thickness
-        seen = three_response(solved.probe, j, depth, profile, heat, found)
-        expected = medium_response(solved.probe, j, depth, profile, heat, scalar)
+        seen = three_response(reflection(solved.probe), j, depth, profile, heat, found)
+        expected = medium_response(reflection(solved.probe), j, depth, profile, heat, scalar)
         np.testing.assert_allclose(seen.strain, expected.strain, rtol=1e-9)
         np.testing.assert_array_equal(seen.heat, expected.heat)
 
@@ -147,7 +148,7 @@ def test_detected_strain_is_the_integral_over_the_depth(ratios: tuple) -> None:
     solved = solve(stacked(film, sample.media[1]), AT_ONCE)
     solid = DepthElastic(rotated_about_z(solids[0].stiffness), solids[0].stress, np.array([[*ratios, 1.0]]))
     found = three(solved, [solid, solids[1]])[0]
-    seen = three_response(solved.probe, 0, film.thickness, solved.profiles[0], solved.heat[0], found).strain
+    seen = three_response(reflection(solved.probe), 0, film.thickness, solved.profiles[0], solved.heat[0], found).strain
     z, weight = gauss_legendre(0.0, 60.0, panels=80)
     light = solved.probe
     n, k = light.n[0].item(), light.k

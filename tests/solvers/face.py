@@ -55,9 +55,14 @@ def stack(
 
 
 def setup(experiment: Experiment, **more) -> inv.PumpProbe:
+    pump, probe = experiment.pump, experiment.probe
     return inv.PumpProbe(
-        pump=experiment.pump.wavelength,
-        probe=experiment.probe.wavelength,
+        pump=pump.wavelength,
+        probe=probe.wavelength,
+        pump_angle=float(np.rad2deg(pump.angle)),
+        probe_angle=float(np.rad2deg(probe.angle)),
+        pump_polarisation=pump.polarisation,
+        probe_polarisation=probe.polarisation,
         pulse_rms=experiment.pulse_rms,
         **more,
     )
