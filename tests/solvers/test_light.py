@@ -33,7 +33,7 @@ def agree(sample, experiment, channels, at_pulse=2e-4, late=6e-5):
 def clear(al):
     optics = {"n_probe": 1.46 + 0j, "n_pump": 1.47 + 0j, "dn_dstrain": -0.3 + 0j, "dn_dT": 1e-5 + 0j}
     thermal = {"heat_capacity": 1.6e-3, "conductivity": 1.4e-3, "thermal_stress": 1e-4}
-    return replace(al, density=2.2, velocity=5.97, **optics, **thermal)
+    return replace(al, density=2.2, velocity=5.97, thickness=np.inf, **optics, **thermal)
 
 
 @pytest.fixture(scope="module")
