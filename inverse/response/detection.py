@@ -19,7 +19,7 @@ from inverse.response.light import Absorption
 from inverse.response.media import Ambient
 from inverse.response.port import Overlap, Port
 from inverse.response.sound import SoundField
-from inverse.response.sums import weighted_sum
+from inverse.response.sums import product, weighted_sum
 
 __all__ = ["Detected", "ambient_response", "medium_response"]
 
@@ -95,7 +95,7 @@ def medium_response(
     probe = _Probe(at.g, at.decay, at.forth, at.back, at.still, thickness)
     overlap = _layer_overlap if np.all(np.isfinite(thickness)) else _half_space_overlap
     hot = overlap(probe, heat, heat.down, 0)
-    light_left = _parts(*_profile_integrals(probe, profile))
+    light_left = _parts(_light_overlap(probe, profile))
     strain = overlap(probe, sound, -sound.down, 1)
     strain = (
         strain + sound.hot[:, None] * hot + weighted_sum(light_left, (sound.steep, _ONE), (sound.beat, _ONE))
@@ -137,10 +137,11 @@ def _overlap(at: Overlap, q: Complex, conjugate: bool) -> Complex:
     return forth / (q + g) + still / q + back / (q - g)
 
 
-def _parts(*terms: Complex) -> Array:
+def _parts(row: Complex) -> Array:
     """Weights (sets, 2, terms) of real and imaginary part."""
-    row = np.concatenate(np.broadcast_arrays(*terms), axis=1)
-    return np.stack([row.real, row.imag], axis=1)
+    out = np.empty((len(row), 2, row.shape[1]))
+    out[:, 0], out[:, 1] = row.real, row.imag
+    return out
 
 
 def _half_space_overlap(probe: _Probe, field: HeatField | SoundField, down: Complex, order: int) -> Complex:
@@ -148,11 +149,11 @@ def _half_space_overlap(probe: _Probe, field: HeatField | SoundField, down: Comp
     q, g = field.q, probe.g
     table = 1 / ((q - 2 * g.real) * q + np.abs(g) ** 2)
     table = table if order == 0 else table * q
-    running = _parts(probe.forth, -probe.forth * np.conj(g)), (down, table * q), (down, table)
-    if not np.any(probe.still):
-        return weighted_sum(*running)
-    level = _ONE if order == 1 else 1 / q
-    return weighted_sum(*running) + weighted_sum(_parts(probe.still), (down, level))
+    weights, terms = [probe.forth, -probe.forth * np.conj(g)], [(down, table * q), (down, table)]
+    if np.any(probe.still):
+        weights.append(probe.still)
+        terms.append((down, _ONE if order == 1 else 1 / q))
+    return weighted_sum(_parts(_row(*weights)), *terms)
 
 
 def _layer_overlap(probe: _Probe, field: HeatField | SoundField, down: Complex, order: int) -> Complex:
@@ -164,30 +165,45 @@ def _layer_overlap(probe: _Probe, field: HeatField | SoundField, down: Complex, 
     """
     q = field.q
     probe = _beside_resonance(probe, q)
-    g = probe.g
-    ends = _ends(field, down)
-    middle = q * q + np.abs(g) ** 2
-    lean = (2 * g.real) * q
-    near, far = 1 / (middle - lean), 1 / (middle + lean)
-    level = _ONE if order == 1 else 1 / q
+    lean, middle = (2 * probe.g.real) * q, q * q + np.abs(probe.g) ** 2
+    near, far, level = 1 / (middle - lean), 1 / (middle + lean), _ONE
     if order == 1:
         near, far = near * q, far * q
-    terms = [(table, end) for table in (near * q, near, far * q, far) for end in ends]
-    still = ends[0] - ends[1] + ends[2] - ends[3]
-    return weighted_sum(_end_weights(probe), *terms, (level, still))
+    else:
+        level = 1 / q
+    ends = _ends(field, down)
+    sets, _, size = ends.shape
+    terms = np.empty((sets, 17, size), dtype=complex)
+    for i, table in enumerate((near * q, near, far * q, far)):
+        np.multiply(table[:, None], ends, out=terms[:, 4 * i : 4 * i + 4])
+    terms[:, 16] = (ends[:, 0] - ends[:, 1] + ends[:, 2] - ends[:, 3]) * level
+    return product(_end_weights(probe), terms)
 
 
-def _ends(field: HeatField | SoundField, down: Complex) -> tuple[Complex, Complex, Complex, Complex]:
-    """Down-going part at the top and bottom, up-going part at the bottom and top."""
-    return down, down * field.decay, field.up, field.up * field.decay
+def _ends(field: HeatField | SoundField, down: Complex) -> Complex:
+    """Down-going part at the top and bottom, up-going part at the bottom and top, (sets, 4, frequencies)."""
+    sets, size = (max(part.shape[axis] for part in (field.q, down, field.up, field.decay)) for axis in (0, 1))
+    out = np.empty((sets, 4, size), dtype=complex)
+    out[:, 0], out[:, 2] = down, field.up
+    np.multiply(out[:, 0::2], field.decay[:, None], out=out[:, 1::2])
+    return out
 
 
 def _end_weights(probe: _Probe) -> Array:
     """Weights of the four ends over ``q - g`` and ``q + g``, each times q and plain, and of the constant part."""
-    f, b, fe, be = probe.forth, probe.back, probe.forth * probe.decay, probe.back * probe.decay
-    minus, plus = np.broadcast_arrays(f, -fe, b, -be), np.broadcast_arrays(be, -b, fe, -f)
+    sets = max(map(len, (probe.g, probe.forth, probe.back, probe.still, probe.decay)))
+    weights = np.empty((sets, 17), dtype=complex)
+    f, b = probe.forth, probe.back
+    minus, plus = weights[:, 0:4], weights[:, 8:12]
+    minus[:, 0:1], minus[:, 2:3] = f, b
+    np.multiply(minus[:, 0::2], -probe.decay, out=minus[:, 1::2])
+    plus[:, 1:2], plus[:, 3:4] = -b, -f
+    np.multiply(plus[:, 1::2], -probe.decay, out=plus[:, 0::2])
     turned = np.conj(probe.g)
-    return _parts(*minus, *(-m * turned for m in minus), *plus, *(p * turned for p in plus), probe.still)
+    np.multiply(minus, -turned, out=weights[:, 4:8])
+    np.multiply(plus, turned, out=weights[:, 12:16])
+    weights[:, 16:] = probe.still
+    return _parts(weights)
 
 
 def _beside_resonance(probe: _Probe, q: Complex) -> _Probe:
@@ -200,41 +216,32 @@ def _beside_resonance(probe: _Probe, q: Complex) -> _Probe:
     return replace(probe, g=g + step, decay=probe.decay * np.exp(step * probe.thickness))
 
 
-def _diffusing(probe: _Probe, q: Complex, x: Complex) -> tuple[Complex, Complex]:
-    """Integrals of exp(-q z) E^2 and exp(-q (d - z)) E^2 over the medium; x = exp(-q d)."""
-    along = (1 - x * probe.decay) / (q - probe.g)
-    across = _difference(probe.decay, x, q + probe.g, probe.thickness)
-    level = (1 - x) / q
-    return (
-        probe.forth * along + probe.back * across + probe.still * level,
-        probe.back * along + probe.forth * across + probe.still * level,
-    )
+def _light_overlap(probe: _Probe, f: Absorption) -> Complex:
+    """Integrals of the exponential and the interference part of the absorbed profile times E^2, (sets, 2).
+
+    Every term is an exponential whose values at both ends are bounded: the integral is their difference over
+    the sum of the two exponents.
+    """
+    none = np.zeros_like(probe.g)
+    turning = (1j * f.x).astype(complex)
+    rate = _row(probe.g, -probe.g, none)[:, :, None] + _row(-f.p, f.p, turning, -turning)[:, None]
+    seen = _row(probe.forth, probe.back * probe.decay, probe.still)
+    absorbed = _row(f.top, f.bottom * f.decay, f.beat, np.conj(f.beat))
+    start = seen[:, :, None] * absorbed[:, None]
+    seen = _row(probe.forth * probe.decay, probe.back, probe.still)
+    end = f.beat * f.turn
+    absorbed = _row(f.top * f.decay, f.bottom, end, np.conj(end))
+    stop = seen[:, :, None] * absorbed[:, None]
+    endless = np.isinf(probe.thickness)
+    flat = np.abs(rate) * np.where(endless, 1.0, probe.thickness)[:, :, None] < 1e-7
+    depth = np.where(endless, 0.0, probe.thickness)[:, :, None]
+    parts = np.where(flat, depth * start, (stop - start) / np.where(flat, 1.0, rate)).sum(axis=1)
+    return parts.reshape(-1, 2, 2).sum(axis=2)
 
 
-def _difference(e: Complex, x: Complex, rate: Complex, d: Array) -> Complex:
-    """(exp(g d) - exp(-q d)) / (q + g), finite where q + g vanishes."""
-    near = np.abs(rate) * np.where(np.isinf(d), 1.0, d) < 1e-7
-    if not np.any(near):
-        return (e - x) / rate
-    safe = np.where(near, 1.0, rate)
-    return np.where(near, np.where(np.isinf(d), 0.0, d) * e, (e - x) / safe)
-
-
-def _profile_integrals(probe: _Probe, f: Absorption) -> tuple[Complex, Complex]:
-    """Integrals of the exponential and the interference part of the absorbed profile times E^2."""
-    p = f.p.astype(complex)
-    down, up = _diffusing(probe, np.where(p == 0, 1e-12, p), f.decay.astype(complex))
-    forth = _wave(probe, f.x, f.turn)
-    back = _wave(probe, -f.x, np.conj(f.turn))
-    return f.top * down + f.bottom * up, f.beat * forth + np.conj(f.beat) * back
-
-
-def _wave(probe: _Probe, x: Array, turn: Complex) -> Complex:
-    """Integral of exp(i x z) E^2 over a layer; zero in the half-space, where light does not interfere."""
-    if not np.any(turn):
-        return np.zeros((1, 1), dtype=complex)
-    ix = 1j * x
-    along = _difference(turn * probe.decay, np.ones((1, 1), dtype=complex), ix + probe.g, probe.thickness)
-    across = _difference(probe.decay, turn, probe.g - ix, probe.thickness)
-    level = (turn - 1) / ix
-    return probe.forth * along + probe.back * across + probe.still * level
+def _row(*parts: Complex | Array) -> Complex:
+    """Stand arrays of shape (sets or 1, 1) side by side."""
+    out = np.empty((max(map(len, parts)), len(parts)), dtype=complex)
+    for i, part in enumerate(parts):
+        out[:, i : i + 1] = part
+    return out
