@@ -148,7 +148,9 @@ def test_detected_strain_is_the_integral_over_the_depth(ratios: tuple) -> None:
     solved = solve(stacked(film, sample.media[1]), AT_ONCE)
     solid = DepthElastic(rotated_about_z(solids[0].stiffness), solids[0].stress, np.array([[*ratios, 1.0]]))
     found = three(solved, [solid, solids[1]])[0]
-    seen = three_response(reflection(solved.probe), 0, film.thickness, solved.profiles[0], solved.heat[0], found).strain
+    seen = three_response(
+        reflection(solved.probe), 0, film.thickness, solved.profiles[0], solved.heat[0], found
+    ).strain
     z, weight = gauss_legendre(0.0, 60.0, panels=80)
     light = solved.probe
     n, k = light.n[0].item(), light.k
