@@ -120,7 +120,9 @@ class Interface:
     boundary_conductance : float, frozen scipy.stats distribution or Unknown
         Thermal boundary conductance in MW/m2/K; inf is ideal contact. It has no default.
     roughness : float, frozen scipy.stats distribution or Unknown
-        Rms roughness in nm.
+        Rms roughness in nm, smooth over a wavelength of the sound: it spreads the phase of what it reflects.
+    areal_mass : float, frozen scipy.stats distribution or Unknown
+        Mass per area in mg/m2 of what sits in the interface, half on either face; a monolayer has about 1.
     tangential_compliance : float, frozen scipy.stats distribution or Unknown, optional
         Compliance against sliding in nm/GPa, where a layer is cut obliquely; by default `compliance`.
 
@@ -133,12 +135,13 @@ class Interface:
     boundary_conductance: Any
     compliance: Any = 0.0
     roughness: Any = 0.0
+    areal_mass: Any = 0.0
     tangential_compliance: Any = None
 
     def __post_init__(self) -> None:
         if self.tangential_compliance is not None:
             checked("tangential_compliance", self.tangential_compliance, "Interface")
-        for name in ("compliance", "boundary_conductance", "roughness"):
+        for name in ("compliance", "boundary_conductance", "roughness", "areal_mass"):
             checked(name, getattr(self, name), "Interface")
 
 

@@ -36,7 +36,7 @@ _ABSENT = {
     "quality_factor": np.inf,
     "quality_frequency": 0.01,
 }
-_INTERFACE = ("compliance", "boundary_conductance", "roughness")
+_INTERFACE = ("compliance", "boundary_conductance", "roughness", "areal_mass")
 
 
 @dataclass(frozen=True)

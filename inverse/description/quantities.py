@@ -100,8 +100,12 @@ QUANTITIES: dict[str, Quantity] = {
             "stress per kelvin at zero strain, 3 x bulk modulus x linear expansion",
             suspect="Pa/K or MPa/K",
         ),
-        Quantity("photoelastic_xz", "1", "p_{xz}/p_{zz}", -1e3, 1e3, "index change by shear xz over strain zz"),
-        Quantity("photoelastic_yz", "1", "p_{yz}/p_{zz}", -1e3, 1e3, "index change by shear yz over strain zz"),
+        Quantity(
+            "photoelastic_xz", "1", "p_{xz}/p_{zz}", -1e3, 1e3, "index change by shear xz over strain zz"
+        ),
+        Quantity(
+            "photoelastic_yz", "1", "p_{yz}/p_{zz}", -1e3, 1e3, "index change by shear yz over strain zz"
+        ),
         Quantity("thermal_stress_xz", "GPa/K", r"\beta_{xz}", -0.1, 0.1, "shear stress in xz per kelvin"),
         Quantity("thermal_stress_yz", "GPa/K", r"\beta_{yz}", -0.1, 0.1, "shear stress in yz per kelvin"),
         Quantity("expansion", "1/K", r"\alpha", -1e-3, 1e-3, "linear thermal expansion", suspect="1e-6/K"),
@@ -156,6 +160,7 @@ QUANTITIES: dict[str, Quantity] = {
             "boundary_conductance", "MW/m2/K", "G", 0.0, _INF, "thermal boundary conductance", 1e-6, "W/m2/K"
         ),
         Quantity("roughness", "nm", "h", 0.0, 100.0, "rms roughness of the interface", suspect="m"),
+        Quantity("areal_mass", "mg/m2", "m", 0.0, 1e4, "mass per area in the interface", suspect="kg/m2"),
         Quantity(
             "pulse_rms",
             "ps",

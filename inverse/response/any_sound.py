@@ -36,7 +36,9 @@ def any_sound(
 ) -> Sequence[SoundField | ThreeSound]:
     """Solve for the displacement of every medium; see `sound_field` and `three_sound_field`."""
     if sample.solids is None:
-        return sound_field(sample.media, sample.compliance, sample.ambient, profiles, heat, s, powers)
+        return sound_field(
+            sample.media, sample.compliance, sample.ambient, profiles, heat, s, powers, sample.imperfections
+        )
     joints = [
         interface_compliance(normal, tangential)
         for normal, tangential in zip(sample.compliance, sample.tangential, strict=True)

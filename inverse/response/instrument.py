@@ -63,6 +63,7 @@ def in_stage_time(sample: Sample, factor: Array) -> Sample:
         media=tuple(changed[id(m)] for m in sample.media),
         resistance=tuple(r / factor for r in sample.resistance),
         ambient=_scaled(sample.ambient, _AMBIENT, factor),
+        imperfections=tuple(replace(i, mass=i.mass / factor**2) for i in sample.imperfections),
     )
 
 

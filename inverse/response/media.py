@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from inverse.description.cuts import COMPONENTS
 from inverse.description.places import BoundStack, Slots
 from inverse.description.quantities import QUANTITIES
+from inverse.response.flaws import Imperfection
 from inverse.response.recursion import OPEN
 from inverse.response.solids import DepthElastic
 
@@ -99,6 +100,7 @@ class Sample:
     solids: tuple[DepthElastic, ...] | None = None
     tangential: tuple[Array, ...] = ()
     backing: Ambient | None = None
+    imperfections: tuple[Imperfection, ...] = ()
 
     def light(self, beam: str) -> tuple[list[Complex], list[Array]]:
         """Return the index of every medium to ``"pump"`` or ``"probe"``, what is below last, and the thicknesses."""
@@ -132,6 +134,7 @@ def sample(bound: BoundStack, values: Mapping[str, Array]) -> Sample:
         resistance=tuple(_resistance(bound, slots, values) for slots in bound.interfaces),
         ambient=_ambient(bound, values),
         backing=None if "velocity" in bound.media[-1] else _EMPTY,
+        imperfections=_imperfections(bound, values),
         **_three_components(bound, values),
     )
 
@@ -224,6 +227,17 @@ def _medium(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Med
 
 def _compliance(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Array:
     return np.minimum(_coherent("compliance", bound.fill(slots, values)["compliance"]), OPEN)
+
+
+def _imperfections(bound: BoundStack, values: Mapping[str, Array]) -> tuple[Imperfection, ...]:
+    """Return mass and roughness of every interface; nothing where all are smooth and massless."""
+    filled = [bound.fill(slots, values) for slots in bound.interfaces]
+    if not any(np.any(interface[field]) for interface in filled for field in ("areal_mass", "roughness")):
+        return ()
+    return tuple(
+        Imperfection(_coherent("areal_mass", f["areal_mass"]), _coherent("roughness", f["roughness"]))
+        for f in filled
+    )
 
 
 def _resistance(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Array:

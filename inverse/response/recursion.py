@@ -10,9 +10,13 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
+
+if TYPE_CHECKING:
+    from inverse.response.flaws import Flaw
 
 __all__ = ["OPEN", "Ends", "Interfaces", "ascend", "descend", "surface_amplitude"]
 
@@ -59,6 +63,7 @@ def ascend(
     decay: Sequence[Complex],
     compliance: Sequence[NDArray[np.float64]],
     ends: Sequence[Ends] | None = None,
+    flaws: Sequence[Flaw | None] = (),
 ) -> Interfaces:
     """Sweep from the half-space, or from a free back, to the top layer.
 
@@ -72,6 +77,8 @@ def ascend(
         Inverse of the interface's stiffness or conductance, 0 to `OPEN`.
     ends : sequence of Ends, optional
         Sources; without them the source terms are zero.
+    flaws : sequence of Flaw or None, optional
+        Of each interface, where there are sources.
 
     Returns
     -------
@@ -85,6 +92,13 @@ def ascend(
         reflection, source = [_ONE], [free]
         gamma, beta = [decay[-1] * decay[-1]], [free * decay[-1]]
     for j in range(len(y) - 2, -1, -1):
+        if ends is not None and flaws and (imperfect := flaws[j]) is not None:
+            r, b = imperfect.ascend((y[j], y[j + 1]), gamma[0], beta[0], (ends[j], ends[j + 1]))
+            reflection.insert(0, r)
+            source.insert(0, b)
+            gamma.insert(0, r * decay[j] * decay[j])
+            beta.insert(0, b * decay[j])
+            continue
         below = y[j + 1] if gamma[0] is _ZERO else y[j + 1] * (1 - gamma[0]) / (1 + gamma[0])
         shared = 1 / (1 + compliance[j] * below)
         w = below * shared
@@ -116,6 +130,7 @@ def descend(
     decay: Sequence[Complex],
     below: Interfaces,
     ends: Sequence[Ends] | None = None,
+    flaws: Sequence[Flaw | None] = (),
 ) -> tuple[list[Complex], list[Complex]]:
     """Sweep down from the top medium's A and return (A, B) of every medium; B of the half-space is zero."""
     up: list[Complex] = []
@@ -125,6 +140,11 @@ def descend(
         up.append(below.reflection[j] * arriving + below.source[j])
         if j == len(y) - 1:
             return down, up
+        if ends is not None and flaws and (imperfect := flaws[j]) is not None:
+            pair, sides = (y[j], y[j + 1]), (ends[j], ends[j + 1])
+            b, gamma, beta = below.source[j], below.gamma[j + 1], below.beta[j + 1]
+            down.append(imperfect.descend(arriving, b, pair, gamma, beta, sides))
+            continue
         flux = y[j] * (arriving - up[j])
         if ends is not None:
             flux = flux + ends[j].f_bottom - ends[j + 1].f_top + y[j + 1] * below.beta[j + 1]

@@ -11,6 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.response.flaws import Imperfection, flaw
 from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium, anchored, layers
@@ -79,6 +80,7 @@ def sound_field(
     heat: Sequence[HeatField],
     s: Complex,
     powers: Callable[[Array], Complex],
+    imperfections: Sequence[Imperfection] = (),
 ) -> list[SoundField]:
     """Solve for the displacement of every medium.
 
@@ -92,6 +94,8 @@ def sound_field(
         Laplace variable.
     powers : callable
         ``powers(t)`` is ``exp(-s t)`` for t of shape (sets, 1), cheap on the uniform grid.
+    imperfections : sequence of Imperfection, optional
+        Of each interface.
     """
     c = [off_resonance(m, modulus(m, s), f, h.q, s) for m, f, h in zip(media, profiles, heat, strict=True)]
     lossless = [cj.shape[1] == 1 for cj in c]
@@ -105,9 +109,13 @@ def sound_field(
     inertia = [m.density * s**2 for m in media]
     parts = [particular(*group) for group in zip(media, c, inertia, profiles, heat, strict=True)]
     ends = [particular_ends(*group) for group in zip(profiles, heat, parts, inertia, strict=True)]
-    below = ascend(y, decay, compliance, ends)
+    flaws = [
+        flaw(given, k, s, above, lower)
+        for given, k, above, lower in zip(imperfections, compliance, q, q[1:], strict=False)
+    ]
+    below = ascend(y, decay, compliance, ends, flaws)
     load = s * (ambient.density * ambient.velocity) if ambient.density is not None else 0.0
-    down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends)
+    down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends, flaws)
     return [
         SoundField(qj, e, a, b, *p, u_top=a + b * e + end.u_top, u_bottom=a * e + b + end.u_bottom)
         for qj, e, a, b, p, end in zip(q, anchored(decay, media), down, up, parts, ends, strict=True)

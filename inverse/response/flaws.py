@@ -1,0 +1,109 @@
+"""Interfaces with mass and roughness, beside their compliance.
+
+**Mass.** A layer of molecules or of dirt moves with the faces it sticks to: half of its areal mass m with the upper,
+half with the lower, the spring between. Each half adds the admittance ``m s^2 / 2`` to what lies below it.
+
+**Roughness** of rms h, smooth over a wavelength of sound, spreads the phase of what it reflects and transmits. On the
+local coefficients of the interface (never on what is seen of all that lies below)
+
+    r12 by exp(2 q^2 h^2),    r21 by exp(2 q'^2 h^2),    t12 and t21 by exp((q - q')^2 h^2 / 2),
+
+the mean over a normal distribution of heights. Its effect on the sources is of second order and left out.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.response.recursion import Ends
+
+__all__ = ["Flaw", "Imperfection", "flaw"]
+
+Array = NDArray[np.float64]
+Complex = NDArray[np.complex128]
+
+
+@dataclass(frozen=True)
+class Imperfection:
+    """Areal mass (g/cm3 nm) and rms roughness (nm) of an interface, shape (sets or 1, 1)."""
+
+    mass: Array
+    roughness: Array
+
+
+@dataclass(frozen=True)
+class Flaw:
+    """An imperfect interface as the recursion meets it.
+
+    Attributes
+    ----------
+    compliance : array
+    inertia : complex array
+        Admittance of half the mass.
+    reflected_above, reflected_below, passed : complex array
+        Factors of the local coefficients; 1 where it is smooth.
+    """
+
+    compliance: Array
+    inertia: Complex
+    reflected_above: Complex
+    reflected_below: Complex
+    passed: Complex
+
+    def ascend(
+        self, y: tuple[Complex, Complex], gamma: Complex, beta: Complex, ends: tuple[Ends, Ends]
+    ) -> tuple[Complex, Complex]:
+        """Return R and b of ``B = R A E + b`` above the interface; `y` and `ends` of the media above and below."""
+        seen, shared, lifted = self._below(y[1], gamma, beta, ends[1])
+        w = seen * shared + self.inertia
+        b = (ends[0].f_bottom - w * ends[0].u_bottom - lifted * shared) / (y[0] + w)
+        r12, t12 = self._local(*y)
+        r21, t21 = self._local(y[1], y[0])
+        echoes = 1 - self.reflected_below * r21 * gamma
+        return self.reflected_above * r12 + self.passed**2 * t12 * gamma * t21 / echoes, b
+
+    def descend(
+        self, arriving: Complex, b: Complex, y: tuple[Complex, Complex], gamma: Complex, beta: Complex,
+        ends: tuple[Ends, Ends],
+    ) -> Complex:  # fmt: skip
+        """Return A below the interface from ``A E`` and b above it."""
+        seen, shared, lifted = self._below(y[1], gamma, beta, ends[1])
+        u = b + ends[0].u_bottom
+        flux = shared * (seen * u + lifted)
+        below = shared * u + lifted * (shared - 1) / seen
+        launched = (flux - self.inertia * below - ends[1].f_top + y[1] * beta) / (y[1] * (1 - gamma))
+        r21, t12 = self._local(y[1], y[0])[0], self._local(*y)[1]
+        return self.passed * t12 * arriving / (1 - self.reflected_below * r21 * gamma) + launched
+
+    def _below(
+        self, y: Complex, gamma: Complex, beta: Complex, end: Ends
+    ) -> tuple[Complex, Complex, Complex]:
+        """Admittance below with half the mass, the spring's share of it, and the flux at no displacement."""
+        plain = y * (1 - gamma) / (1 + gamma)
+        seen = plain + self.inertia
+        return seen, 1 / (1 + self.compliance * seen), end.f_top - y * beta - plain * (beta + end.u_top)
+
+    def _local(self, y: Complex, other: Complex) -> tuple[Complex, Complex]:
+        """Reflection into the first medium and transmission from it, of a smooth interface."""
+        seen = other + self.inertia
+        shared = 1 / (1 + self.compliance * seen)
+        w = seen * shared + self.inertia
+        r = (y - w) / (y + w)
+        return r, (1 + r) * shared
+
+
+def flaw(given: Imperfection, compliance: Array, s: Complex, above: Complex, below: Complex) -> Flaw | None:
+    """Return the flaw of an interface between media of given q, or None where it is perfect but for its compliance."""
+    if not np.any(given.mass) and not np.any(given.roughness):
+        return None
+    h2 = given.roughness**2
+    return Flaw(
+        compliance,
+        given.mass * s**2 / 2,
+        np.exp(2 * above**2 * h2),
+        np.exp(2 * below**2 * h2),
+        np.exp((above - below) ** 2 * h2 / 2),
+    )
