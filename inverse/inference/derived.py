@@ -18,11 +18,15 @@ FREQUENCY = 0.05
 """Frequency in THz at which reflection coefficients are reported."""
 
 
+SILICA = ("SiO2", 2.20, 5.968)
+"""Fused silica, the interlayer most often under suspicion: density in g/cm3 and velocity in nm/ps (reference tables)."""
+
+
 def derived(
     bound: BoundStack,
     values: Mapping[str, Array],
     *,
-    interlayer: tuple[str, float] | None = None,
+    interlayer: tuple[str, float, float] = SILICA,
     frequency: float = FREQUENCY,
 ) -> dict[str, Array]:
     """Compute the derived quantities of a stack.
@@ -32,8 +36,8 @@ def derived(
     bound : BoundStack
     values : mapping
         Unknown name -> array of any one shape.
-    interlayer : (str, float), optional
-        Name and c33 (GPa) of the interlayer whose equivalent thickness is reported.
+    interlayer : (str, float, float)
+        Name, density (g/cm3) and velocity (nm/ps) of the interlayer whose equivalent thickness is reported.
     frequency : float
         THz, of the reported reflection coefficient.
 
@@ -42,9 +46,12 @@ def derived(
     dict
         Per layer ``c33 = rho v^2`` (GPa; of one known by its constants ``velocity`` and
         ``longitudinal_modulus = rho v^2``), ``round_trip = 2 d / v`` (ps) and ``impedance_ratio = Z / Z_below``;
-        per interface ``stiffness`` (GPa/nm; inf for a perfect bond), ``equivalent_thickness = c33 / K`` (nm) and
-        the magnitude of the displacement's reflection, ``(Z1 - Z2 + s Z1 Z2 / K) / (Z1 + Z2 + s Z1 Z2 / K)``
-        (Schoenberg 1980; Tas et al. 1998). Only what depends on an unknown is returned.
+        per interface ``stiffness`` (GPa/nm; inf for a perfect bond), the magnitude of the displacement's reflection,
+        ``(Z1 - Z2 + s Z1 Z2 / K) / (Z1 + Z2 + s Z1 Z2 / K)`` (Schoenberg 1980; Tas et al. 1998), and
+        ``equivalent_thickness`` (nm) of a thin welded interlayer of impedance Z whose reflection has the same
+        magnitude to second order in frequency, ``(c33 / K) / (1 - Z^2 / (Z1 Z2))``: the layer's inertia takes back
+        part of what its compliance does. There is none where Z^2 >= Z1 Z2. Only what depends on an unknown is
+        returned.
     """
     media = [_acoustic(bound, slots, values) for slots in bound.media if "velocity" in slots]
     out: dict[str, Array] = {}
@@ -68,8 +75,11 @@ def derived(
         spring = 2j * np.pi * frequency * z1 * z2 * compliance
         with np.errstate(divide="ignore"):
             out[f"{place}.stiffness"] = np.asarray(1 / compliance)
-        if interlayer is not None:
-            out[f"{place}.equivalent_thickness"] = np.asarray(interlayer[1] * compliance)
+        _, layer_density, layer_velocity = interlayer
+        part = 1 - (layer_density * layer_velocity) ** 2 / (z1 * z2)
+        if np.all(part > 0):
+            modulus_layer = layer_density * layer_velocity**2
+            out[f"{place}.equivalent_thickness"] = np.asarray(modulus_layer * compliance / part)
         out[f"{place}.reflection"] = np.abs((z1 - z2 + spring) / (z1 + z2 + spring))
     return {name: value for name, value in out.items() if value.ndim}
 

@@ -149,7 +149,7 @@ def least_squares(
     found: list[Array] = []
     near = [_given_point(inversion, point) for point in points]
     for start in [*near, *_starting_points(inversion, physical, coarse, starts, seed)]:
-        rough = minimise(Projected(posterior, physical, coarse), start[physical], max_evaluations=60)
+        rough = minimise(Projected(posterior, physical, coarse), start[physical], typical=1.0, max_evaluations=60)
         _add_distinct(found, _joined(coarse, physical, rough.x))
     found = sorted(found, key=lambda z: -float(posterior(z[None])[0]))[: max(4, starts // 2)]
     basins: list[Basin] = []
@@ -266,7 +266,7 @@ def refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds: 
     minimum: Minimum | None = None
     for _ in range(rounds):
         z = _fit_noise(posterior, physical, z)
-        minimum = minimise(Projected(posterior, physical, z), z[physical], max_evaluations=100)
+        minimum = minimise(Projected(posterior, physical, z), z[physical], typical=1.0, max_evaluations=100)
         z = _joined(z, physical, minimum.x)
     assert minimum is not None
     if any(member.model.has_outliers for member in posterior.members):
@@ -279,7 +279,7 @@ def _with_own_curvature(
     posterior: Posterior, physical: NDArray[np.bool_], z: Array, minimum: Minimum
 ) -> Minimum:
     """Take the covariance from the noise's curvature: residuals that add up to its density curve too much."""
-    j = jacobian(Projected(posterior.as_gaussian(z), physical, z), z[physical])
+    j = jacobian(Projected(posterior.as_gaussian(z), physical, z), z[physical], typical=1.0)
     covariance, condition, left_open = covariance_of(j)
     return replace(minimum, covariance=covariance, condition=condition, open_directions=left_open)
 

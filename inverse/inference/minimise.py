@@ -49,9 +49,12 @@ class Minimum:
     message: str
 
 
-def jacobian(residuals: Residuals, x: Array) -> Array:
-    """Return the Jacobian by central differences, all points in one batch, shape (residuals, unknowns)."""
-    step = _STEP * np.maximum(np.abs(x), 1e-8)
+def jacobian(residuals: Residuals, x: Array, typical: float = 1e-8) -> Array:
+    """Return the Jacobian by central differences, all points in one batch, shape (residuals, unknowns).
+
+    The step is a part of each coordinate, or of `typical` where that is larger.
+    """
+    step = _STEP * np.maximum(np.abs(x), typical)
     up, down = x + np.diag(step), x - np.diag(step)
     values = residuals(np.concatenate([up, down]))
     width = (np.diagonal(up) - np.diagonal(down))[:, None]
@@ -63,6 +66,7 @@ def minimise(
     start: Array,
     *,
     derivative: Callable[[Array], Array] | None = None,
+    typical: float = 1e-8,
     max_evaluations: int = 2000,
 ) -> Minimum:
     """Minimise a sum of squares from one starting point.
@@ -74,6 +78,8 @@ def minimise(
     start : array, shape (unknowns,)
     derivative : callable, optional
         Jacobian of shape (residuals, unknowns) at a point; central differences by default.
+    typical : float
+        Size of a coordinate near zero, for the step of the differences; 1 for standard normal variables.
     max_evaluations : int
         Residual evaluations allowed to the optimiser, derivatives apart.
 
@@ -92,7 +98,7 @@ def minimise(
 
     def slope(x: Array) -> Array:
         count[0] += 2 * x.size
-        return jacobian(residuals, x) if derivative is None else derivative(x)
+        return jacobian(residuals, x, typical) if derivative is None else derivative(x)
 
     if not np.isfinite(one(start)).all():
         raise ValueError(
