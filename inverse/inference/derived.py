@@ -49,8 +49,8 @@ def derived(
         per interface ``stiffness`` (GPa/nm; inf for a perfect bond), the magnitude of the displacement's reflection,
         ``(Z1 - Z2 + s Z1 Z2 / K) / (Z1 + Z2 + s Z1 Z2 / K)`` (Schoenberg 1980; Tas et al. 1998), and
         ``equivalent_thickness`` (nm) of a thin welded interlayer of impedance Z whose reflection has the same
-        magnitude to second order in frequency, ``(c33 / K) / (1 - Z^2 / (Z1 Z2))``: the layer's inertia takes back
-        part of what its compliance does. There is none where Z^2 >= Z1 Z2. Only what depends on an unknown is
+        magnitude to second order in frequency, ``(c33 / K) / sqrt((1 - Z^2 / Z1^2) (1 - Z^2 / Z2^2))``: the layer's
+        inertia takes back part of what its compliance does. There is none unless Z is below both. Only what depends on an unknown is
         returned.
     """
     media = [_acoustic(bound, slots, values) for slots in bound.media if "velocity" in slots]
@@ -76,10 +76,10 @@ def derived(
         with np.errstate(divide="ignore"):
             out[f"{place}.stiffness"] = np.asarray(1 / compliance)
         _, layer_density, layer_velocity = interlayer
-        part = 1 - (layer_density * layer_velocity) ** 2 / (z1 * z2)
-        if np.all(part > 0):
-            modulus_layer = layer_density * layer_velocity**2
-            out[f"{place}.equivalent_thickness"] = np.asarray(modulus_layer * compliance / part)
+        z = layer_density * layer_velocity
+        if np.all(z < np.minimum(z1, z2)):
+            part = np.sqrt((1 - (z / z1) ** 2) * (1 - (z / z2) ** 2))
+            out[f"{place}.equivalent_thickness"] = np.asarray(z * layer_velocity * compliance / part)
         out[f"{place}.reflection"] = np.abs((z1 - z2 + spring) / (z1 + z2 + spring))
     return {name: value for name, value in out.items() if value.ndim}
 
