@@ -19,7 +19,7 @@ FREQUENCY = 0.05
 
 
 SILICA = ("SiO2", 2.20, 5.968)
-"""Fused silica, the interlayer most often under suspicion: density in g/cm3 and velocity in nm/ps (reference tables)."""
+"""Fused silica, the interlayer most often suspected: density in g/cm3, velocity in nm/ps (reference tables)."""
 
 
 def derived(
@@ -50,8 +50,8 @@ def derived(
         ``(Z1 - Z2 + s Z1 Z2 / K) / (Z1 + Z2 + s Z1 Z2 / K)`` (Schoenberg 1980; Tas et al. 1998), and
         ``equivalent_thickness`` (nm) of a thin welded interlayer of impedance Z whose reflection has the same
         magnitude to second order in frequency, ``(c33 / K) / sqrt((1 - Z^2 / Z1^2) (1 - Z^2 / Z2^2))``: the layer's
-        inertia takes back part of what its compliance does. There is none unless Z is below both. Only what depends on an unknown is
-        returned.
+        inertia takes back part of what its compliance does. There is none unless Z is below both. Only what
+        depends on an unknown is returned.
     """
     media = [_acoustic(bound, slots, values) for slots in bound.media if "velocity" in slots]
     out: dict[str, Array] = {}
