@@ -12,7 +12,6 @@ from typing import TYPE_CHECKING, Any, Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.inference.basins import minima_record
 from inverse.inference.ensembles import EnsembleRun, run_ensembles
 from inverse.inference.independence import IndependenceMove, StudentMixture, adapt
 from inverse.inference.least_squares import Basin, Density, Fit
@@ -23,7 +22,7 @@ if TYPE_CHECKING:
 
     from inverse.inference.inversion import Inversion
 
-__all__ = ["prepare", "problem_hash", "sample_posterior"]
+__all__ = ["first_mixture", "prepare", "problem_hash", "sample_posterior"]
 
 Array = NDArray[np.float64]
 
@@ -46,7 +45,7 @@ class Problem(Protocol):
 
     def fingerprint(self) -> str: ...
 
-    def result(self, run: EnsembleRun, seed: int, notes: dict[str, Any]) -> xr.DataTree: ...
+    def result(self, run: EnsembleRun, seed: int, fit: Fit) -> xr.DataTree: ...
 
 
 def sample_posterior(
@@ -124,7 +123,7 @@ def sample_posterior(
         progress=progress,
         executor=executor,
     )
-    return inversion.result(run, seed, {"minima": minima_record(fit)})
+    return inversion.result(run, seed, fit)
 
 
 def prepare(
@@ -139,13 +138,7 @@ def prepare(
     mixture : StudentMixture
     """
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(2)[1])
-    kept = [b for b in minima if b.weight >= _LEAST_WEIGHT]
-    first = StudentMixture(
-        np.full(len(kept), 1 / len(kept)),
-        np.array([b.z for b in kept]),
-        np.array([np.linalg.cholesky(_positive(b.covariance_z)) for b in kept]),
-    )
-    mixture, points, log_weights = adapt(posterior, first, rng)
+    mixture, points, log_weights = adapt(posterior, first_mixture(minima), rng)
     count = ensembles * walkers
     if len(points) < count:
         raise ValueError(
@@ -155,6 +148,16 @@ def prepare(
     # Gumbel's trick: sampling without replacement in proportion to the weights.
     order = np.argsort(-(log_weights + rng.gumbel(size=len(points))))[:count]
     return points[rng.permutation(order)].reshape(ensembles, walkers, -1), mixture
+
+
+def first_mixture(minima: Sequence[Basin]) -> StudentMixture:
+    """Give every minimum that matters a component of its normal approximation, with equal weights."""
+    kept = [b for b in minima if b.weight >= _LEAST_WEIGHT]
+    return StudentMixture(
+        np.full(len(kept), 1 / len(kept)),
+        np.array([b.z for b in kept]),
+        np.array([np.linalg.cholesky(_positive(b.covariance_z)) for b in kept]),
+    )
 
 
 def _moves(mixture: StudentMixture) -> list[tuple[Any, float]]:

@@ -239,11 +239,12 @@ class ConstantsInversion:
 
         return hashlib.sha256(json.dumps(record(self), sort_keys=True).encode()).hexdigest()
 
-    def result(self, run: EnsembleRun, seed: int, notes: dict[str, Any]) -> xr.DataTree:
+    def result(self, run: EnsembleRun, seed: int, fit: Fit) -> xr.DataTree:
         """Put a finished run into a DataTree."""
+        from inverse.inference.basins import minima_record
         from inverse.study.constants_result import constants_tree
 
-        return constants_tree(self, run, seed, notes)
+        return constants_tree(self, run, seed, {"minima": minima_record(fit)})
 
     def _checked(self, values: Any) -> Array:
         array = np.atleast_2d(np.asarray(values, dtype=float))
