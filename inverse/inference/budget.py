@@ -366,8 +366,10 @@ def _split(linear: Linearised, gradient: Array, direct: Array) -> dict[str, floa
 
 def _warning(inversion: Inversion, constant: FixedConstant, name: str, ratio: float, sd: float) -> str:
     origin = "stated" if constant.stated else "assumed, as none was given"
+    unit = "" if inversion.units[name] == "1" else f" {inversion.units[name]}"
+    own = "" if constant.unit == "1" else f" {constant.unit}"
     return (
-        f"The fixed constant {constant.name} = {constant.value:.4g} {constant.unit} (standard uncertainty "
-        f"{constant.spread:.2g}, {origin}) moves {name} by {ratio * sd:.2g} {inversion.units[name]}, "
+        f"The fixed constant {constant.name} = {constant.value:.4g}{own} (standard uncertainty "
+        f"{constant.spread:.2g}, {origin}) moves {name} by {ratio * sd:.2g}{unit}, "
         f"{ratio:.1f} times its standard deviation; give it a prior, or say how well it is known."
     )
