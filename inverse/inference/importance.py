@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import logsumexp
 
-from inverse.inference.independence import StudentMixture
+from inverse.inference.independence import EXTRA, StudentMixture, refit
 
 __all__ = ["LARGEST_SHAPE", "ImportanceDraws", "importance_draws", "pareto_shape", "smoothed_weights"]
 
@@ -24,8 +24,8 @@ Array = NDArray[np.float64]
 LARGEST_SHAPE = 0.7
 """Pareto shape above which weighted draws are not to be used."""
 
-_BATCH = 1000
-_MOST = 8000
+_DRAWS_PER_UNKNOWN = 200
+_LEAST_DRAWS = 1000
 
 
 @dataclass(frozen=True)
@@ -54,15 +54,19 @@ class ImportanceDraws:
 
 
 def importance_draws(
-    log_density: Callable[[Array], Array], mixture: StudentMixture, rng: np.random.Generator, ess: float
+    log_density: Callable[[Array], Array], first: StudentMixture, rng: np.random.Generator, ess: float
 ) -> ImportanceDraws:
-    """Draw from a mixture and weight by a density until the effective sample size suffices, 8000 draws at most.
+    """Draw from a mixture and weight by a density; refit the mixture until the weights are even enough.
+
+    Each round's draws are independent of those its mixture was fitted to. The first round whose effective sample size
+    and Pareto shape suffice is returned, or the last of five.
 
     Parameters
     ----------
     log_density : callable
         Points (n, unknowns) to log densities (n,), not necessarily normalised.
-    mixture : StudentMixture
+    first : StudentMixture
+        One component per mode.
     rng : Generator
     ess : float
         Wanted; less may be returned.
@@ -70,24 +74,23 @@ def importance_draws(
     Raises
     ------
     ValueError
-        If no draw has a finite density.
+        If no draw of a round has a finite density.
     """
-    points = np.empty((0, mixture.means.shape[1]))
-    log_weights = np.empty(0)
-    while len(points) < _MOST:
-        fresh = mixture.draw(rng, _BATCH)
-        points = np.concatenate([points, fresh])
-        log_weights = np.append(log_weights, log_density(fresh) - mixture.log_density(fresh))
-        if np.isfinite(log_weights).any():
-            weights, shape = smoothed_weights(log_weights)
-            if 1 / (weights @ weights) >= ess:
-                break
-    else:
-        if not np.isfinite(log_weights).any():
-            raise ValueError(
-                f"None of {len(points)} draws from the approximation is possible; check the priors."
-            )
-    return ImportanceDraws(points, weights, float(1 / (weights @ weights)), shape)
+    mixture = first
+    count = max(_LEAST_DRAWS, _DRAWS_PER_UNKNOWN * first.means.shape[1])
+    for extra in (*EXTRA, None):
+        points = mixture.draw(rng, count)
+        log_weights = log_density(points) - mixture.log_density(points)
+        good = np.isfinite(log_weights)
+        if not good.any():
+            raise ValueError(f"None of {count} draws from the approximation is possible; check the priors.")
+        points, log_weights = points[good], log_weights[good]
+        weights, shape = smoothed_weights(log_weights)
+        found = ImportanceDraws(points, weights, float(1 / (weights @ weights)), shape)
+        if extra is None or (found.ess >= ess and shape <= LARGEST_SHAPE):
+            break
+        mixture = refit(points, log_weights, first.means, extra, rng)
+    return found
 
 
 def smoothed_weights(log_weights: Array) -> tuple[Array, float]:

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import gammaln, logsumexp
 
-__all__ = ["IndependenceMove", "StudentMixture", "adapt", "fit_mixture"]
+__all__ = ["IndependenceMove", "StudentMixture", "adapt", "fit_mixture", "refit"]
 
 Array = NDArray[np.float64]
 
@@ -123,11 +123,29 @@ def adapt(
         log_weights = log_density(points) - mixture.log_density(points)
         good = np.isfinite(log_weights)
         points, log_weights = points[good], log_weights[good]
-        cut = np.minimum(log_weights, logsumexp(log_weights) - 0.5 * np.log(len(points)))
-        share = np.exp(cut - logsumexp(cut))
-        starts = points[rng.choice(len(points), extra, p=share, replace=False)] if extra else points[:0]
-        mixture = fit_mixture(points, share, np.concatenate([first.means, starts]))
+        mixture = refit(points, log_weights, first.means, extra, rng)
     return mixture, points, log_weights
+
+
+def refit(
+    points: Array, log_weights: Array, centres: Array, extra: int, rng: np.random.Generator
+) -> StudentMixture:
+    """Fit the next mixture to weighted points, the largest weights cut.
+
+    Parameters
+    ----------
+    points : array, shape (n, unknowns)
+    log_weights : array, shape (n,)
+        Finite.
+    centres : array, shape (components, unknowns)
+        Where components start; `extra` more start at points drawn by weight.
+    extra : int
+    rng : Generator
+    """
+    cut = np.minimum(log_weights, logsumexp(log_weights) - 0.5 * np.log(len(points)))
+    share = np.exp(cut - logsumexp(cut))
+    starts = points[rng.choice(len(points), extra, p=share, replace=False)] if extra else points[:0]
+    return fit_mixture(points, share, np.concatenate([centres, starts]))
 
 
 def fit_mixture(points: Array, share: Array, centres: Array) -> StudentMixture:

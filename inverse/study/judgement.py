@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.inference.importance import LARGEST_SHAPE, importance_draws
-from inverse.inference.sampling import prepare, sample_posterior
+from inverse.inference.sampling import first_mixture, sample_posterior
 from inverse.study.ranks import DRAWS, rank_of
 from inverse.study.replicates import quantities
 
@@ -165,9 +165,8 @@ def _walked(inversion: Inversion, fit: Any, sampling: Sampling, seed: int) -> _D
 
 def _weighted(inversion: Inversion, fit: Any, sampling: Sampling, seed: int) -> _Draws | None:
     """Draw by importance; None where the weights cannot be trusted or are too uneven."""
-    _, mixture = prepare(inversion.posterior, fit.minima, 1, 2, seed)
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(3)[2])
-    found = importance_draws(inversion.posterior, mixture, rng, sampling.ess)
+    found = importance_draws(inversion.posterior, first_mixture(fit.minima), rng, sampling.ess)
     if found.shape > LARGEST_SHAPE or found.ess < sampling.ess:
         return None
     values = inversion.posterior.parameters.to_values(found.resample(_POOL, rng))
