@@ -27,6 +27,12 @@ _REAL = (
     "bulk_modulus",
     "electron_heat_capacity",
     "electron_phonon_coupling",
+    "electron_gruneisen",
+    "band_gap",
+    "deformation_potential",
+    "carrier_diffusivity",
+    "carrier_lifetime",
+    "surface_recombination",
     "attenuation_time",
     "attenuation_exponent",
     "quality_factor",
@@ -71,6 +77,14 @@ class Material:
         Volumetric heat capacity of the electrons, gamma_e T_0, in J/cm3/K.
     electron_phonon_coupling : float
         In W/m3/K; inf asks for one temperature.
+    electron_gruneisen : float
+        Pressure of the electrons over their heat content; with it hot electrons press on the lattice by themselves.
+    band_gap, deformation_potential : float
+        Of a semiconductor whose photo-carriers count: energy of a pair, and its change with strain along the depth,
+        in eV. The gap shrinks under tension where the latter is negative; then pairs expand the lattice.
+    carrier_diffusivity, carrier_lifetime, surface_recombination : float
+        Ambipolar diffusivity in cm2/s, lifetime in ps (default inf), and the velocity of recombination at the top of
+        the medium in cm/s (default 0).
     attenuation_time, attenuation_exponent : float
         Acoustic loss c = rho v^2 (1 + (s tau)^y): tau in ps and y from 0 to 1.
     quality_factor, quality_frequency : float
@@ -120,6 +134,12 @@ class Material:
     dn_dT: Any = None
     electron_heat_capacity: Any = None
     electron_phonon_coupling: Any = None
+    electron_gruneisen: Any = None
+    band_gap: Any = None
+    deformation_potential: Any = None
+    carrier_diffusivity: Any = None
+    carrier_lifetime: Any = None
+    surface_recombination: Any = None
     attenuation_time: Any = None
     attenuation_exponent: Any = None
     quality_factor: Any = None

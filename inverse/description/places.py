@@ -10,6 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.carriers import carrier_slots
 from inverse.description.cuts import cut_slots, depth_slots, is_cut, is_oblique
 from inverse.description.instrument import instrument_slots
 from inverse.description.materials import Material
@@ -26,11 +27,12 @@ __all__ = ["BoundStack", "Slot", "Slots", "bind"]
 Array = NDArray[np.float64]
 
 _REQUIRED = ("velocity", "heat_capacity", "conductivity")
-_ELECTRONS = ("electron_heat_capacity", "electron_phonon_coupling")
+_ELECTRONS = ("electron_heat_capacity", "electron_phonon_coupling", "electron_gruneisen")
 _LOSS = ("attenuation_time", "attenuation_exponent", "quality_factor", "quality_frequency")
 _ABSENT = {
     "electron_heat_capacity": 0.0,
     "electron_phonon_coupling": np.inf,
+    "electron_gruneisen": 0.0,
     "attenuation_time": 0.0,
     "attenuation_exponent": 1.0,
     "quality_factor": np.inf,
@@ -261,7 +263,7 @@ def _material_slots(place: str, material: Material, setup: PumpProbe, slots: Slo
             if value is None
             else _field_slot(place, material, field, value)
         )
-    return slots | _light_slots(place, material, setup)
+    return slots | carrier_slots(place, material, setup) | _light_slots(place, material, setup)
 
 
 def _light_slots(place: str, material: Material, setup: PumpProbe) -> Slots:
@@ -285,7 +287,7 @@ def _thermal_stress(expansion: Any, bulk_modulus: Any) -> Any:
 
 
 def _electron_pair(place: str, material: Material) -> None:
-    given = [f for f in _ELECTRONS if getattr(material, f) is not None]
+    given = [f for f in _ELECTRONS[:2] if getattr(material, f) is not None]
     if len(given) == 1 and given[0] == "electron_heat_capacity":
         raise ValueError(
             f"{place} has electron_heat_capacity but no electron_phonon_coupling; two temperatures need both "

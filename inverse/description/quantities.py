@@ -131,6 +131,36 @@ QUANTITIES: dict[str, Quantity] = {
             "W/cm3/K",
         ),
         Quantity(
+            "electron_gruneisen",
+            "1",
+            r"\gamma_e",
+            -10.0,
+            10.0,
+            "electron pressure over the electrons' heat content",
+        ),
+        Quantity("band_gap", "eV", "E_g", 0.01, 15.0, "energy of an electron-hole pair", 0.1602176634),
+        Quantity(
+            "photon_energy", "eV", r"h\nu", 0.01, 200.0, "energy of a photon of the pump", 0.1602176634
+        ),
+        Quantity(
+            "deformation_potential",
+            "eV",
+            "a",
+            -100.0,
+            100.0,
+            "change of the band gap with strain",
+            0.1602176634,
+        ),
+        Quantity(
+            "carrier_diffusivity", "cm2/s", "D", 1e-4, 1e4, "ambipolar diffusivity of the carriers", 100.0
+        ),
+        Quantity(
+            "carrier_lifetime", "ps", r"\tau_c", 1e-2, _INF, "lifetime of the carriers", suspect="s or ns"
+        ),
+        Quantity(
+            "surface_recombination", "cm/s", "S", 0.0, 1e9, "velocity of recombination at the top", 1e-5
+        ),
+        Quantity(
             "attenuation_time", "ps", r"\tau_a", 0.0, 1e3, "time constant of the acoustic loss", suspect="s"
         ),
         Quantity("attenuation_exponent", "1", "y", 0.0, 1.0, "loss modulus grows as frequency to this power"),

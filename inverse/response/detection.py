@@ -14,6 +14,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.response.carriers import Pairs
 from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient
@@ -103,6 +104,10 @@ def medium_response(
     temperature = heat.lattice[:, None] * (
         hot + weighted_sum(light_left, (heat.steep, _ONE), (heat.beat, _ONE))
     )
+    if heat.pairs is not None:
+        pairs = overlap(probe, heat.pairs, heat.pairs.down, 0)
+        strain = strain + sound.paired[:, None] * pairs
+        temperature = temperature + heat.per_pair[:, None] * pairs
     return Detected(strain, temperature)
 
 
@@ -144,7 +149,9 @@ def _parts(row: Complex) -> Array:
     return out
 
 
-def _half_space_overlap(probe: _Probe, field: HeatField | SoundField, down: Complex, order: int) -> Complex:
+def _half_space_overlap(
+    probe: _Probe, field: HeatField | SoundField | Pairs, down: Complex, order: int
+) -> Complex:
     """Real and imaginary part of the integral of ``q^order down exp(-q z) E^2`` over the half-space."""
     q, g = field.q, probe.g
     table = 1 / ((q - 2 * g.real) * q + np.abs(g) ** 2)
@@ -156,7 +163,9 @@ def _half_space_overlap(probe: _Probe, field: HeatField | SoundField, down: Comp
     return weighted_sum(_parts(_row(*weights)), *terms)
 
 
-def _layer_overlap(probe: _Probe, field: HeatField | SoundField, down: Complex, order: int) -> Complex:
+def _layer_overlap(
+    probe: _Probe, field: HeatField | SoundField | Pairs, down: Complex, order: int
+) -> Complex:
     """Real and imaginary part of the integral of ``q^order [down exp(-q z) + up exp(-q (d - z))] E^2``.
 
     With M, N, L sums of the field's amplitudes at both ends, the integral is
@@ -180,7 +189,7 @@ def _layer_overlap(probe: _Probe, field: HeatField | SoundField, down: Complex, 
     return product(_end_weights(probe), terms)
 
 
-def _ends(field: HeatField | SoundField, down: Complex) -> Complex:
+def _ends(field: HeatField | SoundField | Pairs, down: Complex) -> Complex:
     """Down-going part at the top and bottom, up-going part at the bottom and top, (sets, 4, frequencies)."""
     sets, size = (max(part.shape[axis] for part in (field.q, down, field.up, field.decay)) for axis in (0, 1))
     out = np.empty((sets, 4, size), dtype=complex)

@@ -7,11 +7,12 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.response.carriers import CarrierConstants, Pairs, pair_field
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium, anchored, layers
 from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
@@ -23,6 +24,7 @@ Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
 _ONE = np.ones((1, 1), dtype=complex)
+_NONE = np.zeros((1, 1), dtype=complex)
 
 
 @dataclass(frozen=True)
@@ -43,6 +45,9 @@ class HeatField:
         Response to the exponential and the interference part of the absorbed profile.
     lattice : array
         Lattice over electron temperature; 1 for one temperature.
+    pairs : Pairs, optional
+        Photo-carriers; their diffusing part adds ``per_pair`` times itself to T.
+    per_pair : array, optional
     """
 
     q: Complex
@@ -52,6 +57,8 @@ class HeatField:
     steep: Complex
     beat: Complex
     lattice: Complex
+    pairs: Pairs | None = None
+    per_pair: Complex = field(default_factory=lambda: _NONE)
 
 
 def heat_field(
@@ -87,18 +94,54 @@ def heat_field(
     ]
     q = [np.sqrt(s * c / k) for c, k in zip(capacity, kappa, strict=True)]
     y = [k * qj for k, qj in zip(kappa, q, strict=True)]
-    steep = [pulse / (c * s - k * f.p**2) for c, k, f in zip(capacity, kappa, profiles, strict=True)]
-    beat = [pulse / (c * s + k * f.x**2) for c, k, f in zip(capacity, kappa, profiles, strict=True)]
+    pairs = [
+        None if m.carriers is None else pair_field(m.carriers, k, m.heat_capacity, m.thickness, f, s, pulse)
+        for m, k, f in zip(media, kappa, profiles, strict=True)
+    ]
+    share = [_heating(m.carriers, n, pulse) for m, n in zip(media, pairs, strict=True)]
+    steep = [
+        a / (c * s - k * f.p**2) for (a, _), c, k, f in zip(share, capacity, kappa, profiles, strict=True)
+    ]
+    beat = [
+        b / (c * s + k * f.x**2) for (_, b), c, k, f in zip(share, capacity, kappa, profiles, strict=True)
+    ]
     decay = [np.exp(-qj * m.thickness) for qj, m in zip(q, layers(media), strict=False)]
     ends = [_ends(f, k, a, b) for f, k, a, b in zip(profiles, kappa, steep, beat, strict=True)]
+    per_pair = [_NONE] * len(media)
+    for j, (m, n) in enumerate(zip(media, pairs, strict=True)):
+        if m.carriers is not None and n is not None:
+            held = m.carriers.gap
+            per_pair[j] = held * m.carriers.rate / (capacity[j] * s - kappa[j] * n.q * n.q)
+            ends[j] = _with_pairs(ends[j], n, per_pair[j], kappa[j], held * m.carriers.surface)
     below = ascend(y, decay, resistance, ends)
     load = _liquid_load(ambient, s)
     down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends)
-    amplitudes = zip(q, anchored(decay, media), down, up, steep, beat, lattice, strict=True)
+    amplitudes = zip(q, anchored(decay, media), down, up, steep, beat, lattice, pairs, per_pair, strict=True)
     fields = [HeatField(*parts) for parts in amplitudes]
     if isinstance(load, float):
         return fields, None
     return fields, down[0] + below.gamma[0] * down[0] + below.beta[0] + ends[0].u_top
+
+
+def _heating(given: CarrierConstants | None, n: Pairs | None, pulse: Complex) -> tuple[Complex, Complex]:
+    """Heat per absorbed profile in its two parts: at once, and as pairs recombine."""
+    if given is None or n is None:
+        return pulse, pulse
+    prompt = pulse * (1 - given.gap / given.photon)
+    held = given.gap * given.rate
+    return prompt + held * n.steep, prompt + held * n.beat
+
+
+def _with_pairs(end: Ends, n: Pairs, per_pair: Complex, kappa: Array, surface: Array) -> Ends:
+    """Add the pairs' diffusing part to the ends, and the heat of those that recombine at the top."""
+    down_top, down_bottom, up_top, up_bottom = (per_pair * part for part in n.ends)
+    slope = kappa * n.q
+    return Ends(
+        u_top=end.u_top + down_top + up_top,
+        f_top=end.f_top + slope * (down_top - up_top) - surface * n.at_top,
+        u_bottom=end.u_bottom + down_bottom + up_bottom,
+        f_bottom=end.f_bottom + slope * (down_bottom - up_bottom),
+    )
 
 
 def _capacity(m: Medium, s: Complex) -> tuple[Complex, Complex]:

@@ -68,6 +68,12 @@ def in_stage_time(sample: Sample, factor: Array) -> Sample:
 
 
 def _scaled(part: _Part, powers: Mapping[str, int], factor: Array) -> _Part:
+    if isinstance(part, Medium) and part.carriers is not None:
+        c = part.carriers
+        slow = replace(
+            c, diffusivity=c.diffusivity * factor, rate=c.rate * factor, surface=c.surface * factor
+        )
+        part = replace(part, carriers=slow)
     present = {name: power for name, power in powers.items() if getattr(part, name) is not None}
     return replace(part, **{name: getattr(part, name) * factor**power for name, power in present.items()})
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import lru_cache
 from typing import Any
 
@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from inverse.description.cuts import COMPONENTS
 from inverse.description.places import BoundStack, Slots
 from inverse.description.quantities import QUANTITIES
+from inverse.response.carriers import CarrierConstants
 from inverse.response.flaws import Imperfection
 from inverse.response.recursion import OPEN
 from inverse.response.solids import DepthElastic
@@ -47,6 +48,10 @@ class Medium:
         Power-law loss, ps and dimensionless.
     inverse_quality, quality_frequency : array
         1/Q and the angular frequency in rad/ps at which the modulus is stated.
+    electron_stress : array
+        Stress coefficient of the electrons' own temperature, GPa/K.
+    carriers : CarrierConstants, optional
+        Of a semiconductor.
     """
 
     thickness: Array
@@ -63,6 +68,8 @@ class Medium:
     loss_exponent: Array
     inverse_quality: Array
     quality_frequency: Array
+    electron_stress: Array = field(default_factory=lambda: np.zeros((1, 1)))
+    carriers: CarrierConstants | None = None
 
 
 @dataclass(frozen=True)
@@ -222,6 +229,19 @@ def _medium(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Med
         loss_exponent=one["attenuation_exponent"],
         inverse_quality=inverse_quality,
         quality_frequency=one["quality_frequency"],
+        electron_stress=one["electron_gruneisen"] * one["electron_heat_capacity"],
+        carriers=_carriers(one) if "band_gap" in one else None,
+    )
+
+
+def _carriers(one: Mapping[str, Array]) -> CarrierConstants:
+    return CarrierConstants(
+        photon=one["photon_energy"],
+        gap=one["band_gap"],
+        stress=-one["deformation_potential"],
+        diffusivity=one["carrier_diffusivity"],
+        rate=1 / one["carrier_lifetime"],
+        surface=one["surface_recombination"],
     )
 
 

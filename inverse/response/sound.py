@@ -6,11 +6,12 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.response.carriers import Pairs
 from inverse.response.flaws import Imperfection, flaw
 from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
@@ -24,6 +25,8 @@ Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
 _ONE = np.ones((1, 1), dtype=complex)
+
+_NONE = np.zeros((1, 1), dtype=complex)
 
 
 @dataclass(frozen=True)
@@ -42,6 +45,8 @@ class SoundField:
         Homogeneous amplitudes, nm.
     hot, steep, beat : array
         Strain of the diffusing heat per ``HeatField.down`` and ``up``, and of the absorbed profile's two parts.
+    paired : array
+        Strain per diffusing part of the photo-carriers.
     u_top, u_bottom : array
         Total displacement at both ends, nm (bottom: zero in the half-space).
     """
@@ -55,6 +60,7 @@ class SoundField:
     beat: Complex
     u_top: Complex
     u_bottom: Complex
+    paired: Complex = field(default_factory=lambda: _NONE)
 
 
 def modulus(m: Medium, s: Complex) -> Complex:
@@ -109,6 +115,8 @@ def sound_field(
     inertia = [m.density * s**2 for m in media]
     parts = [particular(*group) for group in zip(media, c, inertia, profiles, heat, strict=True)]
     ends = [particular_ends(*group) for group in zip(profiles, heat, parts, inertia, strict=True)]
+    paired = [_paired(*group) for group in zip(media, c, inertia, heat, strict=True)]
+    ends = [_with_pairs(e, h.pairs, n, i) for e, h, n, i in zip(ends, heat, paired, inertia, strict=True)]
     flaws = [
         flaw(given, k, s, above, lower)
         for given, k, above, lower in zip(imperfections, compliance, q, q[1:], strict=False)
@@ -117,8 +125,10 @@ def sound_field(
     load = s * (ambient.density * ambient.velocity) if ambient.density is not None else 0.0
     down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends, flaws)
     return [
-        SoundField(qj, e, a, b, *p, u_top=a + b * e + end.u_top, u_bottom=a * e + b + end.u_bottom)
-        for qj, e, a, b, p, end in zip(q, anchored(decay, media), down, up, parts, ends, strict=True)
+        SoundField(qj, e, a, b, *p, a + b * e + end.u_top, a * e + b + end.u_bottom, n)
+        for qj, e, a, b, p, end, n in zip(
+            q, anchored(decay, media), down, up, parts, ends, paired, strict=True
+        )
     ]
 
 
@@ -134,12 +144,37 @@ def particular(
     m: Medium, c: Complex, inertia: Complex, f: Absorption, heat: HeatField
 ) -> tuple[Complex, Complex, Complex]:
     """Return p^2 g times the thermal stress of the diffusing, exponential and interference parts."""
-    stress = m.stress * heat.lattice
+    stress = m.stress * heat.lattice + m.electron_stress
     q2, p2, x2 = heat.q * heat.q, f.p**2, -(f.x**2)
     hot = stress * q2 / (c * q2 - inertia)
-    steep = heat.steep * stress * (p2 / (c * p2 - inertia))
-    beat = heat.beat * stress * (x2 / (c * x2 - inertia))
-    return hot, steep, beat
+    steep, beat = heat.steep * stress, heat.beat * stress
+    if m.carriers is not None and heat.pairs is not None:
+        steep = steep + m.carriers.stress * heat.pairs.steep
+        beat = beat + m.carriers.stress * heat.pairs.beat
+    return hot, steep * (p2 / (c * p2 - inertia)), beat * (x2 / (c * x2 - inertia))
+
+
+def _paired(m: Medium, c: Complex, inertia: Complex, heat: HeatField) -> Complex:
+    """Return the strain per diffusing part of the photo-carriers, by their own stress and the heat they leave."""
+    if m.carriers is None or heat.pairs is None:
+        return _NONE
+    q2 = heat.pairs.q * heat.pairs.q
+    return (m.stress * heat.per_pair + m.carriers.stress) * q2 / (c * q2 - inertia)
+
+
+def _with_pairs(end: Ends, pairs: Pairs | None, paired: Complex, inertia: Complex) -> Ends:
+    """Add displacement and flux of the strain that the carriers' diffusing part makes."""
+    if pairs is None:
+        return end
+    u = paired / pairs.q
+    f = -inertia * u / pairs.q
+    down_top, down_bottom, up_top, up_bottom = pairs.ends
+    return Ends(
+        u_top=end.u_top + u * (up_top - down_top),
+        f_top=end.f_top + f * (down_top + up_top),
+        u_bottom=end.u_bottom + u * (up_bottom - down_bottom),
+        f_bottom=end.f_bottom + f * (down_bottom + up_bottom),
+    )
 
 
 def particular_ends(

@@ -17,6 +17,7 @@ from inverse.description.places import bind
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
 from inverse.response.basis import Beams, fields
+from inverse.response.carriers import Pairs
 from inverse.response.heat import HeatField
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.light import Absorption, absorption, light_field
@@ -158,12 +159,20 @@ class _Moved:
     def everything(self, z: Array, s: Complex) -> Complex:
         """Strain, elastic strain, lattice and electron temperature, one below the other."""
         strain, (lattice, electrons) = self.strain(z), self.heated(z)
-        elastic = strain - self.medium.stress * lattice / modulus(self.medium, s)
+        stress = self.medium.stress * lattice + self.medium.electron_stress * electrons
+        if self.medium.carriers is not None and self.heat.pairs is not None:
+            steep, beat = self._absorbed(z)
+            pairs = self._diffusing(self.heat.pairs, z)
+            pairs = pairs + self.heat.pairs.steep * steep + self.heat.pairs.beat * beat
+            stress = stress + self.medium.carriers.stress * pairs
+        elastic = strain - stress / modulus(self.medium, s)
         return np.concatenate([strain, elastic, lattice, electrons])
 
     def heated(self, z: Array) -> tuple[Complex, Complex]:
         """Lattice and electron temperature at depths below the medium's top, shape (depths, frequencies)."""
-        hot = self._diffusing(z)
+        hot = self._diffusing(self.heat, z)
+        if self.heat.pairs is not None:
+            hot = hot + self.heat.per_pair * self._diffusing(self.heat.pairs, z)
         steep, beat = self._absorbed(z)
         electrons = hot + self.heat.steep * steep + self.heat.beat * beat
         return self.heat.lattice * electrons, electrons
@@ -173,9 +182,10 @@ class _Moved:
         steep, beat = self._absorbed(z)
         down, up = self._both_ways(self.sound.q, z)
         ringing = self.sound.q * (self.sound.up * up - self.sound.down * down)
-        return (
-            ringing + self.sound.hot * self._diffusing(z) + self.sound.steep * steep + self.sound.beat * beat
-        )
+        strain = ringing + self.sound.hot * self._diffusing(self.heat, z)
+        if self.heat.pairs is not None:
+            strain = strain + self.sound.paired * self._diffusing(self.heat.pairs, z)
+        return strain + self.sound.steep * steep + self.sound.beat * beat
 
     def _both_ways(self, q: Complex, z: Array) -> tuple[Complex, Complex]:
         """``exp(-q z)`` and ``exp(-q (d - z))``, the latter zero in the half-space."""
@@ -185,9 +195,9 @@ class _Moved:
             return np.exp(-q * column), np.zeros_like(q)
         return np.exp(-q * column), np.exp(-q * (thickness - column))
 
-    def _diffusing(self, z: Array) -> Complex:
-        down, up = self._both_ways(self.heat.q, z)
-        return self.heat.down * down + self.heat.up * up
+    def _diffusing(self, field: HeatField | Pairs, z: Array) -> Complex:
+        down, up = self._both_ways(field.q, z)
+        return field.down * down + field.up * up
 
     def _absorbed(self, z: Array) -> tuple[Complex, Complex]:
         """Exponential and interference part of the absorbed profile."""

@@ -1,0 +1,149 @@
+"""What launches sound beside the lattice's heat: hot electrons and photo-carriers, against the time-domain solver."""
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+import inverse as inv
+from inverse.response.strain_map import strain_map
+
+from . import face
+from .samples import Experiment, Joint, Sample
+from .time_domain import simulate
+from .transfer_matrices import Beam
+
+DELAY = np.arange(-1.5, 40, 0.1)
+EXPERIMENT = Experiment(Beam(400.0), Beam(800.0), 0.3)
+EV = 0.1602176634  # GPa nm^3
+PHOTON = 1239.841984 / 400.0  # eV
+
+# A semiconductor with everything at once: strong diffusion, a short life, a surface that recombines
+GAP, POTENTIAL = 1.4, -9.0
+CARRIERS = {
+    "band_gap": GAP,
+    "deformation_potential": POTENTIAL,
+    "carrier_diffusivity": 0.2,
+    "carrier_lifetime": 15.0,
+    "surface_recombination": 2e5,
+}
+PAIRS = {
+    "carrier_energy": PHOTON * EV,
+    "prompt_heat": 1 - GAP / PHOTON,
+    "carrier_stress": -POTENTIAL * EV,
+    "carrier_diffusivity": 20.0,
+    "carrier_lifetime": 15.0,
+    "surface_recombination": 2.0,
+}
+
+
+def agree(sample, found, plain, at_pulse=3e-4, late=1e-4, step=0.01):
+    solved = simulate(sample, EXPERIMENT, DELAY, step)
+    for name, expected in (
+        ("reflectance_change", solved.reflectance_change),
+        ("optical_phase", solved.phase),
+    ):
+        error = np.abs(found[name].values - expected) / np.abs(expected).max()
+        assert error.max() < at_pulse, name
+        assert error[DELAY > 2].max() < late, name
+        assert np.abs(plain[name] - expected)[DELAY > 2].max() > 2e-3 * np.abs(expected).max()
+
+
+def trace(sample, media=None):
+    return inv.simulate(face.stack(sample, media=media), face.setup(EXPERIMENT), DELAY)
+
+
+@pytest.fixture(scope="module")
+def dark(si):
+    """Silicon-like, absorbing 400 nm light within 20 nm."""
+    return replace(si, n_pump=5.0 + 1.6j)
+
+
+def test_electron_pressure(al, si):
+    hot = replace(al, thickness=47.0, electron_heat_capacity=3e-5, electron_phonon_coupling=2.5e-4)
+    sample = Sample(
+        (replace(hot, electron_stress=1.6 * 3e-5), si), (Joint(compliance=0.02, conductance=1e-4),)
+    )
+    found = trace(sample, {0: {"electron_gruneisen": 1.6}})
+    agree(sample, found, trace(sample))
+
+
+def test_carriers_in_a_bare_semiconductor(dark):
+    sample = Sample((replace(dark, **PAIRS),))
+    agree(sample, trace(sample, {0: CARRIERS}), trace(sample))
+
+
+def test_carriers_in_a_film_and_in_what_lies_below(dark, al, si):
+    # Two layers hold pairs of their own, which do not cross; light reaches both
+    film = replace(dark, thickness=25.0, **PAIRS)
+    slow = {**PAIRS, "carrier_diffusivity": 2.0, "carrier_lifetime": np.inf, "surface_recombination": 0.0}
+    below = replace(dark, thickness=60.0, **slow)
+    sample = Sample((film, below, si), (Joint(compliance=0.02, conductance=2e-4), Joint()))
+    still = {**CARRIERS, "carrier_diffusivity": 0.02}
+    still = {k: v for k, v in still.items() if k not in ("carrier_lifetime", "surface_recombination")}
+    agree(sample, trace(sample, {0: CARRIERS, 1: still}), trace(sample))
+
+
+def test_carriers_under_a_metal(dark, al):
+    # Light leaks through 8 nm of metal; the semiconductor's top is buried and recombines
+    sample = Sample((replace(al, thickness=8.0), replace(dark, **PAIRS)), (Joint(conductance=2e-4),))
+    agree(sample, trace(sample, {1: CARRIERS}), trace(sample))
+
+
+def test_a_vanishing_lifetime_is_plain_heating(dark):
+    # Pairs that recombine where they were made, at once, leave all their energy there
+    sample = Sample((dark,))
+    quick = {"band_gap": GAP, "carrier_diffusivity": 1e-4, "carrier_lifetime": 1e-2}
+    found, plain = trace(sample, {0: quick}), trace(sample)
+    scale = np.abs(plain.reflectance_change).max()
+    assert np.abs(found.reflectance_change - plain.reflectance_change)[DELAY > 2].max() < 5e-4 * scale  # 0.01 ps late
+    assert np.abs(found.reflectance_change - plain.reflectance_change).max() < 2e-2 * scale
+
+
+def test_no_pressure_of_electrons_is_the_plain_metal(al, si):
+    hot = replace(al, thickness=47.0, electron_heat_capacity=3e-5, electron_phonon_coupling=2.5e-4)
+    sample = Sample((hot, si), (Joint(),))
+    zero, plain = trace(sample, {0: {"electron_gruneisen": 0.0}}), trace(sample)
+    np.testing.assert_array_equal(zero.reflectance_change, plain.reflectance_change)
+
+
+def test_semiconductors_launch_mostly_by_deformation_potential():
+    # Common practice: in GaAs the pairs' stress exceeds the heat's. dE_gap / d strain = -9 eV along [100] and the
+    # carriers' constants are round numbers from memory; heat's are the reference tables'.
+    carriers = {"band_gap": 1.42, "carrier_diffusivity": 20.0, "deformation_potential": -9.0}
+    setup = inv.PumpProbe(pump=800, probe=800, pulse_rms=0.2)
+    peaks = []
+    for more in ({**carriers, "deformation_potential": 0.0}, carriers):
+        stack = inv.Stack(inv.Substrate("GaAs", orientation="100", **more))
+        peaks.append(np.abs(strain_map(stack, setup, [60.0], np.linspace(1, 1500, 800)).elastic_strain).max())
+    assert peaks[1] > 3 * peaks[0]
+
+
+def test_the_stretch_of_pairs_is_in_the_map(dark):
+    # Far from any wave, at rest: c eta = beta T - a N; with a frozen cloud of pairs the strain is theirs
+    frozen = {**CARRIERS, "carrier_diffusivity": 1e-4}
+    frozen = {k: v for k, v in frozen.items() if k not in ("carrier_lifetime", "surface_recombination")}
+    stack = face.stack(Sample((replace(dark, thermal_stress=0.0),)), media={0: frozen})
+    found = strain_map(stack, face.setup(EXPERIMENT), [30.0], [5.0, 40.0])
+    alpha = 4 * np.pi * 1.6 / 400.0
+    absorbed = 1 - abs((1 - (5.0 + 1.6j)) / (1 + 5.0 + 1.6j)) ** 2
+    density = absorbed * alpha * np.exp(-alpha * np.array([5.0, 40.0])) / (PHOTON * EV)
+    expected = -POTENTIAL * EV * density / dark.modulus
+    np.testing.assert_allclose(found.strain[:, 0], expected, rtol=1e-3)
+    assert np.abs(found.elastic_strain).max() < 1e-3 * expected.max()
+
+
+@pytest.mark.parametrize(
+    ("more", "message"),
+    [
+        ({"band_gap": 1.4}, "has a band_gap but no carrier_diffusivity"),
+        ({"carrier_lifetime": 10.0}, "m0 has carrier_lifetime but no band_gap"),
+        (
+            {"band_gap": 5.0, "carrier_diffusivity": 1.0},
+            r"band_gap = 5 eV, more than a photon of 400 nm \(3\.1 eV\)",
+        ),
+    ],
+)
+def test_carriers_half_described_are_refused(dark, more, message):
+    with pytest.raises(ValueError, match=message):
+        trace(Sample((dark,)), {0: more})
