@@ -37,6 +37,8 @@ class Layer:
         Reference name or a material of the user's.
     thickness : float, frozen scipy.stats distribution or Unknown
         Thickness in nm.
+    thickness_spread : float, frozen scipy.stats distribution or Unknown
+        Rms variation of the thickness under the spot in nm.
     orientation : str or array_like, shape (3,), optional
         Cut of a single crystal: for reference materials that need one, and with ``stiffness`` any direction.
     **overrides
@@ -58,12 +60,21 @@ class Layer:
     material: Material
     thickness: Any
     density_ratio: Any
+    thickness_spread: Any
 
     def __init__(
-        self, material: str | Material, *, thickness: Any, orientation: Any = None, **overrides: Any
+        self,
+        material: str | Material,
+        *,
+        thickness: Any,
+        thickness_spread: Any = 0.0,
+        orientation: Any = None,
+        **overrides: Any,
     ) -> None:
         checked("thickness", thickness, _name_of(material))
+        checked("thickness_spread", thickness_spread, _name_of(material))
         object.__setattr__(self, "thickness", thickness)
+        object.__setattr__(self, "thickness_spread", thickness_spread)
         _fill_medium(self, material, orientation, overrides)
 
 

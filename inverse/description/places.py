@@ -200,6 +200,9 @@ def _substrate_slots(place: str, part: Medium, setup: PumpProbe) -> Slots:
 def _layer_slots(place: str, part: Layer, setup: PumpProbe, below: Slot | None) -> Slots:
     """Fill the places of a layer; `below` is the substrate's density."""
     slots = {"thickness": slot_of("thickness", part.thickness, place, "given by the user", 0.0)}
+    spread = slot_of("thickness_spread", part.thickness_spread, place, "given by the user", 0.0)
+    if spread.value != 0.0:
+        slots["thickness_spread"] = spread
     if part.density_ratio is None:
         slots |= _density_slot(place, part.material)
     elif below is None:

@@ -76,6 +76,15 @@ QUANTITIES: dict[str, Quantity] = {
     for q in (
         Quantity("thickness", "nm", "d", 0.1, 1e6, "layer thickness", suspect="m or um"),
         Quantity(
+            "thickness_spread",
+            "nm",
+            r"\sigma_d",
+            0.0,
+            1e3,
+            "rms of the thickness under the spot",
+            suspect="m",
+        ),
+        Quantity(
             "velocity", "nm/ps", "v", 0.1, 50.0, "longitudinal sound velocity along the depth", suspect="m/s"
         ),
         Quantity("density", "g/cm3", r"\rho", 1e-3, 30.0, "mass density", suspect="kg/m3"),
@@ -139,9 +148,7 @@ QUANTITIES: dict[str, Quantity] = {
             "electron pressure over the electrons' heat content",
         ),
         Quantity("band_gap", "eV", "E_g", 0.01, 15.0, "energy of an electron-hole pair", 0.1602176634),
-        Quantity(
-            "photon_energy", "eV", r"h\nu", 0.01, 200.0, "energy of a photon of the pump", 0.1602176634
-        ),
+        Quantity("photon_energy", "eV", r"h\nu", 0.01, 200.0, "energy of a photon of the pump", 0.1602176634),
         Quantity(
             "deformation_potential",
             "eV",

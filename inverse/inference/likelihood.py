@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -14,10 +14,11 @@ from inverse.inference.noise import Noise
 from inverse.inference.robust import eliminate_student, gaussian_noise, student_residuals
 from inverse.inference.tied import tie
 from inverse.response.basis import PORTS, Beams, Columns, basis, take
-from inverse.response.instrument import drift, measured_sample
+from inverse.response.instrument import drift
 from inverse.response.inverse_laplace import TimeGrid, time_grid
 from inverse.response.media import Sample
 from inverse.response.pulse_train import PulseTrain, residual
+from inverse.response.spread import under_the_spot
 
 __all__ = ["Channel", "TraceModel"]
 
@@ -149,9 +150,9 @@ class TraceModel:
         """
         grid = grid or self.grid
         sets = len(next(iter(values.values())))
-        batch = measured_sample(self.bound, values)
+        batches = under_the_spot(self.bound, values)
         ports = dict.fromkeys(PORTS[c.name] for c in self.channels)
-        seen = {port: self._seen(port, batch, values, grid, sets) for port in ports}
+        seen = {port: self._mean(port, batches, values, grid, sets) for port in ports}
         scale = self.widths[:, None]
         out = {}
         for i, channel in enumerate(self.channels):
@@ -162,7 +163,22 @@ class TraceModel:
             out[channel.name] = np.concatenate([rows * scale, offsets], axis=1)
         return out
 
-    def _seen(self, port: str, batch: Sample, values: Mapping[str, Array], grid: TimeGrid, sets: int) -> Array:
+    def _mean(
+        self,
+        port: str,
+        batches: Sequence[tuple[float, Sample]],
+        values: Mapping[str, Array],
+        grid: TimeGrid,
+        sets: int,
+    ) -> Array:
+        """Return the basis of a port, averaged over what lies under the spot."""
+        if len(batches) == 1:
+            return self._seen(port, batches[0][1], values, grid, sets)
+        return np.sum([w * self._seen(port, batch, values, grid, sets) for w, batch in batches], axis=0)
+
+    def _seen(
+        self, port: str, batch: Sample, values: Mapping[str, Array], grid: TimeGrid, sets: int
+    ) -> Array:
         """Return the basis of a port as the bench measures it."""
         zero = values["time_zero"][:, None]
         parts = basis(batch, self.beams, grid, zero, self.layout, sets, port)

@@ -16,10 +16,11 @@ from inverse.description.places import BoundStack, bind
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
 from inverse.response.basis import CHANNELS, PORTS, columns, displaced, fields
-from inverse.response.instrument import drift, measured_sample
+from inverse.response.instrument import drift
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.media import Sample
 from inverse.response.pulse_train import PulseTrain, pulse_train, residual
+from inverse.response.spread import under_the_spot
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -83,15 +84,17 @@ def simulate(
     bound = bind(stack, setup)
     known = _known(bound, values or {})
     grid = time_grid(delay, setup.pulse_rms, earliest=time_zero)
-    batch = measured_sample(bound, known)
+    batches = under_the_spot(bound, known)
     warn_if_not_plane(stack, setup, float(delay.max()) - time_zero)
     strange = sorted(set(channels) - set(CHANNELS))
     if strange or not channels:
         raise ValueError(f"simulate got channels={tuple(channels)!r}; give some of {', '.join(CHANNELS)}.")
-    one = _Run(stack, setup, bound, batch, grid, time_zero)
+    runs = [(weight, _Run(stack, setup, bound, batch, grid, time_zero)) for weight, batch in batches]
     signals = {}
     for port in dict.fromkeys(PORTS[channel] for channel in channels):
-        found, names = one.parts(port)
+        seen = [(weight, *run.parts(port)) for weight, run in runs]
+        names = seen[0][2]
+        found = np.sum([weight * part for weight, part, _ in seen], axis=0)
         found *= setup.fluence * drift(bound, known, delay[None] - time_zero)[0]
         for channel in channels:
             if PORTS[channel] == port:

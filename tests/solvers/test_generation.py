@@ -96,7 +96,9 @@ def test_a_vanishing_lifetime_is_plain_heating(dark):
     quick = {"band_gap": GAP, "carrier_diffusivity": 1e-4, "carrier_lifetime": 1e-2}
     found, plain = trace(sample, {0: quick}), trace(sample)
     scale = np.abs(plain.reflectance_change).max()
-    assert np.abs(found.reflectance_change - plain.reflectance_change)[DELAY > 2].max() < 5e-4 * scale  # 0.01 ps late
+    assert (
+        np.abs(found.reflectance_change - plain.reflectance_change)[DELAY > 2].max() < 5e-4 * scale
+    )  # 0.01 ps late
     assert np.abs(found.reflectance_change - plain.reflectance_change).max() < 2e-2 * scale
 
 
