@@ -209,6 +209,17 @@ def test_one_colour_in_a_transparent_layer(n_imag, ambient):
     close(found[0], parts(clear, pump=800.0, probe=800.0, groups=groups)[0], 3e-8 + 3e2 * n_imag)
 
 
+def test_response_is_proportional_to_the_absorption_of_an_almost_transparent_film():
+    # One colour, nothing else absorbs: what the film's own heat does to its own light goes as n''
+    def per_absorption(n_imag):
+        n = 1.47 + 1j * n_imag
+        film = crystal(120.0, n_pump=n, n_probe=n)
+        base = crystal(n_pump=3.5 + 0j, n_probe=3.5 + 0j)
+        return parts(stacked(film, base), pump=800.0, probe=800.0)[0, :4] / n_imag
+
+    close(per_absorption(1e-12), per_absorption(1e-6), 1e-5)
+
+
 def test_colours_almost_equal_are_as_equal_ones():
     film = crystal(120.0, n_pump=2 + 0.1j, n_probe=2 + 0.1j)
     stack = stacked(film, crystal())

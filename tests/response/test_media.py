@@ -95,6 +95,7 @@ def test_unknowns_make_a_batch():
     ]
     np.testing.assert_allclose(found.thickness[:, 0], [55.0, 61.0])
     np.testing.assert_allclose(found.density[:, 0], [1.1 * 2.33, 1.2 * 2.33])
+    np.testing.assert_allclose(found.conductivity[:, 0], [0.15, 0.2])  # 1 GPa nm2/ps/K = 1000 W/m/K
     assert found.velocity.shape == (1, 1)
 
 
