@@ -11,7 +11,7 @@ import numpy as np
 from inverse.description.places import Slot
 from inverse.description.quantities import QUANTITIES, quantity
 from inverse.description.reference_values import DEFAULT_SPREAD
-from inverse.response.inverse_laplace import time_grid
+from inverse.response.windows import delay_windows
 
 if TYPE_CHECKING:
     from inverse.inference.inversion import Inversion
@@ -133,7 +133,7 @@ def moved(member: Member, name: str, spreads: float) -> Member:
     if name != "pulse_rms":
         return replace(member, fixed={**member.fixed, name: value})
     model = member.model
-    grid = time_grid(model.delay[model.used], value, model.earliest)
+    grid = delay_windows(model.delay[model.used], value, model.earliest)
     return replace(member, model=replace(model, pulse_rms=value, grid=grid))
 
 

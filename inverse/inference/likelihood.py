@@ -15,10 +15,11 @@ from inverse.inference.robust import eliminate_student, gaussian_noise, student_
 from inverse.inference.tied import tie
 from inverse.response.basis import PORTS, Beams, Columns, basis, take
 from inverse.response.instrument import drift
-from inverse.response.inverse_laplace import TimeGrid, time_grid
+from inverse.response.inverse_laplace import TimeGrid
 from inverse.response.media import Sample
 from inverse.response.pulse_train import PulseTrain, residual
 from inverse.response.spread import under_the_spot
+from inverse.response.windows import Windows, delay_windows
 
 __all__ = ["Channel", "TraceModel"]
 
@@ -80,7 +81,7 @@ class TraceModel:
         All delays, ps.
     used : bool array
         Which delays are fitted.
-    grid : TimeGrid
+    grid : TimeGrid or Windows
         For the fitted delays.
     layout : Columns
     widths : array
@@ -98,7 +99,7 @@ class TraceModel:
     channels: tuple[Channel, ...]
     delay: Array
     used: NDArray[np.bool_]
-    grid: TimeGrid
+    grid: TimeGrid | Windows
     layout: Columns
     widths: Array
     pulse_rms: float
@@ -133,14 +134,16 @@ class TraceModel:
             np.concatenate([p.factor for p in parts]),
         )
 
-    def functions(self, values: Mapping[str, Array], grid: TimeGrid | None = None) -> dict[str, Array]:
+    def functions(
+        self, values: Mapping[str, Array], grid: TimeGrid | Windows | None = None
+    ) -> dict[str, Array]:
         """Return per channel the basis functions times their prior widths, baseline last.
 
         Parameters
         ----------
         values : mapping
             Unknown name -> array of shape (sets,).
-        grid : TimeGrid, optional
+        grid : TimeGrid or Windows, optional
             Other delays than the fitted ones.
 
         Returns
@@ -168,7 +171,7 @@ class TraceModel:
         port: str,
         batches: Sequence[tuple[float, Sample]],
         values: Mapping[str, Array],
-        grid: TimeGrid,
+        grid: TimeGrid | Windows,
         sets: int,
     ) -> Array:
         """Return the basis of a port, averaged over what lies under the spot."""
@@ -177,7 +180,7 @@ class TraceModel:
         return np.sum([w * self._seen(port, batch, values, grid, sets) for w, batch in batches], axis=0)
 
     def _seen(
-        self, port: str, batch: Sample, values: Mapping[str, Array], grid: TimeGrid, sets: int
+        self, port: str, batch: Sample, values: Mapping[str, Array], grid: TimeGrid | Windows, sets: int
     ) -> Array:
         """Return the basis of a port as the bench measures it."""
         zero = values["time_zero"][:, None]
@@ -189,9 +192,9 @@ class TraceModel:
             parts = parts * drift(self.bound, values, grid.delay - zero)
         return parts
 
-    def at(self, delay: Array) -> TimeGrid:
+    def at(self, delay: Array) -> TimeGrid | Windows:
         """Return a grid for other delays."""
-        return time_grid(delay, self.pulse_rms, self.earliest)
+        return delay_windows(delay, self.pulse_rms, self.earliest)
 
     def predict(self, values: Mapping[str, Array], coefficients: Array, delay: Array) -> dict[str, Array]:
         """Return per channel the traces of given coefficients (in prior widths), shape (sets, delays)."""

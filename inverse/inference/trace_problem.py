@@ -20,9 +20,9 @@ from inverse.inference.reach import refuse_what_no_trace_can_tell
 from inverse.inference.scans import relative_noise
 from inverse.inference.tied import tie
 from inverse.response.basis import CHANNELS, PORTS, basis, columns, take
-from inverse.response.inverse_laplace import time_grid
 from inverse.response.media import sample
 from inverse.response.pulse_train import pulse_train
+from inverse.response.windows import delay_windows
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -156,7 +156,7 @@ def _trace_model(
     centre: float,
     early: float,
 ) -> TraceModel:
-    grid = time_grid(delay[used], setup.pulse_rms, early)
+    grid = delay_windows(delay[used], setup.pulse_rms, early)
     groups = [m for m in bound.materials] if not bound.ambient else ["ambient", *bound.materials]
     layout = columns(groups)
     middle = {

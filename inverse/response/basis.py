@@ -18,6 +18,7 @@ from inverse.response.media import Sample
 from inverse.response.port import Port, reflection, transmission
 from inverse.response.sound import SoundField
 from inverse.response.three_sound import ThreeSound
+from inverse.response.windows import Windows, rings_on, subset
 
 __all__ = [
     "CHANNELS",
@@ -152,7 +153,7 @@ def displaced(found: Fields) -> tuple[list[Complex], list[Complex]]:
 def basis(
     sample: Sample,
     beams: Beams,
-    grid: TimeGrid,
+    grid: TimeGrid | Windows,
     time_zero: Array,
     layout: Columns,
     sets: int,
@@ -166,8 +167,29 @@ def basis(
         Per group Re and Im of d(delta r / r)/dP, Re and Im of d(delta r / r)/dQ; then Re and Im of the
         displacement's, all for an incident fluence of 1 J/m2.
     """
+    if isinstance(grid, Windows):
+        return _in_two_windows(sample, beams, grid, time_zero, layout, sets, port)
     found = spectra(sample, beams, grid, layout, sets, port)
     return to_delays(grid, found, arrival(grid, time_zero))
+
+
+def _in_two_windows(
+    sample: Sample, beams: Beams, grid: Windows, time_zero: Array, layout: Columns, sets: int, port: str
+) -> Array:
+    found, arrived = spectra(sample, beams, grid.near, layout, sets, port), arrival(grid.near, time_zero)
+    out = np.empty((sets, found.shape[1], grid.delay.size))
+    out[..., grid.early] = to_delays(grid.near, found, arrived)
+    loud = rings_on(grid, sample, found, arrived)
+    for chosen, part, delays in (
+        (~loud, grid.far, ~grid.early),
+        (loud, grid.whole, np.full_like(grid.early, True)),
+    ):
+        if chosen.any():
+            some, zero = subset((sample, time_zero), chosen)
+            out[np.ix_(chosen, np.full(found.shape[1], True), delays)] = basis(
+                some, beams, part, zero, layout, int(chosen.sum()), port
+            )
+    return out
 
 
 def spectra(

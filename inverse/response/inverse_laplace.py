@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import fft, sparse
 
-__all__ = ["LaplaceGrid", "TimeGrid", "powers", "time_grid", "to_delays"]
+__all__ = ["LaplaceGrid", "TimeGrid", "powers", "time_grid", "to_delays", "window_grid"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
@@ -102,7 +102,24 @@ def time_grid(delay: Array, pulse_rms: float, earliest: float, stretch: float = 
         )
     origin = min(float(delay.min()), earliest) - 8 * pulse_rms - 1.0
     window = max(float(delay.max()) - origin, 20 * pulse_rms) * stretch
-    count = _RADIX * int(np.ceil(_CUTOFF / pulse_rms / (2 * np.pi / window) / _RADIX))
+    return window_grid(delay, pulse_rms, origin, window, _CUTOFF / pulse_rms)
+
+
+def window_grid(delay: Array, pulse_rms: float, origin: float, window: float, highest: float) -> TimeGrid:
+    """Lay out a grid on a given window.
+
+    Parameters
+    ----------
+    delay : array, shape (delays,)
+        ps, inside the window.
+    pulse_rms : float
+        ps.
+    origin, window : float
+        Beginning and length, ps.
+    highest : float
+        Angular frequency beyond which there is nothing, rad/ps.
+    """
+    count = _RADIX * int(np.ceil(highest / (2 * np.pi / window) / _RADIX))
     size = int(fft.next_fast_len(int(np.ceil(_OVERSAMPLING * count)), real=True))
     step = window / size
     gamma = np.log(_DAMPING) / window
