@@ -89,10 +89,17 @@ def test_limits_are_finite():
 
 
 def test_unknowns_make_a_batch():
-    values = {"film.thickness": [55.0, 61.0], "film.density_ratio": [1.1, 1.2]}
-    found = batch(values=values, thickness=stats.uniform(50, 20), density_ratio=stats.norm(1.16, 0.05)).media[
-        0
-    ]
+    values = {
+        "film.thickness": [55.0, 61.0],
+        "film.density_ratio": [1.1, 1.2],
+        "film.conductivity": [150.0, 200.0],
+    }
+    priors = {
+        "thickness": stats.uniform(50, 20),
+        "density_ratio": stats.norm(1.16, 0.05),
+        "conductivity": stats.loguniform(50, 250),
+    }
+    found = batch(values=values, **priors).media[0]
     np.testing.assert_allclose(found.thickness[:, 0], [55.0, 61.0])
     np.testing.assert_allclose(found.density[:, 0], [1.1 * 2.33, 1.2 * 2.33])
     np.testing.assert_allclose(found.conductivity[:, 0], [0.15, 0.2])  # 1 GPa nm2/ps/K = 1000 W/m/K
