@@ -20,6 +20,7 @@ _HOMES = {
     "Interface": "description.stack",
     "Repeat": "description.stack",
     "Graded": "description.stack",
+    "stressed": "description.profiles",
     "Stack": "description.stack",
     "PumpProbe": "description.pumpprobe",
     "Unknown": "description.unknowns",

@@ -1,4 +1,4 @@
-"""Places of the photo-carriers of a semiconductor."""
+"""Places of what launches sound beside heat: photo-carriers, and a stress given by the user."""
 
 from __future__ import annotations
 
@@ -8,7 +8,7 @@ from inverse.description.materials import Material
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.slots import Slot, Slots, slot_of
 
-__all__ = ["CARRIERS", "carrier_slots"]
+__all__ = ["CARRIERS", "carrier_slots", "initial_stress_slots"]
 
 CARRIERS = (
     "band_gap",
@@ -58,3 +58,16 @@ def carrier_slots(place: str, material: Material, setup: PumpProbe) -> Slots:
             f"({photon:.4g} eV) has; leave it out where the pump makes no carriers."
         )
     return slots
+
+
+def initial_stress_slots(place: str, material: Material) -> Slots:
+    """Return the places of a stress that the pulse sets up by itself; none where there is none."""
+    if material.initial_stress is None:
+        return {}
+    lifetime = np.inf if material.initial_stress_lifetime is None else material.initial_stress_lifetime
+    return {
+        "initial_stress": slot_of("initial_stress", material.initial_stress, place, "given by the user", 0.0),
+        "initial_stress_lifetime": slot_of(
+            "initial_stress_lifetime", lifetime, place, "given by the user", 0.0
+        ),
+    }

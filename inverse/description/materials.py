@@ -33,6 +33,8 @@ _REAL = (
     "carrier_diffusivity",
     "carrier_lifetime",
     "surface_recombination",
+    "initial_stress",
+    "initial_stress_lifetime",
     "attenuation_time",
     "attenuation_exponent",
     "quality_factor",
@@ -85,6 +87,9 @@ class Material:
     carrier_diffusivity, carrier_lifetime, surface_recombination : float
         Ambipolar diffusivity in cm2/s, lifetime in ps (default inf), and the velocity of recombination at the top of
         the medium in cm/s (default 0).
+    initial_stress, initial_stress_lifetime : float
+        Stress that the pulse sets up by itself, screening a piezoelectric field for instance: GPa per J/m2 of incident
+        fluence, positive where it expands the medium, and its lifetime in ps (default inf). See `stressed`.
     attenuation_time, attenuation_exponent : float
         Acoustic loss c = rho v^2 (1 + (s tau)^y): tau in ps and y from 0 to 1.
     quality_factor, quality_frequency : float
@@ -140,6 +145,8 @@ class Material:
     carrier_diffusivity: Any = None
     carrier_lifetime: Any = None
     surface_recombination: Any = None
+    initial_stress: Any = None
+    initial_stress_lifetime: Any = None
     attenuation_time: Any = None
     attenuation_exponent: Any = None
     quality_factor: Any = None

@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.description.carriers import carrier_slots
+from inverse.description.carriers import carrier_slots, initial_stress_slots
 from inverse.description.cuts import cut_slots, depth_slots, is_cut, is_oblique
 from inverse.description.instrument import instrument_slots
 from inverse.description.materials import Material
@@ -266,7 +266,8 @@ def _material_slots(place: str, material: Material, setup: PumpProbe, slots: Slo
             if value is None
             else _field_slot(place, material, field, value)
         )
-    return slots | carrier_slots(place, material, setup) | _light_slots(place, material, setup)
+    slots |= carrier_slots(place, material, setup) | initial_stress_slots(place, material)
+    return slots | _light_slots(place, material, setup)
 
 
 def _light_slots(place: str, material: Material, setup: PumpProbe) -> Slots:

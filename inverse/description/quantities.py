@@ -168,6 +168,23 @@ QUANTITIES: dict[str, Quantity] = {
             "surface_recombination", "cm/s", "S", 0.0, 1e9, "velocity of recombination at the top", 1e-5
         ),
         Quantity(
+            "initial_stress",
+            "GPa m2/J",
+            "S_0",
+            -1e6,
+            1e6,
+            "stress that the pulse sets up, per incident fluence",
+        ),
+        Quantity(
+            "initial_stress_lifetime",
+            "ps",
+            r"\tau_S",
+            1e-2,
+            _INF,
+            "lifetime of the initial stress",
+            suspect="s",
+        ),
+        Quantity(
             "attenuation_time", "ps", r"\tau_a", 0.0, 1e3, "time constant of the acoustic loss", suspect="s"
         ),
         Quantity("attenuation_exponent", "1", "y", 0.0, 1.0, "loss modulus grows as frequency to this power"),

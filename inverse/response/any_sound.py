@@ -33,11 +33,20 @@ def any_sound(
     heat: Sequence[HeatField],
     s: Complex,
     powers: Callable[[Array], Complex],
+    source: Complex,
 ) -> Sequence[SoundField | ThreeSound]:
     """Solve for the displacement of every medium; see `sound_field` and `three_sound_field`."""
     if sample.solids is None:
         return sound_field(
-            sample.media, sample.compliance, sample.ambient, profiles, heat, s, powers, sample.imperfections
+            sample.media,
+            sample.compliance,
+            sample.ambient,
+            profiles,
+            heat,
+            s,
+            powers,
+            sample.imperfections,
+            source,
         )
     joints = [
         interface_compliance(normal, tangential)

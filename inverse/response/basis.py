@@ -117,7 +117,7 @@ def fields(
     profiles = [absorption(pump, j) for j in range(len(media))]
     source = np.ones((1, 1), dtype=complex) if time_zero is None else arrival(grid, time_zero)
     heat, liquid = heat_field(media, sample.resistance, sample.ambient, profiles, grid.s, source)
-    sound = any_sound(sample, profiles, heat, grid.s, lambda t: powers(grid, t))
+    sound = any_sound(sample, profiles, heat, grid.s, lambda t: powers(grid, t), source)
     detected = [
         any_response(seen, j, m.thickness, *trio)
         for j, (m, trio) in enumerate(zip(media, zip(profiles, heat, sound, strict=True), strict=True))

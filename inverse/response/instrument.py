@@ -74,6 +74,8 @@ def _scaled(part: _Part, powers: Mapping[str, int], factor: Array) -> _Part:
             c, diffusivity=c.diffusivity * factor, rate=c.rate * factor, surface=c.surface * factor
         )
         part = replace(part, carriers=slow)
+    if isinstance(part, Medium) and part.initial is not None:
+        part = replace(part, initial=replace(part.initial, rate=part.initial.rate * factor))
     present = {name: power for name, power in powers.items() if getattr(part, name) is not None}
     return replace(part, **{name: getattr(part, name) * factor**power for name, power in present.items()})
 

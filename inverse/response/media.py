@@ -25,6 +25,14 @@ Complex = NDArray[np.complex128]
 
 
 @dataclass(frozen=True)
+class InitialStress:
+    """Stress that the pulse sets up uniformly in a medium: GPa per J/m2, and its inverse lifetime in 1/ps."""
+
+    stress: Array
+    rate: Array
+
+
+@dataclass(frozen=True)
 class Medium:
     """One layer or the half-space in coherent units; every array has shape (sets or 1, 1).
 
@@ -52,6 +60,7 @@ class Medium:
         Stress coefficient of the electrons' own temperature, GPa/K.
     carriers : CarrierConstants, optional
         Of a semiconductor.
+    initial : InitialStress, optional
     """
 
     thickness: Array
@@ -70,6 +79,7 @@ class Medium:
     quality_frequency: Array
     electron_stress: Array = field(default_factory=lambda: np.zeros((1, 1)))
     carriers: CarrierConstants | None = None
+    initial: InitialStress | None = None
 
 
 @dataclass(frozen=True)
@@ -231,7 +241,12 @@ def _medium(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Med
         quality_frequency=one["quality_frequency"],
         electron_stress=one["electron_gruneisen"] * one["electron_heat_capacity"],
         carriers=_carriers(one) if "band_gap" in one else None,
+        initial=_initial(one) if "initial_stress" in one else None,
     )
+
+
+def _initial(one: Mapping[str, Array]) -> InitialStress:
+    return InitialStress(one["initial_stress"], 1 / one["initial_stress_lifetime"])
 
 
 def _carriers(one: Mapping[str, Array]) -> CarrierConstants:

@@ -102,7 +102,7 @@ def ascend(
         below = y[j + 1] if gamma[0] is _ZERO else y[j + 1] * (1 - gamma[0]) / (1 + gamma[0])
         shared = 1 / (1 + compliance[j] * below)
         w = below * shared
-        inverse = 1 / (y[j] + w)
+        inverse = np.reciprocal(y[j] + w)
         reflection.insert(0, (y[j] - w) * inverse)
         if ends is None:
             b = _ZERO

@@ -6,7 +6,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -87,6 +87,7 @@ def sound_field(
     s: Complex,
     powers: Callable[[Array], Complex],
     imperfections: Sequence[Imperfection] = (),
+    source: Complex = _NONE,
 ) -> list[SoundField]:
     """Solve for the displacement of every medium.
 
@@ -102,6 +103,8 @@ def sound_field(
         ``powers(t)`` is ``exp(-s t)`` for t of shape (sets, 1), cheap on the uniform grid.
     imperfections : sequence of Imperfection, optional
         Of each interface.
+    source : complex array, optional
+        Transform of the pulse, where it sets up a stress of its own.
     """
     c = [off_resonance(m, modulus(m, s), f, h.q, s) for m, f, h in zip(media, profiles, heat, strict=True)]
     lossless = [cj.shape[1] == 1 for cj in c]
@@ -117,15 +120,18 @@ def sound_field(
     ends = [particular_ends(*group) for group in zip(profiles, heat, parts, inertia, strict=True)]
     paired = [_paired(*group) for group in zip(media, c, inertia, heat, strict=True)]
     ends = [_with_pairs(e, h.pairs, n, i) for e, h, n, i in zip(ends, heat, paired, inertia, strict=True)]
+    ends = [_with_initial(e, m, s, source) for e, m in zip(ends, media, strict=True)]
     flaws = [
         flaw(given, k, s, above, lower)
         for given, k, above, lower in zip(imperfections, compliance, q, q[1:], strict=False)
     ]
     below = ascend(y, decay, compliance, ends, flaws)
-    load = s * (ambient.density * ambient.velocity) if ambient.density is not None else 0.0
+    load: Complex | float = 0.0
+    if ambient.density is not None and ambient.velocity is not None:
+        load = s * (ambient.density * ambient.velocity)
     down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends, flaws)
     return [
-        SoundField(qj, e, a, b, *p, a + b * e + end.u_top, a * e + b + end.u_bottom, n)
+        SoundField(qj, e, a, b, p[0], p[1], p[2], a + b * e + end.u_top, a * e + b + end.u_bottom, n)
         for qj, e, a, b, p, end, n in zip(
             q, anchored(decay, media), down, up, parts, ends, paired, strict=True
         )
@@ -194,6 +200,14 @@ def particular_ends(
     )
     flux *= inertia[:, None]
     return Ends(u_top=u[:, 0], f_top=flux[:, 0], u_bottom=u[:, 1], f_bottom=flux[:, 1])
+
+
+def _with_initial(end: Ends, m: Medium, s: Complex, source: Complex) -> Ends:
+    """Add the flux of a uniform stress: it pushes at the ends only."""
+    if m.initial is None:
+        return end
+    stress = m.initial.stress * source / (s + m.initial.rate)
+    return replace(end, f_top=end.f_top + stress, f_bottom=end.f_bottom + stress)
 
 
 def _end_weights(f: Absorption) -> tuple[Array, Array]:

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from inverse.description.places import bind
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.stack import Stack
-from inverse.response.basis import Beams, fields
+from inverse.response.basis import Beams, arrival, fields
 from inverse.response.carriers import Pairs
 from inverse.response.heat import HeatField
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
@@ -155,6 +155,7 @@ class _Moved:
     profile: Absorption
     heat: HeatField
     sound: SoundField
+    source: Complex
 
     def everything(self, z: Array, s: Complex) -> Complex:
         """Strain, elastic strain, lattice and electron temperature, one below the other."""
@@ -165,6 +166,8 @@ class _Moved:
             pairs = self._diffusing(self.heat.pairs, z)
             pairs = pairs + self.heat.pairs.steep * steep + self.heat.pairs.beat * beat
             stress = stress + self.medium.carriers.stress * pairs
+        if self.medium.initial is not None:
+            stress = stress + self.medium.initial.stress * self.source / (s + self.medium.initial.rate)
         elastic = strain - stress / modulus(self.medium, s)
         return np.concatenate([strain, elastic, lattice, electrons])
 
@@ -215,7 +218,7 @@ def _moved(batch: Sample, beams: Beams, grid: TimeGrid, medium: int) -> _Moved:
         )
     pump = light_field(*batch.light("pump"), beams[0], batch.ambient.n_pump)
     profile = absorption(pump, medium)
-    return _Moved(media[medium], profile, found.heat[medium], sound)
+    return _Moved(media[medium], profile, found.heat[medium], sound, arrival(grid, np.zeros((1, 1))))
 
 
 def _in_time(grid: TimeGrid, spectra: Complex) -> Array:
