@@ -228,6 +228,10 @@ def _faces(place: str, whole: Graded, setup: PumpProbe) -> tuple[Slots, Slots]:
 def _slice_slots(place: str, part: Slice, faces: tuple[Slots, Slots]) -> Slots:
     """Blend the places of a graded layer's faces."""
     top, bottom = faces
+    if odd := sorted((set(top) ^ set(bottom)) - {"thickness"}):
+        raise ValueError(
+            f"{place} has {', '.join(odd)} on one face only; give it on both, 0 where there is none."
+        )
     thickness = Slot(
         top["thickness"].name, "thickness", np.nan, terms=((top["thickness"], 1 / part.whole.slices),)
     )

@@ -143,6 +143,13 @@ def test_one_infinite_face_is_refused():
         bind(Stack(Graded(cold, hot, thickness=10.0), BASE), SETUP)
 
 
+def test_a_field_of_one_face_is_refused():
+    plain = Material("a", **FIELDS, density=4.0, velocity=4.0)
+    charged = Material("b", **FIELDS, density=4.0, velocity=4.0, initial_stress=0.1)
+    with pytest.raises(ValueError, match="a-b has initial_stress, initial_stress_lifetime on one face only"):
+        bind(Stack(Graded(plain, charged, thickness=10.0), BASE), SETUP)
+
+
 def test_vacuum_below_has_an_index_and_nothing_else():
     bound = bind(Stack(Layer("Al", thickness=40.0), Substrate("vacuum")), SETUP)
     assert set(bound.media[-1]) == {"n_real_pump", "n_imag_pump", "n_real_probe", "n_imag_probe"}
