@@ -70,7 +70,9 @@ def _parser() -> argparse.ArgumentParser:
         "--out", default="inverse-result", help="folder for the results (default: %(default)s)"
     )
     parser.add_argument("--seed", type=int, default=1, help="seed of every draw (default: %(default)s)")
-    parser.add_argument("--noise", choices=("correlated", "white", "student"), default="correlated", help="noise model")
+    parser.add_argument(
+        "--noise", choices=("correlated", "white", "student"), default="correlated", help="noise model"
+    )
     parser.add_argument(
         "--ess", type=float, default=1000, help="effective sample size wanted (default: %(default)s)"
     )

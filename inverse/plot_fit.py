@@ -140,7 +140,9 @@ def channel_views(result: Any) -> tuple[ChannelView, ...]:
 def _views_of_tree(tree: Any) -> tuple[ChannelView, ...]:
     observed = tree["observed_data"].to_dataset()
     if "delay" not in observed.coords:
-        raise ValueError("plot.fit draws traces; a result without delays shows itself by table and plot.corner.")
+        raise ValueError(
+            "plot.fit draws traces; a result without delays shows itself by table and plot.corner."
+        )
     predictive = tree["posterior_predictive"].to_dataset()
     posterior = tree["posterior"].to_dataset() if "posterior" in tree.children else {}
     constant = tree["constant_data"].to_dataset() if "constant_data" in tree.children else {}

@@ -67,4 +67,4 @@ def eliminate(gram: Array, log_det: Array, count: int) -> Eliminated:
     misfit = data - (half**2).sum(axis=1)
     log_volume = np.log(np.diagonal(factor, axis1=1, axis2=2)).sum(axis=1)
     value = -0.5 * (misfit + log_det + count * np.log(2 * np.pi)) - log_volume
-    return Eliminated(np.where(good, value, -np.inf), mean, factor)
+    return Eliminated(np.where(good, value, -np.inf), mean.astype(float), factor.astype(float))

@@ -164,7 +164,7 @@ def fit_mixture(points: Array, share: Array, centres: Array) -> StudentMixture:
     weights = np.full(len(centres), 1 / len(centres))
     means, scales = centres, np.repeat(whole[None], len(centres), axis=0)
     for _ in range(ROUNDS):
-        part = _shares(points, weights, means, np.linalg.cholesky(scales)) * share[:, None]
+        part = _shares(points, weights, means, _roots(scales)) * share[:, None]
         count = part.sum(axis=0) + 1e-12
         weights = count / count.sum()
         means = (part.T @ points) / count[:, None]
@@ -173,7 +173,11 @@ def fit_mixture(points: Array, share: Array, centres: Array) -> StudentMixture:
         # Part of the whole spread keeps a component from collapsing on a few points.
         scales = own + STIFFENING * whole if len(centres) > 1 else whole[None]
     kept = weights > 1e-4
-    return StudentMixture(weights[kept] / weights[kept].sum(), means[kept], np.linalg.cholesky(scales[kept]))
+    return StudentMixture(weights[kept] / weights[kept].sum(), means[kept], _roots(scales[kept]))
+
+
+def _roots(scales: Array) -> Array:
+    return np.asarray(np.linalg.cholesky(scales), dtype=float)
 
 
 def _shares(points: Array, weights: Array, means: Array, roots: Array) -> Array:

@@ -175,7 +175,9 @@ def _best(draws: PosteriorDraws) -> Array:
 def _fitted(inversion: Inversion, z: Array, own: str) -> tuple[float, Minimum]:
     """Minimise at given noise; the cost is without the prior of the compliance or of the thickness in its place."""
     physical = np.array([name not in inversion.noise_names for name in inversion.names])
-    found = minimise(Projected(inversion.posterior, physical, z), z[physical], typical=1.0, max_evaluations=60)
+    found = minimise(
+        Projected(inversion.posterior, physical, z), z[physical], typical=1.0, max_evaluations=60
+    )
     return found.cost - float(found.x[_place(inversion, own)]) ** 2, found
 
 

@@ -149,7 +149,9 @@ def least_squares(
     found: list[Array] = []
     near = [_given_point(inversion, point) for point in points]
     for start in [*near, *_starting_points(inversion, physical, coarse, starts, seed)]:
-        rough = minimise(Projected(posterior, physical, coarse), start[physical], typical=1.0, max_evaluations=60)
+        rough = minimise(
+            Projected(posterior, physical, coarse), start[physical], typical=1.0, max_evaluations=60
+        )
         _add_distinct(found, _joined(coarse, physical, rough.x))
     found = sorted(found, key=lambda z: -float(posterior(z[None])[0]))[: max(4, starts // 2)]
     basins: list[Basin] = []
@@ -292,10 +294,12 @@ def _fit_noise(posterior: Posterior, physical: NDArray[np.bool_], z: Array) -> A
     density = _NoiseDensity(posterior, physical, z)
     scale = np.where(np.abs(z[noise]) > 4, 0.0, z[noise])
     simplex = np.vstack([scale, scale + np.eye(noise.sum())])
-    found = optimize.minimize(
-        lambda x: -float(density(x[None])[0]), scale, method="Nelder-Mead",
-        options={"xatol": 1e-3, "fatol": 1e-4, "maxfev": 400, "initial_simplex": simplex},
-    )  # fmt: skip
+    limits: Any = {"xatol": 1e-3, "fatol": 1e-4, "maxfev": 400, "initial_simplex": simplex}
+
+    def cost(x: Any) -> float:
+        return -float(density(np.asarray(x)[None])[0])
+
+    found = optimize.minimize(cost, np.asarray(scale, dtype=float), method="Nelder-Mead", options=limits)
     out = z.copy()
     out[noise] = found.x
     return out

@@ -182,7 +182,7 @@ def noise_priors(model: str, level: float, delay: Array) -> dict[str, Any]:
         raise ValueError(
             f"The white noise level is {level!r}; it must be positive. Is the trace noise-free or constant?"
         )
-    priors = {"white": stats.lognorm(np.log(2), scale=level)}
+    priors: dict[str, Any] = {"white": stats.lognorm(np.log(2), scale=level)}
     if model != "white":
         step = float(np.median(np.diff(delay)))
         priors["discrepancy"] = stats.lognorm(np.log(10), scale=0.1 * level)

@@ -1,8 +1,8 @@
 """A layer whose thickness differs under the spot: the mean of the traces, weighted by a normal distribution.
 
 The probe adds up light from everywhere under its spot, so the trace is the mean over the thicknesses there. Gauss and
-Hermite's quadrature takes thirteen of them; it is good to 1e-4 as long as an echo is not shifted by more than about twice
-the pulse's rms width.
+Hermite's quadrature takes thirteen of them; it is good to 1e-4 as long as an echo is not shifted by more than
+about twice the pulse's rms width.
 """
 
 from __future__ import annotations

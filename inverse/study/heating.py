@@ -175,7 +175,5 @@ def _peak(batch: Sample, setup: PumpProbe) -> tuple[float, float]:
         [np.linspace(-1, 4, 101) * setup.pulse_rms, np.geomspace(4 * setup.pulse_rms, 50.0, 200)]
     )
     grid = time_grid(delay, setup.pulse_rms, earliest=0.0)
-    rises = [
-        temperatures(batch, setup.beams, grid, j, np.zeros(1)) for j in range(len(batch.media))
-    ]
+    rises = [temperatures(batch, setup.beams, grid, j, np.zeros(1)) for j in range(len(batch.media))]
     return max(float(lattice.max()) for lattice, _ in rises), max(float(hot.max()) for _, hot in rises)

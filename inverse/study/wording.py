@@ -38,10 +38,11 @@ def _best(made: Comparison) -> str:
     first = ranked[0]
     beaten = [s.name for s in ranked[1:] if _beats(made, first.name, s.name)]
     centre = _between(first.centre, made.unit)
+    what = f"{_superlative(made)} {made.question.quantity}"
     if len(beaten) == len(made.splits) - 1:
-        return f"Split {first.name} is the best, with the {_superlative(made)} {made.question.quantity}, {centre}. Decided."
+        return f"Split {first.name} is the best, with the {what}, {centre}. Decided."
     return (
-        f"Undecided which split is the best, with the {_superlative(made)} {made.question.quantity}: most probably {first.name} "
+        f"Undecided which split is the best, with the {what}: most probably {first.name} "
         f"({chance(first.rank[0])}; {centre})."
     )
 

@@ -16,10 +16,12 @@ from inverse.description.rising_edge import edge_prior, find_edge, white_noise
 from inverse.description.trace_checks import TraceError
 from inverse.description.traces import make_trace, read_trace
 
-STACKS = json.loads((Path(__file__).parents[1] / "data" / "vectors" / "stacks.json").read_text(encoding="utf-8"))
-TRUTH = json.loads((Path(__file__).parents[1] / "data" / "splits" / "truth.json").read_text(encoding="utf-8"))[
-    "traces"
-]
+STACKS = json.loads(
+    (Path(__file__).parents[1] / "data" / "vectors" / "stacks.json").read_text(encoding="utf-8")
+)
+TRUTH = json.loads(
+    (Path(__file__).parents[1] / "data" / "splits" / "truth.json").read_text(encoding="utf-8")
+)["traces"]
 VECTORS = [name for name, entry in STACKS.items() if "layers" in entry]
 DELAY = np.arange(-8.0, 100.0, 0.2)
 
