@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from inverse.description.parts import Graded, Interface, Substrate
+from inverse.description.parts import Graded, Interface, Layer, Substrate
 from inverse.description.unknowns import Unknown, is_distribution
 from inverse.plot_style import COLUMN, MILLIMETRE, new_figure, style
 from inverse.rounding import decimal_place, format_range
@@ -85,6 +85,8 @@ def _thickness(part: Any, count: int) -> str:
     if isinstance(part, Substrate):
         return "free below" if part.is_empty else "substrate"
     text = _value(part.thickness, "nm")
+    if isinstance(part, Layer) and part.thickness_spread != 0.0:
+        text += f"\nuneven, rms {_value(part.thickness_spread, 'nm')}"
     if isinstance(part, Graded):
         text += f"\nin {part.slices} slices"
     return text if count == 1 else f"{text}\n{count} times"
@@ -94,7 +96,8 @@ def _bond(interface: Any) -> tuple[str, ...]:
     lines = [_named("compliance", interface.compliance, "nm/GPa", {0.0: "perfect bond", np.inf: "open gap"})]
     heat = {np.inf: "ideal thermal contact"}
     lines.append(_named("conductance", interface.boundary_conductance, "MW/m2/K", heat))
-    lines.append(_named("roughness", getattr(interface, "roughness", 0.0), "nm", {0.0: ""}))
+    lines.append(_named("roughness", interface.roughness, "nm", {0.0: ""}))
+    lines.append(_named("mass", interface.areal_mass, "mg/m2", {0.0: ""}))
     return tuple(line for line in lines if line)
 
 

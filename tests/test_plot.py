@@ -264,6 +264,16 @@ def test_section_draws_periods_once_and_leaves_vacuum_blank():
     assert looks["vacuum"] == (1.0, "")
 
 
+def test_section_says_mass_and_unevenness():
+    film = inv.Layer("Al", thickness=20.0, thickness_spread=0.4)
+    figure = plot.section(
+        inv.Stack(film, inv.Interface(boundary_conductance=np.inf, areal_mass=2.0), inv.Substrate("W"))
+    )
+    texts = [t.get_text() for t in figure.axes[0].texts]
+    assert "Al\n20 nm\nuneven, rms 0.4 nm" in texts
+    assert "perfect bond\nideal thermal contact\nmass 2 mg/m²" in texts
+
+
 def test_section_refuses_other_objects():
     with pytest.raises(ValueError, match="which has no parts; give a Stack"):
         plot.section("Al/Si")

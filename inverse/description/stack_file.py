@@ -10,7 +10,7 @@ from pathlib import Path
 from typing import Any
 
 from inverse.description.parts import Graded, Interface, Layer, Part, Repeat, Substrate
-from inverse.description.pumpprobe import PumpProbe
+from inverse.description.pumpprobe import INSTRUMENT, PumpProbe
 from inverse.description.stack import Stack
 from inverse.description.unknowns import Unknown, is_distribution
 
@@ -57,7 +57,9 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
     shared: dict[str, Unknown] = {}
     parts = [_part(dict(entry), position, shared) for position, entry in enumerate(content["part"], 1)]
     try:
-        setup = PumpProbe(**content["setup"])
+        setup = PumpProbe(
+            **{k: _value(k, v, shared) if k in INSTRUMENT else v for k, v in content["setup"].items()}
+        )
     except TypeError as error:
         raise ValueError(
             f"[setup] does not fit PumpProbe (pump, probe, pulse_rms, fluence): {error}"

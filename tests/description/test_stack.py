@@ -205,6 +205,17 @@ def test_files_keep_periods_and_graded_layers():
     assert before.fill(before.media[1], {"d": 5.0}) == after.fill(after.media[1], {"d": 5.0})
 
 
+def test_files_keep_the_bench_and_what_interfaces_and_layers_have():
+    setup = PumpProbe(pump=400, probe=800, pulse_rms=0.3, probe_angle=30, stage_scale=stats.norm(0, 1e-3))
+    again = decode(json.loads(json.dumps(encode(setup))))
+    assert again.probe_angle == 30.0 and again.stage_scale.std() == pytest.approx(1e-3)
+    bond = Interface(boundary_conductance=100.0, roughness=1.5, areal_mass=stats.uniform(0, 3))
+    film = Layer("Al", thickness=20.0, thickness_spread=0.4, initial_stress=0.1)
+    stack = decode(json.loads(json.dumps(encode(Stack(film, bond, BASE)))))
+    assert list(bind(stack, SETUP).priors) == ["Al|Si.areal_mass"]
+    assert stack.media[0].thickness_spread == 0.4 and stack.media[0].material.initial_stress == 0.1
+
+
 def test_a_stack_file_takes_periods_graded_layers_and_vacuum(tmp_path):
     path = tmp_path / "stack.toml"
     path.write_text(
@@ -213,6 +224,9 @@ def test_a_stack_file_takes_periods_graded_layers_and_vacuum(tmp_path):
         pump = 400
         probe = 800
         pulse_rms = 0.3
+        stage_scale = "norm(0, 1e-3)"
+        probe_angle = 45
+        probe_polarisation = "p"
         [[part]]
         repeat = 4
         [[part.part]]
@@ -230,7 +244,8 @@ def test_a_stack_file_takes_periods_graded_layers_and_vacuum(tmp_path):
         """,
         encoding="utf-8",
     )
-    stack, _ = read_stack(path)
+    stack, setup = read_stack(path)
+    assert setup.stage_scale.mean() == 0.0 and setup.beams[1].polarisation == "p"
     assert str(stack) == "air / 4 x [Al / W] / Al-W / vacuum"
     assert list(bind(stack, SETUP).priors) == ["Al.thickness"]
 
