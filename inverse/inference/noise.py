@@ -164,9 +164,9 @@ def noise_priors(model: str, level: float, delay: Array) -> dict[str, Any]:
     -------
     dict
         ``white``: log-normal about the estimate, a factor of 2 at one standard deviation.
-        ``discrepancy``: log-normal about a tenth of the white level, a factor of 10 at one standard deviation:
-        from nothing that matters to well above the noise. (A half-Cauchy on the scale of the level expects a
-        discrepancy, and widens a boundary conductance to 1.8 times Cramer-Rao where there is none; this one to 1.25.)
+        ``discrepancy``: log-normal about the white level, a factor of 10 at one standard deviation: from nothing that
+        matters to far above the noise. (A half-Cauchy on that scale leaves too little room for no discrepancy: where
+        there is none, it widens a boundary conductance to 1.4 times Cramer-Rao.)
         ``correlation_time``: log-uniform from three median steps to the trace's length.
 
     Raises
@@ -185,6 +185,6 @@ def noise_priors(model: str, level: float, delay: Array) -> dict[str, Any]:
     priors: dict[str, Any] = {"white": stats.lognorm(np.log(2), scale=level)}
     if model != "white":
         step = float(np.median(np.diff(delay)))
-        priors["discrepancy"] = stats.lognorm(np.log(10), scale=0.1 * level)
+        priors["discrepancy"] = stats.lognorm(np.log(10), scale=level)
         priors["correlation_time"] = stats.loguniform(3 * step, float(delay[-1] - delay[0]))
     return priors

@@ -86,7 +86,7 @@ def test_priors_are_weak_and_where_they_say():
     # a factor of two, and of ten, at one standard deviation
     np.testing.assert_allclose(priors["white"].ppf([0.158655, 0.5, 0.841345]), [1e-6, 2e-6, 4e-6], rtol=1e-5)
     found = priors["discrepancy"].ppf([0.158655, 0.5, 0.841345])
-    np.testing.assert_allclose(found, [2e-8, 2e-7, 2e-6], rtol=1e-4)
+    np.testing.assert_allclose(found, [2e-7, 2e-6, 2e-5], rtol=1e-4)
     assert priors["correlation_time"].support() == pytest.approx((0.6, 49.8))
     assert set(noise_priors("white", 1.0, DELAY)) == {"white"}
 
