@@ -76,7 +76,9 @@ class Linearised:
     shifts: Array
 
 
-def budget(result: Any, *, quantities: Sequence[str] | None = None) -> dict[str, dict[str, float]]:
+def budget(
+    result: Any, *, quantities: Sequence[str] | None = None, refit: bool = True
+) -> dict[str, dict[str, float]]:
     """Split the uncertainty of each number into what it comes from.
 
     Parameters
@@ -86,6 +88,9 @@ def budget(result: Any, *, quantities: Sequence[str] | None = None) -> dict[str,
         of a posterior, the draw of the highest density, moved to its minimum.
     quantities : sequence of str, optional
         Unknowns other than noise and derived quantities; by default all of them that are finite.
+    refit : bool
+        Find the minimum again, one spread up and down, for each constant that moves an unknown by more than its
+        standard deviation; without it such a constant's contribution is that of a straight line, and fast.
 
     Returns
     -------
@@ -116,12 +121,12 @@ def budget(result: Any, *, quantities: Sequence[str] | None = None) -> dict[str,
     strange = [name for name in asked if name not in known]
     if strange:
         raise ValueError(f"No budget for {', '.join(strange)}; there is one for {', '.join(known)}.")
-    linear = linearise(inversion, z)
+    linear = linearise(inversion, z, refit=refit)
     gradients, direct = _gradients(inversion, linear)
     return {name: _split(linear, gradients[name], direct[name]) for name in asked}
 
 
-def constant_warnings(inversion: Inversion, fit: Fit) -> list[str]:
+def constant_warnings(inversion: Inversion, fit: Fit, *, refit: bool = True) -> list[str]:
     """Say which fixed constants move an unknown by more than its standard deviation.
 
     Parameters
@@ -129,13 +134,15 @@ def constant_warnings(inversion: Inversion, fit: Fit) -> list[str]:
     inversion : Inversion
     fit : Fit
         Its least-squares result.
+    refit : bool
+        As for `budget`.
 
     Returns
     -------
     list of str
         One sentence for each such constant, about the unknown that it moves most; empty if there is none.
     """
-    linear = linearise(inversion, fit.best.z)
+    linear = linearise(inversion, fit.best.z, refit=refit)
     own = np.sqrt(linear.covariance.diagonal())
     ratios = np.abs(linear.shifts) / own[:, None]
     sd = dict(zip(fit.names, fit.sd, strict=True))
@@ -156,7 +163,7 @@ def linearise(inversion: Inversion, z: Array, *, refit: bool = True) -> Linearis
     inversion : Inversion
     z : array, shape (unknowns,)
     refit : bool
-        Find the minimum again for each constant that moves an unknown by more than its standard deviation.
+        As for `budget`.
     """
     physical = [i for i, name in enumerate(inversion.names) if name not in inversion.noise_names]
     names = tuple(inversion.names[i] for i in physical)

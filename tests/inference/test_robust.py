@@ -8,6 +8,7 @@ from problems import SETUP, bonded, noisy
 from scipy import integrate, optimize, stats
 
 import inverse as inv
+from inverse.inference.budget import linearise
 from inverse.inference.noise import FREEDOM, Noise
 from inverse.inference.robust import eliminate_student, gaussian_noise, student_residuals
 
@@ -181,3 +182,33 @@ def test_outliers_neither_move_nor_widen_a_fit_that_admits_them():
     assert abs(robust.values[k] - clean.values[k]) < clean.sd[k]
     assert robust.sd[k] < 1.5 * clean.sd[k]
     assert plain.sd[k] > 2 * clean.sd[k]
+
+
+def test_drawn_noise_has_the_tails_of_the_t_distribution():
+    noise = Noise("student", np.arange(40000.0), np.ones(40000))
+    values = {"white": 0.5, "discrepancy": 1e-9, "correlation_time": 5.0}
+    drawn = noise.draw(np.random.default_rng(1), values) / 0.5
+    for bound in (1.0, 3.0, 6.0):
+        expected = 2 * stats.t.sf(bound, FREEDOM)
+        share = (np.abs(drawn) > bound).mean()
+        assert share == pytest.approx(expected, abs=4 * np.sqrt(expected / drawn.size)), bound
+
+
+def test_joint_fit_and_its_budget_admit_outliers_in_each_trace():
+    shared = inv.Unknown("v_film", stats.norm(6.42, 0.1))
+    stacks = [
+        bonded(thickness=stats.uniform(d - 10, 20), velocity=shared, compliance=0.02) for d in (60.0, 75.0)
+    ]
+    traces = [
+        spoiled(noisy(s, {"Al.thickness": d, "v_film": 6.42}, 0.01, seed=i), 3, 0.3, seed=i)
+        for i, (s, d) in enumerate(zip(stacks, (60.0, 75.0), strict=True))
+    ]
+    parts = [inv.Inversion(s, SETUP, t, noise="student") for s, t in zip(stacks, traces, strict=True)]
+    joint = inv.Inversion.joint(parts)
+    fit = joint.least_squares(starts=1, seed=1)
+    linear = linearise(joint, fit.best.z, refit=False)
+    at = [joint.names.index(name) for name in linear.names]
+    own = np.sqrt(fit.best.covariance_z.diagonal()[at])
+    np.testing.assert_allclose(np.sqrt(linear.covariance.diagonal()), own, rtol=0.05)
+    total = sum(linear.scores.values()) + np.eye(own.size)
+    np.testing.assert_allclose(linear.covariance @ total @ linear.covariance, linear.covariance, atol=1e-9)
