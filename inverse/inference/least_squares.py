@@ -33,6 +33,8 @@ class Density(Protocol):
 
 
 _CANDIDATES = 512
+# Ends the search from a starting point: it is refined once the distinct minima are known.
+_ROUGH = 1e-8
 # White noise that lets a coarse search see past the narrow minima, over the rms of the signal.
 _COARSE = 0.02
 
@@ -150,7 +152,11 @@ def least_squares(
     near = [_given_point(inversion, point) for point in points]
     for start in [*near, *_starting_points(inversion, physical, coarse, starts, seed)]:
         rough = minimise(
-            Projected(posterior, physical, coarse), start[physical], typical=1.0, max_evaluations=60
+            Projected(posterior, physical, coarse),
+            start[physical],
+            typical=1.0,
+            tolerance=_ROUGH,
+            max_evaluations=60,
         )
         _add_distinct(found, _joined(coarse, physical, rough.x))
     found = sorted(found, key=lambda z: -float(posterior(z[None])[0]))[: max(4, starts // 2)]

@@ -67,6 +67,7 @@ def minimise(
     *,
     derivative: Callable[[Array], Array] | None = None,
     typical: float = 1e-8,
+    tolerance: float = 1e-14,
     max_evaluations: int = 2000,
 ) -> Minimum:
     """Minimise a sum of squares from one starting point.
@@ -80,6 +81,8 @@ def minimise(
         Jacobian of shape (residuals, unknowns) at a point; central differences by default.
     typical : float
         Size of a coordinate near zero, for the step of the differences; 1 for standard normal variables.
+    tolerance : float
+        Relative change of the sum of squares, or of the point, that ends the search.
     max_evaluations : int
         Residual evaluations allowed to the optimiser, derivatives apart.
 
@@ -106,7 +109,8 @@ def minimise(
         )
     try:
         found = optimize.least_squares(
-            one, start, jac=slope, method="trf", x_scale="jac", ftol=1e-14, xtol=1e-12, gtol=1e-12,
+            one, start, jac=slope, method="trf", x_scale="jac", ftol=tolerance, xtol=max(tolerance, 1e-12),
+            gtol=1e-12,
             max_nfev=max_evaluations,
         )  # fmt: skip
     except (np.linalg.LinAlgError, ValueError) as error:
