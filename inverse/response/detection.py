@@ -181,8 +181,8 @@ def _layer_overlap(
     else:
         level = 1 / q
     ends = _ends(field, down)
-    sets, _, size = ends.shape
-    terms = np.empty((sets, 17, size), dtype=complex)
+    # Light alone may differ between sets.
+    terms = np.empty((max(len(ends), len(near)), 17, ends.shape[2]), dtype=complex)
     for i, table in enumerate((near * q, near, far * q, far)):
         np.multiply(table[:, None], ends, out=terms[:, 4 * i : 4 * i + 4])
     terms[:, 16] = (ends[:, 0] - ends[:, 1] + ends[:, 2] - ends[:, 3]) * level
