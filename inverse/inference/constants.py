@@ -37,6 +37,14 @@ DEFAULT_RELATIVE_SPREAD = {
     "attenuation_time": 0.3,
     "attenuation_exponent": 0.1,
     "quality_factor": 0.3,
+    "electron_gruneisen": 0.2,
+    "band_gap": 0.02,
+    "deformation_potential": 0.2,
+    "carrier_diffusivity": 0.3,
+    "carrier_lifetime": 0.3,
+    "surface_recombination": 0.5,
+    "initial_stress": 0.2,
+    "initial_stress_lifetime": 0.3,
     "pulse_rms": 0.05,
 }
 """Relative standard uncertainty of a number that came without one, a choice of this project.

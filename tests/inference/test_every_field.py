@@ -23,13 +23,31 @@ PLAIN = {
     "bulk_modulus": (stats.norm(76.0, 2.0), 80.0),
     "electron_heat_capacity": (stats.norm(0.028, 0.003), 0.035),
     "electron_phonon_coupling": (stats.lognorm(0.7, scale=2.45e17), 5e17),
+    "electron_gruneisen": (stats.norm(1.4, 0.3), 2.5),
+    "band_gap": (stats.norm(0.67, 0.02), 1.0),
+    "deformation_potential": (stats.norm(-4.0, 0.5), -8.0),
+    "carrier_diffusivity": (stats.loguniform(10, 200), 150.0),
+    "carrier_lifetime": (stats.loguniform(10, 1e4), 15.0),
+    "surface_recombination": (stats.loguniform(1e3, 1e6), 1e6),
+    "initial_stress": (stats.norm(0.0, 0.5), 1.0),
+    "initial_stress_lifetime": (stats.loguniform(1, 100), 3.0),
     "attenuation_time": (stats.halfnorm(scale=0.01), 0.02),
     "attenuation_exponent": (stats.uniform(0.2, 0.7), 0.8),
     "quality_factor": (stats.loguniform(50, 1e4), 60.0),
     "quality_frequency": (stats.loguniform(0.01, 0.5), 0.3),
 }
 # What a field needs beside it to act.
+CARRIERS = {
+    "electron_heat_capacity": None,
+    "electron_phonon_coupling": None,
+    "band_gap": 0.67,
+    "deformation_potential": -4.0,
+    "carrier_diffusivity": 50.0,
+    "carrier_lifetime": 300.0,
+}
 BESIDE = {
+    **{name: CARRIERS for name in (*CARRIERS, "surface_recombination") if not name.startswith("electron")},
+    "initial_stress_lifetime": {"initial_stress": 0.5},
     "attenuation_exponent": {"attenuation_time": 0.02},
     "quality_frequency": {"quality_factor": 30.0},
 }
@@ -44,7 +62,7 @@ PAIRS = {
     "dn_dT_imag": ({"dn_dT": (1e-4, stats.norm(0, 3e-4))}, 5e-4),
 }
 CASES = {
-    name: ({name: prior, **BESIDE.get(name, {})}, value) for name, (prior, value) in PLAIN.items()
+    name: ({**BESIDE.get(name, {}), name: prior}, value) for name, (prior, value) in PLAIN.items()
 } | PAIRS
 
 
