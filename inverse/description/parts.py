@@ -262,11 +262,11 @@ class Repeat:
     --------
     >>> import inverse as inv
     >>> stack = inv.Stack(
-    ...     inv.Repeat(20, inv.Layer("GaAs", thickness=5.6), inv.Layer("Ge", thickness=2.8)),
-    ...     inv.Substrate("GaAs", orientation="100"),
+    ...     inv.Repeat(20, inv.Layer("W", thickness=5.6), inv.Layer("Al", thickness=2.8)),
+    ...     inv.Substrate("W"),
     ... )
     >>> len(stack.media), stack.names[:3], stack.names[-1]
-    (41, ('GaAs', 'Ge', 'GaAs'), 'GaAs#2')
+    (41, ('W', 'Al', 'W'), 'W#2')
     """
 
     count: int
