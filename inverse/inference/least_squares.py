@@ -35,6 +35,8 @@ class Density(Protocol):
 _CANDIDATES = 512
 # Ends the search from a starting point: it is refined once the distinct minima are known.
 _ROUGH = 1e-8
+# Far below what the minimum's own width means, and above the rounding of the response.
+_FINE = 1e-10
 # White noise that lets a coarse search see past the narrow minima, over the rms of the signal.
 _COARSE = 0.02
 
@@ -274,7 +276,13 @@ def refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds: 
     minimum: Minimum | None = None
     for _ in range(rounds):
         z = _fit_noise(posterior, physical, z)
-        minimum = minimise(Projected(posterior, physical, z), z[physical], typical=1.0, max_evaluations=100)
+        minimum = minimise(
+            Projected(posterior, physical, z),
+            z[physical],
+            typical=1.0,
+            tolerance=_FINE,
+            max_evaluations=100,
+        )
         z = _joined(z, physical, minimum.x)
     assert minimum is not None
     if any(member.model.has_outliers for member in posterior.members):
