@@ -20,7 +20,7 @@ from inverse.response.light import Absorption
 from inverse.response.media import Ambient
 from inverse.response.port import Overlap, Port
 from inverse.response.sound import SoundField
-from inverse.response.sums import product, weighted_sum
+from inverse.response.sums import weighted_sum
 
 __all__ = ["Detected", "ambient_response", "medium_response"]
 
@@ -28,6 +28,7 @@ Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
 _ONE = np.ones((1, 1), dtype=complex)
+_ALTERNATING = np.array([1.0, -1.0, 1.0, -1.0])
 
 
 @dataclass(frozen=True)
@@ -131,7 +132,13 @@ def ambient_response(
 
 
 def _real_and_imaginary(h: Complex, conjugate: Complex) -> Complex:
-    return np.stack([(h + conjugate) / 2, (h - conjugate) / 2j], axis=1)
+    """Return the transforms of the real and the imaginary part in time, (sets, 2, frequencies)."""
+    out = np.empty((len(h), 2, h.shape[1]), dtype=complex)
+    np.add(h, conjugate, out=out[:, 0])
+    np.subtract(h, conjugate, out=out[:, 1])
+    out[:, 0] *= 0.5
+    out[:, 1] *= -0.5j
+    return out
 
 
 def _overlap(at: Overlap, q: Complex, conjugate: bool) -> Complex:
@@ -169,24 +176,21 @@ def _layer_overlap(
     """Real and imaginary part of the integral of ``q^order [down exp(-q z) + up exp(-q (d - z))] E^2``.
 
     With M, N, L sums of the field's amplitudes at both ends, the integral is
-    ``q^order [M / (q - g) + N / (q + g) + L / q]``; real and imaginary part share the real denominators
-    ``(q -+ g)(q -+ g*)``.
+    ``q^order [M / (q - g) + N / (q + g) + L / q]``.
     """
     q = field.q
     probe = _beside_resonance(probe, q)
-    lean, middle = (2 * probe.g.real) * q, q * q + np.abs(probe.g) ** 2
-    near, far, level = 1 / (middle - lean), 1 / (middle + lean), _ONE
+    sums = np.matmul(_end_weights(probe), _ends(field, down))
+    first, second = (
+        sums[:, i] * (1 / (q - g)) + sums[:, i + 1] * (1 / (q + g))
+        for i, g in ((0, probe.g), (3, np.conj(probe.g)))
+    )
     if order == 1:
-        near, far = near * q, far * q
+        first, second = first * q + sums[:, 2], second * q + sums[:, 5]
     else:
         level = 1 / q
-    ends = _ends(field, down)
-    # Light alone may differ between sets.
-    terms = np.empty((max(len(ends), len(near)), 17, ends.shape[2]), dtype=complex)
-    for i, table in enumerate((near * q, near, far * q, far)):
-        np.multiply(table[:, None], ends, out=terms[:, 4 * i : 4 * i + 4])
-    terms[:, 16] = (ends[:, 0] - ends[:, 1] + ends[:, 2] - ends[:, 3]) * level
-    return product(_end_weights(probe), terms)
+        first, second = first + sums[:, 2] * level, second + sums[:, 5] * level
+    return _real_and_imaginary(first, second)
 
 
 def _ends(field: HeatField | SoundField | Pairs, down: Complex) -> Complex:
@@ -198,21 +202,19 @@ def _ends(field: HeatField | SoundField | Pairs, down: Complex) -> Complex:
     return out
 
 
-def _end_weights(probe: _Probe) -> Array:
-    """Weights of the four ends over ``q - g`` and ``q + g``, each times q and plain, and of the constant part."""
+def _end_weights(probe: _Probe) -> Complex:
+    """Weights of the four ends in M, N, L and in the same with every optical factor conjugated, (sets, 6, 4)."""
     sets = max(map(len, (probe.g, probe.forth, probe.back, probe.still, probe.decay)))
-    weights = np.empty((sets, 17), dtype=complex)
+    weights = np.empty((sets, 6, 4), dtype=complex)
     f, b = probe.forth, probe.back
-    minus, plus = weights[:, 0:4], weights[:, 8:12]
-    minus[:, 0:1], minus[:, 2:3] = f, b
-    np.multiply(minus[:, 0::2], -probe.decay, out=minus[:, 1::2])
-    plus[:, 1:2], plus[:, 3:4] = -b, -f
-    np.multiply(plus[:, 1::2], -probe.decay, out=plus[:, 0::2])
-    turned = np.conj(probe.g)
-    np.multiply(minus, -turned, out=weights[:, 4:8])
-    np.multiply(plus, turned, out=weights[:, 12:16])
-    weights[:, 16:] = probe.still
-    return _parts(weights)
+    near, far = weights[:, 0], weights[:, 1]
+    near[:, 0:1], near[:, 2:3] = f, b
+    np.multiply(near[:, 0::2], -probe.decay, out=near[:, 1::2])
+    far[:, 1:2], far[:, 3:4] = -b, -f
+    np.multiply(far[:, 1::2], -probe.decay, out=far[:, 0::2])
+    weights[:, 2] = probe.still * _ALTERNATING
+    np.conjugate(weights[:, :3], out=weights[:, 3:])
+    return weights
 
 
 def _beside_resonance(probe: _Probe, q: Complex) -> _Probe:

@@ -188,18 +188,17 @@ def particular_ends(
 ) -> Ends:
     """Particular displacement (strain / p) and flux (-inertia strain / p^2) at both ends."""
     hot, steep, beat = parts
-    hot_u = hot / heat.q
-    hot_f = hot_u / heat.q
-    down_below, up_above = heat.down * heat.decay, heat.up * heat.decay
-    with_steep, with_beat = _end_weights(f)
-    u = weighted_sum(
-        with_steep, (hot_u, up_above - heat.down), (hot_u, heat.up - down_below), (steep, _ONE), (beat, _ONE)
+    inverse_q = 1 / heat.q
+    hot_u = hot * inverse_q
+    hot_f = hot_u * inverse_q
+    ends = weighted_sum(_end_weights(f), (steep, _ONE), (beat, _ONE))
+    up_top, down_bottom = heat.up * heat.decay, heat.down * heat.decay
+    return Ends(
+        u_top=ends[:, 0] + hot_u * (up_top - heat.down),
+        f_top=(ends[:, 1] - hot_f * (up_top + heat.down)) * inertia,
+        u_bottom=ends[:, 2] + hot_u * (heat.up - down_bottom),
+        f_bottom=(ends[:, 3] - hot_f * (heat.up + down_bottom)) * inertia,
     )
-    flux = weighted_sum(
-        with_beat, (hot_f, heat.down + up_above), (hot_f, down_below + heat.up), (steep, _ONE), (beat, _ONE)
-    )
-    flux *= inertia[:, None]
-    return Ends(u_top=u[:, 0], f_top=flux[:, 0], u_bottom=u[:, 1], f_bottom=flux[:, 1])
 
 
 def _with_initial(end: Ends, m: Medium, s: Complex, source: Complex) -> Ends:
@@ -210,21 +209,17 @@ def _with_initial(end: Ends, m: Medium, s: Complex, source: Complex) -> Ends:
     return replace(end, f_top=end.f_top + stress, f_bottom=end.f_bottom + stress)
 
 
-def _end_weights(f: Absorption) -> tuple[Array, Array]:
-    """Weights of heat's ends, the exponential and the interference part in displacement and flux, top and bottom.
+def _end_weights(f: Absorption) -> Array:
+    """Weights of the exponential and the interference part in displacement and flux over inertia, top and bottom.
 
     A transparent medium absorbs nothing: its profile is zero and so is what it launches.
     """
     with np.errstate(divide="ignore", invalid="ignore"):
         per_p = np.where(f.p > 0, 1 / f.p, 0.0)
     end = f.beat * f.turn
-    one, none = np.ones_like(f.x), np.zeros_like(f.x)
-    u = (
-        (one, none, per_p * (f.bottom * f.decay - f.top), 2 * f.beat.imag / f.x),
-        (none, one, per_p * (f.bottom - f.top * f.decay), 2 * end.imag / f.x),
+    return weight_rows(
+        (per_p * (f.bottom * f.decay - f.top), 2 * f.beat.imag / f.x),
+        (-(per_p**2) * (f.top + f.bottom * f.decay), 2 * f.beat.real / f.x**2),
+        (per_p * (f.bottom - f.top * f.decay), 2 * end.imag / f.x),
+        (-(per_p**2) * (f.top * f.decay + f.bottom), 2 * end.real / f.x**2),
     )
-    flux = (
-        (-one, none, -(per_p**2) * (f.top + f.bottom * f.decay), 2 * f.beat.real / f.x**2),
-        (none, -one, -(per_p**2) * (f.top * f.decay + f.bottom), 2 * end.real / f.x**2),
-    )
-    return weight_rows(*u), weight_rows(*flux)
