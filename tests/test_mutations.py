@@ -91,6 +91,7 @@ def judge(mutant: dict, copies: Queue) -> str:
 
 
 @pytest.mark.slow
+@pytest.mark.unproven
 def test_no_mutant_survives(repository, tmp_path):
     copies: Queue = Queue()
     for number in range(PROCESSES):

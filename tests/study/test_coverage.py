@@ -183,6 +183,7 @@ def test_quantities_are_those_of_a_result(short):
 
 
 @pytest.mark.slow
+@pytest.mark.unproven
 def test_both_ways_of_sampling_rank_the_truth_alike(short):
     walked, weighted = (
         check_coverage(short, seed=3, replicates=1, method=m, progress=False).replicates[0]
@@ -308,6 +309,7 @@ def test_sampling_asks_for_enough():
 
 
 @pytest.mark.slow
+@pytest.mark.unproven
 def test_intervals_of_aluminium_on_silicon_are_calibrated():
     # The full run of 200 replicates is kept in COVERAGE.md.
     with worker_pool() as pool:
@@ -320,6 +322,7 @@ def test_intervals_of_aluminium_on_silicon_are_calibrated():
 
 
 @pytest.mark.slow
+@pytest.mark.unproven
 def test_negative_control_white_noise_on_drifting_traces_fails():
     problem = split_problem("A11", "white")
     level = problem.priors["noise.white"].median()
@@ -340,6 +343,7 @@ def test_negative_control_white_noise_on_drifting_traces_fails():
 
 
 @pytest.mark.slow
+@pytest.mark.unproven
 def test_negative_control_one_temperature_on_two_temperature_traces_fails():
     problem = split_problem("A11")
     hot = inv.Inversion(stack(AL_HOT, inv.Substrate(SI)), SETUP, split_trace("A11"))

@@ -87,6 +87,7 @@ def test_fits_of_the_traces_give_the_realised_medians(recipe, splits):
 
 
 @pytest.mark.slow
+@pytest.mark.unproven
 def test_the_realised_medians_and_the_verdict_come_out_of_the_traces(recipe, splits, tmp_path):
     """Some minutes: each site is searched and sampled in full."""
     truth, table = experiment(splits)
