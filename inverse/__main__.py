@@ -29,7 +29,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
             noise=options.noise,
             ess=options.ess,
         )
-    except ValueError as error:
+    except (ValueError, OSError) as error:
         print(f"error: {error}", file=sys.stderr)
         return 1
     return 0
@@ -38,6 +38,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
 def run(trace_file: Path, stack_file: Path, out: Path, *, seed: int, noise: str, ess: float) -> None:
     """Read, fit, sample, print the table and write figures and result into `out`."""
     started = time.perf_counter()
+    out.mkdir(parents=True, exist_ok=True)
     trace = inv.read_trace(trace_file)
     stack, setup = read_stack(stack_file)
     print(f"Trace {trace_file}\nStack {stack} from {stack_file}\n")
@@ -47,7 +48,6 @@ def run(trace_file: Path, stack_file: Path, out: Path, *, seed: int, noise: str,
     print(f"Least squares: {len(fit.minima)} distinct minimum(s) found; sampling from there.")
     posterior = inversion.sample_posterior(seed=seed, fit=fit, ess=ess)
     print(f"\n{inv.table(posterior)}\n")
-    out.mkdir(parents=True, exist_ok=True)
     inv.save(posterior, out / "result.nc")
     for name, figure in (
         ("fit", inv.plot.fit(posterior)),
