@@ -18,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.inference.inversion import Inversion
-from inverse.inference.least_squares import Projected
+from inverse.inference.projection import Projected
 
 __all__ = ["Local", "Ridge", "local_covariances", "ridges"]
 

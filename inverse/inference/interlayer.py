@@ -21,9 +21,9 @@ from numpy.typing import NDArray
 from inverse.description.materials import material
 from inverse.description.stack import Interface, Layer, Stack
 from inverse.inference.inversion import Inversion
-from inverse.inference.least_squares import Projected
 from inverse.inference.minimise import Minimum, minimise
 from inverse.inference.posterior_draws import PosteriorDraws
+from inverse.inference.projection import Projected
 
 __all__ = ["TOLD_APART", "Interlayer", "interlayers"]
 

@@ -10,10 +10,10 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import optimize
 
-from inverse.inference.likelihood import TraceModel
 from inverse.inference.minimise import Minimum, covariance_of, jacobian, minimise
 from inverse.inference.parameters import Parameters
 from inverse.inference.posterior import Posterior
+from inverse.inference.projection import Projected
 
 if TYPE_CHECKING:
     from inverse.inference.inversion import Inversion
@@ -153,10 +153,11 @@ def least_squares(
     found: list[Array] = []
     near = [_given_point(inversion, point) for point in points]
     for start in [*near, *_starting_points(inversion, physical, coarse, starts, seed)]:
+        projected = Projected(posterior, physical, coarse)
         rough = minimise(
-            Projected(posterior, physical, coarse),
+            projected,
             start[physical],
-            typical=1.0,
+            derivative=projected.derivative,
             tolerance=_ROUGH,
             max_evaluations=60,
         )
@@ -168,29 +169,6 @@ def least_squares(
         if all(basin_distance(basin.z, b) > 1.0 for b in basins):
             basins.append(basin)
     return Fit(inversion, inversion.names, ranked(basins), seed)
-
-
-class Projected:
-    """Whitened residuals with the linear coefficients eliminated, as a function of the physical unknowns."""
-
-    def __init__(self, posterior: Posterior, physical: NDArray[np.bool_], z: Array) -> None:
-        self.posterior, self.physical, self.z = posterior, physical, z
-
-    def __call__(self, x: Array) -> Array:
-        z = np.repeat(self.z[None], len(x), axis=0)
-        z[:, self.physical] = x
-        named = self.posterior.parameters.named(self.posterior.parameters.to_values(z))
-        parts = [x]
-        for member in self.posterior.members:
-            local = member.local(named)
-            functions = member.model.functions(local)
-            parts.append(np.stack([_residual(member.model, local, functions, i) for i in range(len(x))]))
-        return np.nan_to_num(np.concatenate(parts, axis=1), nan=1e10, posinf=1e10, neginf=-1e10)
-
-
-def _residual(model: TraceModel, local: Mapping[str, Array], functions: Mapping[str, Array], i: int) -> Array:
-    values = {name: float(v[i]) for name, v in local.items()}
-    return model.residual(values, {name: f[i] for name, f in functions.items()})
 
 
 def _joined(z: Array, physical: NDArray[np.bool_], x: Array) -> Array:
@@ -276,10 +254,11 @@ def refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds: 
     minimum: Minimum | None = None
     for _ in range(rounds):
         z = _fit_noise(posterior, physical, z)
+        projected = Projected(posterior, physical, z)
         minimum = minimise(
-            Projected(posterior, physical, z),
+            projected,
             z[physical],
-            typical=1.0,
+            derivative=projected.derivative,
             tolerance=_FINE,
             max_evaluations=100,
         )

@@ -226,6 +226,22 @@ class TraceModel:
         white = np.concatenate([white, prior], axis=1)
         return white[:-1].T, white[-1]
 
+    def whitened_changes(self, values: Mapping[str, float], changes: Mapping[str, Array]) -> Array:
+        """Return what changes of the basis functions, (unknowns, coefficients, delays), make of `whitened`'s basis.
+
+        Returns
+        -------
+        array, shape (unknowns, coefficients, data)
+        """
+        rows = []
+        for channel in self.channels:
+            noise = {k: float(v) for k, v in channel.noise_values(values).items()}  # type: ignore[arg-type]
+            change = changes[channel.name]
+            white = channel.noise.whiten(change.reshape(-1, change.shape[2]), noise)
+            rows.append(white.reshape(*change.shape[:2], -1))
+        size = len(self.coefficient_names)
+        return np.concatenate([*rows, np.zeros((*rows[0].shape[:2], size))], axis=2)
+
     def residual(self, values: Mapping[str, float], functions: Mapping[str, Array]) -> Array:
         """Return whitened residuals of one parameter set with the coefficients eliminated; arguments as `whitened`."""
         if self.has_outliers:

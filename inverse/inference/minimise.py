@@ -9,12 +9,12 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import optimize
 
-__all__ = ["Minimum", "covariance_of", "jacobian", "minimise"]
+__all__ = ["STEP", "Minimum", "covariance_of", "jacobian", "minimise"]
 
 Array = NDArray[np.float64]
 Residuals = Callable[[Array], Array]
 
-_STEP = float(np.finfo(float).eps ** (1 / 3))
+STEP = float(np.finfo(float).eps ** (1 / 3))
 _LARGEST = 1e150
 
 
@@ -54,7 +54,7 @@ def jacobian(residuals: Residuals, x: Array, typical: float = 1e-8) -> Array:
 
     The step is a part of each coordinate, or of `typical` where that is larger.
     """
-    step = _STEP * np.maximum(np.abs(x), typical)
+    step = STEP * np.maximum(np.abs(x), typical)
     up, down = x + np.diag(step), x - np.diag(step)
     values = residuals(np.concatenate([up, down]))
     width = (np.diagonal(up) - np.diagonal(down))[:, None]

@@ -9,8 +9,9 @@ from scipy import stats
 import inverse as inv
 from inverse.inference.budget import budget, constant_warnings, linearise
 from inverse.inference.constants import DEFAULT_RELATIVE_SPREAD, fixed_constants, with_constant
-from inverse.inference.least_squares import Projected, refine
+from inverse.inference.least_squares import refine
 from inverse.inference.minimise import minimise
+from inverse.inference.projection import Projected
 
 DELAY = np.arange(1.0, 41.0)
 SIGMA = 0.05

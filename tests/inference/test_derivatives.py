@@ -1,4 +1,4 @@
-"""The Jacobian of least squares, by central differences, against the exact derivative of the projection.
+"""The Jacobian of least squares against central differences, and both against the projection's exact derivative.
 
 For residuals ``r = (1 - X X+) y`` the derivative along an unknown is ``-(1 - X X+) X' c - (X+)^T X'^T r`` with
 ``c = X+ y`` (Golub and Pereyra, SIAM J. Numer. Anal. 10, 413 (1973); from memory). X' is exact where the unknown is
@@ -10,8 +10,8 @@ import pytest
 from problems import BOND, FILM, SETUP, bonded, noisy
 
 import inverse as inv
-from inverse.inference.least_squares import Projected
 from inverse.inference.minimise import jacobian
+from inverse.inference.projection import Projected
 from inverse.response.basis import arrival, spectra, take
 from inverse.response.instrument import measured_sample
 from inverse.response.inverse_laplace import to_delays
@@ -32,10 +32,10 @@ def problem():
 
 @pytest.fixture(scope="module")
 def columns_of(problem):
-    """Jacobian by central differences, one column per physical unknown."""
+    """Jacobian, one column per physical unknown."""
     inversion, z = problem
     physical = np.array([name not in inversion.noise_names for name in inversion.names])
-    found = jacobian(Projected(inversion.posterior, physical, z), z[physical], 1.0)
+    found = Projected(inversion.posterior, physical, z).derivative(z[physical])
     return dict(zip(np.array(inversion.names)[physical], found.T, strict=True))
 
 
@@ -62,6 +62,22 @@ def through_the_projection(inversion, z, change):
     kept = y - a @ (inverse @ y)
     part = moved @ (inverse @ y)
     return -(part - a @ (inverse @ part)) - inverse.T @ (moved.T @ kept)
+
+
+@pytest.mark.parametrize("channels", [("reflectance_change",), ("reflectance_change", "optical_phase")])
+@pytest.mark.parametrize("noise", ["correlated", "white"])
+def test_derivative_agrees_with_differenced_residuals(noise, channels):
+    stack = bonded()
+    trace = inv.simulate(stack, SETUP, np.arange(-5, 60, 0.5))[list(channels)]
+    for k, name in enumerate(channels):
+        kick = np.random.default_rng(k).standard_normal(trace[name].size)
+        trace[name] = trace[name] + 1e-3 * float(np.abs(trace[name]).max()) * kick
+    inversion = inv.Inversion(stack, SETUP, trace, noise=noise)
+    z = np.random.default_rng(7).normal(scale=0.3, size=len(inversion.names))
+    physical = np.array([name not in inversion.noise_names for name in inversion.names])
+    projected = Projected(inversion.posterior, physical, z)
+    found, expected = projected.derivative(z[physical]), jacobian(projected, z[physical], 1.0)
+    np.testing.assert_allclose(found, expected, rtol=0, atol=1e-6 * np.abs(expected).max(axis=0).min())
 
 
 def agrees(column, exact):
