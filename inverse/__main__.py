@@ -9,7 +9,7 @@ from collections.abc import Sequence
 from pathlib import Path
 
 import inverse as inv
-from inverse.description.stack_file import read_stack
+from inverse.description.sample.stack_file import read_stack
 
 EXAMPLE = Path(__file__).parent / "example"
 

@@ -9,22 +9,7 @@ from pathlib import Path
 import pytest
 
 ROOMS = ("elastic", "description", "response", "inference", "study", "report")
-REPORT = {
-    *("report", "report_header", "report_splits", "summary", "sheet", "__main__"),
-    *(
-        "plot",
-        "plot_fit",
-        "plot_corner",
-        "plot_section",
-        "plot_style",
-        "plot_elastic",
-        "plot_echoes",
-        "plot_coverage",
-        "plot_diagnostics",
-        "plot_splits",
-    ),
-    *("rounding", "unit_text", "propagation", "finite_differences"),
-}
+REPORT = {"report", "plot", "__main__"}
 HEAVY = (
     *("matplotlib", "corner", "arviz", "emcee", "xarray", "pandas", "h5netcdf", "h5py", "tqdm"),
     "scipy.stats",
@@ -43,7 +28,7 @@ def room(module: str) -> str | None:
     if module == "inverse":
         return None
     top = module.split(".")[1]
-    if top in REPORT or top.startswith("plot_"):
+    if top in REPORT:
         return "report"
     if top in ROOMS:
         return top

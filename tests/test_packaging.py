@@ -13,9 +13,9 @@ LOOK_UP = """
 import site, sys
 site.addsitedir(sys.argv[1])
 sys.path.insert(0, sys.argv[1])
-from inverse.description import materials
-print(materials.__file__)
-print(materials.material("Al").name)
+from inverse.description.material import properties
+print(properties.__file__)
+print(properties.material("Al").name)
 """
 
 
@@ -85,7 +85,7 @@ def test_wheel_metadata(wheel: Path, repository: Path) -> None:
 def test_installed_wheel_finds_its_reference_tables(wheel: Path, tmp_path: Path) -> None:
     site = install(wheel, tmp_path / "site")
     file, name = look_up(site, tmp_path)
-    assert (file, name) == (site / "inverse" / "description" / "materials.py", "Al")
+    assert (file, name) == (site / "inverse" / "description" / "material" / "properties.py", "Al")
     assert (site / "inverse" / "reference_materials").is_dir()
 
 
@@ -93,7 +93,7 @@ def test_editable_install_reads_the_tables_of_the_tree(repository: Path, tmp_pat
     site = install(build(repository, tmp_path / "editable", "editable"), tmp_path / "site")
     assert not (site / "inverse").exists()
     file, name = look_up(site, tmp_path)
-    assert (file, name) == (repository / "inverse" / "description" / "materials.py", "Al")
+    assert (file, name) == (repository / "inverse" / "description" / "material" / "properties.py", "Al")
     assert (repository / "reference_materials").is_dir()
 
 

@@ -12,8 +12,8 @@ from scipy import stats
 
 import inverse as inv
 from inverse import plot
-from inverse.plot_corner import LEVELS
-from inverse.plot_style import COLUMN, decade, power_label
+from inverse.plot.corner_figure import LEVELS
+from inverse.plot.style import COLUMN, decade, power_label
 
 DELAY = np.concatenate([np.linspace(-5, 10, 151), np.linspace(10.2, 110, 300)])
 FITTED = np.abs(DELAY) > 3

@@ -10,10 +10,10 @@ from fake_results import draws, tree
 from matplotlib.figure import Figure
 
 from inverse import plot
-from inverse.inference.combinations import Combination
-from inverse.inference.diagnostics import DataAdded, Learned
-from inverse.inference.model_checks import ChannelCheck, ModelCheck
-from inverse.plot_style import COLUMN
+from inverse.inference.checks.combinations import Combination
+from inverse.inference.checks.diagnostics import DataAdded, Learned
+from inverse.inference.checks.model_checks import ChannelCheck, ModelCheck
+from inverse.plot.style import COLUMN
 
 
 def one(name: str, narrowed: float, data: float, shares: tuple, bits: float = 1.5) -> Learned:

@@ -5,7 +5,7 @@ import pytest
 from matplotlib.figure import Figure
 
 from inverse.elastic import StiffnessTensor, plane_section
-from inverse.plot_elastic import elastic_section
+from inverse.plot.elastic_figure import elastic_section
 
 COPPER = StiffnessTensor.cubic(c11=168.3, c12=121.2, c44=75.7)
 

@@ -8,7 +8,13 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.propagation import MonteCarlo, Propagated, linear_is_valid, propagate, propagate_distributions
+from inverse.report.propagation import (
+    MonteCarlo,
+    Propagated,
+    linear_is_valid,
+    propagate,
+    propagate_distributions,
+)
 
 SQRT3 = np.sqrt(3)
 

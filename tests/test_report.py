@@ -9,8 +9,8 @@ import xarray as xr
 from fake_results import DRAWS, INFORMATION, PRIORS, Fit, Minimum, draws, tree
 from scipy import stats
 
-from inverse.inference.prior_view import touches, view_of_distribution
-from inverse.report import budget_table, constants_table, table
+from inverse.inference.checks.prior_view import touches, view_of_distribution
+from inverse.report.tables import budget_table, constants_table, table
 
 
 @pytest.fixture(scope="module")

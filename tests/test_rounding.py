@@ -4,8 +4,15 @@ import math
 
 import pytest
 
-from inverse.rounding import decimal_place, fixed, format_limit, format_range, format_value, format_width
-from inverse.unit_text import axis_label, siunitx_unit, unit_text
+from inverse.report.rounding import (
+    decimal_place,
+    fixed,
+    format_limit,
+    format_range,
+    format_value,
+    format_width,
+)
+from inverse.report.unit_text import axis_label, siunitx_unit, unit_text
 
 
 @pytest.mark.parametrize(

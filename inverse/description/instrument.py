@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 from inverse.description.pumpprobe import INSTRUMENT, PumpProbe
-from inverse.description.slots import Slots, slot_of
+from inverse.description.sample.slots import Slots, slot_of
 
 __all__ = ["instrument_slots"]
 

@@ -12,9 +12,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from inverse.description.places import bind
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Stack
+from inverse.description.sample.places import bind
+from inverse.description.sample.stack import Stack
 
 __all__ = [
     "DIFFRACTION",

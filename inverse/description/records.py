@@ -8,11 +8,11 @@ from typing import Any
 
 import numpy as np
 
-from inverse.description.materials import Material
-from inverse.description.parts import Graded, Interface, Layer, Repeat, Substrate
+from inverse.description.material.properties import Material
+from inverse.description.material.refractive_index import IndexTable
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.refractive_index import IndexTable
-from inverse.description.stack import Stack
+from inverse.description.sample.parts import Graded, Interface, Layer, Repeat, Substrate
+from inverse.description.sample.stack import Stack
 from inverse.description.unknowns import Unknown, describe_prior, is_distribution, rebuild_prior
 
 __all__ = ["decode", "encode"]

@@ -4,9 +4,9 @@ Units: GPa, g/cm3, nm and ps. With them a velocity in nm/ps (= km/s) is sqrt(mod
 factor.
 """
 
-from .averages import Averages, averages, poisson_ratio, young_modulus
-from .branch_moduli import BranchModuli, branch_moduli
-from .christoffel import (
+from inverse.elastic.averages import Averages, averages, poisson_ratio, young_modulus
+from inverse.elastic.branch_moduli import BranchModuli, branch_moduli
+from inverse.elastic.christoffel import (
     BRANCHES,
     PlaneWaves,
     christoffel_matrix,
@@ -14,8 +14,8 @@ from .christoffel import (
     phase_velocities,
     plane_waves,
 )
-from .cut_properties import photoelastic_ratios, thermal_stress
-from .directions import (
+from inverse.elastic.cut_properties import photoelastic_ratios, thermal_stress
+from inverse.elastic.directions import (
     crystal_direction,
     direction_from_c_axis,
     rotation_about_axis,
@@ -23,12 +23,12 @@ from .directions import (
     rotation_to_z,
     unit_direction,
 )
-from .sections import Section, plane_section
-from .sensitivity import Reach, constants_reached, measured_derivatives, velocity_derivatives
-from .stability import Criterion, born_criteria, is_stable
-from .symmetry import SYMMETRIES, constant_names
-from .tensor import StiffnessTensor
-from .voigt import full_to_voigt, mandel_to_voigt, voigt_to_mandel
+from inverse.elastic.sections import Section, plane_section
+from inverse.elastic.sensitivity import Reach, constants_reached, measured_derivatives, velocity_derivatives
+from inverse.elastic.stability import Criterion, born_criteria, is_stable
+from inverse.elastic.symmetry import SYMMETRIES, constant_names
+from inverse.elastic.tensor import StiffnessTensor
+from inverse.elastic.voigt import full_to_voigt, mandel_to_voigt, voigt_to_mandel
 
 __all__ = [
     "StiffnessTensor",

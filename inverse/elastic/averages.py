@@ -7,9 +7,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .directions import crystal_direction
-from .tensor import StiffnessTensor
-from .voigt import FloatArray, uniaxial
+from inverse.elastic.directions import crystal_direction
+from inverse.elastic.tensor import StiffnessTensor
+from inverse.elastic.voigt import FloatArray, uniaxial
 
 __all__ = ["Averages", "averages", "poisson_ratio", "young_modulus"]
 

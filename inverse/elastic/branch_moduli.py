@@ -11,8 +11,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .symmetry import basis, constant_names
-from .voigt import FloatArray, voigt_to_mandel, wave_strain
+from inverse.elastic.symmetry import basis, constant_names
+from inverse.elastic.voigt import FloatArray, voigt_to_mandel, wave_strain
 
 __all__ = ["BranchModuli", "branch_moduli"]
 

@@ -16,9 +16,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .directions import crystal_direction, unit_direction
-from .tensor import StiffnessTensor
-from .voigt import FloatArray, wave_strain
+from inverse.elastic.directions import crystal_direction, unit_direction
+from inverse.elastic.tensor import StiffnessTensor
+from inverse.elastic.voigt import FloatArray, wave_strain
 
 __all__ = [
     "BRANCHES",

@@ -8,9 +8,9 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .directions import crystal_direction, rotation_to_z
-from .tensor import StiffnessTensor
-from .voigt import FloatArray, mandel_to_full, voigt_to_mandel
+from inverse.elastic.directions import crystal_direction, rotation_to_z
+from inverse.elastic.tensor import StiffnessTensor
+from inverse.elastic.voigt import FloatArray, mandel_to_full, voigt_to_mandel
 
 __all__ = ["photoelastic_ratios", "thermal_stress"]
 

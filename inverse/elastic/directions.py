@@ -10,8 +10,8 @@ import re
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .symmetry import constant_names
-from .voigt import FloatArray
+from inverse.elastic.symmetry import constant_names
+from inverse.elastic.voigt import FloatArray
 
 __all__ = [
     "crystal_direction",

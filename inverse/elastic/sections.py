@@ -8,10 +8,10 @@ from itertools import permutations
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from .christoffel import PlaneWaves, plane_waves
-from .directions import crystal_direction, rotation_to_z
-from .tensor import StiffnessTensor
-from .voigt import FloatArray
+from inverse.elastic.christoffel import PlaneWaves, plane_waves
+from inverse.elastic.directions import crystal_direction, rotation_to_z
+from inverse.elastic.tensor import StiffnessTensor
+from inverse.elastic.voigt import FloatArray
 
 __all__ = ["Section", "plane_section"]
 

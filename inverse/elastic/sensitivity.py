@@ -8,11 +8,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .christoffel import PlaneWaves, plane_waves
-from .directions import crystal_direction
-from .symmetry import basis, linear_combination
-from .tensor import StiffnessTensor
-from .voigt import FloatArray, voigt_to_mandel, wave_strain
+from inverse.elastic.christoffel import PlaneWaves, plane_waves
+from inverse.elastic.directions import crystal_direction
+from inverse.elastic.symmetry import basis, linear_combination
+from inverse.elastic.tensor import StiffnessTensor
+from inverse.elastic.voigt import FloatArray, voigt_to_mandel, wave_strain
 
 __all__ = ["Reach", "constants_reached", "measured_derivatives", "velocity_derivatives"]
 

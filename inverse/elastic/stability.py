@@ -13,8 +13,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from .symmetry import constant_names, independent_part
-from .voigt import FloatArray, voigt_to_mandel
+from inverse.elastic.symmetry import constant_names, independent_part
+from inverse.elastic.voigt import FloatArray, voigt_to_mandel
 
 __all__ = ["Criterion", "born_criteria", "is_stable", "require_stable", "smallest_eigenvalue"]
 

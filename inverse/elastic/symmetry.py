@@ -15,7 +15,7 @@ from functools import cache
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .voigt import FloatArray
+from inverse.elastic.voigt import FloatArray
 
 __all__ = [
     "SYMMETRIES",

@@ -8,10 +8,22 @@ from dataclasses import InitVar, dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from .directions import crystal_direction, require_rotation, rotation_to_z
-from .stability import Criterion, born_criteria, is_stable, require_stable
-from .symmetry import basis, constant_names, implied_formula, independent_part, voigt_from_constants
-from .voigt import FloatArray, mandel_rotation, mandel_to_full, mandel_to_voigt, voigt_to_mandel
+from inverse.elastic.directions import crystal_direction, require_rotation, rotation_to_z
+from inverse.elastic.stability import Criterion, born_criteria, is_stable, require_stable
+from inverse.elastic.symmetry import (
+    basis,
+    constant_names,
+    implied_formula,
+    independent_part,
+    voigt_from_constants,
+)
+from inverse.elastic.voigt import (
+    FloatArray,
+    mandel_rotation,
+    mandel_to_full,
+    mandel_to_voigt,
+    voigt_to_mandel,
+)
 
 __all__ = ["StiffnessTensor"]
 

@@ -7,8 +7,8 @@ from collections.abc import Mapping
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.description.places import BoundStack, Slots
-from inverse.description.slots import ComputedSlot
+from inverse.description.sample.places import BoundStack, Slots
+from inverse.description.sample.slots import ComputedSlot
 
 __all__ = ["derived"]
 

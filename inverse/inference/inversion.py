@@ -10,19 +10,19 @@ from numpy.typing import NDArray
 
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import quantity
-from inverse.description.stack import Stack
-from inverse.inference.least_squares import least_squares
-from inverse.inference.parameters import parameters
-from inverse.inference.posterior import Member, Posterior
+from inverse.description.sample.stack import Stack
+from inverse.inference.mcmc.sampling import problem_hash, sample_posterior
+from inverse.inference.minima.least_squares import least_squares
+from inverse.inference.problem.parameters import parameters
+from inverse.inference.problem.posterior import Member, Posterior
+from inverse.inference.problem.trace_problem import trace_member
 from inverse.inference.result import result_tree
-from inverse.inference.sampling import problem_hash, sample_posterior
-from inverse.inference.trace_problem import trace_member
 
 if TYPE_CHECKING:
     import xarray as xr
 
-    from inverse.inference.ensembles import EnsembleRun
-    from inverse.inference.least_squares import Fit
+    from inverse.inference.mcmc.ensembles import EnsembleRun
+    from inverse.inference.minima.least_squares import Fit
 
 __all__ = ["Inversion"]
 
@@ -46,9 +46,9 @@ class Inversion:
     noise : {"correlated", "white", "student"} or mapping
         Noise model: white noise and a correlated discrepancy; white noise alone; or, where some delays are outliers,
         the correlated model with white noise of Student's t distribution (approximate, see
-        `inverse.inference.robust`). Or a mapping of ``white``, ``discrepancy``, ``correlation_time`` to priors that
-        replace the defaults of the correlated model. Standard errors of repeated scans in the trace set the
-        white noise per delay (`inverse.inference.scans`).
+        `inverse.inference.problem.robust`). Or a mapping of ``white``, ``discrepancy``, ``correlation_time`` to
+        priors that replace the defaults of the correlated model. Standard errors of repeated scans in the trace set the
+        white noise per delay (`inverse.inference.problem.scans`).
 
     Raises
     ------
@@ -213,9 +213,9 @@ class Inversion:
 
         Warnings tell where the residuals are not the noise assumed, and which fixed constants outweigh an interval.
         """
-        from inverse.inference.basins import minima_record
-        from inverse.inference.budget import constant_warnings
-        from inverse.inference.model_checks import noise_warnings
+        from inverse.inference.checks.basins import minima_record
+        from inverse.inference.checks.budget import constant_warnings
+        from inverse.inference.checks.model_checks import noise_warnings
 
         values = self.posterior.parameters.to_values(run.chain.reshape(-1, len(self.names)))
         warnings = [*noise_warnings(self, values, seed=seed), *constant_warnings(self, fit)]

@@ -16,8 +16,8 @@ from inverse.description.quantities import quantity
 from inverse.description.records import decode, encode
 from inverse.description.unknowns import describe_prior
 from inverse.inference.derived import derived
-from inverse.inference.ensembles import EnsembleRun
-from inverse.inference.parameters import Parameters
+from inverse.inference.mcmc.ensembles import EnsembleRun
+from inverse.inference.problem.parameters import Parameters
 
 if TYPE_CHECKING:
     import xarray as xr

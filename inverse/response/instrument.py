@@ -14,7 +14,7 @@ from typing import TypeVar
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.description.places import BoundStack
+from inverse.description.sample.places import BoundStack
 from inverse.response.media import Ambient, Medium, Sample, sample
 
 __all__ = ["drift", "in_stage_time", "measured_sample", "stage_factor"]

@@ -10,9 +10,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.description.cuts import COMPONENTS
-from inverse.description.places import BoundStack, Slots
 from inverse.description.quantities import QUANTITIES
+from inverse.description.sample.cuts import COMPONENTS
+from inverse.description.sample.places import BoundStack, Slots
 from inverse.response.carriers import CarrierConstants
 from inverse.response.flaws import Imperfection
 from inverse.response.recursion import OPEN

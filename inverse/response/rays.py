@@ -17,7 +17,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Stack
+from inverse.description.sample.stack import Stack
 from inverse.response.light import absorption, light_field
 from inverse.response.media import Sample, layers
 from inverse.response.sound import modulus

@@ -10,11 +10,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.limits import warn_if_not_plane
-from inverse.description.materials import Material
-from inverse.description.parts import Substrate
-from inverse.description.places import BoundStack, bind
+from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Stack
+from inverse.description.sample.parts import Substrate
+from inverse.description.sample.places import BoundStack, bind
+from inverse.description.sample.stack import Stack
 from inverse.response.basis import CHANNELS, PORTS, columns, displaced, fields
 from inverse.response.instrument import drift
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
@@ -78,7 +78,7 @@ def simulate(
     ValueError
         If a constant is missing, a delay is not finite or not increasing, or `values` names no unknown.
     """
-    from inverse.description.traces import make_trace
+    from inverse.description.trace.reading import make_trace
 
     delay = np.atleast_1d(np.asarray(delay, dtype=float))
     bound = bind(stack, setup)

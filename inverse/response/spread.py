@@ -13,7 +13,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.description.places import BoundStack
+from inverse.description.sample.places import BoundStack
 from inverse.response.instrument import measured_sample
 from inverse.response.media import Sample
 

@@ -13,9 +13,9 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.description.places import bind
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Stack
+from inverse.description.sample.places import bind
+from inverse.description.sample.stack import Stack
 from inverse.response.basis import Beams, arrival, fields
 from inverse.response.carriers import Pairs
 from inverse.response.heat import HeatField

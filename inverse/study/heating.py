@@ -17,10 +17,10 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.description.places import bind
 from inverse.description.pumpprobe import Beam, PumpProbe
 from inverse.description.quantities import check
-from inverse.description.stack import Stack
+from inverse.description.sample.places import bind
+from inverse.description.sample.stack import Stack
 from inverse.response.inverse_laplace import time_grid
 from inverse.response.light import absorption, light_field
 from inverse.response.media import Sample, sample

@@ -13,7 +13,7 @@ import resource, time
 from importlib.resources import files
 import numpy as np
 import inverse as inv
-from inverse.description.stack_file import read_stack
+from inverse.description.sample.stack_file import read_stack
 
 example = files("inverse") / "example"
 stack, setup = read_stack(example / "stack.toml")

@@ -8,10 +8,10 @@ import pytest
 from scipy import stats
 
 import inverse as inv
-from inverse.description.cuts import is_oblique
-from inverse.description.places import bind
 from inverse.description.records import decode, encode
-from inverse.description.stack_file import read_stack
+from inverse.description.sample.cuts import is_oblique
+from inverse.description.sample.places import bind
+from inverse.description.sample.stack_file import read_stack
 from inverse.elastic import StiffnessTensor, longitudinal_velocity
 
 SETUP = inv.PumpProbe(pump=400, probe=800, pulse_rms=0.3)

@@ -9,12 +9,12 @@ import pytest
 import xarray as xr
 
 import inverse as inv
-from inverse.description.arrivals import Estimate, find_train, slow_background
-from inverse.description.look import FirstLook, first_look
-from inverse.description.oscillation import find_oscillation
-from inverse.description.rising_edge import edge_prior, find_edge, white_noise
-from inverse.description.trace_checks import TraceError
-from inverse.description.traces import make_trace, read_trace
+from inverse.description.trace.arrivals import Estimate, find_train, slow_background
+from inverse.description.trace.checks import TraceError
+from inverse.description.trace.look import FirstLook, first_look
+from inverse.description.trace.oscillation import find_oscillation
+from inverse.description.trace.reading import make_trace, read_trace
+from inverse.description.trace.rising_edge import edge_prior, find_edge, white_noise
 
 STACKS = json.loads(
     (Path(__file__).parents[1] / "data" / "vectors" / "stacks.json").read_text(encoding="utf-8")

@@ -3,7 +3,7 @@
 import pytest
 
 import inverse as inv
-from inverse.description.places import bind
+from inverse.description.sample.places import bind
 
 
 def slots(layer):

@@ -5,10 +5,10 @@ import pytest
 from scipy import stats
 
 from inverse.description.limits import DIFFRACTION, SPREADING, plane_wave
-from inverse.description.materials import Material
-from inverse.description.parts import Layer, Substrate
+from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Stack
+from inverse.description.sample.parts import Layer, Substrate
+from inverse.description.sample.stack import Stack
 
 FIELDS = {"heat_capacity": 2.0, "conductivity": 100.0, "thermal_stress_coefficient": 2e-3, "density": 3.0}
 METAL = Material("metal", n=2.0 + 4.0j, velocity=6.0, **FIELDS)

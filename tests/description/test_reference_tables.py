@@ -7,9 +7,15 @@ import math
 
 import pytest
 
-from inverse.description.materials import Material, material
-from inverse.description.reference_tables import find, index_series, names, read_table, table_directory
-from inverse.description.reference_values import DEFAULT_SPREAD
+from inverse.description.material.properties import Material, material
+from inverse.description.material.reference_tables import (
+    find,
+    index_series,
+    names,
+    read_table,
+    table_directory,
+)
+from inverse.description.material.reference_values import DEFAULT_SPREAD
 
 TABLES = ("mechanical", "thermal", "electrons", "photoelastic")
 FIELDS = (

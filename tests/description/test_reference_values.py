@@ -11,9 +11,9 @@ import math
 import numpy as np
 import pytest
 
-from inverse.description.materials import Material, material
-from inverse.description.reference_tables import find, read_table
-from inverse.description.refractive_index import CoarseIndexWarning
+from inverse.description.material.properties import Material, material
+from inverse.description.material.reference_tables import find, read_table
+from inverse.description.material.refractive_index import CoarseIndexWarning
 
 
 def some_material(name: str, **keywords: str) -> Material:

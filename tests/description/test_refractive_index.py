@@ -6,8 +6,8 @@ from pathlib import Path
 
 import pytest
 
-from inverse.description.materials import Material
-from inverse.description.refractive_index import IndexTable, read_index
+from inverse.description.material.properties import Material
+from inverse.description.material.refractive_index import IndexTable, read_index
 
 ROWS = ((400.0, 0.49, 4.84), (532.0, 0.94, 6.42), (800.0, 2.77, 8.35))
 

@@ -6,13 +6,13 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.description.materials import Material, material
-from inverse.description.parts import Graded, Interface, Layer, Repeat, Substrate
-from inverse.description.places import bind
+from inverse.description.material.properties import Material, material
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.records import decode, encode
-from inverse.description.stack import Stack
-from inverse.description.stack_file import read_stack
+from inverse.description.sample.parts import Graded, Interface, Layer, Repeat, Substrate
+from inverse.description.sample.places import bind
+from inverse.description.sample.stack import Stack
+from inverse.description.sample.stack_file import read_stack
 from inverse.description.unknowns import Unknown
 
 SETUP = PumpProbe(pump=400, probe=800, pulse_rms=0.3)

@@ -7,11 +7,11 @@ import numpy as np
 import pytest
 import xarray as xr
 
-from inverse.description.lockin import rotate
-from inverse.description.text_tables import TableError, TableNotFoundError
-from inverse.description.trace_checks import MINIMUM_POINTS, TraceError
-from inverse.description.trace_columns import recognise
-from inverse.description.traces import channels_of, check_trace, make_trace, read_trace
+from inverse.description.trace.checks import MINIMUM_POINTS, TraceError
+from inverse.description.trace.columns import recognise
+from inverse.description.trace.lockin import rotate
+from inverse.description.trace.reading import channels_of, check_trace, make_trace, read_trace
+from inverse.description.trace.text_tables import TableError, TableNotFoundError
 
 DELAY = np.round(np.arange(-5.0, 20.0, 0.5), 3)
 SIGNAL = 1e-5 * np.where(DELAY > 0, np.exp(-DELAY / 10.0), 0.0) + 1e-7 * np.cos(DELAY)

@@ -8,11 +8,11 @@ from typing import Any
 import numpy as np
 from scipy import stats
 
-from inverse.description.places import BoundStack, Slot
-from inverse.inference.likelihood import Channel, TraceModel
-from inverse.inference.noise import Noise
-from inverse.inference.parameters import parameters
-from inverse.inference.posterior import Member, Posterior
+from inverse.description.sample.places import BoundStack, Slot
+from inverse.inference.problem.likelihood import Channel, TraceModel
+from inverse.inference.problem.noise import Noise
+from inverse.inference.problem.parameters import parameters
+from inverse.inference.problem.posterior import Member, Posterior
 from inverse.response.basis import Columns
 from inverse.response.inverse_laplace import time_grid
 

@@ -7,8 +7,8 @@ import xarray as xr
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.ensembles import EnsembleRun
-from inverse.inference.least_squares import Fit
+from inverse.inference.mcmc.ensembles import EnsembleRun
+from inverse.inference.minima.least_squares import Fit
 from inverse.inference.result import result_tree
 
 SETUP = inv.PumpProbe(pump=400, probe=800, pulse_rms=0.3)

@@ -10,7 +10,7 @@ from problems import SETUP, bonded, noisy
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.basins import basins, minima_record
+from inverse.inference.checks.basins import basins, minima_record
 
 PRIORS = {
     "Al.thickness": stats.norm(60, 10),

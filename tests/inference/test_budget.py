@@ -7,11 +7,11 @@ from problems import BOND, FILM, SETUP, bonded, noisy
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.budget import budget, constant_warnings, linearise
-from inverse.inference.constants import DEFAULT_RELATIVE_SPREAD, fixed_constants, with_constant
-from inverse.inference.least_squares import refine
-from inverse.inference.minimise import minimise
-from inverse.inference.projection import Projected
+from inverse.inference.checks.budget import budget, constant_warnings, linearise
+from inverse.inference.checks.constants import DEFAULT_RELATIVE_SPREAD, fixed_constants, with_constant
+from inverse.inference.minima.least_squares import refine
+from inverse.inference.minima.minimise import minimise
+from inverse.inference.minima.projection import Projected
 
 DELAY = np.arange(1.0, 41.0)
 SIGMA = 0.05

@@ -10,9 +10,9 @@ import numpy as np
 import pytest
 from densities import CorrelatedGaussian, gaussian
 
-from inverse.inference import checkpoint as checkpoint_module
-from inverse.inference.checkpoint import read_checkpoint
-from inverse.inference.ensembles import run_ensembles
+from inverse.inference.mcmc import checkpoint as checkpoint_module
+from inverse.inference.mcmc.checkpoint import read_checkpoint
+from inverse.inference.mcmc.ensembles import run_ensembles
 
 NAMES = ("a", "b", "c")
 HERE = Path(__file__).parent
@@ -118,7 +118,7 @@ SCRIPT = """
 import sys
 import numpy as np
 from densities import CorrelatedGaussian
-from inverse.inference.ensembles import run_ensembles
+from inverse.inference.mcmc.ensembles import run_ensembles
 
 run_ensembles(
     CorrelatedGaussian(10, 0.8),

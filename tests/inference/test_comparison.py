@@ -11,9 +11,15 @@ from scipy import stats
 from scipy.special import logsumexp
 
 import inverse as inv
-from inverse.inference.comparison import block_log_density, blocks, compare, to_arviz, with_log_likelihood
-from inverse.inference.likelihood import TraceModel
-from inverse.inference.noise import Noise
+from inverse.inference.checks.comparison import (
+    block_log_density,
+    blocks,
+    compare,
+    to_arviz,
+    with_log_likelihood,
+)
+from inverse.inference.problem.likelihood import TraceModel
+from inverse.inference.problem.noise import Noise
 
 TRUTH = {"Al.thickness": 60.0, "Al|Si.compliance": 0.02}
 WELDED = {"Al.thickness": 60.0}

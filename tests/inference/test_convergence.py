@@ -2,7 +2,7 @@ import arviz as az
 import numpy as np
 import pytest
 
-from inverse.inference.convergence import (
+from inverse.inference.mcmc.convergence import (
     assess,
     bulk_ess,
     burn_in_steps,

@@ -10,8 +10,8 @@ import pytest
 from problems import BOND, FILM, SETUP, bonded, noisy
 
 import inverse as inv
-from inverse.inference.minimise import jacobian
-from inverse.inference.projection import Projected
+from inverse.inference.minima.minimise import jacobian
+from inverse.inference.minima.projection import Projected
 from inverse.response.basis import arrival, spectra, take
 from inverse.response.instrument import measured_sample
 from inverse.response.inverse_laplace import to_delays

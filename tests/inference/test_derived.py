@@ -4,10 +4,10 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.description.materials import Material
-from inverse.description.places import bind
+from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Interface, Layer, Stack, Substrate
+from inverse.description.sample.places import bind
+from inverse.description.sample.stack import Interface, Layer, Stack, Substrate
 from inverse.inference.derived import SILICA, derived
 
 COMMON = {"n": 2.0 + 1.0j, "heat_capacity": 2.4, "conductivity": 100.0, "thermal_stress_coefficient": 1e-3}

@@ -6,9 +6,9 @@ from problems import SETUP, bonded, noisy, normal_draws, sampled
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.combinations import combinations_of
-from inverse.inference.diagnostics import information_bits, normal_bits, what_data_added
-from inverse.inference.identifiability import Local, Ridge, local_covariances, ridges
+from inverse.inference.checks.combinations import combinations_of
+from inverse.inference.checks.diagnostics import information_bits, normal_bits, what_data_added
+from inverse.inference.checks.identifiability import Local, Ridge, local_covariances, ridges
 
 TIME_ZERO = stats.norm(0, 0.05)
 

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.inference.elimination import eliminate
+from inverse.inference.problem.elimination import eliminate
 
 RNG = np.random.default_rng(5)
 DATA, COEFFICIENTS = 12, 3

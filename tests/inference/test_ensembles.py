@@ -11,10 +11,10 @@ from densities import (
     two_modes,
 )
 
-from inverse.inference import advance, loop
-from inverse.inference.convergence import effective_sample_size, walker_major
-from inverse.inference.ensembles import run_ensembles
-from inverse.inference.executor import worker_pool
+from inverse.inference.mcmc import advance, loop
+from inverse.inference.mcmc.convergence import effective_sample_size, walker_major
+from inverse.inference.mcmc.ensembles import run_ensembles
+from inverse.inference.mcmc.executor import worker_pool
 
 
 def starts(ensembles=4, walkers=16, dimension=3, seed=0):

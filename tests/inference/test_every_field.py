@@ -6,7 +6,7 @@ from problems import SETUP
 from scipy import stats
 
 import inverse as inv
-from inverse.description.materials import Material
+from inverse.description.material.properties import Material
 
 DELAY = np.arange(-5, 60, 0.5)
 INDEX = {400: 0.49 + 4.84j, 800: 2.77 + 8.35j}

@@ -5,8 +5,15 @@ from concurrent.futures import Executor, Future, ThreadPoolExecutor
 
 import pytest
 
-from inverse.inference import executor
-from inverse.inference.executor import Shared, WorkerPool, available_cores, completed, run_tasks, worker_pool
+from inverse.inference.mcmc import executor
+from inverse.inference.mcmc.executor import (
+    Shared,
+    WorkerPool,
+    available_cores,
+    completed,
+    run_tasks,
+    worker_pool,
+)
 
 
 class Counting:

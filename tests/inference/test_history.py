@@ -1,7 +1,7 @@
 import numpy as np
 import pytest
 
-from inverse.inference.history import History
+from inverse.inference.mcmc.history import History
 
 STEP_BYTES = 8 * 2 * 3 * (1 + 1)
 

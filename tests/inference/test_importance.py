@@ -4,8 +4,8 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.inference.importance import LARGEST_SHAPE, importance_draws, pareto_shape, smoothed_weights
-from inverse.inference.independence import StudentMixture
+from inverse.inference.mcmc.importance import LARGEST_SHAPE, importance_draws, pareto_shape, smoothed_weights
+from inverse.inference.mcmc.independence import StudentMixture
 
 MEAN = np.array([1.0, -2.0, 0.5])
 ROOT = np.array([[1.0, 0.0, 0.0], [0.8, 0.5, 0.0], [-0.3, 0.4, 2.0]])

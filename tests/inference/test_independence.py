@@ -4,8 +4,8 @@ import numpy as np
 import pytest
 from scipy.stats import multivariate_t
 
-from inverse.inference.ensembles import run_ensembles
-from inverse.inference.independence import DEGREES, IndependenceMove, StudentMixture, adapt, fit_mixture
+from inverse.inference.mcmc.ensembles import run_ensembles
+from inverse.inference.mcmc.independence import DEGREES, IndependenceMove, StudentMixture, adapt, fit_mixture
 
 SCALE = np.array([1.0, 0.5, 2.0, 1.0])
 CORRELATION = 0.7 * np.ones((4, 4)) + 0.3 * np.eye(4)

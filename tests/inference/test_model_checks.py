@@ -6,10 +6,10 @@ from problems import SETUP, bonded, noisy, normal_draws, sampled
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.drift_test import drift_tests
-from inverse.inference.model_checks import check_model, ljung_box, noise_warnings
-from inverse.inference.noise import Noise
-from inverse.inference.residuals import autocorrelation, innovations, replicates
+from inverse.inference.checks.drift_test import drift_tests
+from inverse.inference.checks.model_checks import check_model, ljung_box, noise_warnings
+from inverse.inference.checks.residuals import autocorrelation, innovations, replicates
+from inverse.inference.problem.noise import Noise
 
 TRUTH = {"Al.thickness": 60.0, "Al.velocity": 6.42, "Al|Si.compliance": 0.02}
 UNEVEN = np.concatenate([np.arange(-5, 8, 0.25), np.arange(8, 60, 0.5)])

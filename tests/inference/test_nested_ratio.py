@@ -6,7 +6,7 @@ import xarray as xr
 from fake_results import posterior
 from scipy import integrate, stats
 
-from inverse.inference.nested_ratio import savage_dickey
+from inverse.inference.checks.nested_ratio import savage_dickey
 
 NAME = "Al|Si.compliance"
 SCALE = 0.05

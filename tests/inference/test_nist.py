@@ -6,7 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 import pytest
 
-from inverse.inference.minimise import minimise
+from inverse.inference.minima.minimise import minimise
 
 exp = np.exp
 

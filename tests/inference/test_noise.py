@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from inverse.inference.noise import Noise, noise_priors
+from inverse.inference.problem.noise import Noise, noise_priors
 
 RNG = np.random.default_rng(8)
 DELAY = np.sort(RNG.uniform(0, 40, 60))

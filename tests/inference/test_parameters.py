@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.inference.parameters import parameters
+from inverse.inference.problem.parameters import parameters
 
 PRIORS = {
     "norm": stats.norm(6.42, 0.1),

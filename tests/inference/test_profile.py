@@ -10,10 +10,10 @@ from problems import SETUP, bonded, noisy
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.least_squares import Basin, Fit
-from inverse.inference.minimise import Minimum
-from inverse.inference.parameters import Parameters, parameters
-from inverse.inference.profile import LEVELS, profile
+from inverse.inference.minima.least_squares import Basin, Fit
+from inverse.inference.minima.minimise import Minimum
+from inverse.inference.minima.profile import LEVELS, profile
+from inverse.inference.problem.parameters import Parameters, parameters
 
 QUIET = Minimum(np.zeros(1), 0.0, np.eye(1), 1.0, np.zeros((0, 1)), 0, True, "")
 

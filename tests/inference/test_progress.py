@@ -2,8 +2,8 @@ import io
 
 import pytest
 
-from inverse.inference import progress
-from inverse.inference.progress import Bar, Lines, Progress, Silent, reporter
+from inverse.inference.mcmc import progress
+from inverse.inference.mcmc.progress import Bar, Lines, Progress, Silent, reporter
 
 NEWS = Progress(200, 1000, 312.4, 1000, 1.0234, 1.01)
 

@@ -8,9 +8,9 @@ from problems import SETUP, bonded, noisy
 from scipy import integrate, optimize, stats
 
 import inverse as inv
-from inverse.inference.budget import linearise
-from inverse.inference.noise import FREEDOM, Noise
-from inverse.inference.robust import eliminate_student, gaussian_noise, student_residuals
+from inverse.inference.checks.budget import linearise
+from inverse.inference.problem.noise import FREEDOM, Noise
+from inverse.inference.problem.robust import eliminate_student, gaussian_noise, student_residuals
 
 DELAY = np.arange(60) * 1.0
 SHAPE = 3 * np.exp(-DELAY / 20)

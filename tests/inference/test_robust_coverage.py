@@ -5,7 +5,7 @@ import numpy as np
 import pytest
 from linear import linear_problem
 
-from inverse.inference.noise import Noise, noise_priors
+from inverse.inference.problem.noise import Noise, noise_priors
 
 DELAY = np.arange(1.0, 81.0)
 SHAPES = np.stack(

@@ -6,7 +6,7 @@ from problems import SETUP, bonded
 from scipy import special, stats
 
 import inverse as inv
-from inverse.inference.scans import moderated, relative_noise
+from inverse.inference.problem.scans import moderated, relative_noise
 
 DELAY = np.linspace(-5.0, 60.0, 261)
 

@@ -106,7 +106,7 @@ def test_log_prob_of_constants_is_set_by_set_and_refuses_unstable_ones(orientati
 
 
 def test_derived_quantities_of_a_cut_layer() -> None:
-    from inverse.description.places import bind
+    from inverse.description.sample.places import bind
     from inverse.inference.derived import derived
 
     layer = cut("110", stiffness={**COPPER, "c11": stats.norm(168, 8)}, density=8.932)

@@ -77,7 +77,7 @@ def test_no_stress_is_no_trace_and_stress_scales_it():
 def test_an_unknown_stress_goes_by_its_place():
     from scipy import stats
 
-    from inverse.description.places import bind
+    from inverse.description.sample.places import bind
 
     stack = inv.Stack(
         inv.Layer(CLEAR, thickness=60.0, initial_stress=stats.norm(0, 0.1)), inv.Substrate(CLEAR)

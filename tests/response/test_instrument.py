@@ -6,7 +6,7 @@ from build import crystal, liquid, metal, one, stacked
 from scipy import stats
 
 import inverse as inv
-from inverse.description.places import bind
+from inverse.description.sample.places import bind
 from inverse.response.basis import basis, columns
 from inverse.response.instrument import drift, in_stage_time, stage_factor
 from inverse.response.inverse_laplace import time_grid

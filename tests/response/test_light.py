@@ -5,7 +5,7 @@ import pytest
 import tmm
 from records import one
 
-from inverse.description.materials import material
+from inverse.description.material.properties import material
 from inverse.response.light import absorption, light_field
 
 

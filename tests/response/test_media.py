@@ -7,10 +7,10 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.description.materials import Material
-from inverse.description.places import bind
+from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Interface, Layer, Stack, Substrate
+from inverse.description.sample.places import bind
+from inverse.description.sample.stack import Interface, Layer, Stack, Substrate
 from inverse.response.media import sample
 from inverse.response.recursion import OPEN
 

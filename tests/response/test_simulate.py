@@ -7,9 +7,9 @@ from hypothesis import strategies as st
 from records import DATA, STACKS
 from scipy import stats
 
-from inverse.description.materials import Material
+from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Interface, Layer, Stack, Substrate
+from inverse.description.sample.stack import Interface, Layer, Stack, Substrate
 from inverse.response.simulate import DEFAULT_HEAT, DEFAULT_STRAIN, simulate
 
 DELAY = np.linspace(-3, 60, 316)

@@ -27,7 +27,7 @@ from hypothesis import strategies as st
 from records import one
 from scipy import optimize
 
-from inverse.description.materials import material
+from inverse.description.material.properties import material
 from inverse.response.basis import basis, columns
 from inverse.response.inverse_laplace import time_grid
 from inverse.response.sound import modulus

@@ -12,7 +12,7 @@ from solvers.time_domain import simulate
 from solvers.transfer_matrices import Beam
 
 import inverse as inv
-from inverse.study.replicates import draw_traces
+from inverse.study.coverage.replicates import draw_traces
 
 SPLITS = Path(__file__).parent.parent / "data" / "splits"
 RECORD = json.loads((SPLITS / "truth.json").read_text())

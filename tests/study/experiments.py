@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 
-from inverse.study.decisions import decided, pairs_of, tail_probability
-from inverse.study.hierarchy import sample_normal_hierarchy
-from inverse.study.normal_sites import NormalWafer
-from inverse.study.scatter import SplitPriors
+from inverse.study.splits.decisions import decided, pairs_of, tail_probability
+from inverse.study.splits.hierarchy import sample_normal_hierarchy
+from inverse.study.splits.normal_sites import NormalWafer
+from inverse.study.splits.scatter import SplitPriors
 
 
 def normal_experiment(rng, centres, wafers=4, sites=2, between=0.1, within=0.03, noise=0.02):

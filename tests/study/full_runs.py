@@ -21,8 +21,8 @@ from aluminium_on_silicon import (
 )
 
 import inverse as inv
-from inverse.inference.executor import worker_pool
-from inverse.study.coverage import check_coverage, check_known
+from inverse.inference.mcmc.executor import worker_pool
+from inverse.study.coverage.check import check_coverage, check_known
 
 RUN = {"method": "importance", "progress": True}
 

@@ -13,10 +13,10 @@ import xarray as xr
 from scipy import stats
 from toy import NAME, PRIOR, other_toy, toy, toy_trace, toy_traces
 
-from inverse.inference.executor import worker_pool
-from inverse.study.batch import batch
-from inverse.study.batch_store import SiteRecord, SiteStore
-from inverse.study.splits import compare_splits
+from inverse.inference.mcmc.executor import worker_pool
+from inverse.study.batches.batch import batch
+from inverse.study.batches.store import SiteRecord, SiteStore
+from inverse.study.splits.compare import compare_splits
 
 
 def quiet(problem, traces, **options):
@@ -168,7 +168,7 @@ import os, sys
 from pathlib import Path
 sys.path.insert(0, sys.argv[2])
 from toy import toy, toy_traces
-from inverse.study.batch import batch
+from inverse.study.batches.batch import batch
 def stop(news):
     if news["done"] == 4:
         os.kill(os.getpid(), 9)
@@ -294,7 +294,7 @@ def test_a_batch_goes_straight_into_a_comparison():
 
 def test_a_thousand_sites_fit_into_memory():
     """Twenty quantities, 400 draws: 64 MB of draws; the rest stays under 10 MB."""
-    from inverse.study.batch_results import results_dataset
+    from inverse.study.batches.results import results_dataset
 
     names = {f"q{k}": {"units": "1", "prior": ""} for k in range(20)}
     record = SiteRecord("", "", "ok", "", names, np.ones((20, 400)), np.ones((20, 5)))

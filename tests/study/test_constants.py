@@ -8,8 +8,8 @@ from scipy import integrate, stats
 
 import inverse as inv
 from inverse.elastic import StiffnessTensor, averages, plane_waves
-from inverse.study.constants import ConstantsInversion
-from inverse.study.measurements import BrillouinShift, EchoTime, Velocity
+from inverse.study.stiffness.constants import ConstantsInversion
+from inverse.study.stiffness.measurements import BrillouinShift, EchoTime, Velocity
 
 LABELS = (
     "longitudinal",

@@ -7,9 +7,9 @@ import pytest
 from scipy import stats
 
 from inverse.elastic import BRANCHES, branch_moduli
-from inverse.study.constants import ConstantsInversion
-from inverse.study.measurements import Velocity
-from inverse.study.velocity_posterior import VelocityPosterior
+from inverse.study.stiffness.constants import ConstantsInversion
+from inverse.study.stiffness.measurements import Velocity
+from inverse.study.stiffness.velocity_posterior import VelocityPosterior
 
 REPLICATES = 60
 

@@ -10,15 +10,15 @@ from aluminium_on_silicon import AL, AL_HOT, SETUP, SI, FromModel, split_problem
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.executor import worker_pool
-from inverse.inference.parameters import parameters
-from inverse.plot_coverage import coverage as picture
-from inverse.study import coverage
-from inverse.study.coverage import Coverage, check_coverage, check_known
-from inverse.study.coverage_store import Store
-from inverse.study.judgement import Replicate, Sampling
-from inverse.study.ranks import DRAWS, rank_of
-from inverse.study.replicates import draw_traces, draw_truth, quantities, with_data
+from inverse.inference.mcmc.executor import worker_pool
+from inverse.inference.problem.parameters import parameters
+from inverse.plot.coverage_figure import coverage as picture
+from inverse.study.coverage import check as coverage
+from inverse.study.coverage.check import Coverage, check_coverage, check_known
+from inverse.study.coverage.judgement import Replicate, Sampling
+from inverse.study.coverage.ranks import DRAWS, rank_of
+from inverse.study.coverage.replicates import draw_traces, draw_truth, quantities, with_data
+from inverse.study.coverage.store import Store
 
 LEVELS = (0.5, 0.68, 0.9, 0.95)
 

@@ -5,7 +5,7 @@ import pytest
 from experiments import decisions, normal_experiment
 from scipy import stats
 
-from inverse.study.decisions import decided, levels, most_equal_pairs, tail_probability
+from inverse.study.splits.decisions import decided, levels, most_equal_pairs, tail_probability
 
 
 def test_three_splits_are_judged_at_a_third_and_then_in_full():

@@ -4,8 +4,8 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.study.gauge import reference_wafer
-from inverse.study.splits import compare_splits
+from inverse.study.splits.compare import compare_splits
+from inverse.study.splits.gauge import reference_wafer
 
 COMPLIANCE = "Al|Si.compliance"
 WIDE = stats.uniform(1e-6, 10)

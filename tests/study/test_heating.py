@@ -5,10 +5,10 @@ import warnings
 import numpy as np
 import pytest
 
-from inverse.description.materials import Material
-from inverse.description.parts import Interface, Layer, Substrate
+from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.stack import Stack
+from inverse.description.sample.parts import Interface, Layer, Substrate
+from inverse.description.sample.stack import Stack
 from inverse.study.heating import Heating, HeatingWarning, heating
 
 COMMON = {"density": 3.0, "velocity": 6.0, "thermal_stress_coefficient": 2e-3, "heat_capacity": 2.5}

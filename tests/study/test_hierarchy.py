@@ -5,10 +5,10 @@ import pytest
 from experiments import monte_carlo_error, normal_experiment
 from scipy import stats
 
-from inverse.study.hierarchy import Wafer, sample_hierarchy, sample_normal_hierarchy
-from inverse.study.normal_sites import NormalWafer, normal_nodes
-from inverse.study.scatter import SplitPriors, cells
-from inverse.study.tabulated import Tabulated, normal_table, product, trimmed
+from inverse.study.splits.hierarchy import Wafer, sample_hierarchy, sample_normal_hierarchy
+from inverse.study.splits.normal_sites import NormalWafer, normal_nodes
+from inverse.study.splits.scatter import SplitPriors, cells
+from inverse.study.stiffness.tabulated import Tabulated, normal_table, product, trimmed
 
 # Eight schools: data and model (mu ~ N(0, 5), tau ~ half-Cauchy(0, 5)) as in posteriordb, eight_schools_noncentered.
 EFFECT = (28, 8, -3, 7, -1, 1, 18, 12)

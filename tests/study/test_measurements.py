@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.study.measurements import BrillouinShift, EchoTime, Velocity, named, velocities
+from inverse.study.stiffness.measurements import BrillouinShift, EchoTime, Velocity, named, velocities
 
 BRANCH = "longitudinal"
 

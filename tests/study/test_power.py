@@ -5,8 +5,8 @@ import pytest
 from experiments import site_draws
 from scipy import stats
 
-from inverse.study.power import comparison_power
-from inverse.study.splits import compare_splits
+from inverse.study.splits.compare import compare_splits
+from inverse.study.splits.power import comparison_power
 
 COMPLIANCE = "Al|Si.compliance"
 

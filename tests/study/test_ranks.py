@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.study.ranks import (
+from inverse.study.coverage.ranks import (
     CELLS,
     DRAWS,
     checked_levels,

@@ -7,7 +7,7 @@ import pytest
 from scipy import stats
 
 import inverse as inv
-from inverse.study.recipe import Recipe, _with
+from inverse.study.batches.recipe import Recipe, _with
 
 PRIOR = stats.norm(60, 2)
 

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.study.site_likelihood import fit_mixture, site_likelihood
+from inverse.study.splits.site_likelihood import fit_mixture, site_likelihood
 
 PRIOR = stats.halfcauchy(scale=0.05)
 SIXTY = np.linspace(1, 2, 60)

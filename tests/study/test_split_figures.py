@@ -7,9 +7,9 @@ from experiments import site_draws
 from matplotlib import colormaps
 from scipy import stats
 
-from inverse.plot_splits import split_differences, splits, wafer_map
-from inverse.report_splits import splits_table
-from inverse.study.splits import compare_splits
+from inverse.plot.splits_figure import split_differences, splits, wafer_map
+from inverse.report.splits import splits_table
+from inverse.study.splits.compare import compare_splits
 
 COMPLIANCE = "Al|Si.compliance"
 PRIOR = stats.halfcauchy(scale=0.05)

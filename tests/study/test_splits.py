@@ -9,8 +9,8 @@ from experiments import site_draws
 from scipy import stats
 
 from inverse.description.unknowns import describe_prior
-from inverse.study.scatter import SplitPriors
-from inverse.study.splits import compare_splits
+from inverse.study.splits.compare import compare_splits
+from inverse.study.splits.scatter import SplitPriors
 
 COMPLIANCE = "Al|Si.compliance"
 PRIOR = stats.halfcauchy(scale=0.05)

@@ -19,8 +19,8 @@ from aluminium_on_silicon import (
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.executor import worker_pool
-from inverse.study.coverage import check_known
+from inverse.inference.mcmc.executor import worker_pool
+from inverse.study.coverage.check import check_known
 
 pytestmark = [pytest.mark.slow, pytest.mark.unproven]
 

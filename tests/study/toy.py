@@ -13,7 +13,7 @@ import xarray as xr
 from scipy import stats
 
 from inverse.description.unknowns import describe_prior
-from inverse.inference.parameters import parameters
+from inverse.inference.problem.parameters import parameters
 
 PRIOR = stats.halfcauchy(scale=0.05)
 NAME = "Al|Si.compliance"

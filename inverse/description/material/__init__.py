@@ -1,0 +1,1 @@
+"""Properties of materials and where each value comes from."""

@@ -1,0 +1,1 @@
+"""The stack: layers, interfaces, and the places of its unknowns."""

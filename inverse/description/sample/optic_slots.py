@@ -1,0 +1,26 @@
+"""Places for strain- and thermo-optic coefficients that are unknowns; the others are eliminated in a fit."""
+
+from __future__ import annotations
+
+from inverse.description.material.properties import Material
+from inverse.description.sample.slots import Slots, slot_of
+
+__all__ = ["OPTIC", "optic_slots"]
+
+OPTIC = ("dn_dstrain", "dn_dT")
+
+
+def optic_slots(material: Material) -> Slots:
+    """Return the places of the coefficients of which a part is unknown, field -> `Slot`, named by the material.
+
+    Both parts of such a pair are places: a part that is a number is taken as known. All media of one material
+    share them.
+    """
+    slots: Slots = {}
+    for field in OPTIC:
+        pair = getattr(material, field)
+        if isinstance(pair, tuple):
+            for part, value in zip(("real", "imag"), pair, strict=True):
+                name = f"{field}_{part}"
+                slots[name] = slot_of(name, value, material.name, "given by the user", 0.0)
+    return slots

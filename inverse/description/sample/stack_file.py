@@ -1,0 +1,124 @@
+"""A stack and its measurement from a TOML file."""
+
+from __future__ import annotations
+
+import ast
+import os
+import re
+import tomllib
+from pathlib import Path
+from typing import Any
+
+from inverse.description.pumpprobe import INSTRUMENT, PumpProbe
+from inverse.description.sample.parts import Graded, Interface, Layer, Part, Repeat, Substrate
+from inverse.description.sample.stack import Stack
+from inverse.description.unknowns import Unknown, is_distribution
+
+__all__ = ["read_stack"]
+
+_CALL = re.compile(r"^\s*([a-z_]+)\s*\((.*)\)\s*$")
+
+
+def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
+    """Read a stack and a setup.
+
+    Parameters
+    ----------
+    path : path
+        A TOML file with a table ``[setup]`` (fields of `PumpProbe`), an optional ``ambient`` and one ``[[part]]``
+        per part, top to bottom, holding ``layer``, ``interface`` (any value), ``substrate``, ``graded`` (the two
+        materials) or ``repeat`` (a number, with the parts of a period as ``[[part.part]]``). A prior is written as
+        text, ``velocity = "norm(6.42, 0.10)"``, by the name of a scipy.stats family; the same shared unknown in
+        several places as ``"v_film: norm(6.42, 0.10)"``; elastic constants as
+        ``stiffness = {symmetry = "cubic", c11 = "norm(107, 5)", c12 = 60.4, c44 = 28.3}``.
+
+    Returns
+    -------
+    stack : Stack
+    setup : PumpProbe
+
+    Raises
+    ------
+    ValueError
+        If the file does not exist, is not TOML, or holds a field or a prior that makes no sense.
+    """
+    source = Path(path)
+    if not source.is_file():
+        raise ValueError(f"There is no stack file '{source}'.")
+    try:
+        content = tomllib.loads(source.read_text(encoding="utf-8"))
+    except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
+        raise ValueError(f"'{source.name}' is not a TOML file: {error}") from None
+    for key in ("setup", "part"):
+        if key not in content:
+            raise ValueError(
+                f"'{source.name}' has no [{key}] table; it needs [setup] and one [[part]] per part."
+            )
+    shared: dict[str, Unknown] = {}
+    parts = [_part(dict(entry), position, shared) for position, entry in enumerate(content["part"], 1)]
+    try:
+        setup = PumpProbe(
+            **{k: _value(k, v, shared) if k in INSTRUMENT else v for k, v in content["setup"].items()}
+        )
+    except TypeError as error:
+        raise ValueError(
+            f"[setup] does not fit PumpProbe (pump, probe, pulse_rms, fluence): {error}"
+        ) from None
+    return Stack(*parts, ambient=content.get("ambient", "air")), setup
+
+
+_KINDS = ("layer", "interface", "substrate", "graded", "repeat")
+
+
+def _part(entry: dict[str, Any], position: int, shared: dict[str, Unknown]) -> Part:
+    kinds = [kind for kind in _KINDS if kind in entry]
+    if len(kinds) != 1:
+        raise ValueError(f"[[part]] {position} must hold exactly one of {', '.join(_KINDS)}; it has {kinds}.")
+    name = entry.pop(kinds[0])
+    inner = [_part(dict(part), position, shared) for part in entry.pop("part", [])]
+    fields = {key: _value(key, value, shared) for key, value in entry.items()}
+    try:
+        return _made(kinds[0], name, inner, fields)
+    except TypeError as error:
+        raise ValueError(f"[[part]] {position} ({kinds[0]}) does not fit: {error}") from None
+
+
+def _made(kind: str, name: Any, inner: list[Part], fields: dict[str, Any]) -> Part:
+    if kind == "interface":
+        return Interface(**fields)
+    if kind == "repeat":
+        return Repeat(name, *inner, **fields)
+    if kind == "graded":
+        return Graded(*name, **fields)
+    return Layer(name, **fields) if kind == "layer" else Substrate(name, **fields)
+
+
+def _value(key: str, value: Any, shared: dict[str, Unknown]) -> Any:
+    if isinstance(value, dict):
+        return {name: _value(name, inner, shared) for name, inner in value.items()}
+    if key in ("orientation", "name", "symmetry") or not isinstance(value, str):
+        return value
+    name, _, text = value.rpartition(":")
+    prior = _prior(key, text)
+    return shared.setdefault(name.strip(), Unknown(name.strip(), prior)) if name else prior
+
+
+def _prior(key: str, text: str) -> Any:
+    from scipy import stats
+
+    match = _CALL.match(text)
+    family = getattr(stats, match.group(1), None) if match else None
+    if match is None or family is None:
+        raise ValueError(
+            f'{key} = "{text}" is no prior; write a scipy.stats family, such as "norm(6.42, 0.10)".'
+        )
+    try:
+        call = ast.parse(f"f({match.group(2)})", mode="eval").body
+        assert isinstance(call, ast.Call)
+        arguments = [ast.literal_eval(a) for a in call.args]
+        prior = family(*arguments, **{k.arg: ast.literal_eval(k.value) for k in call.keywords if k.arg})
+    except (SyntaxError, ValueError, TypeError, AssertionError) as error:
+        raise ValueError(f'{key} = "{text}" does not make a distribution: {error}') from None
+    if not is_distribution(prior):
+        raise ValueError(f'{key} = "{text}" is not a continuous distribution.')
+    return prior

@@ -1,0 +1,1 @@
+"""What was measured: files, checks, and a first look that needs no model."""

@@ -1,0 +1,1 @@
+"""What the data added, whether the model describes the trace, and what each number rests on."""

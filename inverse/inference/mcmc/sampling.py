@@ -1,0 +1,180 @@
+"""Sample the posterior: ensembles started in every minimum that matters, run until the draws suffice."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+from collections.abc import Callable, Sequence
+from concurrent.futures import Executor
+from typing import TYPE_CHECKING, Any, Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.inference.mcmc.ensembles import EnsembleRun, run_ensembles
+from inverse.inference.mcmc.independence import IndependenceMove, StudentMixture, adapt
+from inverse.inference.minima.least_squares import Basin, Density, Fit
+from inverse.inference.result import problem_record
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+    from inverse.inference.inversion import Inversion
+
+__all__ = ["first_mixture", "prepare", "problem_hash", "sample_posterior"]
+
+Array = NDArray[np.float64]
+
+_CHUNK = 50
+
+_LEAST_WEIGHT = 1e-3
+"""A minimum with less probability than this in the normal approximation gets no walkers."""
+
+
+class Problem(Protocol):
+    """What can be sampled: named unknowns, a density, minima to start from, and a result to fill."""
+
+    @property
+    def names(self) -> tuple[str, ...]: ...
+
+    @property
+    def posterior(self) -> Density: ...
+
+    def least_squares(self, *, seed: int) -> Fit: ...
+
+    def fingerprint(self) -> str: ...
+
+    def result(self, run: EnsembleRun, seed: int, fit: Fit) -> xr.DataTree: ...
+
+
+def sample_posterior(
+    inversion: Problem,
+    *,
+    seed: int,
+    fit: Fit | None = None,
+    ess: float = 1000,
+    rhat: float = 1.01,
+    ensembles: int = 4,
+    walkers: int | None = None,
+    max_steps: int = 20000,
+    checkpoint: str | os.PathLike[str] | None = None,
+    executor: Executor | None = None,
+    moves: Any = None,
+    progress: bool | Callable[[dict[str, Any]], object] = True,
+) -> xr.DataTree:
+    """Sample the posterior of a problem.
+
+    Parameters
+    ----------
+    inversion : Inversion or ConstantsInversion
+    seed : int
+        Equal seeds give equal draws, whatever the executor.
+    fit : Fit, optional
+        Minima to start from; least squares is run first if left out.
+    ess : float
+        Effective sample size that every unknown must reach.
+    rhat : float
+        Largest split R-hat between ensembles allowed.
+    ensembles : int
+        Independent ensembles; each is a chain of the result.
+    walkers : int, optional
+        Per ensemble; by default the larger of 24 and three per unknown, made even.
+    max_steps : int
+        Most steps per ensemble; the result says if they did not suffice.
+    checkpoint : path, optional
+        File from which a killed run goes on to the same draws.
+    executor : concurrent.futures.Executor, optional
+        Runs the ensembles side by side.
+    moves : emcee moves, optional
+        By default seven steps in ten offer fresh draws from an approximation of the posterior that was fixed before
+        the run, the others are differential evolution and stretch moves.
+    progress : bool or callable
+        Bar, nothing, or a function that is given the state.
+
+    Returns
+    -------
+    xarray.DataTree
+        ArviZ's schema: posterior (unknowns and derived quantities, units in attrs), sample_stats, prior,
+        observed_data, constant_data, posterior_predictive.
+
+    Raises
+    ------
+    ValueError
+        For arguments that will not do or a checkpoint of another problem.
+    """
+    if ensembles < 2:
+        raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
+    fit = inversion.least_squares(seed=seed) if fit is None else fit
+    count = walkers or max(24, 3 * len(inversion.names) + len(inversion.names) % 2)
+    starts, mixture = prepare(inversion.posterior, fit.minima, ensembles, count + count % 2, seed)
+    run = run_ensembles(
+        inversion.posterior,
+        starts,
+        seed=seed,
+        names=inversion.names,
+        ess=ess,
+        rhat=rhat,
+        max_steps=max_steps,
+        chunk=_CHUNK,
+        moves=_moves(mixture) if moves is None else moves,
+        checkpoint=checkpoint,
+        problem_hash=inversion.fingerprint(),
+        progress=progress,
+        executor=executor,
+    )
+    return inversion.result(run, seed, fit)
+
+
+def prepare(
+    posterior: Density, minima: Sequence[Basin], ensembles: int, walkers: int, seed: int
+) -> tuple[Array, StudentMixture]:
+    """Approximate the posterior from its minima and draw starting points from the approximation.
+
+    Returns
+    -------
+    starts : array, shape (ensembles, walkers, unknowns)
+        Importance-resampled without replacement: no two ensembles share a point.
+    mixture : StudentMixture
+    """
+    rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(2)[1])
+    mixture, points, log_weights = adapt(posterior, first_mixture(minima), rng)
+    count = ensembles * walkers
+    if len(points) < count:
+        raise ValueError(
+            f"Only {len(points)} of the points drawn around the minima are possible; {count} walkers are asked for. "
+            "Check the priors against the allowed ranges."
+        )
+    # Gumbel's trick: sampling without replacement in proportion to the weights.
+    order = np.argsort(-(log_weights + rng.gumbel(size=len(points))))[:count]
+    return points[rng.permutation(order)].reshape(ensembles, walkers, -1), mixture
+
+
+def first_mixture(minima: Sequence[Basin]) -> StudentMixture:
+    """Give every minimum that matters a component of its normal approximation, with equal weights."""
+    kept = [b for b in minima if b.weight >= _LEAST_WEIGHT]
+    return StudentMixture(
+        np.full(len(kept), 1 / len(kept)),
+        np.array([b.z for b in kept]),
+        np.array([np.linalg.cholesky(_positive(b.covariance_z)) for b in kept]),
+    )
+
+
+def _moves(mixture: StudentMixture) -> list[tuple[Any, float]]:
+    from emcee.moves import DEMove, StretchMove
+
+    return [(IndependenceMove(mixture), 0.7), (DEMove(), 0.25), (StretchMove(), 0.05)]
+
+
+def problem_hash(inversion: Inversion) -> str:
+    """Return a hash of data, model and priors, for checkpoints."""
+    digest = hashlib.sha256(json.dumps(problem_record(inversion), sort_keys=True).encode())
+    for member in inversion.posterior.members:
+        for array in (member.model.delay, *(c.data for c in member.model.channels)):
+            digest.update(np.ascontiguousarray(array).tobytes())
+    return digest.hexdigest()
+
+
+def _positive(covariance: Array) -> Array:
+    size, vectors = np.linalg.eigh(covariance)
+    return np.asarray((vectors * np.clip(size, 1e-12, 1.0)) @ vectors.T)

@@ -1,0 +1,1 @@
+"""Where the posterior peaks: least squares, several minima, profiles."""

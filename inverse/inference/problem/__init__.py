@@ -1,0 +1,1 @@
+"""The density that is sought: unknowns, noise, elimination, likelihood."""

@@ -1,0 +1,194 @@
+"""One trace as a problem: priors, mask, noise and the scale of the linear coefficients."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from inverse.description.limits import warn_if_not_plane
+from inverse.description.pumpprobe import PumpProbe
+from inverse.description.quantities import check
+from inverse.description.sample.places import BoundStack, bind
+from inverse.description.sample.stack import Stack
+from inverse.description.unknowns import Unknown, is_distribution
+from inverse.inference.problem.likelihood import HEAT_WIDTH, SCALE_WIDTH, STRAIN_WIDTH, Channel, TraceModel
+from inverse.inference.problem.noise import Noise, noise_priors
+from inverse.inference.problem.posterior import Member
+from inverse.inference.problem.reach import refuse_what_no_trace_can_tell
+from inverse.inference.problem.scans import relative_noise
+from inverse.inference.problem.tied import tie
+from inverse.response.basis import CHANNELS, PORTS, basis, columns, take
+from inverse.response.media import sample
+from inverse.response.pulse_train import pulse_train
+from inverse.response.windows import delay_windows
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+__all__ = ["trace_member"]
+
+Array = NDArray[np.float64]
+
+OVERLAP = 2.5
+"""Delays up to this many ps after time zero are left out by default: hot electrons there fit no simple model."""
+
+
+def trace_member(
+    stack: Stack, setup: PumpProbe, trace: xr.Dataset, time_zero: Any, mask: Any, noise: Any
+) -> tuple[Member, dict[str, Any], dict[str, str], frozenset[str]]:
+    """Build one trace's model; return it with the priors, quantity names and shared names of its unknowns."""
+    from inverse.description.trace.checks import check_trace
+    from inverse.description.trace.look import first_look
+
+    check_trace(trace)
+    bound = bind(stack, setup)
+    slots = {slot.name: slot for slot in bound.slots if slot.prior is not None}
+    priors = {name: slot.prior for name, slot in slots.items()}
+    fields = {name: slot.field for name, slot in slots.items()}
+    shared = {name for name, slot in slots.items() if slot.shared}
+    name, zero, fixed = _time_zero(time_zero, trace)
+    if isinstance(time_zero, Unknown):
+        shared.add(name)
+    if zero is not None:
+        priors[name], fields[name] = zero, "time_zero"
+    names = {inner: inner for inner in slots}
+    if zero is not None:
+        names["time_zero"] = name
+    centre, early = (
+        (fixed["time_zero"],) * 2 if zero is None else (float(zero.median()), float(zero.ppf(1e-9)))
+    )
+    delay = trace["delay"].values.astype(float)
+    warn_if_not_plane(stack, setup, float(delay.max()) - centre)
+    used = _used(mask, delay, centre, setup.pulse_rms)
+    refuse_what_no_trace_can_tell(bound, float(delay[used].max()) - centre, setup.pulse_rms, setup.probe)
+    look = first_look(trace)
+    present = [c for c in CHANNELS if c in trace]
+    channels = []
+    for channel in present:
+        prefix = "noise." if len(present) == 1 else f"noise.{channel}."
+        built, own = _channel(trace, channel, used, noise, look.noise[channel], prefix)
+        channels.append(built)
+        for key, prior in own.items():
+            priors[prefix + key], fields[prefix + key], names[prefix + key] = (
+                prior,
+                f"noise.{key}",
+                prefix + key,
+            )
+    model = _trace_model(bound, setup, tuple(channels), delay, used, centre, early)
+    return Member(model, "", names, fixed), priors, fields, frozenset(shared)
+
+
+def _time_zero(given: Any, trace: xr.Dataset) -> tuple[str, Any, dict[str, float]]:
+    """Return name, prior (None if known) and the fixed value of time zero."""
+    if isinstance(given, Unknown):
+        return given.name, given.prior, {}
+    if given is None:
+        from scipy import stats
+
+        from inverse.description.trace.rising_edge import edge_prior
+
+        centre, sd = edge_prior(trace)
+        return "time_zero", stats.norm(centre, sd), {}
+    if is_distribution(given):
+        return "time_zero", given, {}
+    return "time_zero", None, {"time_zero": check("time_zero", given)}
+
+
+def _used(mask: Any, delay: Array, centre: float, pulse_rms: float) -> NDArray[np.bool_]:
+    if mask is None:
+        return np.ones(delay.size, dtype=bool)
+    if isinstance(mask, str):
+        if mask != "overlap":
+            raise ValueError(
+                f"mask={mask!r} is not known; give 'overlap', None, a pair of times in ps or a bool array."
+            )
+        mask = (-4 * pulse_rms - 0.3, OVERLAP)
+    array = np.asarray(mask)
+    if array.dtype == bool and array.shape == delay.shape:
+        used = array.copy()
+    elif array.shape == (2,) and array.dtype != bool and array[0] < array[1]:
+        used = (delay - centre < array[0]) | (delay - centre > array[1])
+    else:
+        raise ValueError(
+            f"mask has shape {array.shape} and type {array.dtype}; give a pair (start, stop) in ps relative to time "
+            f"zero, start first, or {delay.size} booleans, True where a delay is fitted."
+        )
+    if used.sum() < 20:
+        raise ValueError(
+            f"The mask leaves {used.sum()} of {delay.size} delays; at least 20 are needed for a fit."
+        )
+    return used
+
+
+def _channel(
+    trace: xr.Dataset, name: str, used: NDArray[np.bool_], noise: Any, level: float, prefix: str
+) -> tuple[Channel, dict[str, Any]]:
+    model, replaced = (noise, {}) if isinstance(noise, str) else ("correlated", dict(noise))
+    delay = trace["delay"].values.astype(float)[used]
+    priors = noise_priors(model, level, delay)
+    strange = sorted(set(replaced) - set(priors))
+    if strange:
+        raise ValueError(f"noise names {', '.join(strange)}; it may give priors for {', '.join(priors)}.")
+    data = trace[name].values.astype(float)
+    scatter, scans = trace.get(f"{name}_scatter"), trace.get(f"{name}_scans")
+    relative = np.ones(delay.size)
+    if scatter is not None:
+        relative = relative_noise(scatter.values[used], None if scans is None else scans.values[used])
+    channel = Channel(
+        name=name,
+        unit=str(trace[name].attrs.get("units", "1")),
+        data=data,
+        noise=Noise(model, delay, relative),
+        prefix=prefix,
+        baseline=SCALE_WIDTH * float(np.abs(data[used]).max()),
+    )
+    return channel, {**priors, **replaced}
+
+
+def _trace_model(
+    bound: BoundStack,
+    setup: PumpProbe,
+    channels: tuple[Channel, ...],
+    delay: Array,
+    used: NDArray[np.bool_],
+    centre: float,
+    early: float,
+) -> TraceModel:
+    grid = delay_windows(delay[used], setup.pulse_rms, early)
+    groups = [m for m in bound.materials] if not bound.ambient else ["ambient", *bound.materials]
+    layout = columns(groups)
+    middle = {
+        slot.name: np.array([float(slot.prior.median())]) for slot in bound.slots if slot.prior is not None
+    }
+    middle = middle or {"time_zero": np.array([centre])}
+    widths = np.array([_width(name) for name in layout.names])
+    batch, zero = sample(bound, middle), np.full((1, 1), centre)
+    ports = dict.fromkeys(PORTS[channel.name] for channel in channels)
+    parts = {port: basis(batch, setup.beams, grid, zero, layout, 1, port) for port in ports}
+    predicted, measured = 0.0, 0.0
+    for channel in channels:
+        rows = tie(take(parts[PORTS[channel.name]], channel.name), layout, bound, middle)[0]
+        predicted += float(((rows * widths[:, None]) ** 2).sum(axis=0).mean())
+        measured += float((channel.data[used] ** 2).mean())
+    scale = SCALE_WIDTH * np.sqrt(measured / predicted)
+    return TraceModel(
+        bound=bound,
+        beams=setup.beams,
+        channels=channels,
+        delay=delay,
+        used=used,
+        grid=grid,
+        layout=layout,
+        widths=widths * scale,
+        pulse_rms=setup.pulse_rms,
+        earliest=early,
+        train=pulse_train(setup),
+    )
+
+
+def _width(name: str) -> float:
+    if name == "displacement":
+        return 1.0
+    return STRAIN_WIDTH if ".P." in name else HEAT_WIDTH

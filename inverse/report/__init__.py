@@ -1,0 +1,1 @@
+"""Numbers for people: rounding, tables, propagation of uncertainty."""

@@ -1,0 +1,1 @@
+"""Many traces through one description."""

@@ -1,0 +1,1 @@
+"""Whether intervals hold the truth as often as they say."""

@@ -1,0 +1,1 @@
+"""Which process bonds better: wafers, splits, repeated measurements, power."""

@@ -1,0 +1,1 @@
+"""Elastic constants from velocities measured along several directions."""
