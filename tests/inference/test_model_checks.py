@@ -6,7 +6,7 @@ from problems import SETUP, bonded, noisy, normal_draws, sampled
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.checks.drift_test import drift_tests
+from inverse.inference.checks.drift_ratio import drift_tests
 from inverse.inference.checks.model_checks import check_model, ljung_box, noise_warnings
 from inverse.inference.checks.residuals import autocorrelation, innovations, replicates
 from inverse.inference.problem.noise import Noise

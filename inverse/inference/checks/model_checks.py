@@ -16,7 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import chdtrc, log_ndtr
 
-from inverse.inference.checks.drift_test import DriftTest, drift_tests
+from inverse.inference.checks.drift_ratio import DriftTest, drift_tests
 from inverse.inference.checks.posterior_draws import posterior_draws
 from inverse.inference.checks.residuals import Replicates, autocorrelation, replicates
 from inverse.inference.inversion import Inversion
@@ -64,7 +64,7 @@ class ChannelCheck:
     white : float
         Median white noise level.
     p_drift : float
-        p of the likelihood-ratio test for a correlated part (`inverse.inference.checks.drift_test`) under white
+        p of the likelihood-ratio test for a correlated part (`inverse.inference.checks.drift_ratio`) under white
         noise; it sees a drift that the fitted curve has bent towards. NaN under correlated noise.
     size, time : float
         Correlated part over the white one, and its correlation time in ps: medians of the noise model, or under white
