@@ -208,17 +208,36 @@ class Inversion:
         """Return a hash of data, model and priors, for checkpoints."""
         return problem_hash(self)
 
-    def result(self, run: EnsembleRun, seed: int, fit: Fit) -> xr.DataTree:
-        """Put a finished run into a DataTree, with its minima and warnings.
+    def noise_warnings(self, values: Any, *, seed: int = 0) -> list[str]:
+        """Say where the residuals at draws of the posterior do not look like the noise of the noise model.
+
+        Parameters
+        ----------
+        values : array, shape (draws, unknowns)
+            Of which up to 100 are used.
+        seed : int
+
+        Returns
+        -------
+        list of str
+            One sentence per problem.
+        """
+        from inverse.inference.checks.model_checks import noise_warnings
+
+        return noise_warnings(self, self._checked(values), seed=seed)
+
+    def result(self, run: EnsembleRun, seed: int, fit: Fit, *, checks: bool = True) -> xr.DataTree:
+        """Put a finished run into a DataTree, with its minima and, if there are to be checks, warnings.
 
         Warnings tell where the residuals are not the noise assumed, and which fixed constants outweigh an interval.
         """
         from inverse.inference.checks.basins import minima_record
         from inverse.inference.checks.budget import constant_warnings
-        from inverse.inference.checks.model_checks import noise_warnings
 
-        values = self.posterior.parameters.to_values(run.chain.reshape(-1, len(self.names)))
-        warnings = [*noise_warnings(self, values, seed=seed), *constant_warnings(self, fit)]
+        warnings: list[str] = []
+        if checks:
+            values = self.posterior.parameters.to_values(run.chain.reshape(-1, len(self.names)))
+            warnings = [*self.noise_warnings(values, seed=seed), *constant_warnings(self, fit)]
         return result_tree(self, run, seed, {"minima": minima_record(fit), "warnings": warnings})
 
     def _checked(self, values: Any) -> Array:

@@ -26,6 +26,7 @@ if TYPE_CHECKING:
 
 __all__ = [
     "load",
+    "named_variables",
     "prior_draws",
     "problem_record",
     "rebuild",
@@ -70,7 +71,7 @@ def result_tree(inversion: Inversion, run: EnsembleRun, seed: int, notes: dict[s
         inversion.posterior.parameters,
         run,
         seed,
-        lambda values: _variables(inversion, values, ("chain", "draw")),
+        lambda values: named_variables(inversion, values, ("chain", "draw")),
         groups,
         {**_information(inversion), **notes},
     )
@@ -239,8 +240,22 @@ def problem_record(inversion: Inversion) -> dict[str, Any]:
     }
 
 
-def _variables(inversion: Inversion, values: Array, dims: tuple[str, ...]) -> dict[str, Any]:
-    """Name the unknowns and what follows from them; the last axis of `values` is the unknowns."""
+def named_variables(inversion: Inversion, values: Array, dims: tuple[str, ...]) -> dict[str, Any]:
+    """Name the unknowns and what follows from them.
+
+    Parameters
+    ----------
+    inversion : Inversion
+    values : array, shape (..., unknowns)
+        Public units.
+    dims : tuple of str
+        Of all axes but the last.
+
+    Returns
+    -------
+    dict
+        Name -> (dims, array, attrs), as xarray takes them.
+    """
     named = {name: values[..., i] for i, name in enumerate(inversion.names)}
     out = {
         name: (

@@ -20,7 +20,9 @@ from inverse.study.splits.compare import compare_splits
 
 
 def quiet(problem, traces, **options):
-    return batch(problem, traces, **{"seed": 1, "progress": False, "workers": 0, **options})
+    """Sample toys, which have no density to draw from by importance, as chains would be."""
+    given = {"seed": 1, "progress": False, "workers": 0, "method": "mcmc", **options}
+    return batch(problem, traces, **given)
 
 
 def rows(traces, **columns):
@@ -59,6 +61,13 @@ def test_order_company_and_executor_do_not_matter():
 def test_the_own_pool_gives_the_same_numbers():
     traces = toy_traces(4)
     assert quiet(toy, traces).identical(quiet(toy, traces, workers=2))
+
+
+def test_what_speaks_against_the_model_stands_in_the_sites_row():
+    traces = toy_traces(2)
+    found = quiet(toy, traces, table=rows(traces, look={"W0-1": 1}))
+    assert list(found["warning"].values) == ["", "1000 draws were looked at."]
+    assert list(found["method"].values) == ["mcmc", "mcmc"]
 
 
 def test_distinct_sites_have_distinct_seeds():
@@ -172,7 +181,7 @@ from inverse.study.batches.batch import batch
 def stop(news):
     if news["done"] == 4:
         os.kill(os.getpid(), 9)
-batch(toy, toy_traces(8), seed=1, workers=0, path=sys.argv[1], progress=stop)
+batch(toy, toy_traces(8), seed=1, workers=0, method="mcmc", path=sys.argv[1], progress=stop)
 """
 
 
@@ -315,6 +324,7 @@ def test_a_thousand_sites_fit_into_memory():
         ({"neighbours": "wafer"}, "neighbours='wafer' is no column of site 'W0-0'"),
         ({"draws": 10}, "draws=10; keep 50 or more"),
         ({"ess": 100}, "ess=100 is below draws=400"),
+        ({"method": "guess"}, "method='guess'; give one of importance, mcmc"),
         ({"timeout": -1}, "timeout=-1; give a positive"),
         ({"path": "here.csv"}, r"'here.csv' does not end in .nc"),
         ({"path": "nowhere/a.nc"}, "folder 'nowhere' does not exist"),

@@ -43,7 +43,10 @@ class ToyInversion:
         basin = SimpleNamespace(values=np.array([self.seen]), log_posterior=float(len(points)))
         return SimpleNamespace(names=self.names, minima=[basin], best=basin)
 
-    def sample_posterior(self, *, seed, fit, ess, ensembles, max_steps, progress) -> xr.DataTree:
+    def noise_warnings(self, values, *, seed) -> list[str]:
+        return [f"{len(values)} draws were looked at."] if self.row.get("look") else []
+
+    def sample_posterior(self, *, seed, fit, ess, ensembles, max_steps, checks, progress) -> xr.DataTree:
         progress({"steps": 1})
         rng = np.random.default_rng(seed)
         grid = PRIOR.ppf((np.arange(4000) + 0.5) / 4000)

@@ -48,9 +48,18 @@ class ImportanceDraws:
     ess: float
     shape: float
 
+    def suffice(self, ess: float) -> bool:
+        """Tell whether the weights can be trusted and are even enough for an effective sample size."""
+        return self.shape <= LARGEST_SHAPE and self.ess >= ess
+
     def resample(self, count: int, rng: np.random.Generator) -> Array:
         """Draw points in proportion to their weights, with replacement."""
         return self.points[rng.choice(len(self.points), size=count, p=self.weights)]
+
+    def resample_evenly(self, count: int, rng: np.random.Generator) -> Array:
+        """Take each point as often as its share of `count`, rounded up or down at random (systematic resampling)."""
+        places = (np.arange(count) + rng.random()) / count
+        return self.points[np.searchsorted(np.cumsum(self.weights)[:-1], places, side="right")]
 
 
 def importance_draws(
@@ -87,7 +96,7 @@ def importance_draws(
         points, log_weights = points[good], log_weights[good]
         weights, shape = smoothed_weights(log_weights)
         found = ImportanceDraws(points, weights, float(1 / (weights @ weights)), shape)
-        if extra is None or (found.ess >= ess and shape <= LARGEST_SHAPE):
+        if extra is None or found.suffice(ess):
             break
         mixture = refit(points, log_weights, first.means, extra, rng)
     return found

@@ -45,7 +45,7 @@ class Problem(Protocol):
 
     def fingerprint(self) -> str: ...
 
-    def result(self, run: EnsembleRun, seed: int, fit: Fit) -> xr.DataTree: ...
+    def result(self, run: EnsembleRun, seed: int, fit: Fit, *, checks: bool) -> xr.DataTree: ...
 
 
 def sample_posterior(
@@ -63,6 +63,7 @@ def sample_posterior(
     moves: Any = None,
     progress: bool | Callable[[dict[str, Any]], object] = True,
 ) -> xr.DataTree:
+    checks: bool = True,
     """Sample the posterior of a problem.
 
     Parameters
@@ -91,6 +92,8 @@ def sample_posterior(
         the run, the others are differential evolution and stretch moves.
     progress : bool or callable
         Bar, nothing, or a function that is given the state.
+    checks : bool
+        Look for what speaks against the model and write it into the result as warnings; takes some seconds.
 
     Returns
     -------
@@ -123,7 +126,7 @@ def sample_posterior(
         progress=progress,
         executor=executor,
     )
-    return inversion.result(run, seed, fit)
+    return inversion.result(run, seed, fit, checks=checks)
 
 
 def prepare(

@@ -62,7 +62,7 @@ def results_dataset(
         priors,
         {"long_name": "prior, as JSON; of a derived quantity approximate"},
     )
-    for field in ("status", "reason"):
+    for field in ("status", "reason", "method", "warning"):
         data[field] = ("site", np.array([getattr(r, field) for r in found], dtype=object))
     data["minima"] = ("site", np.array([r.numbers.get("minima", np.nan) for r in found]))
     coords: dict[str, Any] = {

@@ -20,9 +20,8 @@ from numpy.typing import NDArray
 from inverse.description.records import encode
 from inverse.description.trace.reading import read_trace
 from inverse.inference.inversion import Inversion
-from inverse.inference.minima.least_squares import Fit
+from inverse.study.batches.site_draws import SiteDraws, site_draws
 from inverse.study.batches.store import SiteRecord
-from inverse.study.splits.data import prior_of_derived
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -47,6 +46,7 @@ class Effort:
     ensembles: int = 4
     starts: int = 12
     timeout: float | None = None
+    method: str = "importance"
 
 
 @dataclass(frozen=True)
@@ -167,67 +167,34 @@ def _sampled(
     known = [m for m in modes if set(inversion.names) <= set(m)]
     starts = min(_STARTS_WITH_MODES, effort.starts) if known else effort.starts
     fit = inversion.least_squares(starts=starts, seed=own, points=known)
-    tree = inversion.sample_posterior(
-        seed=own,
-        fit=fit,
-        ess=effort.ess,
-        ensembles=effort.ensembles,
-        max_steps=effort.max_steps,
-        progress=lambda news: check(),
-    )
-    return _record(site, mark, inversion, fit, tree, effort.draws)
-
-
-def _record(site: str, mark: str, inversion: Inversion, fit: Fit, tree: Any, count: int) -> SiteRecord:
-    posterior, convergence = tree["posterior"], json.loads(tree.attrs["inverse"])["convergence"]
-    variables = {str(name): _attributes(tree, str(name)) for name in posterior.data_vars}
-    every = np.stack([posterior[name].values.ravel() for name in variables])
-    status, reason = _status(inversion, posterior, convergence)
+    found = site_draws(inversion, fit, effort, own, check)
+    status, reason = _status(inversion, found)
+    warnings = inversion.noise_warnings(found.of(tuple(inversion.names)), seed=own)
     return SiteRecord(
         site,
         mark,
         status,
         reason,
-        variables,
-        _thinned(every, count),
-        np.quantile(every, PROBABILITIES, axis=1).T,
+        found.variables,
+        _thinned(found.values, effort.draws),
+        np.quantile(found.values, PROBABILITIES, axis=1).T,
         {"minima": float(len(fit.minima)), "log_posterior": float(fit.best.log_posterior)},
         [dict(zip(fit.names, map(float, b.values), strict=True)) for b in fit.minima],
+        found.method,
+        " ".join(warnings),
     )
 
 
-def _attributes(tree: Any, name: str) -> dict[str, str]:
-    attrs = tree["posterior"][name].attrs
-    prior = attrs.get("prior", "")
-    if not prior and name in tree["prior"].data_vars:
-        prior = _derived_prior(tree["prior"][name].values.ravel())
-    fields = ("units", "long_name", "symbol", "role")
-    return {**{field: str(attrs.get(field, "")) for field in fields}, "prior": prior}
-
-
-def _derived_prior(draws: Array) -> str:
-    from inverse.description.unknowns import describe_prior
-
-    prior = prior_of_derived(draws)
-    return "" if prior is None else json.dumps(describe_prior(prior))
-
-
-def _status(inversion: Inversion, posterior: Any, convergence: Mapping[str, Any]) -> tuple[str, str]:
-    if not convergence["converged"]:
-        return "not converged", str(convergence["message"])
-    physical = [n for n in inversion.names if n not in inversion.noise_names]
-    values = np.stack([posterior[n].values.ravel() for n in inversion.names], axis=1)
-    widths = inversion.posterior.parameters.to_z(values).std(axis=0)
-    narrowed = [n for n, w in zip(inversion.names, widths, strict=True) if n in physical and w < _NARROWED]
-    if physical and not narrowed:
-        return (
-            "nothing learnt",
-            "the data narrowed no prior: noise hides the signal, or the description is of another sample",
-        )
-    return "ok", ""
+def _status(inversion: Inversion, found: SiteDraws) -> tuple[str, str]:
+    if not found.converged:
+        return "not converged", found.message
+    widths = inversion.posterior.parameters.to_z(found.of(tuple(inversion.names))).std(axis=0)
+    noise = inversion.noise_names
+    physical = [w for name, w in zip(inversion.names, widths, strict=True) if name not in noise]
+    return ("nothing learnt", _NOTHING) if physical and min(physical) >= _NARROWED else ("ok", "")
 
 
 def _thinned(every: Array, count: int) -> Array:
-    """Take draws evenly spread over ensembles, walkers and steps."""
+    """Take draws evenly spread over all."""
     pick = ((np.arange(count) + 0.5) * every.shape[1] / count).astype(int)
     return every[:, pick]

@@ -46,6 +46,10 @@ class SiteRecord:
         Diagnostics of the fit.
     modes : list of dict
         Values of the unknowns at the minima found.
+    method : str
+        How it was sampled.
+    warning : str
+        What speaks against the model, in sentences.
     """
 
     site: str
@@ -57,6 +61,8 @@ class SiteRecord:
     quantiles: Array = field(default_factory=lambda: np.empty((0, 0)))
     numbers: dict[str, float] = field(default_factory=dict)
     modes: list[dict[str, float]] = field(default_factory=list)
+    method: str = ""
+    warning: str = ""
 
     def to_bytes(self) -> bytes:
         """Write the record as bytes."""

@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.inference.mcmc.importance import LARGEST_SHAPE, importance_draws
+from inverse.inference.mcmc.importance import importance_draws
 from inverse.inference.mcmc.sampling import first_mixture, sample_posterior
 from inverse.study.coverage.ranks import DRAWS, rank_of
 from inverse.study.coverage.replicates import quantities
@@ -167,7 +167,7 @@ def _weighted(inversion: Inversion, fit: Any, sampling: Sampling, seed: int) -> 
     """Draw by importance; None where the weights cannot be trusted or are too uneven."""
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(3)[2])
     found = importance_draws(inversion.posterior, first_mixture(fit.minima), rng, sampling.ess)
-    if found.shape > LARGEST_SHAPE or found.ess < sampling.ess:
+    if not found.suffice(sampling.ess):
         return None
     values = inversion.posterior.parameters.to_values(found.resample(_POOL, rng))
     return _Draws(

@@ -239,12 +239,12 @@ class ConstantsInversion:
 
         return hashlib.sha256(json.dumps(record(self), sort_keys=True).encode()).hexdigest()
 
-    def result(self, run: EnsembleRun, seed: int, fit: Fit) -> xr.DataTree:
-        """Put a finished run into a DataTree."""
+    def result(self, run: EnsembleRun, seed: int, fit: Fit, *, checks: bool = True) -> xr.DataTree:
+        """Put a finished run into a DataTree, with warnings if there are to be checks."""
         from inverse.inference.checks.basins import minima_record
         from inverse.study.stiffness.result import constants_tree
 
-        return constants_tree(self, run, seed, {"minima": minima_record(fit)})
+        return constants_tree(self, run, seed, {"minima": minima_record(fit)}, checks=checks)
 
     def _checked(self, values: Any) -> Array:
         array = np.atleast_2d(np.asarray(values, dtype=float))

@@ -32,7 +32,7 @@ _SURE = 0.95
 
 
 def constants_tree(
-    problem: ConstantsInversion, run: EnsembleRun, seed: int, notes: dict[str, Any]
+    problem: ConstantsInversion, run: EnsembleRun, seed: int, notes: dict[str, Any], *, checks: bool
 ) -> xr.DataTree:
     """Put a finished run into a DataTree.
 
@@ -44,6 +44,8 @@ def constants_tree(
     seed : int
     notes : dict
         More entries for the JSON attribute ``inverse``.
+    checks : bool
+        Look for warnings.
     """
     tree = sampled_tree(
         problem.posterior.parameters,
@@ -58,7 +60,7 @@ def constants_tree(
     best = np.array([float(tree["posterior"][name].median()) for name in problem.names])
     centre = best if problem.posterior.possible(best[None])[0] else _likeliest(tree, problem.names)
     information["reached"] = list(problem.reached(centre))
-    information["warnings"] = _warnings(tree, problem, centre, information["reached"])
+    information["warnings"] = _warnings(tree, problem, centre, information["reached"]) if checks else []
     information["constants"] = _known(problem)
     tree.attrs["inverse"] = json.dumps(information)
     return tree
