@@ -100,7 +100,7 @@ def pair_field(
     decay = [np.exp(-q * thickness)] if np.all(np.isfinite(thickness)) else []
     below = ascend([y], decay, [], [end])
     first = surface_amplitude(y, below, end, given.surface.astype(complex))
-    (down,), (up,) = descend(first, [y], decay, below, [end])
+    (down,), (up,) = descend(first, decay, below)
     x = decay[0] if decay else np.zeros((1, 1), dtype=complex)
     return Pairs(q, x, down, up, steep, beat, down + up * x + end.u_top)
 

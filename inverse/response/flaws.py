@@ -53,30 +53,22 @@ class Flaw:
     reflected_below: Complex
     passed: Complex
 
-    def ascend(
+    def joint(
         self, y: tuple[Complex, Complex], gamma: Complex, beta: Complex, ends: tuple[Ends, Ends]
-    ) -> tuple[Complex, Complex]:
-        """Return R and b of ``B = R A E + b`` above the interface; `y` and `ends` of the media above and below."""
+    ) -> tuple[Complex, Complex, Complex, Complex]:
+        """Return R, b, T and v of ``B = R A E + b`` above the interface and ``A' = T A E + v`` below it."""
         seen, shared, lifted = self._below(y[1], gamma, beta, ends[1])
         w = seen * shared + self.inertia
         b = (ends[0].f_bottom - w * ends[0].u_bottom - lifted * shared) / (y[0] + w)
         r12, t12 = self._local(*y)
         r21, t21 = self._local(y[1], y[0])
         echoes = 1 - self.reflected_below * r21 * gamma
-        return self.reflected_above * r12 + self.passed**2 * t12 * gamma * t21 / echoes, b
-
-    def descend(
-        self, arriving: Complex, b: Complex, y: tuple[Complex, Complex], gamma: Complex, beta: Complex,
-        ends: tuple[Ends, Ends],
-    ) -> Complex:  # fmt: skip
-        """Return A below the interface from ``A E`` and b above it."""
-        seen, shared, lifted = self._below(y[1], gamma, beta, ends[1])
+        r = self.reflected_above * r12 + self.passed**2 * t12 * gamma * t21 / echoes
         u = b + ends[0].u_bottom
         flux = shared * (seen * u + lifted)
         below = shared * u + lifted * (shared - 1) / seen
         launched = (flux - self.inertia * below - ends[1].f_top + y[1] * beta) / (y[1] * (1 - gamma))
-        r21, t12 = self._local(y[1], y[0])[0], self._local(*y)[1]
-        return self.passed * t12 * arriving / (1 - self.reflected_below * r21 * gamma) + launched
+        return r, b, self.passed * t12 / echoes, launched
 
     def _below(
         self, y: Complex, gamma: Complex, beta: Complex, end: Ends

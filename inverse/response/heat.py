@@ -115,7 +115,7 @@ def heat_field(
             ends[j] = _with_pairs(ends[j], n, per_pair[j], kappa[j], held * m.carriers.surface)
     below = ascend(y, decay, resistance, ends)
     load = _liquid_load(ambient, s)
-    down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends)
+    down, up = descend(surface_amplitude(y[0], below, ends[0], load), decay, below)
     amplitudes = zip(q, anchored(decay, media), down, up, steep, beat, lattice, pairs, per_pair, strict=True)
     fields = [HeatField(*parts) for parts in amplitudes]
     if isinstance(load, float):

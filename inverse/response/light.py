@@ -121,7 +121,7 @@ def _solved(
     gamma = below.gamma[0]
     surface = y[0] * (1 - gamma) / (1 + gamma)
     r = (y0 - surface) / (y0 + surface)
-    a, b = descend(y0 * (1 - r) / (y[0] * (1 - gamma)), y, decay, below)
+    a, b = descend(y0 * (1 - r) / (y[0] * (1 - gamma)), decay, below)
     return LightField(
         k, tuple(n), tuple(kz), n_ambient, kz_ambient, sine, is_p, tuple(a), tuple(b), tuple(decay), r
     )

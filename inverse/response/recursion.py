@@ -21,6 +21,7 @@ if TYPE_CHECKING:
 __all__ = ["OPEN", "Ends", "Interfaces", "ascend", "descend", "surface_amplitude"]
 
 Complex = NDArray[np.complex128]
+Joint = tuple[Complex, Complex, Complex, Complex]
 
 # An open interface: large against every impedance, small against overflow.
 OPEN = 1e30
@@ -38,18 +39,22 @@ class Ends:
 
 @dataclass(frozen=True)
 class Interfaces:
-    """What the upward sweep leaves: per layer from the top, reflection seen below and source term.
+    """What the upward sweep leaves, from the top.
 
     Attributes
     ----------
     reflection, source : tuple of arrays
         R and b of ``B = R A E + b`` at the bottom of each layer.
+    passed, launched : tuple of arrays
+        T and v of ``A' = T A E + v`` below each interface.
     gamma, beta : tuple of arrays
         ``B E = gamma A + beta`` at the top of each medium, a half-space last (zeros).
     """
 
     reflection: tuple[Complex, ...]
     source: tuple[Complex, ...]
+    passed: tuple[Complex, ...]
+    launched: tuple[Complex, ...]
     gamma: tuple[Complex, ...]
     beta: tuple[Complex, ...]
 
@@ -85,35 +90,49 @@ def ascend(
     Interfaces
     """
     gamma, beta = [_ZERO], [_ZERO]
-    reflection: list[Complex] = []
-    source: list[Complex] = []
+    joints: list[Joint] = []
     if len(decay) == len(y):
         free = _ZERO if ends is None else ends[-1].f_bottom / y[-1]
-        reflection, source = [_ONE], [free]
+        joints = [(_ONE, free, _ZERO, _ZERO)]
         gamma, beta = [decay[-1] * decay[-1]], [free * decay[-1]]
     for j in range(len(y) - 2, -1, -1):
-        if ends is not None and flaws and (imperfect := flaws[j]) is not None:
-            r, b = imperfect.ascend((y[j], y[j + 1]), gamma[0], beta[0], (ends[j], ends[j + 1]))
-            reflection.insert(0, r)
-            source.insert(0, b)
-            gamma.insert(0, r * decay[j] * decay[j])
-            beta.insert(0, b * decay[j])
-            continue
-        below = y[j + 1] if gamma[0] is _ZERO else y[j + 1] * (1 - gamma[0]) / (1 + gamma[0])
-        shared = 1 / (1 + compliance[j] * below)
-        w = below * shared
-        inverse = np.reciprocal(y[j] + w)
-        reflection.insert(0, (y[j] - w) * inverse)
-        if ends is None:
-            b = _ZERO
+        pair, sides = (y[j], y[j + 1]), None if ends is None else (ends[j], ends[j + 1])
+        imperfect = flaws[j] if flaws else None
+        if imperfect is None or sides is None:
+            joint = _joint(pair, compliance[j], gamma[0], beta[0], sides)
         else:
-            u0 = ends[j + 1].u_top + beta[0]
-            f0 = ends[j + 1].f_top - y[j + 1] * beta[0]
-            b = (ends[j].f_bottom - w * (ends[j].u_bottom - u0) - f0 * shared) * inverse
-        source.insert(0, b)
-        gamma.insert(0, reflection[0] * decay[j] * decay[j])
-        beta.insert(0, b * decay[j])
-    return Interfaces(tuple(reflection), tuple(source), tuple(gamma), tuple(beta))
+            joint = imperfect.joint(pair, gamma[0], beta[0], sides)
+        joints.insert(0, joint)
+        gamma.insert(0, joint[0] * decay[j] * decay[j])
+        beta.insert(0, joint[1] * decay[j])
+    reflection, source, passed, launched = zip(*joints, strict=True) if joints else ((), (), (), ())
+    return Interfaces(reflection, source, passed, launched, tuple(gamma), tuple(beta))
+
+
+def _joint(
+    y: tuple[Complex, Complex],
+    compliance: NDArray[np.float64],
+    gamma: Complex,
+    beta: Complex,
+    ends: tuple[Ends, Ends] | None,
+) -> Joint:
+    """Solve one interface for what its upper side sends back and its lower side is sent.
+
+    With ``m = 1 + gamma`` and ``n = y' (1 - gamma)`` the region below has the admittance n / m, and with the
+    spring n / d, ``d = m + compliance n``: one division serves every coefficient.
+    """
+    above, below = y
+    m, n = (_ONE, below) if gamma is _ZERO else (1 + gamma, below * (1 - gamma))
+    d = m + compliance * n
+    seen = above * d
+    share = np.reciprocal(seen + n)
+    reflection, passed = (seen - n) * share, (above + above) * share
+    if ends is None:
+        return reflection, _ZERO, passed, _ZERO
+    flux = ends[1].f_top - below * beta
+    force = ends[0].f_bottom - flux
+    gap = ends[0].u_bottom - ends[1].u_top - beta - compliance * flux
+    return reflection, (d * force - n * gap) * share, passed, (above * gap + force) * share
 
 
 def surface_amplitude(y: Complex, below: Interfaces, ends: Ends, load: Complex | float) -> Complex:
@@ -125,12 +144,7 @@ def surface_amplitude(y: Complex, below: Interfaces, ends: Ends, load: Complex |
 
 
 def descend(
-    first: Complex,
-    y: Sequence[Complex],
-    decay: Sequence[Complex],
-    below: Interfaces,
-    ends: Sequence[Ends] | None = None,
-    flaws: Sequence[Flaw | None] = (),
+    first: Complex, decay: Sequence[Complex], below: Interfaces
 ) -> tuple[list[Complex], list[Complex]]:
     """Sweep down from the top medium's A and return (A, B) of every medium; B of the half-space is zero."""
     up: list[Complex] = []
@@ -138,16 +152,7 @@ def descend(
     for j, e in enumerate(decay):
         arriving = down[j] * e
         up.append(below.reflection[j] * arriving + below.source[j])
-        if j == len(y) - 1:
-            return down, up
-        if ends is not None and flaws and (imperfect := flaws[j]) is not None:
-            pair, sides = (y[j], y[j + 1]), (ends[j], ends[j + 1])
-            b, gamma, beta = below.source[j], below.gamma[j + 1], below.beta[j + 1]
-            down.append(imperfect.descend(arriving, b, pair, gamma, beta, sides))
-            continue
-        flux = y[j] * (arriving - up[j])
-        if ends is not None:
-            flux = flux + ends[j].f_bottom - ends[j + 1].f_top + y[j + 1] * below.beta[j + 1]
-        down.append(flux / (y[j + 1] * (1 - below.gamma[j + 1])))
-    up.append(_ZERO)
-    return down, up
+        down.append(below.passed[j] * arriving + below.launched[j])
+    if len(below.gamma) == len(decay):
+        return down[:-1], up
+    return down, [*up, _ZERO]

@@ -129,7 +129,7 @@ def sound_field(
     load: Complex | float = 0.0
     if ambient.density is not None and ambient.velocity is not None:
         load = s * (ambient.density * ambient.velocity)
-    down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends, flaws)
+    down, up = descend(surface_amplitude(y[0], below, ends[0], load), decay, below)
     return [
         SoundField(qj, e, a, b, p[0], p[1], p[2], a + b * e + end.u_top, a * e + b + end.u_bottom, n)
         for qj, e, a, b, p, end, n in zip(

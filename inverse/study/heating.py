@@ -165,7 +165,7 @@ def _faces(batch: Sample, fractions: list[float], k: NDArray[np.complex128]) -> 
     ends = [Ends(none, np.full((1, 1), -share, dtype=complex), none, none) for share in fractions]
     below = ascend(y, decay, batch.resistance, ends)
     load = 0.0 if batch.ambient.conductivity is None else batch.ambient.conductivity * k
-    down, up = descend(surface_amplitude(y[0], below, ends[0], load), y, decay, below, ends)
+    down, up = descend(surface_amplitude(y[0], below, ends[0], load), decay, below)
     return np.concatenate([a + b * e for a, b, e in zip(down, up, [*decay, none], strict=True)])
 
 
