@@ -281,7 +281,7 @@ def test_propagate_refuses(arguments, message):
 @pytest.mark.parametrize(
     ("inputs", "draws", "message"),
     [
-        ([stats.norm()], 10, "at least 1000"),
+        ([stats.norm()], 10, "draws must be a whole number, 1000 or more, not 10"),
         (["1.0"], 1000, "Input 1 is '1.0'"),
         ([-1.0], 1000, "1000 values that are not finite"),
     ],

@@ -7,6 +7,7 @@ from the units people write to the coherent system nm, ps, g/cm3, GPa in which t
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -330,10 +331,10 @@ def check(name: str, value: float, where: str = "") -> float:
     q = quantity(name)
     label = f"{where}.{name}" if where else name
     try:
-        number = float(value)
+        number = float(_plain(value))
     except (TypeError, ValueError):
         raise ValueError(
-            f"{label} = {value!r} is not a number; give a number in {q.unit} or a frozen scipy.stats distribution."
+            f"{label} = {_shown(value)}; give a number in {q.unit} or a frozen continuous scipy.stats distribution."
         ) from None
     if np.isnan(number) or not q.low <= number <= q.high:
         hint = f" It looks like {q.suspect}; convert it to {q.unit}." if q.suspect else ""
@@ -341,3 +342,18 @@ def check(name: str, value: float, where: str = "") -> float:
             f"{label} = {number:g} is outside {q.low:g} to {q.high:g} {q.unit} ({q.meaning}).{hint}"
         )
     return number
+
+
+def _plain(value: Any) -> Any:
+    """Refuse what float() takes and nobody means: True, and a text."""
+    if isinstance(value, bool | np.bool_ | str | bytes):
+        raise TypeError
+    return value
+
+
+def _shown(value: object) -> str:
+    """Say what was given in place of a number."""
+    family = getattr(value, "name", None) if callable(value) and hasattr(value, "ppf") else None
+    if family is not None:
+        return f"stats.{family} is a family of distributions, not yet one of them: call it with its numbers"
+    return f"{value!r} is not a number"

@@ -15,6 +15,7 @@ __all__ = [
     "describe_prior",
     "is_distribution",
     "is_unknown",
+    "prior_text",
     "rebuild_prior",
     "validate_prior",
 ]
@@ -61,12 +62,21 @@ class Unknown:
 
 def is_distribution(value: object) -> bool:
     """Tell whether `value` is a frozen continuous scipy.stats distribution."""
-    return hasattr(value, "logpdf") and hasattr(value, "ppf") and hasattr(value, "support")
+    return all(hasattr(value, part) for part in ("dist", "logpdf", "ppf", "support"))
 
 
 def is_unknown(value: object) -> bool:
     """Tell whether `value` marks an unknown: a frozen distribution or an `Unknown`."""
     return isinstance(value, Unknown) or is_distribution(value)
+
+
+_PROBABILITIES = (0.01, 0.5, 0.99)
+
+
+def prior_text(prior: Any) -> str:
+    """Write a frozen distribution as it was called: ``norm(60, 1)``."""
+    keywords = (f"{name}={value}" for name, value in prior.kwds.items())
+    return f"{prior.dist.name}({', '.join([*map(str, prior.args), *keywords])})"
 
 
 def validate_prior(name: str, prior: Any, where: str = "") -> None:
@@ -75,13 +85,31 @@ def validate_prior(name: str, prior: Any, where: str = "") -> None:
     Raises
     ------
     ValueError
-        If a quantile is not finite or outside the range. Tails outside the range have probability zero.
+        If the prior is not one distribution with finite numbers and a positive scale, a quantile is outside the
+        range, or a thickness has a prior of infinite mean. Tails outside the range have probability zero.
     """
-    for probability in (0.01, 0.5, 0.99):
+    label = f"{where}.{name}" if where else name
+    quantiles = np.asarray([prior.ppf(probability) for probability in _PROBABILITIES])
+    if quantiles.ndim != 1:
+        raise ValueError(
+            f"{label} has {prior_text(prior)} as its prior, which is several distributions; give numbers, not arrays."
+        )
+    if np.isnan(quantiles).any():
+        raise ValueError(
+            f"{label} has {prior_text(prior)} as its prior, which has no quantiles; its numbers must be finite and its "
+            "scale positive."
+        )
+    for probability, quantile in zip(_PROBABILITIES, quantiles, strict=True):
         try:
-            check(name, float(prior.ppf(probability)), where)
+            check(name, float(quantile), where)
         except ValueError as error:
             raise ValueError(f"The prior's {probability:.0%} quantile does not fit. {error}") from None
+    if name == "thickness" and prior.mean() == np.inf:
+        raise ValueError(
+            f"{label} has {prior_text(prior)} as its prior, whose mean is infinite: one draw in a hundred is above "
+            f"{quantiles[-1]:.3g} nm. Give one whose tail ends or falls fast, such as stats.uniform(40, 40) or "
+            "stats.lognorm(0.3, scale=60)."
+        )
 
 
 def checked(field: str, value: Any, where: str) -> Any:

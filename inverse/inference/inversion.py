@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_seed
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import quantity
 from inverse.description.sample.stack import Stack
@@ -93,6 +94,12 @@ class Inversion:
         ValueError
             If there is nothing to join, labels repeat, or one name has two priors.
         """
+        inversions = list(inversions)
+        for given in inversions:
+            if not isinstance(given, Inversion):
+                raise ValueError(
+                    f"joint takes a sequence of Inversion, and got a {type(given).__name__} in it."
+                )
         parts = [p for i in inversions for p in i.parts]
         labels = [str(i + 1) for i in range(len(parts))] if labels is None else list(labels)
         if len(parts) < 2 or len(set(labels)) != len(parts):
@@ -155,7 +162,7 @@ class Inversion:
         Returns
         -------
         array, shape (n,)
-            Minus infinity where impossible.
+            Minus infinity where impossible: outside a prior's support or a quantity's range, or not a number.
 
         Raises
         ------
@@ -183,16 +190,17 @@ class Inversion:
         Raises
         ------
         ValueError
-            If the shape is wrong, or the problem is joint (predict its parts).
+            If the shape is wrong, a value is impossible under its prior, there is no delay, or the problem is joint
+            (predict its parts).
         """
         import xarray as xr
 
         if len(self.posterior.members) > 1:
             raise ValueError("predict takes a problem of one trace; use it on each of joint.parts.")
         member = self.posterior.members[0]
-        named = member.local(self.posterior.parameters.named(self._checked(values)))
+        named = member.local(self.posterior.parameters.named(self._possible(values)))
         found = member.model.eliminated(named)
-        weights = found.mean if seed is None else found.draw(np.random.default_rng(seed))
+        weights = found.mean if seed is None else found.draw(np.random.default_rng(checked_seed(seed)))
         delay = member.model.delay if delay is None else np.atleast_1d(np.asarray(delay, dtype=float))
         traces = member.model.predict(named, weights, delay)
         units = {c.name: c.unit for c in member.model.channels}
@@ -246,6 +254,21 @@ class Inversion:
             raise ValueError(
                 f"values has shape {np.shape(values)}; give (n, {len(self.names)}) in the order "
                 f"{', '.join(self.names)}."
+            )
+        return array
+
+    def _possible(self, values: Any) -> Array:
+        array = self._checked(values)
+        outside = np.argwhere(~self.posterior.possible(array))
+        if outside.size:
+            row, column = outside[0]
+            name = self.names[column]
+            low, high = self.priors[name].support()
+            low = max(low, self.posterior.low[column])
+            high = min(high, self.posterior.high[column])
+            raise ValueError(
+                f"{name} = {array[row, column]:g} in row {row} of values is impossible: its prior goes from {low:g} "
+                f"to {high:g} {self.units[name]}. Give values inside, or a wider prior."
             )
         return array
 

@@ -10,6 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from inverse.description.arguments import checked_seed, whole_number
 from inverse.report.finite_differences import second_order, slopes
 
 __all__ = ["MonteCarlo", "Propagated", "linear_is_valid", "propagate", "propagate_distributions"]
@@ -256,11 +257,8 @@ def propagate_distributions(
     ----------
     JCGM 101:2008, clause 7.
     """
-    if draws < 1000:
-        raise ValueError(
-            f"draws = {draws}; expected at least 1000, and 1000000 for a 95 % interval to two figures."
-        )
-    streams = np.random.SeedSequence(seed).spawn(len(inputs))
+    draws = whole_number("draws", draws, 1000)
+    streams = np.random.SeedSequence(checked_seed(seed)).spawn(len(inputs))
     arguments: list[Array] = []
     for position, (source, stream) in enumerate(zip(inputs, streams, strict=True)):
         arguments.extend(_draw(source, position, draws, np.random.default_rng(stream)))

@@ -94,8 +94,10 @@ def time_grid(delay: Array, pulse_rms: float, earliest: float, stretch: float = 
     Raises
     ------
     ValueError
-        If a delay is not finite.
+        If there is no delay, or one is not finite.
     """
+    if delay.size == 0:
+        raise ValueError("There is no delay; give one or more, in ps.")
     if not np.all(np.isfinite(delay)):
         raise ValueError(
             "A delay is not finite; remove such points before modelling (read_trace does on request)."

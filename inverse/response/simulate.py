@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from inverse.description.limits import warn_if_not_plane
 from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
+from inverse.description.quantities import check
 from inverse.description.sample.parts import Substrate
 from inverse.description.sample.places import BoundStack, bind
 from inverse.description.sample.stack import Stack
@@ -76,12 +77,13 @@ def simulate(
     Raises
     ------
     ValueError
-        If a constant is missing, a delay is not finite or not increasing, or `values` names no unknown.
+        If a constant is missing, there is no delay, one is not finite or not increasing, or `values` names no unknown
+        or is out of range.
     """
     from inverse.description.trace.reading import make_trace
 
     delay = np.atleast_1d(np.asarray(delay, dtype=float))
-    bound = bind(stack, setup)
+    bound, time_zero = bind(stack, setup), check("time_zero", time_zero)
     known = _known(bound, values or {})
     grid = time_grid(delay, setup.pulse_rms, earliest=time_zero)
     batches = under_the_spot(bound, known)
@@ -115,9 +117,13 @@ def _known(bound: BoundStack, values: Mapping[str, float]) -> dict[str, Array]:
         raise ValueError(
             f"values names {', '.join(strange)}; the stack's unknowns are {', '.join(bound.priors) or 'none'}."
         )
+    fields = {slot.name: slot.field for slot in bound.slots}
+    wanted = {
+        name: values[name] if name in values else prior.median() for name, prior in bound.priors.items()
+    }
     return {
-        name: np.array([float(values[name] if name in values else prior.median())])
-        for name, prior in bound.priors.items()
+        name: np.array([check(fields[name], value, name.removesuffix(f".{fields[name]}"))])
+        for name, value in wanted.items()
     }
 
 

@@ -205,7 +205,7 @@ def test_equal_seeds_give_equal_checks_and_leave_the_global_state_alone() -> Non
 def test_wrong_arguments_are_refused() -> None:
     with pytest.raises(ValueError, match="Got str instead of a result"):
         check_model("fit")
-    with pytest.raises(ValueError, match="draws=0; give 1 or more"):
+    with pytest.raises(ValueError, match="draws must be a whole number, 1 or more, not 0"):
         check_model("fit", draws=0)
     fit = problem("white", seed=6).least_squares(seed=1, starts=1)
     with pytest.raises(ValueError, match="There is no channel 'optical_phase'; there are reflectance_change"):

@@ -129,5 +129,5 @@ def test_wrong_arguments_are_refused() -> None:
     fit = invented({"a": stats.norm(0, 1)}, lambda v: -(v[:, 0] ** 2), (np.zeros(1), np.eye(1)))
     with pytest.raises(ValueError, match="There is no unknown 'b'; there are a"):
         profile(fit.inversion, "b", fit=fit)
-    with pytest.raises(ValueError, match="points=3; give 7 or more"):
+    with pytest.raises(ValueError, match="points must be a whole number, 7 or more, not 3"):
         profile(fit.inversion, "a", points=3, fit=fit)

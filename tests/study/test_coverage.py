@@ -275,7 +275,7 @@ def test_simulator_of_another_shape_is_refused(short):
 
 
 def test_unusable_arguments_are_refused(short):
-    with pytest.raises(ValueError, match="replicates=0; give 1 or more"):
+    with pytest.raises(ValueError, match="replicates must be a whole number, 1 or more, not 0"):
         check_coverage(short, seed=1, replicates=0)
     with pytest.raises(ValueError, match="budget=2; give a probability"):
         check_coverage(short, seed=1, budget=2)

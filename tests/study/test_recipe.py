@@ -67,7 +67,7 @@ def test_it_travels_to_workers_and_has_a_written_form(recipe):
     [
         ({"Au.thickness": 50.0}, r"'Au\.thickness' names no part of the stack; it has Al, Al\|Si, Si"),
         ({"Al|Si.colour": 1.0}, "an Interface has no 'colour'"),
-        ({"Al.colour": 1.0}, "Al got colour, which no Material has"),
+        ({"Al.colour": 1.0}, r"Al got colour\. It takes density, "),
         ({"Al.thickness": 6e-8}, "It looks like m or um"),
     ],
 )

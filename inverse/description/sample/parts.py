@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass, fields, replace
 from typing import Any
 
+from inverse.description.arguments import refuse_unknown_names, whole_number
 from inverse.description.material.properties import Material, material
 from inverse.description.material.reference_tables import find
 from inverse.description.unknowns import checked
@@ -224,7 +225,7 @@ class Graded:
         ends = [end if isinstance(end, Material) else material(end) for end in (top, bottom)]
         label = Material(f"{ends[0].name}-{ends[1].name}" if name is None else name).name
         checked("thickness", thickness, label)
-        if not 2 <= slices <= 500:
+        if not 2 <= whole_number("slices", slices, 1) <= 500:
             raise ValueError(f"{label} got slices={slices}; give 2 to 500.")
         for field, value in zip(
             ("top", "bottom", "thickness", "slices", "name"),
@@ -281,7 +282,9 @@ class Repeat:
             raise ValueError("Repeat got no layer; give the parts of one period after the count.")
         for part in parts:
             if not isinstance(part, Layer | Interface | Graded | Repeat):
-                raise ValueError(f"Repeat got {part!r}; give Layer, Interface, Graded or Repeat.")
+                raise ValueError(
+                    f"Repeat got a {type(part).__name__}; give Layer, Interface, Graded or Repeat, one by one."
+                )
         object.__setattr__(self, "count", count)
         object.__setattr__(self, "parts", tuple(parts))
 
@@ -323,12 +326,7 @@ def _fill_medium(
     """Resolve a material with its overrides into the attributes shared by layers and the substrate."""
     base = _base(given, orientation, overrides)
     ratio = overrides.pop("density_ratio", None)
-    strange = sorted(set(overrides) - set(_MATERIAL_FIELDS))
-    if strange:
-        raise ValueError(
-            f"{base.name} got {', '.join(strange)}, which no Material has; its fields are "
-            f"{', '.join(_MATERIAL_FIELDS)}, or density_ratio for a layer."
-        )
+    refuse_unknown_names(base.name, overrides, (*_MATERIAL_FIELDS, "density_ratio"))
     if ratio is not None:
         if "density" in overrides:
             raise ValueError(f"{base.name} got both density and density_ratio; give one of them.")

@@ -108,9 +108,14 @@ def bind(stack: Stack, setup: PumpProbe) -> BoundStack:
     Raises
     ------
     ValueError
-        If a constant the model needs is missing (named), or one unknown's name is used for two priors.
+        If they are not a `Stack` and a `PumpProbe`, a constant the model needs is missing (named), or one unknown's
+        name is used for two priors.
     """
     substrate = _substrate_slots(stack.names[-1], stack.media[-1], setup)
+    if not isinstance(stack, Stack) or not isinstance(setup, PumpProbe):
+        raise ValueError(
+            f"Got a {type(stack).__name__} and a {type(setup).__name__}; give a Stack first, then a PumpProbe."
+        )
     media = [*_media_slots(stack, setup, substrate.get("density")), substrate]
     if oblique := any(is_oblique(part.material) for part in stack.media):
         media = _sheared(stack, media)

@@ -123,12 +123,20 @@ def _split(parts: tuple[Part, ...]) -> tuple[list[_Placed], list[_Placed]]:
             _add(media, bonds, (part, place), pending)
             pending = None
         else:
-            raise ValueError(f"{where} is {part!r}; give Layer, Interface, Graded, Repeat or Substrate.")
+            raise ValueError(
+                f"{where} is {_shown(part)}; give Layer, Interface, Graded, Repeat or Substrate."
+            )
     if pending is not None or not media or not isinstance(media[-1][0], Substrate):
         raise ValueError(
             "A Stack must end with a Substrate (the half-space below everything; Substrate('vacuum') if there is none)."
         )
     return media, bonds
+
+
+def _shown(part: Any) -> str:
+    if isinstance(part, list | tuple):
+        return f"a {type(part).__name__}, but parts are given one by one: Stack(layer, substrate) or Stack(*parts)"
+    return repr(part) if isinstance(part, str | int | float) else f"a {type(part).__name__}"
 
 
 def _add(media: list[_Placed], bonds: list[_Placed], medium: _Placed, bond: _Placed | None) -> None:
@@ -189,4 +197,6 @@ def _ambient(given: str | Material) -> Material | None:
     """Return the liquid above the stack, or None where it carries neither sound nor heat."""
     if isinstance(given, Material):
         return given
+    if not isinstance(given, str):
+        raise ValueError(f"ambient = {given!r}; give 'air', 'vacuum', or a liquid by name or as a Material.")
     return None if given.lower() in EMPTY else material(given)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -40,7 +40,7 @@ def check_trace(trace: xr.Dataset, *, measured: bool = True) -> xr.Dataset:
     TraceError
         If there is no delay or no channel; if a number is NaN or infinite; if delays are unsorted,
         repeated or look
-        like another unit than ps; if there are too few points or a signal is constant.
+        like another unit than ps; if a channel is complex; if there are too few points or a signal is constant.
     """
     import xarray as xr
 
@@ -59,6 +59,7 @@ def check_trace(trace: xr.Dataset, *, measured: bool = True) -> xr.Dataset:
             raise TraceError(
                 f"{name} has dimensions {trace[name].dims}; expected ('delay',): one trace per Dataset"
             )
+        refuse_complex(name, trace[name].values)
         signals[name] = np.asarray(trace[name].values, dtype=float)
     for name, values in {"delay": delay, **signals}.items():
         refuse_non_finite(name, values)
@@ -85,6 +86,15 @@ def channels_of(trace: xr.Dataset) -> tuple[str, ...]:
             "rename the variable or use make_trace"
         )
     return found
+
+
+def refuse_complex(name: str, values: Any) -> None:
+    """Refuse complex numbers, whose imaginary part a cast to float would drop."""
+    if np.iscomplexobj(values):
+        raise TraceError(
+            f"{name} is complex; give real numbers: of a complex dr/r, 2 x its real part is reflectance_change and its "
+            "imaginary part is optical_phase"
+        )
 
 
 def refuse_non_finite(name: str, values: NDArray[np.float64]) -> None:

@@ -16,6 +16,7 @@ from inverse.description.trace.checks import (
     TraceError,
     channels_of,
     check_trace,
+    refuse_complex,
     refuse_disorder,
     refuse_non_finite,
 )
@@ -362,6 +363,7 @@ def _dataset(
 
 def _as_vector(name: str, values: ArrayLike) -> _Floats:
     """Copy a one-dimensional array of floats."""
+    refuse_complex(name, values)
     try:
         vector = np.array(values, dtype=float)
     except (TypeError, ValueError) as error:

@@ -16,6 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import chdtrc, log_ndtr
 
+from inverse.description.arguments import whole_number
 from inverse.inference.checks.drift_ratio import DriftTest, drift_tests
 from inverse.inference.checks.posterior_draws import posterior_draws
 from inverse.inference.checks.residuals import Replicates, autocorrelation, replicates
@@ -188,8 +189,7 @@ def check_model(result: Any, *, draws: int = _DRAWS, seed: int = 0) -> ModelChec
     ValueError
         If `result` is neither kind or `draws` is below 1.
     """
-    if draws < 1:
-        raise ValueError(f"draws={draws}; give 1 or more.")
+    draws = whole_number("draws", draws, 1)
     found = posterior_draws(result, seed=seed, count=draws).thinned(draws)
     return ModelCheck(_checks(found.inversion, found.flat, seed))
 

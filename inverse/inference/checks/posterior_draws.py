@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_seed
 from inverse.inference.minima.least_squares import Fit
 from inverse.inference.result import rebuild
 
@@ -70,6 +71,7 @@ def posterior_draws(result: Any, *, seed: int = 0, count: int = 400) -> Posterio
     ValueError
         If `result` is neither.
     """
+    seed = checked_seed(seed)
     if isinstance(result, Fit):
         return PosteriorDraws(result.inversion, _normal_draws(result, seed, count)[None], False)
     if "posterior" not in getattr(result, "children", ()) or "inverse" not in result.attrs:

@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 
+from inverse.description.arguments import checked_seed
 from inverse.inference.mcmc.advance import EnsembleState, LogProb, checked_values
 
 
@@ -53,9 +54,7 @@ def seed_sequence(seed: int | np.random.SeedSequence) -> np.random.SeedSequence:
     """Make a fresh sequence: spawning from the caller's own would give other streams the second time."""
     if isinstance(seed, np.random.SeedSequence):
         return np.random.SeedSequence(seed.entropy, spawn_key=seed.spawn_key, pool_size=seed.pool_size)
-    if isinstance(seed, bool) or not isinstance(seed, int | np.integer) or seed < 0:
-        raise ValueError(f"seed must be a whole number, 0 or more, or a numpy SeedSequence, not {seed!r}")
-    return np.random.SeedSequence(int(seed))
+    return np.random.SeedSequence(checked_seed(seed))
 
 
 def describe_seed(sequence: np.random.SeedSequence) -> str:

@@ -12,8 +12,10 @@ from typing import TYPE_CHECKING, Any, Protocol
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_seed, whole_number
 from inverse.inference.mcmc.ensembles import EnsembleRun, run_ensembles
 from inverse.inference.mcmc.independence import IndependenceMove, StudentMixture, adapt
+from inverse.inference.mcmc.verdict import Targets
 from inverse.inference.minima.least_squares import Basin, Density, Fit
 from inverse.inference.result import problem_record
 
@@ -61,9 +63,9 @@ def sample_posterior(
     checkpoint: str | os.PathLike[str] | None = None,
     executor: Executor | None = None,
     moves: Any = None,
+    checks: bool = True,
     progress: bool | Callable[[dict[str, Any]], object] = True,
 ) -> xr.DataTree:
-    checks: bool = True,
     """Sample the posterior of a problem.
 
     Parameters
@@ -90,10 +92,10 @@ def sample_posterior(
     moves : emcee moves, optional
         By default seven steps in ten offer fresh draws from an approximation of the posterior that was fixed before
         the run, the others are differential evolution and stretch moves.
-    progress : bool or callable
-        Bar, nothing, or a function that is given the state.
     checks : bool
         Look for what speaks against the model and write it into the result as warnings; takes some seconds.
+    progress : bool or callable
+        Bar, nothing, or a function that is given the state.
 
     Returns
     -------
@@ -106,6 +108,7 @@ def sample_posterior(
     ValueError
         For arguments that will not do or a checkpoint of another problem.
     """
+    seed, ensembles = checked_seed(seed), whole_number("ensembles", ensembles, 1)
     if ensembles < 2:
         raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
     fit = inversion.least_squares(seed=seed) if fit is None else fit

@@ -18,6 +18,10 @@ from inverse.inference.mcmc.convergence import (
 LEAST_ACCEPTANCE = 0.05
 
 
+def _is_number(value: object) -> bool:
+    return isinstance(value, int | float | np.number)
+
+
 @dataclass(frozen=True)
 class Targets:
     """When to stop.
@@ -39,9 +43,9 @@ class Targets:
         for name, value in (("max_steps", self.max_steps), ("chunk", self.chunk)):
             if not isinstance(value, int | np.integer) or value < 1:
                 raise ValueError(f"{name} must be a whole number of steps, at least 1, not {value!r}")
-        if not self.ess > 0:
+        if not _is_number(self.ess) or not self.ess > 0:
             raise ValueError(f"ess must be a positive number of effective draws, not {self.ess!r}")
-        if not self.rhat > 1:
+        if not _is_number(self.rhat) or not self.rhat > 1:
             raise ValueError(f"rhat must be above 1 (1.01 is customary), not {self.rhat!r}")
 
     def is_check(self, steps: int) -> bool:

@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import optimize
 
+from inverse.description.arguments import checked_seed, whole_number
 from inverse.inference.minima.minimise import Minimum, covariance_of, jacobian, minimise
 from inverse.inference.minima.projection import Projected
 from inverse.inference.problem.parameters import Parameters
@@ -142,10 +143,10 @@ def least_squares(
     Raises
     ------
     ValueError
-        If `starts` is below 1, a point lacks an unknown, or no start has a finite likelihood.
+        If `starts` or `seed` is no whole number or too small, a point lacks an unknown, or no start has a finite
+        likelihood.
     """
-    if starts < 1:
-        raise ValueError(f"starts={starts}; give 1 or more.")
+    starts, seed = whole_number("starts", starts, 1), checked_seed(seed)
     posterior = inversion.posterior
     physical = np.array([n not in inversion.noise_names for n in inversion.names])
     centre = np.zeros(len(inversion.names))
@@ -172,13 +173,21 @@ def least_squares(
 
 
 def _joined(z: Array, physical: NDArray[np.bool_], x: Array) -> Array:
-    out = z.copy()
-    out[physical] = x
+    """Return the noise of z with the physical unknowns x, shape (..., physical unknowns)."""
+    out = np.broadcast_to(z, (*x.shape[:-1], z.size)).copy()
+    out[..., physical] = x
     return out
 
 
 def _coarse_noise(inversion: Inversion, z: Array) -> Array:
     """Return standard normal variables with white noise at a fraction of the signal and little discrepancy."""
+def _apart(rough: Minimum, other: Minimum) -> float:
+    """Mahalanobis distance per root unknown, in the covariance of the first."""
+    delta = rough.x - other.x
+    covariance = np.where(np.isfinite(rough.covariance), rough.covariance, 1.0)
+    return float(np.sqrt(delta @ np.linalg.pinv(covariance) @ delta / delta.size))
+
+
     named = inversion.posterior.parameters.named(inversion.posterior.parameters.to_values(z[None]))
     values = {name: float(v[0]) for name, v in named.items()}
     for member in inversion.posterior.members:
@@ -195,7 +204,6 @@ def _starting_points(
 ) -> list[Array]:
     from scipy.stats import qmc
 
-    posterior = inversion.posterior
     sampler = qmc.Sobol(int(physical.sum()), rng=np.random.default_rng(seed))
     unit = np.clip(sampler.random(_CANDIDATES), 1e-3, 1 - 1e-3)
     z = np.repeat(coarse[None], _CANDIDATES, axis=0)

@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import interpolate, optimize
 
+from inverse.description.arguments import whole_number
 from inverse.inference.inversion import Inversion
 from inverse.inference.minima.least_squares import Basin, Fit
 from inverse.inference.problem.posterior import Posterior
@@ -79,8 +80,7 @@ def profile(
 
     if name not in inversion.names:
         raise ValueError(f"There is no unknown '{name}'; there are {', '.join(inversion.names)}.")
-    if points < 7:
-        raise ValueError(f"points={points}; give 7 or more.")
+    points = whole_number("points", points, 7)
     fit = inversion.least_squares(seed=seed) if fit is None else fit
     i = inversion.names.index(name)
     ascent = _Ascent(_Objective(inversion.posterior, None if own_prior else i), i)
@@ -180,8 +180,11 @@ def _trace(ascent: _Ascent, minima: Sequence[Basin], points: int) -> _Traced:
     """March outwards from every minimum to find the range, then fill it evenly with the highest branch."""
     i = ascent.i
     tops, branches = [], []
-    for basin in minima:
-        top, height = ascent.free(basin.z, basin.covariance_z)
+    climbed = [(basin, *ascent.free(basin.z, basin.covariance_z)) for basin in minima]
+    # A minimum whose top is beyond every level holds no part of an interval; its range would only thin the points.
+    best = max(height for _, _, height in climbed)
+    climbed = [(basin, top, height) for basin, top, height in climbed if 2 * (best - height) < _FAR]
+    for basin, top, height in climbed:
         marched = [(top, height)]
         for direction in (-1.0, 1.0):
             marched += _march(ascent, top, height, basin.covariance_z, direction)
@@ -189,7 +192,8 @@ def _trace(ascent: _Ascent, minima: Sequence[Basin], points: int) -> _Traced:
         branches.append(np.array(sorted((p[0] for p in marched), key=lambda z: float(z[i]))))
     ends = [branch[[0, -1], i] for branch in branches]
     wanted = np.linspace(min(e[0] for e in ends), max(e[1] for e in ends), points)
-    filled = [_highest(ascent, value, branches, minima) for value in wanted]
+    kept = [basin for basin, _, _ in climbed]
+    filled = [_highest(ascent, value, branches, kept) for value in wanted]
     filled.append(max(tops, key=lambda t: t[1]))
     filled.sort(key=lambda f: float(f[0][i]))
     return _Traced(np.array([f[0] for f in filled]), np.array([f[1] for f in filled]))

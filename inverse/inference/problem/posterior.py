@@ -64,7 +64,8 @@ class Posterior:
         """Return the log posterior of standard normal variables, shape (n,)."""
         with np.errstate(all="ignore"):
             prior = -0.5 * (z * z).sum(axis=1) - 0.5 * z.shape[1] * np.log(2 * np.pi)
-            return prior + self.log_likelihood(self.parameters.to_values(z))
+            total = prior + self.log_likelihood(self.parameters.to_values(z))
+        return np.where(np.isnan(prior), -np.inf, total)
 
     def as_gaussian(self, z: Array) -> Posterior:
         """Return the problem whose Gaussian noise has the curvature of its own at one point z, shape (unknowns,)."""
@@ -73,8 +74,14 @@ class Posterior:
         return replace(self, members=tuple(members))
 
     def log_prob(self, values: Array) -> Array:
-        """Return the log posterior density of values, shape (n,)."""
-        return self.parameters.log_prior(values) + self.log_likelihood(values)
+        """Return the log posterior density of values, shape (n,); -inf where impossible, NaN included."""
+        prior = self.parameters.log_prior(values)
+        return np.where(np.isnan(prior), -np.inf, prior + self.log_likelihood(values))
+
+    def possible(self, values: Array) -> NDArray[np.bool_]:
+        """Tell which values of shape (n, unknowns) are numbers within their limits and their prior's support."""
+        low, high = np.transpose([prior.support() for prior in self.parameters.priors])
+        return (values >= np.maximum(low, self.low)) & (values <= np.minimum(high, self.high))
 
     def log_likelihood(self, values: Array) -> Array:
         """Return the log likelihood of values of shape (n, unknowns); -inf where impossible."""

@@ -3,16 +3,44 @@
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
 from inverse.description.sample.places import BoundStack, Slot, Slots
 
-__all__ = ["refuse_what_no_trace_can_tell"]
+__all__ = ["refuse_a_trace_before_the_pulse", "refuse_what_no_trace_can_tell"]
+
+_FEWEST_AFTER = 20
+"""Delays after time zero: fewer tell nothing of a stack."""
 
 _OPAQUE = 3.0
 """Amplitude decays of the probe across a layer above which only its echo tells its thickness."""
 
 _RESOLVED = 2.0
 """Round trips shorter than this many pulse widths leave no echo to be told from the pulse."""
+
+
+def refuse_a_trace_before_the_pulse(delay: NDArray[np.float64], time_zero: float) -> None:
+    """Refuse a trace that has ended, or nearly, when the pump comes.
+
+    Parameters
+    ----------
+    delay : array, shape (delays,)
+        Of the fitted data, ps.
+    time_zero : float
+        Given, or the median of its prior, ps.
+
+    Raises
+    ------
+    ValueError
+        If fewer than 20 fitted delays come after time zero.
+    """
+    after = int((delay > time_zero).sum())
+    if after < _FEWEST_AFTER:
+        raise ValueError(
+            f"Time zero is at {time_zero:g} ps (given, or the median of its prior), and {after} of the {delay.size} "
+            f"fitted delays, from {delay.min():g} to {delay.max():g} ps, come after it; at least {_FEWEST_AFTER} must. "
+            "Give the time_zero of this trace in ps, or leave it out to have it found."
+        )
 
 
 def refuse_what_no_trace_can_tell(bound: BoundStack, last: float, pulse_rms: float, probe: float) -> None:

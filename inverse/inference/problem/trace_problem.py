@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -9,14 +10,14 @@ from numpy.typing import NDArray
 
 from inverse.description.limits import warn_if_not_plane
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.quantities import check
+from inverse.description.quantities import QUANTITIES
 from inverse.description.sample.places import BoundStack, bind
 from inverse.description.sample.stack import Stack
-from inverse.description.unknowns import Unknown, is_distribution
+from inverse.description.unknowns import Unknown, checked, is_distribution, validate_prior
 from inverse.inference.problem.likelihood import HEAT_WIDTH, SCALE_WIDTH, STRAIN_WIDTH, Channel, TraceModel
 from inverse.inference.problem.noise import Noise, noise_priors
 from inverse.inference.problem.posterior import Member
-from inverse.inference.problem.reach import refuse_what_no_trace_can_tell
+from inverse.inference.problem.reach import refuse_a_trace_before_the_pulse, refuse_what_no_trace_can_tell
 from inverse.inference.problem.scans import relative_noise
 from inverse.inference.problem.tied import tie
 from inverse.response.basis import CHANNELS, PORTS, basis, columns, take
@@ -62,6 +63,7 @@ def trace_member(
     delay = trace["delay"].values.astype(float)
     warn_if_not_plane(stack, setup, float(delay.max()) - centre)
     used = _used(mask, delay, centre, setup.pulse_rms)
+    refuse_a_trace_before_the_pulse(delay[used], centre)
     refuse_what_no_trace_can_tell(bound, float(delay[used].max()) - centre, setup.pulse_rms, setup.probe)
     look = first_look(trace)
     present = [c for c in CHANNELS if c in trace]
@@ -82,6 +84,7 @@ def trace_member(
 
 def _time_zero(given: Any, trace: xr.Dataset) -> tuple[str, Any, dict[str, float]]:
     """Return name, prior (None if known) and the fixed value of time zero."""
+    given = given if given is None else checked("time_zero", given, "")
     if isinstance(given, Unknown):
         return given.name, given.prior, {}
     if given is None:
@@ -93,7 +96,7 @@ def _time_zero(given: Any, trace: xr.Dataset) -> tuple[str, Any, dict[str, float
         return "time_zero", stats.norm(centre, sd), {}
     if is_distribution(given):
         return "time_zero", given, {}
-    return "time_zero", None, {"time_zero": check("time_zero", given)}
+    return "time_zero", None, {"time_zero": given}
 
 
 def _used(mask: Any, delay: Array, centre: float, pulse_rms: float) -> NDArray[np.bool_]:
@@ -125,7 +128,7 @@ def _used(mask: Any, delay: Array, centre: float, pulse_rms: float) -> NDArray[n
 def _channel(
     trace: xr.Dataset, name: str, used: NDArray[np.bool_], noise: Any, level: float, prefix: str
 ) -> tuple[Channel, dict[str, Any]]:
-    model, replaced = (noise, {}) if isinstance(noise, str) else ("correlated", dict(noise))
+    model, replaced = (noise, {}) if isinstance(noise, str) else ("correlated", _noise_given(noise))
     delay = trace["delay"].values.astype(float)[used]
     priors = noise_priors(model, level, delay)
     strange = sorted(set(replaced) - set(priors))
@@ -145,6 +148,23 @@ def _channel(
         baseline=SCALE_WIDTH * float(np.abs(data[used]).max()),
     )
     return channel, {**priors, **replaced}
+
+
+def _noise_given(noise: Any) -> dict[str, Any]:
+    """Check priors given in place of the noise's own."""
+    if not isinstance(noise, Mapping):
+        raise ValueError(
+            f"noise = {noise!r}; give 'correlated', 'white', 'student' or a mapping of names to priors."
+        )
+    for name, prior in noise.items():
+        if not is_distribution(prior):
+            raise ValueError(
+                f"noise.{name} = {prior!r}; it is always sought: give a frozen scipy.stats distribution, such as "
+                "stats.lognorm(0.1, scale=1e-6)."
+            )
+        if f"noise.{name}" in QUANTITIES:
+            validate_prior(f"noise.{name}", prior)
+    return dict(noise)
 
 
 def _trace_model(

@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_seed, whole_number
 from inverse.inference.mcmc.executor import Shared, checked_executor, completed
 from inverse.study.coverage.judgement import Replicate, Sampling, judge
 from inverse.study.coverage.ranks import CELLS, Bands, checked_levels, counts, simultaneous_bands
@@ -236,7 +237,7 @@ def check_coverage(
     ValueError
         For arguments that will not do, or a store of another check.
     """
-    levels, sampling = checked_levels(levels), Sampling(method, ess, max_steps)
+    levels, sampling, seed = checked_levels(levels), Sampling(method, ess, max_steps), checked_seed(seed)
     _check_numbers(replicates, budget)
     if simulate_trace is not None and len(inversion.parts) > 1:
         raise ValueError(
@@ -282,7 +283,7 @@ def check_known(
     ValueError
         If there is not one truth for each problem, or an argument will not do.
     """
-    levels, sampling = checked_levels(levels), Sampling(method, ess, max_steps)
+    levels, sampling, seed = checked_levels(levels), Sampling(method, ess, max_steps), checked_seed(seed)
     if not inversions or len(inversions) != len(truths):
         raise ValueError(
             f"There are {len(inversions)} problems and {len(truths)} truths; give one truth a problem."
@@ -394,8 +395,7 @@ def _line(news: dict[str, Any], total: int) -> None:
 
 
 def _check_numbers(replicates: int, budget: float) -> None:
-    if replicates < 1:
-        raise ValueError(f"replicates={replicates}; give 1 or more, 200 for a check worth its name.")
+    whole_number("replicates", replicates, 1)
     if not 0 < budget < 1:
         raise ValueError(f"budget={budget}; give a probability between 0 and 1, such as 0.01.")
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_seed, whole_number
 from inverse.inference.minima.least_squares import Basin, basin_distance, make_basin, ranked
 from inverse.inference.minima.minimise import minimise
 from inverse.study.stiffness.velocity_posterior import VelocityPosterior
@@ -40,8 +41,7 @@ def minima(posterior: VelocityPosterior, starts: int, seed: int) -> tuple[Basin,
     ValueError
         If `starts` is below 1 or no stable minimum was found.
     """
-    if starts < 1:
-        raise ValueError(f"starts={starts}; give 1 or more.")
+    starts, seed = whole_number("starts", starts, 1), checked_seed(seed)
     found: list[Basin] = []
     for start in _starting_points(posterior, starts, seed):
         lowest = minimise(posterior.residuals, start, max_evaluations=200)

@@ -1,0 +1,142 @@
+"""What the public calls of a problem refuse, and what they say."""
+
+import numpy as np
+import pytest
+from problems import SETUP, bonded, noisy
+from scipy import stats
+
+import inverse as inv
+
+TRUTH = {"Al.thickness": 60.0, "Al.velocity": 6.42, "Al|Si.compliance": 0.02}
+
+
+@pytest.fixture(scope="module")
+def problem():
+    trace = noisy(bonded(), TRUTH, 0.01, seed=1)
+    return inv.Inversion(bonded(), SETUP, trace, time_zero=stats.norm(0, 0.05), noise="white")
+
+
+def medians(problem):
+    return np.array([[float(prior.median()) for prior in problem.priors.values()]])
+
+
+def test_a_value_that_is_no_number_has_no_probability(problem):
+    values = np.repeat(medians(problem), 2, axis=0)
+    values[0, 0] = np.nan
+    impossible, possible = problem.log_prob(values)
+    assert impossible == -np.inf and np.isfinite(possible)
+    z = np.zeros((2, len(problem.names)))
+    z[1, 1] = np.nan
+    assert np.isfinite(problem.posterior(z)[0]) and problem.posterior(z)[1] == -np.inf
+
+
+@pytest.mark.parametrize("value", [20.0, 1e9, np.nan, np.inf])
+def test_predict_refuses_what_the_prior_makes_impossible(problem, value):
+    values = medians(problem)
+    values[0, 0] = value
+    with pytest.raises(
+        ValueError, match=r"Al.thickness = \S+ in row 0 of values is impossible.*from 40 to 80 nm"
+    ):
+        problem.predict(values)
+
+
+def test_predict_takes_the_edges_of_a_prior(problem):
+    values = medians(problem)
+    values[0, 0] = 80.0
+    assert np.ptp(problem.predict(values)["reflectance_change"].values) > 0
+
+
+def test_predict_needs_a_delay_and_a_whole_seed(problem):
+    with pytest.raises(ValueError, match="There is no delay; give one or more"):
+        problem.predict(medians(problem), delay=[])
+    for seed in ("a", -1, 1.5, True):
+        with pytest.raises(ValueError, match=r"seed must be a whole number, 0 or more, not"):
+            problem.predict(medians(problem), seed=seed)
+
+
+@pytest.mark.parametrize("seed", ["a", None, -1, 1.5, True])
+def test_every_search_and_every_draw_has_a_whole_seed(problem, seed):
+    with pytest.raises(ValueError, match=r"seed must be a whole number, 0 or more, not"):
+        problem.least_squares(seed=seed)
+    with pytest.raises(ValueError, match=r"seed must be a whole number, 0 or more, not"):
+        problem.sample_posterior(seed=seed)
+
+
+@pytest.mark.parametrize(
+    ("options", "said"),
+    [
+        ({"ensembles": 2.5}, "ensembles must be a whole number"),
+        ({"walkers": "many"}, "walkers must be a whole number, 10 or more, not 'many'"),
+        ({"walkers": 3}, "walkers must be a whole number, 10 or more, not 3"),
+        ({"ess": "many"}, "ess must be a positive number of effective draws, not 'many'"),
+        ({"rhat": None}, "rhat must be above 1"),
+        ({"max_steps": 1e4}, "max_steps must be a whole number of steps"),
+    ],
+)
+def test_sampling_refuses_its_arguments_before_the_search(problem, monkeypatch, options, said):
+    monkeypatch.setattr(inv.Inversion, "least_squares", lambda *_, **__: pytest.fail("searched"))
+    with pytest.raises(ValueError, match=said):
+        problem.sample_posterior(seed=1, **options)
+
+
+def test_least_squares_needs_a_whole_number_of_starts(problem):
+    for starts in ("a", 0, 2.5):
+        with pytest.raises(ValueError, match="starts must be a whole number, 1 or more, not"):
+            problem.least_squares(seed=1, starts=starts)
+
+
+@pytest.mark.parametrize(
+    ("options", "said"),
+    [
+        ({"time_zero": stats.norm(1e4, 1)}, r"Time zero is at 10000 ps .* and 0 of the .* come after it"),
+        ({"time_zero": 5e3}, r"Time zero is at 5000 ps .* at least 20 must"),
+        (
+            {"time_zero": stats.norm},
+            "time_zero = stats.norm is a family of distributions, not yet one of them",
+        ),
+        (
+            {"time_zero": stats.norm(0, -1)},
+            r"time_zero has norm\(0, -1\) as its prior, which has no quantiles",
+        ),
+        ({"noise": 3}, "noise = 3; give 'correlated', 'white', 'student' or a mapping"),
+        ({"noise": {"white": 1e-5}}, r"noise\.white = 1e-05; it is always sought"),
+        ({"noise": {"discrepancy": stats.norm(0, 1)}}, r"1% quantile does not fit. noise\.discrepancy"),
+    ],
+)
+def test_an_inversion_refuses(problem, options, said):
+    with pytest.raises(ValueError, match=said):
+        inv.Inversion(bonded(), SETUP, problem.trace, **options)
+
+
+def test_a_trace_that_ends_before_the_pulse_is_refused():
+    delay = np.linspace(-50, -5, 300)
+    trace = inv.make_trace(delay, reflectance_change=np.random.default_rng(1).standard_normal(300))
+    with pytest.raises(ValueError, match=r"0 of the 300 fitted delays, from -50 to -5 ps, come after it"):
+        inv.Inversion(bonded(), SETUP, trace, time_zero=0.0)
+
+
+def test_swapped_arguments_are_named(problem):
+    with pytest.raises(ValueError, match="Got a PumpProbe and a Stack; give a Stack first, then a PumpProbe"):
+        inv.Inversion(SETUP, bonded(), problem.trace)
+    with pytest.raises(ValueError, match="Got a PumpProbe and a Stack; give a Stack first, then a PumpProbe"):
+        inv.simulate(SETUP, bonded(), [1.0, 2.0])
+    with pytest.raises(ValueError, match="joint takes a sequence of Inversion, and got a NoneType"):
+        inv.Inversion.joint([problem, None])
+
+
+@pytest.mark.parametrize(
+    ("delay", "options", "said"),
+    [
+        ([], {}, "There is no delay; give one or more"),
+        (
+            [1.0, 2.0],
+            {"values": {"Al.thickness": np.nan}},
+            r"Al\.thickness = nan is outside 0\.1 to 1e\+06 nm",
+        ),
+        ([1.0, 2.0], {"values": {"Al.thickness": -3.0}}, r"Al\.thickness = -3 is outside"),
+        ([1.0, 2.0], {"time_zero": np.nan}, "time_zero = nan is outside"),
+    ],
+)
+def test_simulate_refuses(delay, options, said):
+    with pytest.raises(ValueError, match=said):
+        inv.simulate(bonded(), SETUP, delay, **options)
