@@ -173,21 +173,13 @@ def least_squares(
 
 
 def _joined(z: Array, physical: NDArray[np.bool_], x: Array) -> Array:
-    """Return the noise of z with the physical unknowns x, shape (..., physical unknowns)."""
-    out = np.broadcast_to(z, (*x.shape[:-1], z.size)).copy()
-    out[..., physical] = x
+    out = z.copy()
+    out[physical] = x
     return out
 
 
 def _coarse_noise(inversion: Inversion, z: Array) -> Array:
     """Return standard normal variables with white noise at a fraction of the signal and little discrepancy."""
-def _apart(rough: Minimum, other: Minimum) -> float:
-    """Mahalanobis distance per root unknown, in the covariance of the first."""
-    delta = rough.x - other.x
-    covariance = np.where(np.isfinite(rough.covariance), rough.covariance, 1.0)
-    return float(np.sqrt(delta @ np.linalg.pinv(covariance) @ delta / delta.size))
-
-
     named = inversion.posterior.parameters.named(inversion.posterior.parameters.to_values(z[None]))
     values = {name: float(v[0]) for name, v in named.items()}
     for member in inversion.posterior.members:
@@ -204,6 +196,7 @@ def _starting_points(
 ) -> list[Array]:
     from scipy.stats import qmc
 
+    posterior = inversion.posterior
     sampler = qmc.Sobol(int(physical.sum()), rng=np.random.default_rng(seed))
     unit = np.clip(sampler.random(_CANDIDATES), 1e-3, 1 - 1e-3)
     z = np.repeat(coarse[None], _CANDIDATES, axis=0)
