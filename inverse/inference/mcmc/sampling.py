@@ -63,9 +63,9 @@ def sample_posterior(
     checkpoint: str | os.PathLike[str] | None = None,
     executor: Executor | None = None,
     moves: Any = None,
-    checks: bool = True,
     progress: bool | Callable[[dict[str, Any]], object] = True,
 ) -> xr.DataTree:
+    checks: bool = True,
     """Sample the posterior of a problem.
 
     Parameters
@@ -92,10 +92,10 @@ def sample_posterior(
     moves : emcee moves, optional
         By default seven steps in ten offer fresh draws from an approximation of the posterior that was fixed before
         the run, the others are differential evolution and stretch moves.
-    checks : bool
-        Look for what speaks against the model and write it into the result as warnings; takes some seconds.
     progress : bool or callable
         Bar, nothing, or a function that is given the state.
+    checks : bool
+        Look for what speaks against the model and write it into the result as warnings; takes some seconds.
 
     Returns
     -------
@@ -111,8 +111,10 @@ def sample_posterior(
     seed, ensembles = checked_seed(seed), whole_number("ensembles", ensembles, 1)
     if ensembles < 2:
         raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
+    Targets(ess, rhat, max_steps, _CHUNK)  # What will not do is said before the search, not after it.
+    size = len(inversion.names)
+    count = max(24, 3 * size + size % 2) if walkers is None else whole_number("walkers", walkers, 2 * size)
     fit = inversion.least_squares(seed=seed) if fit is None else fit
-    count = walkers or max(24, 3 * len(inversion.names) + len(inversion.names) % 2)
     starts, mixture = prepare(inversion.posterior, fit.minima, ensembles, count + count % 2, seed)
     run = run_ensembles(
         inversion.posterior,
