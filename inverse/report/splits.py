@@ -12,6 +12,8 @@ from inverse.study.splits.wording import chance, number
 __all__ = ["SplitsTable", "splits_table"]
 
 _KINDS = ("pairs", "splits", "wafers")
+_WIDE = 10.0  # a range of a decade has no one decimal place
+_LEAST_THICKNESS = 0.01  # nm; less is no layer
 
 
 @dataclass(frozen=True, repr=False)
@@ -68,7 +70,7 @@ def _pairs(made: Comparison) -> Sheet:
     columns = ["pair", measure, "95 % interval", "unit", f"P({question.better})"]
     columns += [f"P(by more than {margin})"] * (question.margin > 0) + ["verdict"]
     layer = question.layer
-    columns += [f"as {layer[0]} thickness, nm"] if layer else []
+    columns += [f"as {layer.name} thickness{'' if layer.exact else ', at least'}, nm"] if layer else []
     rows = tuple(_pair_cells(made, _best_first(made, pair)) for pair in made.pairs)
     notes = (*made.verdict, *(f"Warning: {w}" for w in made.warnings), _level(made))
     return Sheet(tuple(columns), rows, notes)
@@ -82,11 +84,22 @@ def _pair_cells(made: Comparison, pair: Pair) -> tuple[str, ...]:
     apart = pair.ratio or pair.difference
     unit = "1" if pair.ratio else made.unit
     sign = "/" if pair.ratio else "-"
-    cells = [f"{pair.first} {sign} {pair.second}", *_cells(apart), unit, chance(pair.better)]
+    cells = [f"{pair.first} {sign} {pair.second}", *_cells(apart, pair.open_side), unit, chance(pair.better)]
     cells += [chance(pair.better_by_margin)] * (made.question.margin > 0)
     cells.append("decided" if pair.decided else "undecided")
-    thickness = pair.equivalent_thickness
-    return (*cells, *([" (".join(_cells(thickness)) + ")"] if thickness else []))
+    return (*cells, *([] if pair.equivalent_thickness is None else [_thickness(pair)]))
+
+
+def _thickness(pair: Pair) -> str:
+    """Write the interlayer's change; of two bonds that set only limits, how large it can be at most."""
+    given = pair.equivalent_thickness
+    assert given is not None
+    largest = max(abs(given.low), abs(given.high))
+    if largest < _LEAST_THICKNESS:
+        return f"below {_LEAST_THICKNESS} either way"
+    if pair.open_side == "<>":
+        return f"below {number(largest)} either way"
+    return " (".join(_cells(given)) + ")"
 
 
 def _splits(made: Comparison) -> Sheet:
@@ -98,7 +111,7 @@ def _splits(made: Comparison) -> Sheet:
         "95 % interval",
         "unit",
         "between wafers",
-        "within",
+        "within wafers",
         "P(best)",
     )
     return Sheet(
@@ -109,19 +122,33 @@ def _splits(made: Comparison) -> Sheet:
 def _split_cells(made: Comparison, split: SplitEstimate) -> tuple[str, ...]:
     scatter = (_scatter(made, s) for s in (split.between, split.within))
     counts = (str(split.wafers), str(split.sites))
-    return (split.name, *counts, *_cells(split.centre), made.unit, *scatter, chance(split.rank[0]))
+    return (
+        split.name,
+        *counts,
+        *_cells(split.centre, split.open_side),
+        made.unit,
+        *scatter,
+        chance(split.rank[0]),
+    )
 
 
 def _wafers(made: Comparison) -> Sheet:
-    rows = tuple((w.split, w.wafer, str(w.sites), *_cells(w.centre), made.unit) for w in made.wafers)
+    rows = tuple(
+        (w.split, w.wafer, str(w.sites), *_cells(w.centre, w.open_side), made.unit) for w in made.wafers
+    )
     columns = ("split", "wafer", "sites", "median", "95 % interval", "unit")
     return Sheet(
         columns, rows, ("Wafers drawn towards their split's centre as far as their own data are uncertain.",)
     )
 
 
-def _cells(given: Interval) -> tuple[str, str]:
-    """Write median and interval to one decimal place, that of half the interval."""
+def _cells(given: Interval, open_side: str = "") -> tuple[str, str]:
+    """Write median and interval to one decimal place, that of half the interval; or a limit, or a wide range."""
+    if open_side:
+        ends = {"<": f"< {number(given.high)}", ">": f"> {number(given.low)}"}
+        return ends.get(open_side, "none"), "limit, 97.5 %" if open_side in ends else "both set only limits"
+    if given.low > 0 and given.high > _WIDE * given.low:
+        return number(given.median), f"{number(given.low)} to {number(given.high)}"
     half = (given.high - given.low) / 4
     place = decimal_place(half) if half > 0 else decimal_place(abs(given.median) or 1.0, 6)
     return fixed(given.median, place), format_range(given.low, given.high, place)
@@ -144,4 +171,4 @@ def _priors(made: Comparison) -> str:
 
 def _level(made: Comparison) -> str:
     level = f"{100 * made.question.level:g} %"
-    return f"Decided: at a familywise error of {level}, two-sided, by a step-down rule over all pairs."
+    return f"Pairs are decided at a familywise error of {level}, two-sided, by a step-down rule over all of them."

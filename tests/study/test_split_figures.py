@@ -1,5 +1,7 @@
 """Figures and tables of a comparison: what they draw is what was found."""
 
+from types import SimpleNamespace
+
 import numpy as np
 import pytest
 import xarray as xr
@@ -8,8 +10,10 @@ from matplotlib import colormaps
 from scipy import stats
 
 from inverse.plot.splits_figure import split_differences, splits, wafer_map
-from inverse.report.splits import splits_table
+from inverse.report.splits import _pair_cells, splits_table
 from inverse.study.splits.compare import compare_splits
+from inverse.study.splits.comparison import Interval, Pair, Question
+from inverse.study.splits.equivalent_layer import EquivalentLayer
 
 COMPLIANCE = "Al|Si.compliance"
 PRIOR = stats.halfcauchy(scale=0.05)
@@ -115,11 +119,31 @@ def test_an_unknown_wafer_is_refused(mapped):
 def test_tables_hold_the_numbers(compared):
     pairs = splits_table(compared).markdown()
     assert "| B / A |" in pairs and "| decided |" in pairs and "P(by more than 10 %)" in pairs
-    assert "familywise error of 5 %" in pairs and "as SiO2 thickness, nm" in pairs
+    assert "familywise error of 5 %" in pairs and "as SiO2 thickness, at least, nm" in pairs
     centres = repr(splits_table(compared, "splits"))
     assert "half-Cauchy with scale 0.2 between wafers" in centres
     assert f"{compared.splits[0].centre.median:.4f}" in centres
     assert splits_table(compared, "wafers").latex().count(r"\\") == 7
+
+
+def cells(**given):
+    made = {"difference": Interval(0.0, -1e-6, 1e-6), "ratio": Interval(1.0, 0.004, 249.0), "better": 0.5}
+    made |= {"better_by_margin": 0.4, "worse_by_margin": 0.4, "tail": 0.9, "decided": False, **given}
+    pair = Pair("B", "A", **made)
+    question = Question(COMPLIANCE, 0.0, "lower", 0.05, True, EquivalentLayer("SiO2", 160.0, True))
+    return _pair_cells(SimpleNamespace(question=question, unit="nm/GPa"), pair)
+
+
+def test_limits_and_wide_ranges_are_written_as_such():
+    thin, thick = Interval(0.0, -5e-6, 5e-6), Interval(-13.1, -13.9, -12.1)
+    wide = cells(open_side="", equivalent_thickness=thick)
+    assert wide[1:3] == ("1", "0.004 to 249") and wide[-1] == "-13.10 (-13.90 to -12.10)"
+    limit = cells(open_side="<", equivalent_thickness=thick)
+    assert limit[1:3] == ("< 249", "limit, 97.5 %")
+    both = cells(open_side="<>", equivalent_thickness=thin)
+    assert both[1:3] == ("none", "both set only limits") and both[-1] == "below 0.01 either way"
+    soft = cells(open_side="<>", equivalent_thickness=Interval(0.0, -0.4, 0.3))
+    assert soft[-1] == "below 0.4 either way"
 
 
 def test_what_is_no_comparison_is_refused(compared):

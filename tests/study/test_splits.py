@@ -49,7 +49,10 @@ def test_the_stiffest_split_is_found_beyond_doubt(compared):
     assert compared.pair("C", "B").better > 0.999 and compared.pair("C", "B").decided
     assert compared.pair("C", "A").better > 0.999
     assert compared.split("C").rank == pytest.approx((1.0, 0.0, 0.0), abs=1e-3)
-    assert "Split C is the best, with the lowest Al|Si.compliance" in repr(compared)
+    assert "Decided: split C is the best, with the lowest Al|Si.compliance" in repr(compared)
+    assert repr(compared).count("Decided") == 1 and "Al|Si.compliance is lower in C than in A: " in repr(
+        compared
+    )
 
 
 def test_the_wafer_scatter_leaves_b_over_a_open(compared):
@@ -118,6 +121,7 @@ def test_ties_are_undecided(truth):
     (pair,) = compared.pairs
     assert pair.better == pytest.approx(0.5, abs=0.015) and not pair.decided
     assert "Undecided which split is the best" in compared.verdict[0]
+    assert "Whether Al|Si.compliance is lower in " in compared.verdict[1]
     assert "They agree within 50 % with probability" in compared.verdict[1]
 
 
@@ -167,6 +171,20 @@ def test_all_sites_censored_decide_nothing():
     assert not compared.pairs[0].decided
     assert compared.pairs[0].better == pytest.approx(0.5, abs=0.1)
     assert compared.pairs[0].ratio.low < 0.2 and compared.pairs[0].ratio.high > 5
+    assert compared.pairs[0].open_side == "<>" and "not determined, as both set only limits" in repr(compared)
+    assert {s.open_side for s in (*compared.splits, *compared.wafers)} == {"<"}
+
+
+def test_splits_that_set_only_limits_stay_near_them():
+    """Six limits of 0.01 (standard deviation): a common centre far below would be the prior's doing."""
+    rng = np.random.default_rng(4)
+    names = [f"{s}{w}" for s in "AB" for w in (1, 2, 3)]
+    labels = {name: {"split": name[0], "wafer": name} for name in names}
+    compared = compare_splits(
+        {name: censored(rng) for name in names}, quantity=COMPLIANCE, labels=labels, prior=PRIOR, seed=1
+    )
+    for split in compared.splits:
+        assert 0.0001 < split.centre.median < split.centre.high < 0.02
 
 
 def test_a_censored_split_against_a_bounded_one_is_decided():
@@ -179,6 +197,9 @@ def test_a_censored_split_against_a_bounded_one_is_decided():
     assert pair.decided and pair.better > 0.999
     assert any("4 of 8 sites set only a limit" in w for w in compared.warnings)
     assert pair.ratio.high / pair.ratio.low > 20
+    assert pair.open_side == "<" and compared.pair("A", "B").open_side == ">"
+    assert f"ratio below {pair.ratio.high:.3g} (97.5 %)" in repr(compared)
+    assert compared.split("A").open_side == "" and compared.split("B").open_side == "<"
 
 
 def test_failed_sites_are_left_out_and_named():
@@ -196,12 +217,54 @@ def test_failed_sites_are_left_out_and_named():
     assert any("the prior of 3 sites is not known" in w for w in compared.warnings)
 
 
+def test_sites_that_are_not_as_they_should_be_are_named():
+    values = np.abs(np.random.default_rng(1).normal(0.1, 0.01, (4, 100)))
+    batch = xr.Dataset(
+        {
+            COMPLIANCE: (("site", "draw"), values),
+            "status": ("site", ["ok", "not converged", "nothing learnt", "ok"]),
+            "warning": ("site", ["", "residuals are correlated.", "", "residuals are correlated."]),
+        },
+        coords={"site": list("abcd"), "split": ("site", list("ABBA")), "wafer": ("site", list("abcd"))},
+    )
+    said = repr(compare_splits(batch, quantity=COMPLIANCE, seed=1))
+    assert "1 of 4 sites (b) did not converge and count all the same" in said
+    assert "1 of 4 sites (c) taught nothing" in said
+    assert "2 of 4 sites (b, d) have residuals unlike the noise" in said
+
+
 def test_a_decided_difference_of_bonds_names_the_interlayer(compared):
-    """c33 of SiO2, 2.2 g/cm3 x (5.968 nm/ps)^2 = 78.4 GPa, times the change of compliance."""
+    """Of draws without a stack c33 of SiO2 alone, 2.2 g/cm3 x (5.968 nm/ps)^2 = 78.4 GPa, times the compliance."""
     pair = compared.pair("A", "C")
     by_hand = 78.4 * (compared.split("A").centre.median - compared.split("C").centre.median)
     assert pair.equivalent_thickness.median == pytest.approx(by_hand, rel=0.02)
-    assert any("nm (95 %" in w and "SiO2 interlayer (c33 = 78.4 GPa)" in w for w in compared.warnings)
+    assert any("of at least" in w and "SiO2 interlayer (inertia not counted)" in w for w in compared.warnings)
+
+
+def test_results_of_stacks_count_the_interlayers_inertia(truth):
+    """Between Z1 = 17.33 and Z2 = 19.64 (Al, Si: g/cm3 x nm/ps) silica of 13.13 acts as 78.36 / 0.4856 = 161.4 GPa.
+
+    By hand: (1 - (13.13 / 17.33)^2) (1 - (13.13 / 19.64)^2) = 0.4263 x 0.5532 = 0.2358, the root 0.4856.
+    """
+    given = made(truth)
+    names = list(given["results"])
+    draws = np.stack([given["results"][n] for n in names])
+    variables = {
+        COMPLIANCE: (("site", "draw"), draws),
+        "Al|Si.equivalent_thickness": (("site", "draw"), 161.4 * draws),
+    }
+    coords = {c: ("site", [given["labels"][n][c] for n in names]) for c in ("split", "wafer")}
+    batch = xr.Dataset(variables, coords={"site": names, **coords})
+    compared = compare_splits(batch, quantity=COMPLIANCE, seed=1)
+    assert compared.question.layer.per_compliance == pytest.approx(161.4)
+    assert any("as well be one of 1" in w and "(inertia counted)" in w for w in compared.warnings)
+    between = compare_splits(batch.drop_vars("Al|Si.equivalent_thickness"), quantity=COMPLIANCE, seed=1)
+    assert between.question.layer is None and between.pairs[0].equivalent_thickness is None
+    other = compare_splits(batch, quantity=COMPLIANCE, seed=1, interlayer=("alumina", 3.95, 10.8))
+    assert (
+        other.question.layer.per_compliance == pytest.approx(3.95 * 10.8**2)
+        and not other.question.layer.exact
+    )
 
 
 def test_another_quantity_has_no_interlayer():
@@ -263,7 +326,10 @@ def test_the_prior_of_the_sites_is_divided_out(truth):
 @pytest.mark.parametrize(
     ("change", "message"),
     [
-        ({"labels": {"A11": {"split": "A", "wafer": "A1"}}}, "site 'A12' has no row in the labels"),
+        (
+            {"labels": {"A11": {"split": "A", "wafer": "A1"}}},
+            "site 'A12' has no row in the labels; they name A11. Add",
+        ),
         ({"labels": None}, "labels are missing; give a table"),
         ({"level": 0}, "level=0; give a probability"),
         ({"margin": -1}, "margin=-1; give zero or a positive"),
@@ -272,6 +338,7 @@ def test_the_prior_of_the_sites_is_divided_out(truth):
         ({"draws": 10}, "draws=10; give 1000 or more"),
         ({"results": {}}, "give what batch returned"),
         ({"quantity": "Al.colour"}, "'Al.colour' names no known quantity"),
+        ({"interlayer": ("SiO2", 78.4)}, r"interlayer=\('SiO2', 78.4\); give name, density in g/cm3"),
         ({"prior": 3}, "the prior of site 'A11' is 3; give a frozen"),
     ],
 )

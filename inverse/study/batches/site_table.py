@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping
 from typing import Any
 
-__all__ = ["labels_of", "site_rows"]
+__all__ = ["labels_of", "site_rows", "some"]
 
 
 def site_rows(table: Any) -> dict[str, dict[str, Any]]:
@@ -84,12 +84,12 @@ def labels_of(
         row = rows.get(site)
         if row is None:
             raise ValueError(
-                f"site '{site}' has no row in the labels; they name {_some(rows)}. Add it or drop the site."
+                f"site '{site}' has no row in the labels; they name {some(rows)}. Add it or drop the site."
             )
         for column in wanted:
             if column not in row or _is_missing(row[column]):
                 raise ValueError(
-                    f"site '{site}' has no '{column}' in its labels (its columns: {_some(row)}); fill it in or drop "
+                    f"site '{site}' has no '{column}' in its labels (its columns: {some(row)}); fill it in or drop "
                     "the site."
                 )
         out[site] = {column: _text(row[column]) for column in wanted}
@@ -104,7 +104,8 @@ def _text(entry: Any) -> str:
     return str(int(entry)) if isinstance(entry, float) and entry.is_integer() else str(entry)
 
 
-def _some(names: Iterable[object], most: int = 8) -> str:
+def some(names: Iterable[object], most: int = 8) -> str:
+    """List names, the first few if they are many."""
     texts = [str(n) for n in names]
     shown = ", ".join(texts[:most]) or "nothing"
-    return f"{shown}, ..." if len(texts) > most else shown
+    return f"{shown} and {len(texts) - most} more" if len(texts) > most else shown

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.inference.derived import SILICA
 from inverse.study.splits.comparison import (
     Comparison,
     Interval,
@@ -16,9 +18,11 @@ from inverse.study.splits.comparison import (
     SplitEstimate,
     WaferEstimate,
     interval,
+    turned_side,
 )
-from inverse.study.splits.data import Site, SiteData, collect
+from inverse.study.splits.data import Site, SiteData, collect, open_side
 from inverse.study.splits.decisions import decided, pairs_of, tail_probability
+from inverse.study.splits.equivalent_layer import equivalent_layer
 from inverse.study.splits.hierarchy import HierarchyDraws, Wafer, sample_hierarchy
 from inverse.study.splits.scatter import SplitPriors
 from inverse.study.splits.wording import verdict, warnings_for
@@ -29,10 +33,6 @@ if TYPE_CHECKING:
 __all__ = ["compare_splits"]
 
 Array = NDArray[np.float64]
-
-SILICA = ("SiO2", 78.4)
-"""Interlayer whose thickness is stated by default: c33 = density x velocity squared = 2.2 x 5.968^2 GPa, the handbook
-values of fused silica in `reference_materials`."""
 
 
 def compare_splits(
@@ -48,7 +48,7 @@ def compare_splits(
     priors: SplitPriors | None = None,
     prior: Any = None,
     reference: ReferenceStudy | None = None,
-    interlayer: tuple[str, float] = SILICA,
+    interlayer: tuple[str, float, float] = SILICA,
     draws: int = 20000,
 ) -> Comparison:
     r"""Compare process splits by a hierarchical model of sites in wafers in splits.
@@ -78,8 +78,10 @@ def compare_splits(
         compared.
     reference : ReferenceStudy, optional
         Bias and tool-to-tool scatter to be carried; see `reference_wafer`.
-    interlayer : (str, float)
-        Name and c33 (GPa) of an interlayer that could act as a difference of compliance does.
+    interlayer : (str, float, float)
+        Name, density (g/cm3) and velocity (nm/ps) of an interlayer that could act as a difference of compliance does.
+        Its thickness counts the layer's inertia where the results are of stacks and the layer is the default, fused
+        silica; otherwise the least possible thickness is stated.
     draws : int
 
     Returns
@@ -113,7 +115,8 @@ def compare_splits(
     if reference is not None:
         posterior = _with_tools(posterior, reference, sites, names, seed)
     way = better or ("lower" if quantity.endswith("compliance") else "higher")
-    question = Question(quantity, margin, way, level, data.logarithmic, _layer(quantity, interlayer))
+    layer = equivalent_layer(results, quantity, interlayer)
+    question = Question(quantity, margin, way, level, data.logarithmic, layer)
     made = _described(question, data, names, groups, posterior, priors)
     said = warnings_for(made, data, reference)
     return replace(made, verdict=verdict(made), warnings=said)
@@ -180,8 +183,8 @@ def _described(
     return Comparison(
         question=question,
         unit=data.unit,
-        splits=_split_estimates(names, groups, posterior, question.sign * value, value),
-        pairs=_pairs(names, posterior, value, question),
+        splits=(splits := _split_estimates(names, groups, posterior, question.sign * value, value)),
+        pairs=_pairs(splits, posterior, value, question),
         wafers=_wafer_estimates(names, groups, posterior, question.logarithmic),
         sites=data.sites,
         verdict=(),
@@ -189,12 +192,6 @@ def _described(
         priors=priors,
         posterior=posterior,
     )
-
-
-def _layer(quantity: str, interlayer: tuple[str, float]) -> tuple[str, float] | None:
-    """Return the interlayer if the quantity is a bond's, else None."""
-    place, _, field = quantity.rpartition(".")
-    return interlayer if "|" in place and field in ("compliance", "stiffness") else None
 
 
 def _split_estimates(
@@ -210,6 +207,7 @@ def _split_estimates(
             len(groups[s]),
             sum(len(w.sites) for w in groups[s]),
             tuple(float(np.mean(order[:, s] == place)) for place in range(len(names))),
+            _open_side(groups[s]),
         )
         for s, name in enumerate(names)
     )
@@ -223,13 +221,20 @@ def _wafer_estimates(
         for w, wafer in enumerate(groups[s]):
             column = posterior.wafers[s][:, w]
             centre = interval(np.exp(column) if logarithmic else column)
-            out.append(WaferEstimate(name, wafer.name, centre, len(wafer.sites)))
+            out.append(WaferEstimate(name, wafer.name, centre, len(wafer.sites), _open_side([wafer])))
     return tuple(out)
 
 
+def _open_side(wafers: Sequence[Wafer]) -> str:
+    """Return the side on which no site of the wafers sets a bound."""
+    sides = [open_side(table) for wafer in wafers for table in wafer.sites]
+    return next((side for side in "<>" if all(side in own for own in sides)), "")
+
+
 def _pairs(
-    names: tuple[str, ...], posterior: HierarchyDraws, value: Array, question: Question
+    splits: tuple[SplitEstimate, ...], posterior: HierarchyDraws, value: Array, question: Question
 ) -> tuple[Pair, ...]:
+    names = [split.name for split in splits]
     places = pairs_of(len(names))
     apart = [posterior.centre[:, a] - posterior.centre[:, b] for a, b in places]
     tails = [tail_probability(d) for d in apart]
@@ -246,14 +251,15 @@ def _pairs(
             tail,
             yes,
             _thickness(value[:, a], value[:, b], question),
+            "".join(sorted({*splits[a].open_side, *turned_side(splits[b].open_side)})),
         )
         for (a, b), d, tail, yes in zip(places, apart, tails, sure, strict=True)
     )
 
 
 def _thickness(first: Array, second: Array, question: Question) -> Interval | None:
-    """Return the change of the interlayer's thickness, c33 times the change of compliance."""
+    """Return the change of the interlayer's thickness."""
     if question.layer is None:
         return None
     compliance = 1 / first - 1 / second if question.quantity.endswith("stiffness") else first - second
-    return interval(question.layer[1] * compliance)
+    return interval(question.layer.per_compliance * compliance)

@@ -8,10 +8,20 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.study.splits.data import Site
+from inverse.study.splits.equivalent_layer import EquivalentLayer
 from inverse.study.splits.hierarchy import HierarchyDraws
 from inverse.study.splits.scatter import SplitPriors
 
-__all__ = ["Comparison", "Interval", "Pair", "Question", "SplitEstimate", "WaferEstimate", "interval"]
+__all__ = [
+    "Comparison",
+    "Interval",
+    "Pair",
+    "Question",
+    "SplitEstimate",
+    "WaferEstimate",
+    "interval",
+    "turned_side",
+]
 
 Array = NDArray[np.float64]
 
@@ -42,8 +52,8 @@ class Question:
     better : {"higher", "lower"}
     level : float
     logarithmic : bool
-    layer : (str, float) or None
-        Name and c33 of an interlayer that could act as a difference does; None where none could.
+    layer : EquivalentLayer or None
+        Interlayer that could act as a difference does; None where none could.
     """
 
     quantity: str
@@ -51,7 +61,7 @@ class Question:
     better: str
     level: float
     logarithmic: bool
-    layer: tuple[str, float] | None
+    layer: EquivalentLayer | None
 
     @property
     def sign(self) -> int:
@@ -79,6 +89,9 @@ class SplitEstimate:
     wafers, sites : int
     rank : tuple of float
         Probability of each place, the best first.
+    open_side : str
+        ``"<"`` (``">"``) where every site only bounds the quantity from above (below), else empty: the other end
+        of the interval then rests on the prior.
     """
 
     name: str
@@ -88,6 +101,7 @@ class SplitEstimate:
     wafers: int
     sites: int
     rank: tuple[float, ...]
+    open_side: str
 
 
 @dataclass(frozen=True)
@@ -98,6 +112,7 @@ class WaferEstimate:
     wafer: str
     centre: Interval
     sites: int
+    open_side: str
 
 
 @dataclass(frozen=True)
@@ -121,6 +136,9 @@ class Pair:
         The two differ, at the comparison's familywise level.
     equivalent_thickness : Interval or None
         Change of an interlayer's thickness, in nm, that would act as the difference of compliances does.
+    open_side : str
+        Ends of the ratio that rest on the prior: ``"<"`` where only its upper end is known, ``">"`` where only its
+        lower, ``"<>"`` where neither is, else empty.
     """
 
     first: str
@@ -133,6 +151,7 @@ class Pair:
     tail: float
     decided: bool
     equivalent_thickness: Interval | None
+    open_side: str
 
 
 @dataclass(frozen=True, repr=False)
@@ -233,7 +252,13 @@ def _turned(pair: Pair) -> Pair:
         pair.tail,
         pair.decided,
         None if pair.equivalent_thickness is None else _negative(pair.equivalent_thickness),
+        turned_side(pair.open_side),
     )
+
+
+def turned_side(side: str) -> str:
+    """Return the open side of the inverse or the negative."""
+    return {"<": ">", ">": "<"}.get(side, side)
 
 
 def _negative(given: Interval) -> Interval:

@@ -12,11 +12,11 @@ from numpy.typing import NDArray
 
 from inverse.description.quantities import quantity as quantity_of
 from inverse.description.unknowns import is_distribution, rebuild_prior
-from inverse.study.batches.site_table import labels_of, site_rows
+from inverse.study.batches.site_table import labels_of, site_rows, some
 from inverse.study.splits.site_likelihood import site_likelihood
 from inverse.study.stiffness.tabulated import Tabulated
 
-__all__ = ["Site", "SiteData", "collect", "prior_of_derived"]
+__all__ = ["Site", "SiteData", "collect", "open_side", "prior_of_derived"]
 
 Array = NDArray[np.float64]
 
@@ -50,8 +50,12 @@ class Site:
     @property
     def open_side(self) -> str:
         """``"<"`` (``">"``) where the site only bounds the quantity from above (below), else empty."""
-        left, right = self.table.left > PLATEAU, self.table.right > PLATEAU
-        return "<>" if left and right else "<" if left else ">" if right else ""
+        return open_side(self.table)
+
+
+def open_side(table: Tabulated) -> str:
+    """Return ``"<"`` (``">"``) where a likelihood sets no bound towards the left (right), ``"<>"`` for both."""
+    return "<" * (table.left > PLATEAU) + ">" * (table.right > PLATEAU)
 
 
 @dataclass(frozen=True)
@@ -66,6 +70,8 @@ class SiteData:
         The variable compared is the quantity's natural logarithm.
     left_out : tuple of str
         Why sites are missing, one text each.
+    doubts : tuple of str
+        What is to be said against sites that count all the same.
     flat : tuple of str
         Sites whose prior is not known and was taken as flat in the variable compared.
     """
@@ -74,6 +80,7 @@ class SiteData:
     unit: str
     logarithmic: bool
     left_out: tuple[str, ...]
+    doubts: tuple[str, ...]
     flat: tuple[str, ...]
 
 
@@ -125,7 +132,7 @@ def collect(
         for name, draws in kept.items()
     )
     flat = tuple(name for name, draws in kept.items() if draws.prior is None)
-    return SiteData(sites, known.unit, logarithmic, left_out, flat)
+    return SiteData(sites, known.unit, logarithmic, left_out, _doubts(results, tuple(kept)), flat)
 
 
 @dataclass(frozen=True)
@@ -190,6 +197,31 @@ def _from_batch(results: Any, quantity: str) -> Raw:
         else:
             out[site] = _Draws(draws, rebuild_prior(json.loads(text)) if text else None, _turned(quantity))
     return out
+
+
+_DOUBTS = {
+    "not converged": "did not converge and count all the same; raise max_steps, or drop them",
+    "nothing learnt": "taught nothing, as their draws follow the prior, and count as such",
+}
+_UNLIKE = (
+    "have residuals unlike the noise, so that their intervals may be wrong; see 'warning' in the results"
+)
+
+
+def _doubts(results: Any, kept: tuple[str, ...]) -> tuple[str, ...]:
+    """Say which sites of a batch are not as they should be."""
+    if not _is_batch(results) or "status" not in results:
+        return ()
+    chosen = results.sel(site=list(kept))
+    found = {text: chosen["status"].values == status for status, text in _DOUBTS.items()}
+    if "warning" in chosen:
+        found[_UNLIKE] = chosen["warning"].values != ""
+    names = np.array(kept)
+    return tuple(
+        f"{mark.sum()} of {names.size} sites ({some(names[mark])}) {text}."
+        for text, mark in found.items()
+        if mark.any()
+    )
 
 
 def _batch_rows(results: Any) -> dict[str, dict[str, Any]]:

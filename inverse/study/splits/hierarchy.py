@@ -191,9 +191,10 @@ def _grids(splits: Sequence[Sequence[Wafer]], priors: SplitPriors) -> tuple[floa
     """Find the centre of the prior, and grids that hold what the normal approximation deems possible."""
     wide = 10 * priors.centre_sd
     tables = [t for wafers in splits for w in wafers for t in w.sites]
-    about = np.median([(t.start + t.end) / 2 for t in tables]) if priors.centre is None else priors.centre
-    normal = [[_as_normal(w, about - wide, about + wide) for w in wafers] for wafers in splits]
-    centre = _middle(normal, priors)
+    # Of a site that sets only a limit, the table's own range counts, where its likelihood changes.
+    middles = [t.moments(t.start, t.end)[0] for t in tables]
+    centre = float(np.median(middles)) if priors.centre is None else priors.centre
+    normal = [[_as_normal(w, centre - wide, centre + wide) for w in wafers] for wafers in splits]
     return centre, *_normal_grids(normal, priors, centre, _FINE)
 
 

@@ -12,7 +12,7 @@ from inverse.study.splits.data import SiteData
 if TYPE_CHECKING:
     from inverse.study.splits.gauge import ReferenceStudy
 
-__all__ = ["chance", "number", "verdict", "warnings_for"]
+__all__ = ["chance", "number", "stated", "verdict", "warnings_for"]
 
 
 def number(value: float) -> str:
@@ -27,6 +27,25 @@ def chance(probability: float) -> str:
     return "below 0.001" if probability < 0.0005 else f"{probability:.3f}"
 
 
+def stated(given: Interval, unit: str = "1", open_side: str = "") -> str:
+    """Write median and interval, or the limit where the other end of the interval rests on the prior.
+
+    Parameters
+    ----------
+    given : Interval
+    unit : str
+    open_side : str
+        As `Pair` has it.
+    """
+    tail = "" if unit == "1" else f" {unit}"
+    if open_side == "<>":
+        return "not determined, as both set only limits"
+    if open_side:
+        word, end = ("below", given.high) if open_side == "<" else ("above", given.low)
+        return f"{word} {number(end)}{tail} (97.5 %)"
+    return f"{number(given.median)}{tail} (95 %: {number(given.low)} to {number(given.high)})"
+
+
 def verdict(made: Comparison) -> tuple[str, ...]:
     """Say which splits differ, and which pairs are undecided, one sentence each."""
     head = _best(made)
@@ -34,16 +53,15 @@ def verdict(made: Comparison) -> tuple[str, ...]:
 
 
 def _best(made: Comparison) -> str:
-    ranked = sorted(made.splits, key=lambda s: -s.rank[0])
-    first = ranked[0]
-    beaten = [s.name for s in ranked[1:] if _beats(made, first.name, s.name)]
-    centre = _between(first.centre, made.unit)
-    what = f"{_superlative(made)} {made.question.quantity}"
-    if len(beaten) == len(made.splits) - 1:
-        return f"Split {first.name} is the best, with the {what}, {centre}. Decided."
+    first, *others = sorted(made.splits, key=lambda s: -s.rank[0])
+    what = f"with the {_superlative(made)} {made.question.quantity}"
+    centre = stated(first.centre, made.unit, first.open_side)
+    if all(_beats(made, first.name, s.name) for s in others):
+        return f"Decided: split {first.name} is the best, {what}, {centre}."
+    rest = ", ".join(f"{chance(s.rank[0])} for {s.name}" for s in others)
     return (
-        f"Undecided which split is the best, with the {what}: most probably {first.name} "
-        f"({chance(first.rank[0])}; {centre})."
+        f"Undecided which split is the best, {what}: probability {chance(first.rank[0])} for {first.name}, {rest}. "
+        f"That of {first.name} is {centre}."
     )
 
 
@@ -58,29 +76,23 @@ def _superlative(made: Comparison) -> str:
 
 def _pair(made: Comparison, pair: Pair) -> str:
     pair = pair if pair.better >= 0.5 else made.pair(pair.second, pair.first)
-    amount = _amount(made, pair)
-    odds = f"probability of {made.question.better} {chance(pair.better)}{_margin(made, pair)}"
+    asked = f"{made.question.quantity} is {made.question.better} in {pair.first} than in {pair.second}"
+    odds = f"{_amount(made, pair)}; probability {chance(pair.better)}{_margin(made, pair)}."
     if pair.decided:
-        return f"{pair.first} is {made.question.better} than {pair.second}: {amount}; {odds}. Decided."
-    same = _practically_same(made, pair)
-    return f"{pair.first} against {pair.second} is undecided: {amount}; {odds}.{same}"
+        return f"{asked}: {odds}"
+    return f"Whether {asked} is undecided: {odds}{_practically_same(made, pair)}"
 
 
 def _amount(made: Comparison, pair: Pair) -> str:
     if pair.ratio is not None:
-        return f"ratio {_between(pair.ratio, '1')}"
-    return f"difference {_between(pair.difference, made.unit)}"
-
-
-def _between(given: Interval, unit: str) -> str:
-    tail = "" if unit == "1" else f" {unit}"
-    return f"{number(given.median)}{tail} (95 %: {number(given.low)} to {number(given.high)})"
+        return f"ratio {stated(pair.ratio, '1', pair.open_side)}"
+    return f"difference {stated(pair.difference, made.unit, pair.open_side)}"
 
 
 def _margin(made: Comparison, pair: Pair) -> str:
     if made.question.margin == 0:
         return ""
-    return f", by more than {_margin_text(made)} {chance(pair.better_by_margin)}"
+    return f", {chance(pair.better_by_margin)} that it is by more than {_margin_text(made)}"
 
 
 def _margin_text(made: Comparison) -> str:
@@ -107,6 +119,7 @@ def warnings_for(
     return tuple(
         [
             *data.left_out,
+            *data.doubts,
             *_about_wafers(made),
             *_about_sites(data),
             *_about_priors(data),
@@ -158,15 +171,14 @@ def _about_layer(made: Comparison) -> list[str]:
     layer = made.question.layer
     if layer is None:
         return []
-    out = []
-    for pair in made.pairs:
-        if pair.decided and pair.equivalent_thickness is not None:
-            change = _between(_absolute(pair.equivalent_thickness), "nm")
-            out.append(
-                f"the difference of {pair.first} and {pair.second} may as well be one of {change} in the thickness of "
-                f"a {layer[0]} interlayer (c33 = {layer[1]:g} GPa); a trace alone seldom tells the two apart."
-            )
-    return out
+    least, how = ("", "inertia counted") if layer.exact else ("at least ", "inertia not counted")
+    return [
+        f"the difference of {pair.first} and {pair.second} may as well be one of {least}"
+        f"{stated(_absolute(pair.equivalent_thickness), 'nm')} in the thickness of a {layer.name} interlayer ({how}); "
+        "a trace alone seldom tells the two apart."
+        for pair in made.pairs
+        if pair.decided and pair.equivalent_thickness is not None
+    ]
 
 
 def _absolute(given: Interval) -> Interval:
