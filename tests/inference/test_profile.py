@@ -111,6 +111,21 @@ def test_two_minima_give_two_intervals() -> None:
     np.testing.assert_allclose(segments, [[-2 - half, -2 + half], [2 - half, 2 + half]], atol=0.02)
 
 
+def test_a_minimum_far_below_the_best_leaves_the_points_where_the_interval_is() -> None:
+    """Wells at 0 and, 50 lower in log likelihood, at 20, each a parabola of deviation 0.2."""
+    priors = {"a": stats.norm(0, 10)}
+
+    def log_likelihood(v):
+        return np.logaddexp(-0.5 * (v[:, 0] / 0.2) ** 2, -0.5 * ((v[:, 0] - 20) / 0.2) ** 2 - 50)
+
+    minima = [(np.array([s / 10]), np.array([[4e-4]])) for s in (0, 20)]
+    found = profile((fit := invented(priors, log_likelihood, *minima)).inversion, "a", fit=fit, points=15)
+    assert np.abs(found["value"]).max() < 1.0
+    ((low, high),) = json.loads(found.attrs["interval_68"])
+    half = 0.2 * np.sqrt(LEVELS[0.68])
+    np.testing.assert_allclose([low, high], [-half, half], atol=0.01 * half)
+
+
 def test_profile_agrees_with_the_normal_approximation_on_a_well_determined_film() -> None:
     """Al on Si, 0.2 % noise: half the 68 % interval is 0.994 deviations (3 % for what is not quadratic)."""
     stack = bonded()

@@ -38,8 +38,11 @@ _CANDIDATES = 512
 _ROUGH = 1e-8
 # Far below what the minimum's own width means, and above the rounding of the response.
 _FINE = 1e-10
-# White noise that lets a coarse search see past the narrow minima, over the rms of the signal.
-_COARSE = 0.02
+# White noise, over the rms of the signal, that lets a coarse search see past the narrow minima. Half of the starts each:
+# the wider sees the round trip from afar, the narrower the weak echo of a nearly perfect bond.
+_COARSE = (0.02, 0.005)
+# Rough minima nearer than this, in deviations of the later and sharper search, are one.
+_DISTINCT = 2.0
 
 
 @dataclass(frozen=True)
@@ -150,19 +153,24 @@ def least_squares(
     posterior = inversion.posterior
     physical = np.array([n not in inversion.noise_names for n in inversion.names])
     centre = np.zeros(len(inversion.names))
-    coarse = _coarse_noise(inversion, centre)
-    found: list[Array] = []
+    candidates = _candidates(inversion, physical, seed)
     near = [_given_point(inversion, point) for point in points]
-    for start in [*near, *_starting_points(inversion, physical, coarse, starts, seed)]:
-        projected = Projected(posterior, physical, coarse)
-        rough = minimise(
-            projected,
-            start[physical],
-            derivative=projected.derivative,
-            tolerance=_ROUGH,
-            max_evaluations=60,
-        )
-        _add_distinct(found, _joined(coarse, physical, rough.x))
+    roughs: list[Minimum] = []
+    for fraction, count in zip(_COARSE, (-(-starts // 2), starts // 2), strict=True):
+        coarse = _coarse_noise(inversion, centre, fraction)
+        for start in [*near, *_best(posterior, _joined(coarse, physical, candidates), count)]:
+            projected = Projected(posterior, physical, coarse)
+            rough = minimise(
+                projected,
+                start[physical],
+                derivative=projected.derivative,
+                tolerance=_ROUGH,
+                max_evaluations=60,
+            )
+            if all(_apart(rough, other) > _DISTINCT for other in roughs):
+                roughs.append(rough)
+        near = []
+    found = [_joined(centre, physical, rough.x) for rough in roughs]
     found = sorted(found, key=lambda z: -float(posterior(z[None])[0]))[: max(4, starts // 2)]
     basins: list[Basin] = []
     for z in found:
@@ -172,13 +180,21 @@ def least_squares(
     return Fit(inversion, inversion.names, ranked(basins), seed)
 
 
+def _apart(rough: Minimum, other: Minimum) -> float:
+    """Mahalanobis distance per root unknown, in the covariance of the first."""
+    delta = rough.x - other.x
+    covariance = np.where(np.isfinite(rough.covariance), rough.covariance, 1.0)
+    return float(np.sqrt(delta @ np.linalg.pinv(covariance) @ delta / delta.size))
+
+
 def _joined(z: Array, physical: NDArray[np.bool_], x: Array) -> Array:
-    out = z.copy()
-    out[physical] = x
+    """Return the noise of z with the physical unknowns x, shape (..., physical unknowns)."""
+    out = np.broadcast_to(z, (*x.shape[:-1], z.size)).copy()
+    out[..., physical] = x
     return out
 
 
-def _coarse_noise(inversion: Inversion, z: Array) -> Array:
+def _coarse_noise(inversion: Inversion, z: Array, fraction: float) -> Array:
     """Return standard normal variables with white noise at a fraction of the signal and little discrepancy."""
     named = inversion.posterior.parameters.named(inversion.posterior.parameters.to_values(z[None]))
     values = {name: float(v[0]) for name, v in named.items()}
@@ -186,25 +202,26 @@ def _coarse_noise(inversion: Inversion, z: Array) -> Array:
         for channel in member.model.channels:
             signal = float(np.std(channel.data[member.model.used]))
             white = member.names[channel.prefix + "white"]
-            values[white] = max(values[white], _COARSE * signal)
+            values[white] = max(values[white], fraction * signal)
     array = np.array([[values[name] for name in inversion.names]])
     return np.clip(inversion.posterior.parameters.to_z(array)[0], -30, 30)
 
 
-def _starting_points(
-    inversion: Inversion, physical: NDArray[np.bool_], coarse: Array, starts: int, seed: int
-) -> list[Array]:
+def _candidates(inversion: Inversion, physical: NDArray[np.bool_], seed: int) -> Array:
+    """Draw physical unknowns from the priors, half of them moved to the echoes; the first is the priors' middle."""
+    from scipy.special import ndtri
     from scipy.stats import qmc
 
-    posterior = inversion.posterior
     sampler = qmc.Sobol(int(physical.sum()), rng=np.random.default_rng(seed))
     unit = np.clip(sampler.random(_CANDIDATES), 1e-3, 1 - 1e-3)
-    z = np.repeat(coarse[None], _CANDIDATES, axis=0)
-    from scipy.special import ndtri
-
-    z[:, physical] = ndtri(unit)
+    z = _joined(np.zeros(len(inversion.names)), physical, ndtri(unit))
     _move_to_echo(inversion, z[::2])
     z[0, physical] = 0.0
+    return z[:, physical]
+
+
+def _best(posterior: Posterior, z: Array, count: int) -> list[Array]:
+    """Return the points with the highest density, distinct ones only."""
     score = posterior(z)
     if not np.isfinite(score).any():
         raise ValueError(
@@ -212,7 +229,7 @@ def _starting_points(
         )
     chosen: list[Array] = []
     for i in np.argsort(-np.nan_to_num(score, neginf=-1e300)):
-        if len(chosen) < starts and np.isfinite(score[i]):
+        if len(chosen) < count and np.isfinite(score[i]):
             _add_distinct(chosen, z[i], 0.5)
     return chosen
 
@@ -225,7 +242,7 @@ def _given_point(inversion: Inversion, point: Mapping[str, float]) -> Array:
     return np.clip(inversion.posterior.parameters.to_z(values)[0], -5, 5)
 
 
-def _add_distinct(points: list[Array], z: Array, distance: float = 0.05) -> None:
+def _add_distinct(points: list[Array], z: Array, distance: float) -> None:
     if all(np.linalg.norm(z - p) > distance for p in points):
         points.append(z)
 
