@@ -141,6 +141,9 @@ QUANTITIES: dict[str, Quantity] = {
             "W/cm3/K",
         ),
         Quantity(
+            "lattice_share", "1", r"\kappa_l/\kappa", 0.0, 0.95, "what of the conductivity is the lattice's"
+        ),
+        Quantity(
             "electron_gruneisen",
             "1",
             r"\gamma_e",

@@ -52,7 +52,9 @@ def any_sound(
         interface_compliance(normal, tangential)
         for normal, tangential in zip(sample.compliance, sample.tangential, strict=True)
     ]
-    return three_sound_field(sample.media, sample.solids, joints, sample.ambient, profiles, heat, s, powers)
+    return three_sound_field(
+        sample.media, sample.solids, joints, sample.ambient, profiles, heat, s, powers, source
+    )
 
 
 def any_response(

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from inverse.response.light import Absorption
 from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
 
-__all__ = ["CarrierConstants", "Pairs", "pair_field"]
+__all__ = ["CarrierConstants", "Diffusing", "Pairs", "pair_field"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
@@ -49,7 +49,22 @@ class CarrierConstants:
 
 
 @dataclass(frozen=True)
-class Pairs:
+class Diffusing:
+    """What diffuses in one medium: ``down exp(-q z) + up exp(-q (d - z))``, decay = ``exp(-q d)``."""
+
+    q: Complex
+    decay: Complex
+    down: Complex
+    up: Complex
+
+    @property
+    def ends(self) -> tuple[Complex, Complex, Complex, Complex]:
+        """The downward wave at top and bottom, the upward wave at top and bottom."""
+        return self.down, self.down * self.decay, self.up * self.decay, self.up
+
+
+@dataclass(frozen=True)
+class Pairs(Diffusing):
     """Pair density of one medium, in the form of `HeatField`, and what it gives to the lattice.
 
     Attributes
@@ -60,18 +75,9 @@ class Pairs:
         N at the top.
     """
 
-    q: Complex
-    decay: Complex
-    down: Complex
-    up: Complex
     steep: Complex
     beat: Complex
     at_top: Complex
-
-    @property
-    def ends(self) -> tuple[Complex, Complex, Complex, Complex]:
-        """The diffusing part's downward wave at top and bottom, upward wave at top and bottom."""
-        return self.down, self.down * self.decay, self.up * self.decay, self.up
 
 
 def pair_field(

@@ -14,7 +14,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.response.carriers import Pairs
+from inverse.response.carriers import Diffusing
 from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient
@@ -102,13 +102,13 @@ def medium_response(
     strain = (
         strain + sound.hot[:, None] * hot + weighted_sum(light_left, (sound.steep, _ONE), (sound.beat, _ONE))
     )
-    temperature = heat.lattice[:, None] * (
-        hot + weighted_sum(light_left, (heat.steep, _ONE), (heat.beat, _ONE))
-    )
-    if heat.pairs is not None:
-        pairs = overlap(probe, heat.pairs, heat.pairs.down, 0)
-        strain = strain + sound.paired[:, None] * pairs
-        temperature = temperature + heat.per_pair[:, None] * pairs
+    lattice, on_steep, on_beat = heat.ratios
+    temperature = lattice[:, None] * hot
+    temperature = temperature + weighted_sum(light_left, (heat.steep, on_steep), (heat.beat, on_beat))
+    if heat.second is not None:
+        second = overlap(probe, heat.second, heat.second.down, 0)
+        strain = strain + sound.paired[:, None] * second
+        temperature = temperature + heat.second_heat[:, None] * second
     return Detected(strain, temperature)
 
 
@@ -157,7 +157,7 @@ def _parts(row: Complex) -> Array:
 
 
 def _half_space_overlap(
-    probe: _Probe, field: HeatField | SoundField | Pairs, down: Complex, order: int
+    probe: _Probe, field: HeatField | SoundField | Diffusing, down: Complex, order: int
 ) -> Complex:
     """Real and imaginary part of the integral of ``q^order down exp(-q z) E^2`` over the half-space."""
     q, g = field.q, probe.g
@@ -171,7 +171,7 @@ def _half_space_overlap(
 
 
 def _layer_overlap(
-    probe: _Probe, field: HeatField | SoundField | Pairs, down: Complex, order: int
+    probe: _Probe, field: HeatField | SoundField | Diffusing, down: Complex, order: int
 ) -> Complex:
     """Real and imaginary part of the integral of ``q^order [down exp(-q z) + up exp(-q (d - z))] E^2``.
 
@@ -193,7 +193,7 @@ def _layer_overlap(
     return _real_and_imaginary(first, second)
 
 
-def _ends(field: HeatField | SoundField | Pairs, down: Complex) -> Complex:
+def _ends(field: HeatField | SoundField | Diffusing, down: Complex) -> Complex:
     """Down-going part at the top and bottom, up-going part at the bottom and top, (sets, 4, frequencies)."""
     sets, size = (max(part.shape[axis] for part in (field.q, down, field.up, field.decay)) for axis in (0, 1))
     out = np.empty((sets, 4, size), dtype=complex)

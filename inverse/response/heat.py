@@ -1,18 +1,20 @@
 """Heat after the pump pulse, in the Laplace domain: one or two temperatures, boundary conductance.
 
 ``C s T - kappa T'' = F`` in each medium; with hot electrons T is theirs, C becomes
-``C_e + C_l / (1 + s C_l / g)`` and the lattice follows as ``T / (1 + s C_l / g)``.
+``C_e + C_l / (1 + s C_l / g)`` and the lattice follows as ``T / (1 + s C_l / g)``. A lattice that conducts too is
+`inverse.response.lattice`'s.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.response.carriers import CarrierConstants, Pairs, pair_field
+from inverse.response.carriers import CarrierConstants, Diffusing, Pairs, pair_field
+from inverse.response.lattice import TwoWaves, lattice_ratio, taken_up, two_waves
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium, anchored, layers
 from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
@@ -33,7 +35,7 @@ class HeatField:
 
     ``T = down exp(-q z) + up exp(-q (d - z))
     + steep [top exp(-p z) + bottom exp(-p (d - z))] + beat 2 Re[B exp(i x z)]``
-    with the shapes of `Absorption`; ``lattice`` turns T into the lattice temperature.
+    with the shapes of `Absorption`, and what the second part adds; ``lattice`` turns T into the lattice temperature.
 
     Attributes
     ----------
@@ -45,9 +47,13 @@ class HeatField:
         Response to the exponential and the interference part of the absorbed profile.
     lattice : array
         Lattice over electron temperature; 1 for one temperature.
-    pairs : Pairs, optional
-        Photo-carriers; their diffusing part adds ``per_pair`` times itself to T.
-    per_pair : array, optional
+    second : Pairs or Diffusing, optional
+        Photo-carriers, whose diffusing part adds ``second_heat`` times itself to T; or, where the lattice conducts
+        beside hot electrons, their quick wave, part of T.
+    second_heat : array, optional
+        Lattice temperature per unit of it.
+    of_light : pair of arrays, optional
+        ``lattice`` of the exponential and the interference part, where they differ: the lattice conducts.
     """
 
     q: Complex
@@ -57,8 +63,14 @@ class HeatField:
     steep: Complex
     beat: Complex
     lattice: Complex
-    pairs: Pairs | None = None
-    per_pair: Complex = field(default_factory=lambda: _NONE)
+    second: Diffusing | None = None
+    second_heat: Complex = field(default_factory=lambda: _NONE)
+    of_light: tuple[Complex, Complex] | None = None
+
+    @property
+    def ratios(self) -> tuple[Complex, Complex, Complex]:
+        """Lattice over electron temperature of the diffusing, the exponential and the interference part."""
+        return (self.lattice, *(self.of_light or (self.lattice, self.lattice)))
 
 
 def heat_field(
@@ -107,6 +119,10 @@ def heat_field(
     ]
     decay = [np.exp(-qj * m.thickness) for qj, m in zip(q, layers(media), strict=False)]
     ends = [_ends(f, k, a, b) for f, k, a, b in zip(profiles, kappa, steep, beat, strict=True)]
+    conducting = [_conducting(m, f, s, pulse) for m, f in zip(media, profiles, strict=True)]
+    for j, two in enumerate(conducting):
+        if two is not None:
+            y[j], decay[j : j + 1], ends[j] = two.y, [two.decay] * (j < len(decay)), two.ends
     per_pair = [_NONE] * len(media)
     for j, (m, n) in enumerate(zip(media, pairs, strict=True)):
         if m.carriers is not None and n is not None:
@@ -117,10 +133,57 @@ def heat_field(
     load = _liquid_load(ambient, s)
     down, up = descend(surface_amplitude(y[0], below, ends[0], load), decay, below)
     amplitudes = zip(q, anchored(decay, media), down, up, steep, beat, lattice, pairs, per_pair, strict=True)
-    fields = [HeatField(*parts) for parts in amplitudes]
+    fields = [
+        HeatField(*parts) if two is None else two.field(*parts[2:4])
+        for parts, two in zip(amplitudes, conducting, strict=True)
+    ]
     if isinstance(load, float):
         return fields, None
     return fields, down[0] + below.gamma[0] * down[0] + below.beta[0] + ends[0].u_top
+
+
+@dataclass(frozen=True)
+class _Conducting:
+    """A medium whose lattice conducts: its waves, what light makes of it, and how its neighbours see it."""
+
+    waves: TwoWaves
+    y: Complex
+    decay: Complex
+    steep: Complex
+    beat: Complex
+    of_light: tuple[Complex, Complex]
+    ends: Ends
+    closing: Diffusing
+
+    def field(self, down: Complex, up: Complex) -> HeatField:
+        """Return the field for the amplitudes of the one wave that the neighbours see."""
+        slow, quick = self.waves.parted(self.y, self.decay, down, up)
+        second = replace(quick, down=quick.down + self.closing.down, up=quick.up + self.closing.up)
+        return HeatField(
+            *(slow.q, slow.decay, slow.down, slow.up, self.steep, self.beat, self.waves.slow.ratio),
+            second,
+            self.waves.quick.ratio,
+            self.of_light,
+        )
+
+
+def _conducting(m: Medium, f: Absorption, s: Complex, pulse: Complex) -> _Conducting | None:
+    """Solve for a medium whose lattice conducts beside hot electrons; None where it does not."""
+    if not np.any(m.lattice_conductivity) or not np.any(m.inverse_coupling):
+        return None
+    first = s[:, :1].real
+    close = np.abs(taken_up(m, first, f.p**2)) < 1e-6 * (m.heat_capacity * first)
+    if np.any(close):
+        apart = np.where(close, 1 + 2e-6, 1.0)
+        m = replace(
+            m, conductivity=m.conductivity * apart, lattice_conductivity=m.lattice_conductivity * apart
+        )
+    waves = two_waves(m, s)
+    steep, beat = (pulse / taken_up(m, s, k2) for k2 in (f.p**2, -(f.x**2)))
+    on_steep, on_beat = (lattice_ratio(m, s, k2) for k2 in (f.p**2, -(f.x**2)))
+    made = _ends(f, waves.electrons, steep, beat), _ends(f, waves.lattice, steep * on_steep, beat * on_beat)
+    ends, closing = waves.closed(*made)
+    return _Conducting(waves, *waves.as_one(), steep, beat, (on_steep, on_beat), ends, closing)
 
 
 def _heating(given: CarrierConstants | None, n: Pairs | None, pulse: Complex) -> tuple[Complex, Complex]:

@@ -56,6 +56,8 @@ class Medium:
         Power-law loss, ps and dimensionless.
     inverse_quality, quality_frequency : array
         1/Q and the angular frequency in rad/ps at which the modulus is stated.
+    lattice_conductivity : array
+        What of the conductivity is the lattice's, GPa nm2/ps/K.
     electron_stress : array
         Stress coefficient of the electrons' own temperature, GPa/K.
     carriers : CarrierConstants, optional
@@ -77,6 +79,7 @@ class Medium:
     loss_exponent: Array
     inverse_quality: Array
     quality_frequency: Array
+    lattice_conductivity: Array = field(default_factory=lambda: np.zeros((1, 1)))
     electron_stress: Array = field(default_factory=lambda: np.zeros((1, 1)))
     carriers: CarrierConstants | None = None
     initial: InitialStress | None = None
@@ -239,6 +242,7 @@ def _medium(bound: BoundStack, slots: Slots, values: Mapping[str, Array]) -> Med
         loss_exponent=one["attenuation_exponent"],
         inverse_quality=inverse_quality,
         quality_frequency=one["quality_frequency"],
+        lattice_conductivity=one["lattice_share"] * one["conductivity"],
         electron_stress=one["electron_gruneisen"] * one["electron_heat_capacity"],
         carriers=_carriers(one) if "band_gap" in one else None,
         initial=_initial(one) if "initial_stress" in one else None,

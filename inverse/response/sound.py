@@ -11,7 +11,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.response.carriers import Pairs
+from inverse.response.carriers import Diffusing, Pairs
 from inverse.response.flaws import Imperfection, flaw
 from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
@@ -19,7 +19,7 @@ from inverse.response.media import Ambient, Medium, anchored, layers
 from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
 from inverse.response.sums import weight_rows, weighted_sum
 
-__all__ = ["SoundField", "modulus", "off_resonance", "particular", "particular_ends", "sound_field"]
+__all__ = ["Launched", "SoundField", "launched", "modulus", "off_resonance", "sound_field"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
@@ -46,7 +46,7 @@ class SoundField:
     hot, steep, beat : array
         Strain of the diffusing heat per ``HeatField.down`` and ``up``, and of the absorbed profile's two parts.
     paired : array
-        Strain per diffusing part of the photo-carriers.
+        Strain per second part of the heat: photo-carriers, or the quick wave of hot electrons.
     u_top, u_bottom : array
         Total displacement at both ends, nm (bottom: zero in the half-space).
     """
@@ -61,6 +61,15 @@ class SoundField:
     u_top: Complex
     u_bottom: Complex
     paired: Complex = field(default_factory=lambda: _NONE)
+
+
+@dataclass(frozen=True)
+class Launched:
+    """What follows heat and light in one medium: `SoundField`'s hot, steep and beat, its paired, and the ends."""
+
+    parts: tuple[Complex, Complex, Complex]
+    paired: Complex
+    ends: Ends
 
 
 def modulus(m: Medium, s: Complex) -> Complex:
@@ -115,12 +124,8 @@ def sound_field(
         powers(sl.real * m.thickness) if plain else np.exp(-qj * m.thickness)
         for sl, qj, m, plain in zip(slow, q, layers(media), lossless, strict=False)
     ]
-    inertia = [m.density * s**2 for m in media]
-    parts = [particular(*group) for group in zip(media, c, inertia, profiles, heat, strict=True)]
-    ends = [particular_ends(*group) for group in zip(profiles, heat, parts, inertia, strict=True)]
-    paired = [_paired(*group) for group in zip(media, c, inertia, heat, strict=True)]
-    ends = [_with_pairs(e, h.pairs, n, i) for e, h, n, i in zip(ends, heat, paired, inertia, strict=True)]
-    ends = [_with_initial(e, m, s, source) for e, m in zip(ends, media, strict=True)]
+    made = [launched(*group, s, source) for group in zip(media, c, profiles, heat, strict=True)]
+    ends = [one.ends for one in made]
     flaws = [
         flaw(given, k, s, above, lower)
         for given, k, above, lower in zip(imperfections, compliance, q, q[1:], strict=False)
@@ -131,11 +136,26 @@ def sound_field(
         load = s * (ambient.density * ambient.velocity)
     down, up = descend(surface_amplitude(y[0], below, ends[0], load), decay, below)
     return [
-        SoundField(qj, e, a, b, p[0], p[1], p[2], a + b * e + end.u_top, a * e + b + end.u_bottom, n)
-        for qj, e, a, b, p, end, n in zip(
-            q, anchored(decay, media), down, up, parts, ends, paired, strict=True
+        SoundField(
+            *(qj, e, a, b),
+            *one.parts,
+            a + b * e + one.ends.u_top,
+            a * e + b + one.ends.u_bottom,
+            one.paired,
         )
+        for qj, e, a, b, one in zip(q, anchored(decay, media), down, up, made, strict=True)
     ]
+
+
+def launched(
+    m: Medium, c: Complex, f: Absorption, heat: HeatField, s: Complex, source: Complex = _NONE
+) -> Launched:
+    """Solve for what follows heat and light in a medium of complex modulus c; arguments as of `sound_field`."""
+    inertia = m.density * s**2
+    parts = _particular(m, c, inertia, f, heat)
+    paired = _paired(m, c, inertia, heat)
+    ends = _with_pairs(_particular_ends(f, heat, parts, inertia), heat.second, paired, inertia)
+    return Launched(parts, paired, _with_initial(ends, m, s, source))
 
 
 def off_resonance(m: Medium, c: Complex, f: Absorption, diffusing: Complex, s: Complex) -> Complex:
@@ -146,30 +166,36 @@ def off_resonance(m: Medium, c: Complex, f: Absorption, diffusing: Complex, s: C
     return np.where(close, c * (1 + 2e-6), c) if np.any(close) else c
 
 
-def particular(
+def _particular(
     m: Medium, c: Complex, inertia: Complex, f: Absorption, heat: HeatField
 ) -> tuple[Complex, Complex, Complex]:
     """Return p^2 g times the thermal stress of the diffusing, exponential and interference parts."""
-    stress = m.stress * heat.lattice + m.electron_stress
+    lattice, on_steep, on_beat = heat.ratios
+    stress = m.stress * lattice + m.electron_stress
     q2, p2, x2 = heat.q * heat.q, f.p**2, -(f.x**2)
     hot = stress * q2 / (c * q2 - inertia)
-    steep, beat = heat.steep * stress, heat.beat * stress
-    if m.carriers is not None and heat.pairs is not None:
-        steep = steep + m.carriers.stress * heat.pairs.steep
-        beat = beat + m.carriers.stress * heat.pairs.beat
+    if heat.of_light is None:
+        steep, beat = heat.steep * stress, heat.beat * stress
+    else:
+        steep = heat.steep * (m.stress * on_steep + m.electron_stress)
+        beat = heat.beat * (m.stress * on_beat + m.electron_stress)
+    if m.carriers is not None and isinstance(heat.second, Pairs):
+        steep = steep + m.carriers.stress * heat.second.steep
+        beat = beat + m.carriers.stress * heat.second.beat
     return hot, steep * (p2 / (c * p2 - inertia)), beat * (x2 / (c * x2 - inertia))
 
 
 def _paired(m: Medium, c: Complex, inertia: Complex, heat: HeatField) -> Complex:
-    """Return the strain per diffusing part of the photo-carriers, by their own stress and the heat they leave."""
-    if m.carriers is None or heat.pairs is None:
+    """Return the strain per second part of the heat, by its own stress and the lattice's heat that goes with it."""
+    if heat.second is None:
         return _NONE
-    q2 = heat.pairs.q * heat.pairs.q
-    return (m.stress * heat.per_pair + m.carriers.stress) * q2 / (c * q2 - inertia)
+    own = m.electron_stress if m.carriers is None else m.carriers.stress
+    q2 = heat.second.q * heat.second.q
+    return (m.stress * heat.second_heat + own) * q2 / (c * q2 - inertia)
 
 
-def _with_pairs(end: Ends, pairs: Pairs | None, paired: Complex, inertia: Complex) -> Ends:
-    """Add displacement and flux of the strain that the carriers' diffusing part makes."""
+def _with_pairs(end: Ends, pairs: Diffusing | None, paired: Complex, inertia: Complex) -> Ends:
+    """Add displacement and flux of the strain that the second part of the heat makes."""
     if pairs is None:
         return end
     u = paired / pairs.q
@@ -183,7 +209,7 @@ def _with_pairs(end: Ends, pairs: Pairs | None, paired: Complex, inertia: Comple
     )
 
 
-def particular_ends(
+def _particular_ends(
     f: Absorption, heat: HeatField, parts: tuple[Complex, Complex, Complex], inertia: Complex
 ) -> Ends:
     """Particular displacement (strain / p) and flux (-inertia strain / p^2) at both ends."""

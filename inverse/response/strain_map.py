@@ -17,7 +17,7 @@ from inverse.description.pumpprobe import PumpProbe
 from inverse.description.sample.places import bind
 from inverse.description.sample.stack import Stack
 from inverse.response.basis import Beams, arrival, fields
-from inverse.response.carriers import Pairs
+from inverse.response.carriers import Diffusing, Pairs
 from inverse.response.heat import HeatField
 from inverse.response.inverse_laplace import TimeGrid, time_grid, to_delays
 from inverse.response.light import Absorption, absorption, light_field
@@ -161,10 +161,10 @@ class _Moved:
         """Strain, elastic strain, lattice and electron temperature, one below the other."""
         strain, (lattice, electrons) = self.strain(z), self.heated(z)
         stress = self.medium.stress * lattice + self.medium.electron_stress * electrons
-        if self.medium.carriers is not None and self.heat.pairs is not None:
+        if self.medium.carriers is not None and isinstance(self.heat.second, Pairs):
             steep, beat = self._absorbed(z)
-            pairs = self._diffusing(self.heat.pairs, z)
-            pairs = pairs + self.heat.pairs.steep * steep + self.heat.pairs.beat * beat
+            pairs = self._diffusing(self.heat.second, z)
+            pairs = pairs + self.heat.second.steep * steep + self.heat.second.beat * beat
             stress = stress + self.medium.carriers.stress * pairs
         if self.medium.initial is not None:
             stress = stress + self.medium.initial.stress * self.source / (s + self.medium.initial.rate)
@@ -173,12 +173,15 @@ class _Moved:
 
     def heated(self, z: Array) -> tuple[Complex, Complex]:
         """Lattice and electron temperature at depths below the medium's top, shape (depths, frequencies)."""
-        hot = self._diffusing(self.heat, z)
-        if self.heat.pairs is not None:
-            hot = hot + self.heat.per_pair * self._diffusing(self.heat.pairs, z)
-        steep, beat = self._absorbed(z)
-        electrons = hot + self.heat.steep * steep + self.heat.beat * beat
-        return self.heat.lattice * electrons, electrons
+        on_hot, on_steep, on_beat = self.heat.ratios
+        hot, (steep, beat) = self._diffusing(self.heat, z), self._absorbed(z)
+        steep, beat = self.heat.steep * steep, self.heat.beat * beat
+        electrons, lattice = hot + steep + beat, on_hot * hot + on_steep * steep + on_beat * beat
+        if self.heat.second is None:
+            return lattice, electrons
+        second = self._diffusing(self.heat.second, z)
+        share = self.heat.second_heat if isinstance(self.heat.second, Pairs) else 1.0
+        return lattice + self.heat.second_heat * second, electrons + share * second
 
     def strain(self, z: Array) -> Complex:
         """Strain at depths below the medium's top."""
@@ -186,8 +189,8 @@ class _Moved:
         down, up = self._both_ways(self.sound.q, z)
         ringing = self.sound.q * (self.sound.up * up - self.sound.down * down)
         strain = ringing + self.sound.hot * self._diffusing(self.heat, z)
-        if self.heat.pairs is not None:
-            strain = strain + self.sound.paired * self._diffusing(self.heat.pairs, z)
+        if self.heat.second is not None:
+            strain = strain + self.sound.paired * self._diffusing(self.heat.second, z)
         return strain + self.sound.steep * steep + self.sound.beat * beat
 
     def _both_ways(self, q: Complex, z: Array) -> tuple[Complex, Complex]:
@@ -198,7 +201,7 @@ class _Moved:
             return np.exp(-q * column), np.zeros_like(q)
         return np.exp(-q * column), np.exp(-q * (thickness - column))
 
-    def _diffusing(self, field: HeatField | Pairs, z: Array) -> Complex:
+    def _diffusing(self, field: HeatField | Diffusing, z: Array) -> Complex:
         down, up = self._both_ways(field.q, z)
         return field.down * down + field.up * up
 

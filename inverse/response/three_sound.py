@@ -21,12 +21,14 @@ from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium, layers
 from inverse.response.recursion import Ends
 from inverse.response.solids import DepthElastic
-from inverse.response.sound import SoundField, modulus, off_resonance, particular, particular_ends
+from inverse.response.sound import Launched, SoundField, launched, modulus, off_resonance
 
 __all__ = ["ThreeSound", "three_sound_field"]
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
+
+_NONE = np.zeros((1, 1), dtype=complex)
 
 
 @dataclass(frozen=True)
@@ -89,6 +91,7 @@ def three_sound_field(
     heat: Sequence[HeatField],
     s: Complex,
     powers: Callable[[Array], Complex],
+    source: Complex = _NONE,
 ) -> list[ThreeSound]:
     """Solve for the displacement of every medium.
 
@@ -100,7 +103,7 @@ def three_sound_field(
         One per medium.
     compliance : sequence of arrays, shape (sets or 1, 1, 3)
         One per interface, from `interface_compliance`.
-    ambient, profiles, heat, s, powers
+    ambient, profiles, heat, s, powers, source
         As in `inverse.response.sound.sound_field`.
 
     Returns
@@ -110,10 +113,13 @@ def three_sound_field(
     """
     waves = [_waves(m, solid) for m, solid in zip(media, solids, strict=True)]
     polarisation = [w.polarisation for w in waves]
-    scalars = [_scalars(w, f, h, s, powers) for w, f, h in zip(waves, profiles, heat, strict=True)]
+    scalars = [
+        [_scalar(m, f, h, s, powers, source) for m in w.media]
+        for w, f, h in zip(waves, profiles, heat, strict=True)
+    ]
     y = [_modal([one.y for one in three]) for three in scalars]
     decay = [_modal([one.decay for one in three]) for three, _ in zip(scalars, layers(media), strict=False)]
-    ends = [_block_ends([one.ends for one in three]) for three in scalars]
+    ends = [_block_ends([one.made.ends for one in three]) for three in scalars]
     modes = [p[:, None] for p in polarisation]
     below = ascend_blocks(y, decay, modes, compliance, ends)
     first = surface_amplitudes(y[0], modes[0], below, ends[0], _load(ambient, s))
@@ -139,8 +145,7 @@ class _Scalar:
     q: Complex
     y: Complex
     decay: Complex
-    parts: tuple[Complex, Complex, Complex]
-    ends: Ends
+    made: Launched
 
 
 def _waves(m: Medium, solid: DepthElastic) -> _Waves:
@@ -148,31 +153,38 @@ def _waves(m: Medium, solid: DepthElastic) -> _Waves:
     moduli, vectors = moduli[..., ::-1], vectors[..., ::-1]
     stress = (np.swapaxes(vectors, -1, -2) @ solid.stress[..., None])[..., 0]
     first, second, third = (
-        replace(m, velocity=np.sqrt(moduli[:, k, None] / m.density), stress=stress[:, k, None])
+        replace(
+            _along(m, vectors[:, 2, k, None]),
+            velocity=np.sqrt(moduli[:, k, None] / m.density),
+            stress=stress[:, k, None],
+        )
         for k in range(3)
     )
     return _Waves((first, second, third), vectors)
 
 
-def _scalars(
-    waves: _Waves, f: Absorption, heat: HeatField, s: Complex, powers: Callable[[Array], Complex]
-) -> list[_Scalar]:
-    return [_scalar(m, f, heat, s, powers) for m in waves.media]
+def _along(m: Medium, depth: Array) -> Medium:
+    """Take the part along a wave's polarisation of the stresses that act along the depth only."""
+    carriers, initial = m.carriers, m.initial
+    return replace(
+        m,
+        electron_stress=m.electron_stress * depth,
+        carriers=None if carriers is None else replace(carriers, stress=carriers.stress * depth),
+        initial=None if initial is None else replace(initial, stress=initial.stress * depth),
+    )
 
 
 def _scalar(
-    m: Medium, f: Absorption, heat: HeatField, s: Complex, powers: Callable[[Array], Complex]
+    m: Medium, f: Absorption, heat: HeatField, s: Complex, powers: Callable[[Array], Complex], source: Complex
 ) -> _Scalar:
     c = off_resonance(m, modulus(m, s), f, heat.q, s)
     slow = np.sqrt(m.density / c)
-    q, inertia = s * slow, m.density * s**2
-    parts = particular(m, c, inertia, f, heat)
+    q = s * slow
     return _Scalar(
         q=q,
         y=s * np.sqrt(m.density * c),
         decay=_decay(m.thickness, slow, q, powers),
-        parts=parts,
-        ends=particular_ends(f, heat, parts, inertia),
+        made=launched(m, c, f, heat, s, source),
     )
 
 
@@ -211,7 +223,11 @@ def _fields(
 
 
 def _field(one: _Scalar, a: Complex, b: Complex) -> SoundField:
-    e, end = one.decay, one.ends
+    e, end = one.decay, one.made.ends
     return SoundField(
-        one.q, e, a, b, *one.parts, u_top=a + b * e + end.u_top, u_bottom=a * e + b + end.u_bottom
+        *(one.q, e, a, b),
+        *one.made.parts,
+        u_top=a + b * e + end.u_top,
+        u_bottom=a * e + b + end.u_bottom,
+        paired=one.made.paired,
     )

@@ -24,6 +24,7 @@ PLAIN = {
     "electron_heat_capacity": (stats.norm(0.028, 0.003), 0.035),
     "electron_phonon_coupling": (stats.lognorm(0.7, scale=2.45e17), 5e17),
     "electron_gruneisen": (stats.norm(1.4, 0.3), 2.5),
+    "lattice_share": (stats.uniform(0.0, 0.5), 0.45),
     "band_gap": (stats.norm(0.67, 0.02), 1.0),
     "deformation_potential": (stats.norm(-4.0, 0.5), -8.0),
     "carrier_diffusivity": (stats.loguniform(10, 200), 150.0),

@@ -40,6 +40,43 @@ def test_three_components_meet_the_scalar_path_at_a_symmetry_cut(axis: list) -> 
     assert np.abs(trace(cut(axis)) - exact).max() < 1e-9 * np.abs(exact).max()
 
 
+def test_all_that_launches_sound_does_so_in_three_components_too() -> None:
+    film = {
+        "electron_gruneisen": 1.5,
+        "lattice_share": 0.3,
+        "initial_stress": 0.4,
+        "initial_stress_lifetime": 9.0,
+    }
+    carriers = {
+        "band_gap": 1.1,
+        "deformation_potential": -8.0,
+        "carrier_diffusivity": 20.0,
+        "carrier_lifetime": 12.0,
+    }
+    clear = inv.Layer("SiO2", thickness=40.0, stiffness={"symmetry": "isotropic", "c11": 78.5, "c44": 31.2})
+
+    def of(axis: object) -> np.ndarray:
+        stack = inv.Stack(
+            clear, cut(axis, thickness=20.0, **film), inv.Substrate("Si", orientation="100", **carriers)
+        )
+        return inv.simulate(stack, SETUP, DELAY)["reflectance_change"].to_numpy()
+
+    exact, plain = (
+        of("100"),
+        inv.simulate(inv.Stack(clear, cut("100", thickness=20.0), SUBSTRATE), SETUP, DELAY),
+    )
+    assert np.abs(of([1, 0, 1e-6]) - exact).max() < 1e-9 * np.abs(exact).max()
+    assert np.abs(exact - plain["reflectance_change"]).max() > 1e-2 * np.abs(exact).max()
+
+
+@pytest.mark.parametrize("flaw", ["roughness", "areal_mass"])
+def test_flaws_that_three_components_do_not_know_are_refused(flaw: str) -> None:
+    with pytest.raises(
+        ValueError, match=rf"Cu\|Si has {flaw}, which the response of an oblique cut does not know"
+    ):
+        trace(cut([0.0, 1.0, 2.0]), **{flaw: 1.0})
+
+
 def test_an_oblique_cut_shows_a_shear_echo_that_no_scalar_layer_has() -> None:
     # Copper tilted: the quasi-shear wave returns at 2 d / v, where a scalar layer of the same velocity is quiet.
     axis, thickness = [0.0, np.sin(np.deg2rad(25)), np.cos(np.deg2rad(25))], 60.0

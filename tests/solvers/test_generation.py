@@ -10,7 +10,7 @@ from inverse.response.strain_map import strain_map
 
 from . import face
 from .samples import Experiment, Joint, Sample
-from .time_domain import simulate
+from .time_domain import simulate, states
 from .transfer_matrices import Beam
 
 DELAY = np.arange(-1.5, 40, 0.1)
@@ -107,6 +107,82 @@ def test_no_pressure_of_electrons_is_the_plain_metal(al, si):
     sample = Sample((hot, si), (Joint(),))
     zero, plain = trace(sample, {0: {"electron_gruneisen": 0.0}}), trace(sample)
     np.testing.assert_array_equal(zero.reflectance_change, plain.reflectance_change)
+
+
+# 0.4 of a weak conduction is the lattice's, weakly coupled: heat spreads in both for tens of picoseconds
+SHARE = 0.4
+
+
+def conducting(al, thickness):
+    """A metal as the library and as the solver know it."""
+    weak = {"electron_heat_capacity": 2.7e-5, "electron_phonon_coupling": 5e-5}
+    metal = replace(al, thickness=thickness, conductivity=0.08, **weak)
+    return metal, replace(metal, conductivity=0.08 * (1 - SHARE), lattice_conductivity=0.08 * SHARE)
+
+
+@pytest.mark.parametrize("thickness", [12.0, 30.0, np.inf])
+def test_a_lattice_that_conducts_beside_its_electrons(al, si, thickness):
+    below, joints = ((si,), (Joint(compliance=0.02, conductance=1e-4),)) if thickness < 100 else ((), ())
+    ours, theirs = (Sample((metal, *below), joints) for metal in conducting(al, thickness))
+    found, plain = trace(ours, {0: {"lattice_share": SHARE}}), trace(ours)
+    solved = simulate(theirs, EXPERIMENT, DELAY, 0.02)
+    for name, expected in (
+        ("reflectance_change", solved.reflectance_change),
+        ("optical_phase", solved.phase),
+    ):
+        scale = np.abs(expected).max()
+        assert np.abs(found[name].values - expected).max() < 4e-5 * scale
+        assert np.abs(plain[name].values - expected)[DELAY > 2].max() > 2e-4 * scale
+
+
+def test_a_conducting_lattice_pushes_with_its_electrons(al, si):
+    ours, theirs = (Sample((m, si), (Joint(conductance=1e-4),)) for m in conducting(al, 30.0))
+    pressing = replace(theirs.media[0], electron_stress=1.6 * 2.7e-5)
+    more = {0: {"lattice_share": SHARE, "electron_gruneisen": 1.6}}
+    agree(replace(theirs, media=(pressing, si)), trace(ours, more), trace(ours), step=0.02)
+
+
+@pytest.mark.parametrize(
+    ("share", "coupling", "off"),
+    [(1e-10, 5e-5, 3e-6), (1e-14, 5e-5, 3e-8), (SHARE, 1e11, 1e-10)],
+)
+def test_a_lattice_conducts_nothing_or_all_in_the_limits(al, si, share, coupling, off):
+    # What a lattice gives up at its closed faces lies within sqrt(kappa_l / g) of them: a slow limit, of the root.
+    # Without a lag between the two, it is one temperature that conducts.
+    metal = replace(conducting(al, 30.0)[0], electron_phonon_coupling=coupling)
+    sample = Sample((metal, si), (Joint(conductance=1e-4),))
+    found, plain = trace(sample, {0: {"lattice_share": share}}), trace(sample)
+    for name in ("reflectance_change", "optical_phase"):
+        scale = np.abs(plain[name]).max()
+        assert np.abs(found[name] - plain[name]).max() < off * scale
+
+
+def test_a_share_of_the_lattice_needs_two_temperatures():
+    film = inv.Material("film", density=5.0, velocity=5.0, n=3.0 + 3.0j, heat_capacity=2.5, conductivity=10.0,
+                        thermal_stress_coefficient=5e-3, lattice_share=0.1)  # fmt: skip
+    with pytest.raises(
+        ValueError, match="film has a lattice_share but one temperature only; give electron_heat"
+    ):
+        inv.simulate(inv.Stack(inv.Substrate(film)), face.setup(EXPERIMENT), DELAY)
+    hot = {"electron_heat_capacity": 0.02, "electron_phonon_coupling": 1e17}
+    pairs = replace(film, band_gap=1.0, carrier_diffusivity=1.0, **hot)
+    with pytest.raises(
+        ValueError, match="has a lattice_share and a band_gap; a medium is a metal or a semicon"
+    ):
+        inv.simulate(inv.Stack(inv.Substrate(pairs)), face.setup(EXPERIMENT), DELAY)
+
+
+def test_the_map_of_a_conducting_lattice_has_both_temperatures(al, si):
+    ours, theirs = (Sample((m, si), (Joint(conductance=1e-4),)) for m in conducting(al, 30.0))
+    depth = np.array([3.0, 15.0, 27.0])
+    stack = face.stack(ours, media={0: {"lattice_share": SHARE}})
+    found = strain_map(stack, face.setup(EXPERIMENT), [6.0], depth)
+    *_, last = states(theirs, EXPERIMENT, 6.0, 0.02)
+    for name, at in (("electron_temperature", last.heat.hot), ("temperature", last.heat.lattice)):
+        expected = np.interp(depth, last.depth[:400], last.temperature[at][:400])
+        np.testing.assert_allclose(found[name].values[:, 0], expected, rtol=2e-4)
+    strain = np.interp(depth, last.depth[:400], last.strain[:400])
+    np.testing.assert_allclose(found.strain.values[:, 0], strain, atol=1e-3 * np.abs(strain).max())
 
 
 def test_semiconductors_launch_mostly_by_deformation_potential():

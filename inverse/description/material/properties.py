@@ -28,6 +28,7 @@ _REAL = (
     "electron_heat_capacity",
     "electron_phonon_coupling",
     "electron_gruneisen",
+    "lattice_share",
     "band_gap",
     "deformation_potential",
     "carrier_diffusivity",
@@ -81,6 +82,9 @@ class Material:
         In W/m3/K; inf asks for one temperature.
     electron_gruneisen : float
         Pressure of the electrons over their heat content; with it hot electrons press on the lattice by themselves.
+    lattice_share : float
+        What of the conductivity is the lattice's, 0 to 0.95, where it has two temperatures; the rest is the electrons'.
+        0 by default. Heat passes interfaces with the electrons.
     band_gap, deformation_potential : float
         Of a semiconductor whose photo-carriers count: energy of a pair, and its change with strain along the depth,
         in eV. The gap shrinks under tension where the latter is negative; then pairs expand the lattice.
@@ -140,6 +144,7 @@ class Material:
     electron_heat_capacity: Any = None
     electron_phonon_coupling: Any = None
     electron_gruneisen: Any = None
+    lattice_share: Any = None
     band_gap: Any = None
     deformation_potential: Any = None
     carrier_diffusivity: Any = None

@@ -27,12 +27,13 @@ __all__ = ["BoundStack", "Slot", "Slots", "bind"]
 Array = NDArray[np.float64]
 
 _REQUIRED = ("velocity", "heat_capacity", "conductivity")
-_ELECTRONS = ("electron_heat_capacity", "electron_phonon_coupling", "electron_gruneisen")
+_ELECTRONS = ("electron_heat_capacity", "electron_phonon_coupling", "electron_gruneisen", "lattice_share")
 _LOSS = ("attenuation_time", "attenuation_exponent", "quality_factor", "quality_frequency")
 _ABSENT = {
     "electron_heat_capacity": 0.0,
     "electron_phonon_coupling": np.inf,
     "electron_gruneisen": 0.0,
+    "lattice_share": 0.0,
     "attenuation_time": 0.0,
     "attenuation_exponent": 1.0,
     "quality_factor": np.inf,
@@ -111,11 +112,11 @@ def bind(stack: Stack, setup: PumpProbe) -> BoundStack:
         If they are not a `Stack` and a `PumpProbe`, a constant the model needs is missing (named), or one unknown's
         name is used for two priors.
     """
-    substrate = _substrate_slots(stack.names[-1], stack.media[-1], setup)
     if not isinstance(stack, Stack) or not isinstance(setup, PumpProbe):
         raise ValueError(
             f"Got a {type(stack).__name__} and a {type(setup).__name__}; give a Stack first, then a PumpProbe."
         )
+    substrate = _substrate_slots(stack.names[-1], stack.media[-1], setup)
     media = [*_media_slots(stack, setup, substrate.get("density")), substrate]
     if oblique := any(is_oblique(part.material) for part in stack.media):
         media = _sheared(stack, media)
@@ -185,6 +186,11 @@ def _sheared(stack: Stack, media: list[Slots]) -> list[Slots]:
 
 def _interface_slots(place: str, part: Interface, oblique: bool) -> Slots:
     slots = {f: slot_of(f, getattr(part, f), place, "given by the user", 0.0) for f in _INTERFACE}
+    if oblique and (flaws := [f for f in ("roughness", "areal_mass") if slots[f].value != 0.0]):
+        raise ValueError(
+            f"{place} has {' and '.join(flaws)}, which the response of an oblique cut does not know; leave it out, or "
+            "give the layers velocities in place of their stiffness and orientation."
+        )
     if part.tangential_compliance is None:
         return slots
     field = "tangential_compliance"
@@ -301,6 +307,15 @@ def _thermal_stress(expansion: Any, bulk_modulus: Any) -> Any:
 
 def _electron_pair(place: str, material: Material) -> None:
     given = [f for f in _ELECTRONS[:2] if getattr(material, f) is not None]
+    if material.lattice_share is not None and len(given) < 2:
+        raise ValueError(
+            f"{place} has a lattice_share but one temperature only; give electron_heat_capacity and "
+            "electron_phonon_coupling too, or leave it out."
+        )
+    if material.lattice_share is not None and material.band_gap is not None:
+        raise ValueError(
+            f"{place} has a lattice_share and a band_gap; a medium is a metal or a semiconductor here."
+        )
     if len(given) == 1 and given[0] == "electron_heat_capacity":
         raise ValueError(
             f"{place} has electron_heat_capacity but no electron_phonon_coupling; two temperatures need both "

@@ -38,6 +38,7 @@ DEFAULT_RELATIVE_SPREAD = {
     "attenuation_exponent": 0.1,
     "quality_factor": 0.3,
     "electron_gruneisen": 0.2,
+    "lattice_share": 0.3,
     "band_gap": 0.02,
     "deformation_potential": 0.2,
     "carrier_diffusivity": 0.3,
