@@ -1,6 +1,7 @@
 """A batch: the same numbers everywhere, nothing lost, what fails named."""
 
 import json
+import os
 import subprocess
 import sys
 from concurrent.futures import BrokenExecutor, Executor, Future, ThreadPoolExecutor
@@ -92,8 +93,8 @@ def test_poisoned_sites_end_as_marked_rows_and_cost_nothing_else():
     clean, found = quiet(toy, toy_traces(6)), quiet(toy, poisoned())
     assert list(found["status"].values) == ["ok", "failed", "failed", "nothing learnt", "ok", "ok"]
     reasons = dict(zip(found["site"].values, found["reason"].values, strict=True))
-    assert "ValueError: reflectance_change is NaN at 11 delays" in reasons["W0-1"]
-    assert "ValueError: delays are in fs; convert" in reasons["W0-2"]
+    assert reasons["W0-1"].startswith("reflectance_change is NaN at 11 delays")
+    assert reasons["W0-2"].startswith("delays are in fs; convert")
     assert "narrowed no prior" in reasons["W0-3"]
     for site in ("W0-0", "W1-0", "W1-1"):
         assert np.array_equal(clean[NAME].sel(site=site), found[NAME].sel(site=site))
@@ -104,9 +105,9 @@ def test_a_site_that_is_too_slow_is_given_up():
     traces = toy_traces(3)
     table = rows(traces, sleep={"W0-1": 30})
     for workers in (0, 1):
-        found = quiet(toy, traces, table=table, timeout=1.0, workers=workers)
+        found = quiet(toy, traces, table=table, timeout=4.0, workers=workers)
         assert list(found["status"].values) == ["ok", "failed", "ok"]
-        assert found["reason"].values[1] == "took longer than the 1 s allowed"
+        assert found["reason"].values[1] == "took longer than the 4 s allowed"
 
 
 def test_a_site_that_kills_its_worker_is_found_and_costs_no_other():
@@ -195,6 +196,34 @@ def test_a_killed_process_goes_on_to_the_identical_file(tmp_path):
     quiet(toy, toy_traces(8), path=whole)
     assert len(told) == 4
     assert whole.read_bytes() == killed.read_bytes()
+
+
+UNGUARDED = """
+import sys
+sys.path.insert(0, {tests!r})
+from toy import toy, toy_traces
+from inverse.study.batches.batch import batch
+batch(toy, toy_traces(4), seed=1, workers=2, method="mcmc", progress=False)
+"""
+
+
+def test_a_script_without_a_guard_is_told_so(tmp_path):
+    """Worker processes read the script anew, and must neither start workers of their own nor fill the screen."""
+    script = tmp_path / "script.py"
+    script.write_text(UNGUARDED.format(tests=str(Path(__file__).parent)))
+    command = [sys.executable, str(script)]
+    done = subprocess.run(
+        command,
+        env={**os.environ, "PYTHONPATH": str(Path(__file__).parents[2])},
+        capture_output=True,
+        text=True,
+        check=False,
+        timeout=120,
+    )
+    assert done.returncode == 1
+    assert done.stderr.count("Traceback") == done.stderr.count("BrokenProcessPool") + 1 == 1
+    assert "RuntimeError: no worker process could start; the usual reason is a script" in done.stderr
+    assert 'do not stand under `if __name__ == "__main__":`' in done.stderr
 
 
 def test_a_torn_record_is_cut_off(tmp_path):

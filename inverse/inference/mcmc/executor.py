@@ -11,11 +11,12 @@ from __future__ import annotations
 import os
 import pickle
 import signal
+import sys
 from collections import OrderedDict
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from concurrent.futures import FIRST_COMPLETED, BrokenExecutor, Executor, Future, ProcessPoolExecutor, wait
 from contextlib import contextmanager
-from multiprocessing import get_context
+from multiprocessing import current_process, get_context
 from types import TracebackType
 from typing import Any
 from uuid import uuid4
@@ -26,6 +27,10 @@ THREAD_VARIABLES = (
     "MKL_NUM_THREADS",
     "BLIS_NUM_THREADS",
     "VECLIB_MAXIMUM_THREADS",
+)
+UNGUARDED = (
+    'a script whose calls do not stand under `if __name__ == "__main__":`. Worker processes read the script anew and '
+    "would start at its calls again: put what does the work into a function, and call it under that line"
 )
 REMEMBERED = 4
 IN_FLIGHT = 64
@@ -164,9 +169,7 @@ def run_tasks(
         results = {index: future.result() for index, future in completed(executor, shared, function, tasks)}
     except BrokenExecutor as error:
         raise RuntimeError(
-            "a worker process ended before its task did: out of memory, killed, or a script whose calls do "
-            "not "
-            'stand under `if __name__ == "__main__":`, which worker processes need'
+            f"a worker process ended before its task did: out of memory, killed, or {UNGUARDED}"
         ) from error
     return [results[index] for index in sorted(results)]
 
@@ -212,6 +215,9 @@ class WorkerPool(ProcessPoolExecutor):
     """
 
     def __init__(self, workers: int | None = None) -> None:
+        if getattr(current_process(), "_inheriting", False):
+            # A worker that is still reading an unguarded script; the process that started it will say so.
+            sys.exit(1)
         count = available_cores() if workers is None else workers
         if count < 1:
             raise ValueError(f"workers must be at least 1, not {workers!r}; leave it out for all cores")
@@ -219,7 +225,12 @@ class WorkerPool(ProcessPoolExecutor):
         super().__init__(count, mp_context=get_context("spawn"), initializer=_ignore_interrupt)
         # The first task starts all processes, and they inherit the environment of this moment.
         with _environment(dict.fromkeys(THREAD_VARIABLES, "1")):
-            super().submit(os.getpid)
+            self._first = super().submit(os.getpid)
+
+    @property
+    def has_started(self) -> bool:
+        """Whether a worker has come to life; False while none has, and for ever if none can."""
+        return self._first.done() and self._first.exception() is None
 
     def submit(self, fn: Callable[..., Any], /, *args: Any, **kwargs: Any) -> Future[Any]:
         """Schedule a call."""

@@ -12,7 +12,7 @@ from contextlib import ExitStack
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from inverse.inference.mcmc.executor import Shared, checked_executor, completed, worker_pool
+from inverse.inference.mcmc.executor import UNGUARDED, Shared, checked_executor, completed, worker_pool
 from inverse.study.batches.recipe import Recipe
 from inverse.study.batches.results import results_dataset
 from inverse.study.batches.site import Effort, SiteTask, fingerprint, fit_site
@@ -103,6 +103,8 @@ def batch(
     ------
     ValueError
         If sites repeat or have no row, the path will not do, or the store is of another batch.
+    RuntimeError
+        If no worker process can start, as in a script whose calls do not stand under ``if __name__ == "__main__":``.
     """
     jobs, rows = _jobs(traces, table, seed)
     effort = _checked(Effort(draws, ess, max_steps, ensembles, starts, timeout, method))
@@ -258,6 +260,9 @@ def _run_pooled(
     """Work in pools of our own; where a pool breaks, halve what is left until the site that breaks it stands alone."""
     with worker_pool(workers) as pool:
         left = _attempt(jobs, shared, pool, store, watch)
+        started = pool.has_started
+    if left and not started:
+        raise RuntimeError(f"no worker process could start; the usual reason is {UNGUARDED}.")
     if len(left) == 1 and len(jobs) == 1:
         watch.done(store, SiteRecord(left[0][0], left[0][-1], "failed", _DEAD))
     elif left:

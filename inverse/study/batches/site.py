@@ -123,6 +123,8 @@ def fit_site(
             return _sampled(task, site, task.problem(data, row), seed, modes, mark, check)
     except SiteTimeoutError:
         return SiteRecord(site, mark, "failed", f"took longer than the {task.effort.timeout:g} s allowed")
+    except ValueError as error:  # refused with a sentence of our own
+        return SiteRecord(site, mark, "failed", str(error))
     except Exception as error:
         return SiteRecord(site, mark, "failed", f"{type(error).__name__}: {error}")
 
