@@ -197,10 +197,15 @@ def spectra(
 ) -> Complex:
     """Return the transforms of `basis`, heated in an instant at the origin, (sets, functions, frequencies)."""
     found = fields(sample, beams, grid, port=port)
-    out = np.zeros((sets, 4 * len(layout.groups) + 2, grid.s.shape[1]), dtype=complex)
-    for part, group in zip(found.detected, layout.of_medium, strict=True):
-        out[:, 4 * group : 4 * group + 2] += part.strain
-        out[:, 4 * group + 2 : 4 * group + 4] += part.heat
+    out = np.empty((sets, 4 * len(layout.groups) + 2, grid.s.shape[1]), dtype=complex)
+    for j, (part, group) in enumerate(zip(found.detected, layout.of_medium, strict=True)):
+        rows = out[:, 4 * group : 4 * group + 4]
+        if group in layout.of_medium[:j]:
+            rows[:, :2] += part.strain
+            rows[:, 2:] += part.heat
+        else:
+            rows[:, :2], rows[:, 2:] = part.strain, part.heat
+    out[:, -2:] = 0
     for real, imag in zip(*displaced(found), strict=True):
         out[:, -2] += real
         out[:, -1] += imag

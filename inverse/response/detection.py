@@ -20,7 +20,7 @@ from inverse.response.light import Absorption
 from inverse.response.media import Ambient
 from inverse.response.port import Overlap, Port
 from inverse.response.sound import SoundField
-from inverse.response.sums import weighted_sum
+from inverse.response.sums import product, weighted_sum
 
 __all__ = ["Detected", "ambient_response", "medium_response"]
 
@@ -175,22 +175,26 @@ def _layer_overlap(
 ) -> Complex:
     """Real and imaginary part of the integral of ``q^order [down exp(-q z) + up exp(-q (d - z))] E^2``.
 
-    With M, N, L sums of the field's amplitudes at both ends, the integral is
-    ``q^order [M / (q - g) + N / (q + g) + L / q]``.
+    With V, W, L sums of the field's amplitudes at both ends, the integral is
+    ``q^order [(V q + W) / (q^2 - g^2) + L / q]``. Beside it stands the one with every optical factor conjugated;
+    their half sum and half difference share the reciprocal of ``(q^2 - Re g^2)^2 + (Im g^2)^2``.
     """
     q = field.q
     probe = _beside_resonance(probe, q)
-    sums = np.matmul(_end_weights(probe), _ends(field, down))
-    first, second = (
-        sums[:, i] * (1 / (q - g)) + sums[:, i + 1] * (1 / (q + g))
-        for i, g in ((0, probe.g), (3, np.conj(probe.g)))
-    )
+    sums = product(_end_weights(probe), _ends(field, down))
+    g2 = probe.g * probe.g
+    even = q * q - g2.real
+    share = np.reciprocal(even * even + g2.imag**2)
     if order == 1:
-        first, second = first * q + sums[:, 2], second * q + sums[:, 5]
-    else:
-        level = 1 / q
-        first, second = first + sums[:, 2] * level, second + sums[:, 5] * level
-    return _real_and_imaginary(first, second)
+        share = share * q
+    even, odd = even * share, -g2.imag * share
+    parts = sums[:, 0:2] * q[:, None] + sums[:, 2:4]
+    out: Complex = parts * even[:, None]
+    parts = parts * odd[:, None]
+    out[:, 0] += parts[:, 1]
+    out[:, 1] -= parts[:, 0]
+    out += sums[:, 4:6] if order == 1 else sums[:, 4:6] * (1 / q)[:, None]
+    return out
 
 
 def _ends(field: HeatField | SoundField | Diffusing, down: Complex) -> Complex:
@@ -202,28 +206,24 @@ def _ends(field: HeatField | SoundField | Diffusing, down: Complex) -> Complex:
     return out
 
 
-def _end_weights(probe: _Probe) -> Complex:
-    """Weights of the four ends in M, N, L and in the same with every optical factor conjugated, (sets, 6, 4)."""
-    sets = max(map(len, (probe.g, probe.forth, probe.back, probe.still, probe.decay)))
-    weights = np.empty((sets, 6, 4), dtype=complex)
-    f, b = probe.forth, probe.back
-    near, far = weights[:, 0], weights[:, 1]
-    near[:, 0:1], near[:, 2:3] = f, b
-    np.multiply(near[:, 0::2], -probe.decay, out=near[:, 1::2])
-    far[:, 1:2], far[:, 3:4] = -b, -f
-    np.multiply(far[:, 1::2], -probe.decay, out=far[:, 0::2])
-    weights[:, 2] = probe.still * _ALTERNATING
-    np.conjugate(weights[:, :3], out=weights[:, 3:])
+def _end_weights(probe: _Probe) -> Array:
+    """Real and imaginary part of the weights of the four ends in V, W and L, (sets, 6, 4)."""
+    f, b, e = probe.forth, probe.back, probe.decay
+    near, far = _row(f, -f * e, b, -b * e), _row(b * e, -b, f * e, -f)
+    rows = (near + far, probe.g * (near - far), probe.still * _ALTERNATING)
+    weights = np.empty((max(map(len, rows)), 6, 4))
+    for i, row in enumerate(rows):
+        weights[:, 2 * i], weights[:, 2 * i + 1] = row.real, row.imag
     return weights
 
 
 def _beside_resonance(probe: _Probe, q: Complex) -> _Probe:
-    """Move the light's wavenumber by 2e-8 where sound or heat would meet it exactly (Brillouin resonance)."""
-    g, size = probe.g, 1e-8 * np.abs(probe.g)
+    """Move the light's wavenumber by 1e-7 where sound or heat would meet it exactly (Brillouin resonance)."""
+    g, size = probe.g, 5e-8 * np.abs(probe.g)
     if not np.any(np.abs(q.real + g.real) < size):
         return probe
     close = (np.abs(q + g) < size) | (np.abs(q + np.conj(g)) < size)
-    step = np.where(close.any(axis=1, keepdims=True), 2e-8 * g, 0)
+    step = np.where(close.any(axis=1, keepdims=True), 1e-7 * g, 0)
     return replace(probe, g=g + step, decay=probe.decay * np.exp(step * probe.thickness))
 
 

@@ -17,7 +17,7 @@ from inverse.response.carriers import CarrierConstants, Diffusing, Pairs, pair_f
 from inverse.response.lattice import TwoWaves, lattice_ratio, taken_up, two_waves
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium, anchored, layers
-from inverse.response.recursion import Ends, ascend, descend, surface_amplitude
+from inverse.response.recursion import Ends, ascend, descend, fall, surface_amplitude
 from inverse.response.sums import weight_rows, weighted_sum
 
 __all__ = ["HeatField", "heat_field"]
@@ -117,7 +117,7 @@ def heat_field(
     beat = [
         b / (c * s + k * f.x**2) for (_, b), c, k, f in zip(share, capacity, kappa, profiles, strict=True)
     ]
-    decay = [np.exp(-qj * m.thickness) for qj, m in zip(q, layers(media), strict=False)]
+    decay = [fall(qj, m.thickness) for qj, m in zip(q, layers(media), strict=False)]
     ends = [_ends(f, k, a, b) for f, k, a, b in zip(profiles, kappa, steep, beat, strict=True)]
     conducting = [_conducting(m, f, s, pulse) for m, f in zip(media, profiles, strict=True)]
     for j, two in enumerate(conducting):

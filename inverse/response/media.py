@@ -148,8 +148,10 @@ def sample(bound: BoundStack, values: Mapping[str, Array]) -> Sample:
     values : mapping
         Unknown name -> array of shape (sets,), public units.
     """
+    solid = {id(slots): slots for slots in bound.media if "velocity" in slots}
+    once = {key: _medium(bound, slots, values) for key, slots in solid.items()}
     return Sample(
-        media=tuple(_medium(bound, slots, values) for slots in bound.media if "velocity" in slots),
+        media=tuple(once[id(slots)] for slots in bound.media if id(slots) in once),
         compliance=tuple(_compliance(bound, slots, values) for slots in bound.interfaces),
         resistance=tuple(_resistance(bound, slots, values) for slots in bound.interfaces),
         ambient=_ambient(bound, values),

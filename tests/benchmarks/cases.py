@@ -41,7 +41,9 @@ def aluminium_on_silicon() -> inv.Stack:
 def four_layers() -> inv.Stack:
     """Al, Ti, W and SiO2 on Si, a bond under each metal."""
     layers = (film("Al", 40), bond(), film("Ti", 15), bond(), film("W", 30), bond(), film("SiO2", 60))
-    return inv.Stack(*layers, inv.Interface(boundary_conductance=100.0), inv.Substrate("Si", orientation="100"))
+    return inv.Stack(
+        *layers, inv.Interface(boundary_conductance=100.0), inv.Substrate("Si", orientation="100")
+    )
 
 
 def inversion(stack: inv.Stack, delay: np.ndarray, noise: str = "correlated", seed: int = 1) -> inv.Inversion:

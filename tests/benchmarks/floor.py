@@ -9,6 +9,7 @@ Run ``python tests/benchmarks/floor.py`` for the figures, ``--profile`` for wher
 
 import argparse
 import cProfile
+import itertools
 import pstats
 
 import cases
@@ -62,8 +63,10 @@ class Workload:
         self.spectra = np.ones((grid.block, functions, grid.s.shape[1]), dtype=complex)
 
     def blocks(self) -> list[slice]:
-        block = self.model.grid.block
-        return [slice(start, start + block) for start in range(0, len(self.z), block)]
+        """Blocks of equal size, as the likelihood's."""
+        count = -(-len(self.z) // self.model.grid.block)
+        edges = [len(self.z) * i // count for i in range(count + 1)]
+        return [slice(*pair) for pair in itertools.pairwise(edges)]
 
     def floor(self) -> None:
         grid = self.model.grid
@@ -111,7 +114,9 @@ def main() -> None:
     for name in STACKS:
         t = measure(name)
         over = t["response"] / t["floor"], t["likelihood"] / t["floor"]
-        print(f"{name:12s} {t['floor']:6.0f} {t['response']:6.0f} {t['likelihood']:6.0f}   {over[0]:.2f} {over[1]:.2f}")
+        print(
+            f"{name:12s} {t['floor']:6.0f} {t['response']:6.0f} {t['likelihood']:6.0f}   {over[0]:.2f} {over[1]:.2f}"
+        )
 
 
 if __name__ == "__main__":

@@ -6,7 +6,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from records import one
 
-from inverse.response.recursion import OPEN, Ends, ascend, descend, surface_amplitude
+from inverse.response.recursion import OPEN, Ends, ascend, descend, fall, surface_amplitude
 
 AL, SI = (
     2.700 * 6.420,
@@ -49,6 +49,14 @@ def test_stiff_spring_is_welded_and_soft_spring_is_free():
     free, through = spring(AL, SI, s, 1 / OPEN)
     assert free == pytest.approx(1.0, rel=1e-12)
     assert abs(through) < 1e-25
+
+
+@given(real=st.floats(0.0, 800.0), angle=st.floats(-1.57, 1.57), thickness=st.floats(0.1, 1e5))
+def test_the_fall_across_a_layer_is_the_exponential(real, angle, thickness):
+    q = one((real + 1j * real * np.tan(angle)) / thickness)
+    found = fall(q, one(thickness)).item()
+    # The phase is known to its own rounding.
+    assert found == pytest.approx(np.exp(-q * thickness).item(), rel=1e-15 * (4 + abs(q * thickness).item()))
 
 
 @given(
