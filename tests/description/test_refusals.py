@@ -5,6 +5,7 @@ import pytest
 from scipy import stats
 
 import inverse as inv
+from inverse.description.sample.stack_file import read_stack
 
 
 @pytest.mark.parametrize("value", [True, np.True_, "60", np.array([60.0]), 3 + 0j, stats.poisson(60)])
@@ -85,3 +86,55 @@ def test_complex_data_are_refused():
     trace = inv.make_trace(np.linspace(0, 50, 30), reflectance_change=np.linspace(0, 1, 30))
     with pytest.raises(ValueError, match="reflectance_change is complex"):
         inv.first_look(trace.assign(reflectance_change=trace["reflectance_change"] * 1j))
+
+
+GOOD = """
+[setup]
+pump = 400
+probe = 800
+pulse_rms = 0.3
+[[part]]
+layer = "Al"
+thickness = "uniform(40, 40)"
+[[part]]
+interface = "bond"
+compliance = 0.02
+boundary_conductance = 100
+[[part]]
+substrate = "Si"
+orientation = "100"
+"""
+
+
+@pytest.mark.parametrize(
+    ("right", "wrong", "said"),
+    [
+        ("probe = 800", "prob = 800", r"\[setup\] got prob\. Did you mean 'probe'\? It takes pump, probe"),
+        ("probe = 800\n", "", r"\[setup\] lacks probe"),
+        ("thickness =", "thicknes =", r"\[\[part\]\] 1 \(layer\) got thicknes\. Did you mean 'thickness'\?"),
+        ('thickness = "uniform(40, 40)"\n', "", r"\[\[part\]\] 1 \(layer\) lacks thickness"),
+        ("boundary_conductance = 100\n", "", r"\[\[part\]\] 2 \(interface\) lacks boundary_conductance"),
+        (
+            "compliance = 0.02",
+            "complience = 0.02",
+            r"2 \(interface\) got complience\. Did you mean 'compliance'\?",
+        ),
+        (
+            '"Al"',
+            '"Alu"',
+            r"\[\[part\]\] 1 \(layer\): No reference material is called 'Alu'\. Did you mean Au, Al",
+        ),
+        ('"100"', '"abc"', r"\[\[part\]\] 3 \(substrate\): 'Si' has no orientation 'abc'"),
+        ('substrate = "Si"', 'subtrate = "Si"', r"\[\[part\]\] 3 must hold .*Did you mean 'substrate'\?"),
+        ("uniform(", "unifrom(", r"is no prior; .* Did you mean 'uniform'\?"),
+        ("\n[setup]", "ambiant = 'water'\n[setup]", r"'stack.toml' got ambiant\. Did you mean 'ambient'\?"),
+        ("[[part]]", "[[parts]]", r"'stack.toml' got parts\. Did you mean 'part'\?"),
+        ("[setup]", "[[setup]]", r"must hold \[setup\] once and \[\[part\]\], in double brackets"),
+    ],
+)
+def test_a_stack_file_names_the_place_and_the_nearest_name(tmp_path, right, wrong, said):
+    path = tmp_path / "stack.toml"
+    path.write_text(GOOD.replace(right, wrong), encoding="utf-8")
+    assert wrong in path.read_text(encoding="utf-8") != GOOD
+    with pytest.raises(ValueError, match=said):
+        read_stack(path)

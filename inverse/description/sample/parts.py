@@ -13,6 +13,7 @@ from inverse.description.unknowns import checked
 
 __all__ = [
     "EMPTY",
+    "MATERIAL_FIELDS",
     "Graded",
     "Interface",
     "Layer",
@@ -317,7 +318,7 @@ def _name_of(given: str | Material) -> str:
     return given.name if isinstance(given, Material) else str(given)
 
 
-_MATERIAL_FIELDS = tuple(f.name for f in fields(Material) if f.name not in ("name", "sources", "spread"))
+MATERIAL_FIELDS = tuple(f.name for f in fields(Material) if f.name not in ("name", "sources", "spread"))
 
 
 def _fill_medium(
@@ -326,7 +327,7 @@ def _fill_medium(
     """Resolve a material with its overrides into the attributes shared by layers and the substrate."""
     base = _base(given, orientation, overrides)
     ratio = overrides.pop("density_ratio", None)
-    refuse_unknown_names(base.name, overrides, (*_MATERIAL_FIELDS, "density_ratio"))
+    refuse_unknown_names(base.name, overrides, (*MATERIAL_FIELDS, "density_ratio"))
     if ratio is not None:
         if "density" in overrides:
             raise ValueError(f"{base.name} got both density and density_ratio; give one of them.")

@@ -6,15 +6,27 @@ import ast
 import os
 import re
 import tomllib
+from dataclasses import fields
 from pathlib import Path
 from typing import Any
 
+from inverse.description.arguments import nearest, refuse_unknown_names
 from inverse.description.pumpprobe import INSTRUMENT, PumpProbe
-from inverse.description.sample.parts import Graded, Interface, Layer, Part, Repeat, Substrate
+from inverse.description.sample.parts import (
+    MATERIAL_FIELDS,
+    Graded,
+    Interface,
+    Layer,
+    Part,
+    Repeat,
+    Substrate,
+)
 from inverse.description.sample.stack import Stack
 from inverse.description.unknowns import Unknown, is_distribution
 
 __all__ = ["read_stack"]
+
+_USUAL = ("norm", "uniform", "loguniform", "lognorm", "halfcauchy", "halfnorm", "truncnorm", "gamma", "t")
 
 _CALL = re.compile(r"^\s*([a-z_]+)\s*\((.*)\)\s*$")
 
@@ -40,7 +52,8 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
     Raises
     ------
     ValueError
-        If the file does not exist, is not TOML, or holds a field or a prior that makes no sense.
+        If the file does not exist, is not TOML, or holds a name, a field or a prior that makes no sense; the message
+        tells the part and the nearest name there is.
     """
     source = Path(path)
     if not source.is_file():
@@ -49,38 +62,68 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
         content = tomllib.loads(source.read_text(encoding="utf-8"))
     except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
         raise ValueError(f"'{source.name}' is not a TOML file: {error}") from None
+    refuse_unknown_names(f"'{source.name}'", content, ("setup", "part", "ambient"))
     for key in ("setup", "part"):
         if key not in content:
             raise ValueError(
                 f"'{source.name}' has no [{key}] table; it needs [setup] and one [[part]] per part."
             )
+    for key, kind in (("setup", dict), ("part", list)):
+        if not isinstance(content[key], kind):
+            raise ValueError(
+                f"'{source.name}' must hold [setup] once and [[part]], in double brackets, per part."
+            )
     shared: dict[str, Unknown] = {}
-    parts = [_part(dict(entry), position, shared) for position, entry in enumerate(content["part"], 1)]
-    try:
-        setup = PumpProbe(
-            **{k: _value(k, v, shared) if k in INSTRUMENT else v for k, v in content["setup"].items()}
-        )
-    except TypeError as error:
-        raise ValueError(
-            f"[setup] does not fit PumpProbe (pump, probe, pulse_rms, fluence): {error}"
-        ) from None
-    return Stack(*parts, ambient=content.get("ambient", "air")), setup
+    parts = [_part(dict(entry), str(number), shared) for number, entry in enumerate(content["part"], 1)]
+    return Stack(*parts, ambient=content.get("ambient", "air")), _setup(content["setup"], shared)
+
+
+def _setup(entry: dict[str, Any], shared: dict[str, Unknown]) -> PumpProbe:
+    known = [f.name for f in fields(PumpProbe)]
+    refuse_unknown_names("[setup]", entry, known)
+    _refuse_gaps("[setup]", entry, ("pump", "probe", "pulse_rms"))
+    return PumpProbe(**{k: _value(k, v, shared) if k in INSTRUMENT else v for k, v in entry.items()})
 
 
 _KINDS = ("layer", "interface", "substrate", "graded", "repeat")
 
+_FIELDS = {
+    "layer": ("thickness", "thickness_spread", "density_ratio", *MATERIAL_FIELDS),
+    "substrate": MATERIAL_FIELDS,
+    "interface": tuple(f.name for f in fields(Interface)),
+    "graded": ("thickness", "slices", "name"),
+    "repeat": (),
+}
 
-def _part(entry: dict[str, Any], position: int, shared: dict[str, Unknown]) -> Part:
+_NEEDED = {"layer": ("thickness",), "interface": ("boundary_conductance",), "graded": ("thickness",)}
+
+
+def _part(entry: dict[str, Any], number: str, shared: dict[str, Unknown]) -> Part:
     kinds = [kind for kind in _KINDS if kind in entry]
     if len(kinds) != 1:
-        raise ValueError(f"[[part]] {position} must hold exactly one of {', '.join(_KINDS)}; it has {kinds}.")
-    name = entry.pop(kinds[0])
-    inner = [_part(dict(part), position, shared) for part in entry.pop("part", [])]
-    fields = {key: _value(key, value, shared) for key, value in entry.items()}
+        has = ", ".join(kinds) or f"none of them, but {', '.join(entry) or 'nothing'}"
+        hints = "" if kinds else "".join(nearest(key, _KINDS) for key in entry)
+        raise ValueError(
+            f"[[part]] {number} must hold exactly one of {', '.join(_KINDS)}; it has {has}.{hints}"
+        )
+    (kind,) = kinds
+    where = f"[[part]] {number} ({kind})"
+    name = entry.pop(kind)
+    inner = [_part(dict(e), f"{number}.{i}", shared) for i, e in enumerate(entry.pop("part", []), 1)]
+    refuse_unknown_names(where, entry, _FIELDS[kind])
+    _refuse_gaps(where, entry, _NEEDED.get(kind, ()))
     try:
-        return _made(kinds[0], name, inner, fields)
-    except TypeError as error:
-        raise ValueError(f"[[part]] {position} ({kinds[0]}) does not fit: {error}") from None
+        return _made(kind, name, inner, {key: _value(key, value, shared) for key, value in entry.items()})
+    except (TypeError, ValueError) as error:
+        raise ValueError(f"{where}: {error}") from None
+
+
+def _refuse_gaps(where: str, entry: dict[str, Any], needed: tuple[str, ...]) -> None:
+    missing = [name for name in needed if name not in entry]
+    if missing:
+        raise ValueError(
+            f"{where} lacks {', '.join(missing)}; give it, as a number or, where sought, a prior."
+        )
 
 
 def _made(kind: str, name: Any, inner: list[Part], fields: dict[str, Any]) -> Part:
@@ -109,8 +152,9 @@ def _prior(key: str, text: str) -> Any:
     match = _CALL.match(text)
     family = getattr(stats, match.group(1), None) if match else None
     if match is None or family is None:
+        hint = nearest(match.group(1), _USUAL) if match else ""
         raise ValueError(
-            f'{key} = "{text}" is no prior; write a scipy.stats family, such as "norm(6.42, 0.10)".'
+            f'{key} = "{text}" is no prior; write a scipy.stats family, such as "norm(6.42, 0.10)".{hint}'
         )
     try:
         call = ast.parse(f"f({match.group(2)})", mode="eval").body
