@@ -72,6 +72,75 @@ def test_the_references_own_uncertainty_is_carried():
     assert widths[1] == pytest.approx(np.hypot(widths[0], 0.05), rel=0.05)
 
 
+SCORES = stats.norm.ppf((np.arange(16) + 0.5) / 16)
+REPEATS = 0.03 * SCORES / SCORES.std(ddof=1)  # sixteen results, standard deviation 3 % exactly
+NORTH, SOUTH = 0.12, 0.02
+
+
+def hand_worked(tools, reference_uncertainty=0.0):
+    rng, results, labels = np.random.default_rng(10), {}, {}
+    for tool, bias in tools.items():
+        for k, deviation in enumerate(REPEATS):
+            results[f"{tool}{k}"] = 0.1 * np.exp(bias + deviation + 1e-4 * rng.standard_normal(200))
+            labels[f"{tool}{k}"] = {"tool": tool}
+    return reference_wafer(
+        results,
+        quantity=COMPLIANCE,
+        reference=0.1,
+        labels=labels,
+        prior=WIDE,
+        seed=1,
+        reference_uncertainty=reference_uncertainty,
+    )
+
+
+def half_width(interval, log=False):
+    low, high = (np.log(interval.low), np.log(interval.high)) if log else (interval.low, interval.high)
+    return (high - low) / 2
+
+
+def test_a_bias_worked_by_hand():
+    """One tool, sixteen results 12 % high on average: repeatability 3 %, u(mean) = 3 % / sqrt(16) = 0.75 %.
+
+    JCGM 100 (from memory): 4.2.3 for the mean, G.3 for Student's t of 15 degrees, 2.131 x 0.75 % = 1.60 %. With a
+    reference known to 2 %, 5.1.2 adds in squares: sqrt(1.60^2 + (1.96 x 2)^2) % = 4.23 %.
+    """
+    sharp, blunt = hand_worked({"north": NORTH}), hand_worked({"north": NORTH}, 0.002)
+    for found, expected in ((sharp, 0.0160), (blunt, 0.0423)):
+        assert found.bias.median == pytest.approx(NORTH, abs=0.001)
+        assert half_width(found.bias) == pytest.approx(expected, rel=0.06)
+        assert found.repeatability.median == pytest.approx(0.03, rel=0.05)
+
+
+def test_what_a_comparison_carries_worked_by_hand():
+    """Split A on north, B on south, each bias known to 0.75 %, the reference, which both share, to 5 %.
+
+    The ratio gains the variances of two biases, the reference's cancels (JCGM 100, 5.2, correlated inputs; from
+    memory); a centre gains both. With 15 degrees and a pooled scatter of 30 the bias' variance is 0.75^2 x 30 / 28.
+    """
+    rng = np.random.default_rng(11)
+    given = splits_on(rng, lambda s, w: "north" if s == "A" else "south", {"north": NORTH, "south": SOUTH})
+    plain = compare_splits(**given)
+    carried = compare_splits(**given, reference=hand_worked({"north": NORTH, "south": SOUTH}, 0.005))
+    ratios = [c.pairs[0].ratio for c in (plain, carried)]
+    assert np.log(ratios[0].median / ratios[1].median) == pytest.approx(NORTH - SOUTH, abs=0.006)
+    of_bias = 0.0075**2 * 30 / 28
+    before, after = (half_width(r, log=True) for r in ratios)
+    assert after == pytest.approx(np.sqrt(before**2 + 1.96**2 * 2 * of_bias), rel=0.03)
+    before, after = (half_width(c.splits[0].centre, log=True) for c in (plain, carried))
+    assert after == pytest.approx(np.sqrt(before**2 + 1.96**2 * (of_bias + 0.05**2)), rel=0.03)
+
+
+def test_a_tool_without_a_name_is_the_studys_only_one():
+    """No scatter between tools enters: the centre gains the variance of one bias, 0.75^2 x 15 / 13, and no more."""
+    given = splits_on(np.random.default_rng(12), lambda s, w: "north", {"north": NORTH})
+    given["labels"] = {n: {"split": r["split"], "wafer": r["wafer"]} for n, r in given["labels"].items()}
+    plain, carried = compare_splits(**given), compare_splits(**given, reference=hand_worked({"north": NORTH}))
+    before, after = (half_width(c.splits[0].centre, log=True) for c in (plain, carried))
+    assert after == pytest.approx(np.sqrt(before**2 + 1.96**2 * 0.0075**2 * 15 / 13), rel=0.03)
+    assert "Corrected for the bias on the reference wafer (12 %)" in carried.verdict[-1]
+
+
 def splits_on(rng, tool_of, biases):
     """Two equal splits, four wafers each, two sites a wafer, seen through tools that are off."""
     results, labels = {}, {}
@@ -99,6 +168,8 @@ def test_a_known_bias_between_tools_is_taken_out():
     assert corrected.pairs[0].ratio.low < 1 < corrected.pairs[0].ratio.high
     for split in corrected.splits:
         assert split.centre.low < 0.1 < split.centre.high
+    assert "Corrected for the bias on the reference wafer (" in corrected.verdict[-1]
+    assert "% of north, -" in corrected.verdict[-1] and "% of south)" in corrected.verdict[-1]
 
 
 def test_a_bias_that_splits_share_leaves_their_ratio_alone():

@@ -119,7 +119,7 @@ def compare_splits(
     question = Question(quantity, margin, way, level, data.logarithmic, layer)
     made = _described(question, data, names, groups, posterior, priors)
     said = warnings_for(made, data, reference)
-    return replace(made, verdict=verdict(made), warnings=said)
+    return replace(made, verdict=verdict(made, reference), warnings=said)
 
 
 def _check(level: float, margin: float, better: str | None, draws: int) -> None:

@@ -93,13 +93,20 @@ class ReferenceStudy:
         return np.stack(columns, axis=1)
 
     def _draws(self, tool: str, row: NDArray[np.int_], rng: np.random.Generator) -> Array:
-        if tool in self.tools:
-            return np.asarray(self.tool_draws[row, self.tools.index(tool)])
+        place = self._place(tool)
+        if place is not None:
+            return np.asarray(self.tool_draws[row, place])
         return np.asarray(self.bias_draws[row] + self.scatter_draws[row] * rng.standard_normal(row.size))
 
     def _mean(self, tool: str) -> float:
-        draws = self.tool_draws[:, self.tools.index(tool)] if tool in self.tools else self.bias_draws
-        return float(np.median(draws))
+        place = self._place(tool)
+        return float(np.median(self.bias_draws if place is None else self.tool_draws[:, place]))
+
+    def _place(self, tool: str) -> int | None:
+        """Find a tool; one without a name is the only one that the study has."""
+        if not tool and len(self.tools) == 1:
+            return 0
+        return self.tools.index(tool) if tool in self.tools else None
 
 
 def reference_wafer(

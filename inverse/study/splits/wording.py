@@ -46,10 +46,21 @@ def stated(given: Interval, unit: str = "1", open_side: str = "") -> str:
     return f"{number(given.median)}{tail} (95 %: {number(given.low)} to {number(given.high)})"
 
 
-def verdict(made: Comparison) -> tuple[str, ...]:
-    """Say which splits differ, and which pairs are undecided, one sentence each."""
-    head = _best(made)
-    return (head, *(_pair(made, pair) for pair in made.pairs))
+def verdict(made: Comparison, reference: ReferenceStudy | None = None) -> tuple[str, ...]:
+    """Say which splits differ, which pairs are undecided, and what was corrected, one sentence each."""
+    pairs = (_pair(made, pair) for pair in made.pairs)
+    return (_best(made), *pairs, *_correction(made, reference))
+
+
+def _correction(made: Comparison, reference: ReferenceStudy | None) -> list[str]:
+    if reference is None:
+        return []
+    factor, unit = (100, "%") if made.question.logarithmic else (1, made.unit)
+    used = {site.tool for site in made.sites}
+    known = zip(reference.tools, reference.tool_bias, strict=True)
+    parts = [f"{number(factor * b.median)} {unit} of {t or 'the tool'}" for t, b in known if t in used]
+    text = ", ".join(parts) or f"{number(factor * reference.bias.median)} {unit}"
+    return [f"Corrected for the bias on the reference wafer ({text}); what is not known of it is carried."]
 
 
 def _best(made: Comparison) -> str:
