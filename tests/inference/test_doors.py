@@ -1,11 +1,15 @@
 """What the public calls of a problem refuse, and what they say."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from problems import SETUP, bonded, noisy
 from scipy import stats
 
 import inverse as inv
+from inverse.description.sample.places import bind
+from inverse.inference.problem.parameters import parameters
 
 TRUTH = {"Al.thickness": 60.0, "Al.velocity": 6.42, "Al|Si.compliance": 0.02}
 
@@ -140,3 +144,31 @@ def test_swapped_arguments_are_named(problem):
 def test_simulate_refuses(delay, options, said):
     with pytest.raises(ValueError, match=said):
         inv.simulate(bonded(), SETUP, delay, **options)
+
+
+def test_the_fingerprint_holds_the_priors_that_are_used(problem):
+    """The same arguments with other defaults, as after an update of the library, are another problem."""
+    again = inv.Inversion(bonded(), SETUP, problem.trace, **problem.arguments)
+    assert again.fingerprint() == problem.fingerprint()
+    again.posterior = replace(
+        again.posterior,
+        parameters=parameters({**again.priors, "noise.white": stats.lognorm(1.0, scale=1e-8)}),
+    )
+    assert again.fingerprint() != problem.fingerprint()
+    near = again.priors["time_zero"].args[1] * (1 + 1e-12)
+    same = inv.Inversion(bonded(), SETUP, problem.trace, **problem.arguments)
+    same.posterior = replace(
+        same.posterior, parameters=parameters({**same.priors, "time_zero": stats.norm(0, near)})
+    )
+    assert same.fingerprint() == problem.fingerprint()
+
+
+def test_the_constants_say_who_gave_them():
+    bond = inv.Interface(boundary_conductance=100.0, areal_mass=1.0)
+    parts = (inv.Layer("Al", thickness=60.0), bond, inv.Layer("Ti", thickness=5.0))
+    bound = bind(inv.Stack(*parts, inv.Substrate("Si", orientation="100")), SETUP)
+    source = {(c["place"], c["field"]): c["source"] for c in bound.constants}
+    assert source["Al|Ti", "boundary_conductance"] == source["Al|Ti", "areal_mass"] == "given by the user"
+    assert source["Al|Ti", "roughness"] == source["Al|Ti", "compliance"] == "the default"
+    assert source["Ti|Si", "boundary_conductance"] == "welded: no Interface stands there"
+    assert source["Si", "electron_phonon_coupling"] == source["Al", "attenuation_time"] == "the default"

@@ -6,7 +6,7 @@ import numpy as np
 
 from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
-from inverse.description.sample.slots import Slot, Slots, slot_of
+from inverse.description.sample.slots import DEFAULT, GIVEN, Slot, Slots, slot_of
 
 __all__ = ["CARRIERS", "carrier_slots", "initial_stress_slots"]
 
@@ -50,7 +50,7 @@ def carrier_slots(place: str, material: Material, setup: PumpProbe) -> Slots:
     }
     for field in CARRIERS:
         value = getattr(material, field)
-        source = "absent" if value is None else material.sources.get(field, "given by the user")
+        source = DEFAULT if value is None else material.sources.get(field, GIVEN)
         slots[field] = slot_of(field, _ABSENT.get(field, 0.0) if value is None else value, place, source, 0.0)
     if slots["band_gap"].value > photon:
         raise ValueError(
@@ -64,10 +64,9 @@ def initial_stress_slots(place: str, material: Material) -> Slots:
     """Return the places of a stress that the pulse sets up by itself; none where there is none."""
     if material.initial_stress is None:
         return {}
-    lifetime = np.inf if material.initial_stress_lifetime is None else material.initial_stress_lifetime
+    given = material.initial_stress_lifetime
+    lifetime, source = (np.inf, DEFAULT) if given is None else (given, GIVEN)
     return {
-        "initial_stress": slot_of("initial_stress", material.initial_stress, place, "given by the user", 0.0),
-        "initial_stress_lifetime": slot_of(
-            "initial_stress_lifetime", lifetime, place, "given by the user", 0.0
-        ),
+        "initial_stress": slot_of("initial_stress", material.initial_stress, place, GIVEN, 0.0),
+        "initial_stress_lifetime": slot_of("initial_stress_lifetime", lifetime, place, source, 0.0),
     }

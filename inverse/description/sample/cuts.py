@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from inverse.description.material.properties import Material
-from inverse.description.sample.slots import ComputedSlot, Slot, Slots, slot_of
+from inverse.description.sample.slots import DEFAULT, GIVEN, ComputedSlot, Slot, Slots, slot_of
 from inverse.elastic import StiffnessTensor, averages, constant_names, crystal_direction, rotation_to_z
 from inverse.elastic.stability import is_stable
 from inverse.elastic.symmetry import basis
@@ -57,7 +57,7 @@ def is_oblique(material: Material) -> bool:
 def constant_slots(place: str, material: Material) -> tuple[Slot, ...]:
     """Return the places ``Al.c11``, ... of the independent constants."""
     given: Mapping[str, Any] = material.stiffness or {}
-    source = material.sources.get("stiffness", "given by the user")
+    source = material.sources.get("stiffness", GIVEN)
     return tuple(slot_of(name, given[name], place, source, 0.0) for name in constant_names(given["symmetry"]))
 
 
@@ -153,7 +153,13 @@ def depth_slots(place: str, material: Material, slots: Slots) -> Slots:
             "stiffness={'symmetry': 'isotropic', 'c11': ..., 'c44': ...} in GPa."
         )
     shears = {
-        field: slot_of(field, getattr(material, field) or 0.0, place, "given by the user", 0.0)
+        field: slot_of(
+            field,
+            getattr(material, field) or 0.0,
+            place,
+            DEFAULT if getattr(material, field) is None else GIVEN,
+            0.0,
+        )
         for field in ("thermal_stress_xz", "thermal_stress_yz", "photoelastic_xz", "photoelastic_yz")
     }
     return {

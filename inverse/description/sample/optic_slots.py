@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from inverse.description.material.properties import Material
-from inverse.description.sample.slots import Slots, slot_of
+from inverse.description.sample.slots import GIVEN, Slots, slot_of
 
 __all__ = ["OPTIC", "optic_slots"]
 
@@ -22,5 +22,5 @@ def optic_slots(material: Material) -> Slots:
         if isinstance(pair, tuple):
             for part, value in zip(("real", "imag"), pair, strict=True):
                 name = f"{field}_{part}"
-                slots[name] = slot_of(name, value, material.name, "given by the user", 0.0)
+                slots[name] = slot_of(name, value, material.name, GIVEN, 0.0)
     return slots

@@ -18,8 +18,8 @@ from inverse.description.sample.carriers import carrier_slots, initial_stress_sl
 from inverse.description.sample.cuts import cut_slots, depth_slots, is_cut, is_oblique
 from inverse.description.sample.optic_slots import optic_slots
 from inverse.description.sample.parts import Graded, Interface, Layer, Medium, Slice, Substrate
-from inverse.description.sample.slots import ComputedSlot, Slot, Slots, slot_of
-from inverse.description.sample.stack import Stack
+from inverse.description.sample.slots import DEFAULT, GIVEN, ComputedSlot, Slot, Slots, slot_of
+from inverse.description.sample.stack import WELDED, Stack
 from inverse.description.unknowns import is_unknown
 
 __all__ = ["BoundStack", "Slot", "Slots", "bind"]
@@ -40,6 +40,7 @@ _ABSENT = {
     "quality_frequency": 0.01,
 }
 _INTERFACE = ("compliance", "boundary_conductance", "roughness", "areal_mass")
+_BOND_DEFAULTS = {f.name: f.default for f in dataclasses.fields(Interface)}
 
 
 @dataclass(frozen=True)
@@ -143,7 +144,7 @@ def _is_empty(part: Medium) -> bool:
 
 
 def _field_slot(place: str, material: Material, field: str, value: Any) -> Slot:
-    source = material.sources.get(field, "given by the user")
+    source = material.sources.get(field, GIVEN)
     return slot_of(field, value, place, source, float(material.spread.get(field, 0.0)))
 
 
@@ -185,7 +186,7 @@ def _sheared(stack: Stack, media: list[Slots]) -> list[Slots]:
 
 
 def _interface_slots(place: str, part: Interface, oblique: bool) -> Slots:
-    slots = {f: slot_of(f, getattr(part, f), place, "given by the user", 0.0) for f in _INTERFACE}
+    slots = {f: slot_of(f, getattr(part, f), place, _bond_source(part, f), 0.0) for f in _INTERFACE}
     if oblique and (flaws := [f for f in ("roughness", "areal_mass") if slots[f].value != 0.0]):
         raise ValueError(
             f"{place} has {' and '.join(flaws)}, which the response of an oblique cut does not know; leave it out, or "
@@ -198,7 +199,14 @@ def _interface_slots(place: str, part: Interface, oblique: bool) -> Slots:
         raise ValueError(
             f"{place} has a tangential_compliance, but no layer is cut obliquely, so nothing shears; leave it out."
         )
-    return slots | {field: slot_of(field, part.tangential_compliance, place, "given by the user", 0.0)}
+    return slots | {field: slot_of(field, part.tangential_compliance, place, GIVEN, 0.0)}
+
+
+def _bond_source(part: Interface, field: str) -> str:
+    if part is WELDED:
+        return "welded: no Interface stands there"
+    value = getattr(part, field)
+    return DEFAULT if not is_unknown(value) and value == _BOND_DEFAULTS.get(field) else GIVEN
 
 
 def _substrate_slots(place: str, part: Medium, setup: PumpProbe) -> Slots:
@@ -210,8 +218,8 @@ def _substrate_slots(place: str, part: Medium, setup: PumpProbe) -> Slots:
 
 def _layer_slots(place: str, part: Layer, setup: PumpProbe, below: Slot | None) -> Slots:
     """Fill the places of a layer; `below` is the substrate's density."""
-    slots = {"thickness": slot_of("thickness", part.thickness, place, "given by the user", 0.0)}
-    spread = slot_of("thickness_spread", part.thickness_spread, place, "given by the user", 0.0)
+    slots = {"thickness": slot_of("thickness", part.thickness, place, GIVEN, 0.0)}
+    spread = slot_of("thickness_spread", part.thickness_spread, place, GIVEN, 0.0)
     if spread.value != 0.0:
         slots["thickness_spread"] = spread
     if part.density_ratio is None:
@@ -221,14 +229,14 @@ def _layer_slots(place: str, part: Layer, setup: PumpProbe, below: Slot | None) 
             f"{place} has density_ratio, but there is no substrate to refer it to; give density."
         )
     else:
-        slots["density_ratio"] = slot_of("density_ratio", part.density_ratio, place, "given by the user", 0.0)
+        slots["density_ratio"] = slot_of("density_ratio", part.density_ratio, place, GIVEN, 0.0)
         slots["substrate_density"] = below
     return _material_slots(place, part.material, setup, slots) | optic_slots(part.material)
 
 
 def _faces(place: str, whole: Graded, setup: PumpProbe) -> tuple[Slots, Slots]:
     """Fill the places of a graded layer's top and bottom; the top holds its thickness."""
-    thickness = {"thickness": slot_of("thickness", whole.thickness, place, "given by the user", 0.0)}
+    thickness = {"thickness": slot_of("thickness", whole.thickness, place, GIVEN, 0.0)}
     top, bottom = (
         _material_slots(name, end, setup, _density_slot(name, end))
         for name, end in ((f"{place}.top", whole.top), (f"{place}.bottom", whole.bottom))
@@ -277,7 +285,7 @@ def _material_slots(place: str, material: Material, setup: PumpProbe, slots: Slo
     for field in (*_ELECTRONS, *_LOSS):
         value = getattr(material, field)
         slots[field] = (
-            Slot(f"{place}.{field}", field, _ABSENT[field], None, "absent", 0.0)
+            Slot(f"{place}.{field}", field, _ABSENT[field], None, DEFAULT, 0.0)
             if value is None
             else _field_slot(place, material, field, value)
         )
@@ -333,7 +341,7 @@ def _index_slots(place: str, material: Material, light: str, wavelength: float) 
             f"{place} has no refractive index n; give n={{{wavelength:g}: complex}} or a table of it."
         )
     real, imag = _index_parts(material, wavelength)
-    source = material.sources.get("n", "given by the user")
+    source = material.sources.get("n", GIVEN)
     spread = material.index_spread_at(wavelength)
     suffix = f"_{wavelength:g}"
     return {

@@ -11,7 +11,12 @@ from numpy.typing import NDArray
 
 from inverse.description.unknowns import Unknown, is_unknown
 
-__all__ = ["ComputedSlot", "Slot", "Slots", "slot_of"]
+__all__ = ["DEFAULT", "GIVEN", "ComputedSlot", "Slot", "Slots", "slot_of"]
+
+GIVEN = "given by the user"
+
+DEFAULT = "the default"
+"""Source of what nobody gave: no loss, one temperature, a smooth and massless bond."""
 
 Array = NDArray[np.float64]
 

@@ -22,7 +22,7 @@ from inverse.description.sample.parts import (
 
 __all__ = ["Graded", "Interface", "Layer", "Repeat", "Slice", "Stack", "Substrate"]
 
-_WELDED = Interface(boundary_conductance=float("inf"))
+WELDED = Interface(boundary_conductance=float("inf"))
 
 
 @dataclass(frozen=True, init=False, eq=False)
@@ -149,7 +149,7 @@ def _add(media: list[_Placed], bonds: list[_Placed], medium: _Placed, bond: _Pla
     if media:
         if isinstance(media[-1][0], Substrate):
             raise ValueError("The Stack goes on below its Substrate; the Substrate must be the last part.")
-        bonds.append(bond or (_WELDED, None))
+        bonds.append(bond or (WELDED, None))
     media.append(medium)
 
 

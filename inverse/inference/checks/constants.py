@@ -10,7 +10,7 @@ import numpy as np
 
 from inverse.description.material.reference_values import DEFAULT_SPREAD
 from inverse.description.quantities import QUANTITIES, quantity
-from inverse.description.sample.places import Slot
+from inverse.description.sample.slots import DEFAULT, Slot
 from inverse.response.windows import delay_windows
 
 if TYPE_CHECKING:
@@ -109,7 +109,7 @@ def member_constants(member: Member) -> dict[str, FixedConstant]:
 
 def _all(member: Member) -> Iterator[FixedConstant]:
     for slot in member.model.bound.slots:
-        if slot.prior is None and slot.source != "absent":
+        if slot.prior is None and slot.source != DEFAULT:
             yield _of_slot(slot)
     width = member.model.pulse_rms
     yield FixedConstant(

@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.arguments import checked_seed, whole_number
+from inverse.description.unknowns import describe_prior
 from inverse.inference.mcmc.ensembles import EnsembleRun, run_ensembles
 from inverse.inference.mcmc.independence import IndependenceMove, StudentMixture, adapt
 from inverse.inference.mcmc.verdict import Targets
@@ -63,9 +64,9 @@ def sample_posterior(
     checkpoint: str | os.PathLike[str] | None = None,
     executor: Executor | None = None,
     moves: Any = None,
+    checks: bool = True,
     progress: bool | Callable[[dict[str, Any]], object] = True,
 ) -> xr.DataTree:
-    checks: bool = True,
     """Sample the posterior of a problem.
 
     Parameters
@@ -92,10 +93,10 @@ def sample_posterior(
     moves : emcee moves, optional
         By default seven steps in ten offer fresh draws from an approximation of the posterior that was fixed before
         the run, the others are differential evolution and stretch moves.
-    progress : bool or callable
-        Bar, nothing, or a function that is given the state.
     checks : bool
         Look for what speaks against the model and write it into the result as warnings; takes some seconds.
+    progress : bool or callable
+        Bar, nothing, or a function that is given the state.
 
     Returns
     -------
@@ -175,12 +176,32 @@ def _moves(mixture: StudentMixture) -> list[tuple[Any, float]]:
 
 
 def problem_hash(inversion: Inversion) -> str:
-    """Return a hash of data, model and priors, for checkpoints."""
-    digest = hashlib.sha256(json.dumps(problem_record(inversion), sort_keys=True).encode())
+    """Return a hash of data, model and priors, for checkpoints.
+
+    Beside what was given go in what the defaults made of it: priors, constants and the widths of the coefficients, to
+    nine digits, as a fit of time zero on another machine may differ in the last ones.
+    """
+    models = [member.model for member in inversion.posterior.members]
+    used = {
+        "priors": {name: describe_prior(prior) for name, prior in inversion.priors.items()},
+        "constants": [[c["place"], c["field"], c["value"]] for m in models for c in m.bound.constants],
+        "widths": [m.coefficient_widths.tolist() for m in models],
+    }
+    record = {"given": problem_record(inversion), "used": _rounded(used)}
+    digest = hashlib.sha256(json.dumps(record, sort_keys=True).encode())
     for member in inversion.posterior.members:
         for array in (member.model.delay, *(c.data for c in member.model.channels)):
             digest.update(np.ascontiguousarray(array).tobytes())
     return digest.hexdigest()
+
+
+def _rounded(value: Any) -> Any:
+    """Round every number in plain data to nine digits."""
+    if isinstance(value, dict):
+        return {key: _rounded(v) for key, v in value.items()}
+    if isinstance(value, list):
+        return [_rounded(v) for v in value]
+    return float(f"{value:.8e}") if isinstance(value, float) else value
 
 
 def _positive(covariance: Array) -> Array:
