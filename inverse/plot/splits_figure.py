@@ -11,7 +11,7 @@ from inverse.plot.style import COLUMN, MILLIMETRE, new_figure, style
 from inverse.report.unit_text import axis_label
 from inverse.study.splits.comparison import Comparison, Interval, Pair
 from inverse.study.splits.data import Site
-from inverse.study.splits.wording import chance
+from inverse.study.splits.wording import chance, margin_text
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -24,6 +24,8 @@ Array = NDArray[np.float64]
 _ROW = 3.4 * MILLIMETRE
 _SITE, _WAFER, _SPLIT = "0.6", "0.35", "black"
 _MAP = "cividis"
+_DECADES = 30.0  # ratios that differ by more are drawn on a logarithmic axis
+_TITLE = 52  # letters that fit over a column
 
 
 def splits(comparison: Comparison) -> Figure:
@@ -51,7 +53,7 @@ def splits(comparison: Comparison) -> Figure:
         ax = figure.add_subplot()
         if comparison.question.logarithmic:
             ax.set_xscale("log")
-        _limits(ax, comparison, [given for _, given, _ in rows])
+        _limits(ax, comparison, [given for _, given, site in rows if site is None or not site.open_side])
         for y, (kind, given, site) in enumerate(rows):
             _row(ax, y, kind, given, site)
         ax.set_yticks(range(len(rows)), _names(comparison), fontsize=6)
@@ -85,19 +87,11 @@ def split_differences(comparison: Comparison) -> Figure:
     _check(comparison)
     pairs = [p if p.better >= 0.5 else comparison.pair(p.second, p.first) for p in comparison.pairs]
     with style():
-        figure = new_figure(COLUMN, 8 * MILLIMETRE + 22 * MILLIMETRE * len(pairs))
+        figure = new_figure(COLUMN, 8 * MILLIMETRE + 23 * MILLIMETRE * len(pairs))
         axes = np.atleast_1d(figure.subplots(len(pairs), 1))
         for ax, pair in zip(axes, pairs, strict=True):
             _difference(ax, comparison, pair)
-        if comparison.question.margin > 0:
-            axes[0].legend(loc="upper right")
-        name = comparison.question.quantity
-        text = (
-            f"ratio of {name}"
-            if comparison.question.logarithmic
-            else axis_label(f"difference of {name}", comparison.unit)
-        )
-        axes[-1].set_xlabel(text)
+        axes[-1].set_xlabel(_difference_label(comparison))
     return figure
 
 
@@ -134,8 +128,8 @@ def wafer_map(
     )
     unit = str(chosen[quantity].attrs.get("units", "1"))
     with style():
-        figure = new_figure(2 * COLUMN, 0.9 * COLUMN)
-        axes = figure.subplots(1, 2)
+        figure = new_figure(2 * COLUMN, 0.85 * COLUMN)
+        axes = figure.subplots(1, 2, sharex=True, sharey=True)
         for ax, values, text in zip(
             axes, (median, (high - low) / 2), (quantity, "half the 68 % interval"), strict=True
         ):
@@ -176,12 +170,13 @@ def _of_site(site: Site) -> Interval:
 
 
 def _limits(ax: Axes, made: Comparison, rows: list[Interval]) -> None:
-    """Show all splits and wafers, and of the sites what does not squeeze them."""
+    """Show all splits and wafers, and of the sites what does not squeeze them; leave room for arrows."""
     low, high = min(r.low for r in rows), max(r.high for r in rows)
     medians = [r.median for r in rows]
     if made.question.logarithmic:
         low, high = max(low, min(medians) / 4), min(high, max(medians) * 4)
-        ax.set_xlim(low / 1.05, high * 1.05)
+        room = [2.0 if any(side in s.open_side for s in made.sites) else 1.05 for side in "<>"]
+        ax.set_xlim(low / room[0], high * room[1])
     else:
         pad = 0.03 * (high - low)
         ax.set_xlim(low - pad, high + pad)
@@ -193,16 +188,25 @@ def _row(ax: Axes, y: int, kind: str, given: Interval, site: Site | None) -> Non
         "wafer": (_WAFER, 1.0, "o", 3.0),
         "site": (_SITE, 0.8, "|", 4.0),
     }[kind]
+    if site is not None and site.open_side:
+        _limit(ax, y, given, site.open_side, colour)
+        return
     ax.plot([given.low, given.high], [y, y], color=colour, linewidth=width, solid_capstyle="butt")
     face = "white" if kind == "wafer" else colour
     ax.plot(
         given.median, y, marker=marker, color=colour, markerfacecolor=face, markersize=size, linestyle="none"
     )
-    if site is not None and site.open_side:
-        left = "<" in site.open_side
-        end = ax.get_xlim()[0] if left else ax.get_xlim()[1]
-        arrow = {"arrowstyle": "->", "color": colour, "linewidth": 0.8, "shrinkA": 0, "shrinkB": 0}
-        ax.annotate("", (end, y), (given.median, y), arrowprops=arrow)
+
+
+def _limit(ax: Axes, y: int, given: Interval, open_side: str, colour: str) -> None:
+    """Draw an arrow from the limit of a site to where it sets none; its median is the prior's."""
+    arrow = {"arrowstyle": "->", "color": colour, "linewidth": 0.8, "shrinkA": 0, "shrinkB": 0}
+    left, right = ax.get_xlim()
+    for side in open_side:
+        end, start = (left, given.high) if side == "<" else (right, given.low)
+        start = float(np.clip(start, left, right))
+        ax.plot(start, y, marker="|", color=colour, markersize=4.0, linestyle="none")
+        ax.annotate("", (end, y), (start, y), arrowprops=arrow)
 
 
 def _plain_ticks(ax: Axes) -> None:
@@ -225,22 +229,36 @@ def _difference(ax: Axes, made: Comparison, pair: Pair) -> None:
     shown = np.exp(x) if logarithmic else x
     none, band = (1.0, np.exp([-least, least])) if logarithmic else (0.0, np.array([-least, least]))
     if least > 0:
-        ax.axvspan(*band, color="0.85", linewidth=0, label="within the margin")
+        ax.axvspan(*band, color="0.85", linewidth=0)
     ax.axvline(none, color="black", linewidth=0.8, linestyle="--")
     ax.plot(shown, density, color="black")
     given = pair.ratio or pair.difference
     inside = (shown >= given.low) & (shown <= given.high)
     ax.fill_between(shown[inside], density[inside], color="0.55", linewidth=0)
-    sign = "/" if logarithmic else "−"
-    said = "decided" if pair.decided else "undecided"
-    ax.set_title(
-        f"{pair.first} {sign} {pair.second}: P({made.question.better}) {chance(pair.better)}, {said}",
-        fontsize=7,
-        loc="left",
-    )
+    ax.set_title(_title(made, pair), fontsize=7, loc="left")
     ax.set_yticks([])
     ax.set_ylim(0, None)
-    ax.set_xlim(min(shown[0], band[0], none), max(shown[-1], band[1], none))
+    low, high = min(shown[0], band[0], none), max(shown[-1], band[1], none)
+    pad = 0.03 * (high - low)
+    ax.set_xlim(low - pad * (low == none and low > pad), high + pad * (high == none))
+    if logarithmic and high > _DECADES * low:
+        ax.set_xscale("log")
+        _plain_ticks(ax)
+
+
+def _title(made: Comparison, pair: Pair) -> str:
+    """Name the pair and its verdict, on two lines if the names are long."""
+    sign = "/" if made.question.logarithmic else "−"
+    names = f"{pair.first} {sign} {pair.second}:"
+    said = "decided" if pair.decided else "undecided"
+    odds = f"P({made.question.better}) {chance(pair.better)}, {said}"
+    return f"{names}{' ' if len(names) + len(odds) < _TITLE else chr(10)}{odds}"
+
+
+def _difference_label(made: Comparison) -> str:
+    name, question = made.question.quantity, made.question
+    text = f"ratio of {name}" if question.logarithmic else axis_label(f"difference of {name}", made.unit)
+    return f"{text}; light band: within {margin_text(made)}" if question.margin > 0 else text
 
 
 def _density(draws: Array) -> tuple[Array, Array]:
@@ -287,8 +305,10 @@ def _map(
     drawn = ax.scatter(
         x[known], y[known], c=values[known], cmap=_MAP, s=42, edgecolors="black", linewidths=0.4
     )
-    ax.scatter(x[~known], y[~known], marker="x", color="black", s=22, linewidths=0.9)
-    figure.colorbar(drawn, ax=ax, label=text, shrink=0.9)
+    ax.scatter(x[~known], y[~known], marker="x", color="black", s=22, linewidths=0.9, label="no result")
+    if not known.all():
+        ax.legend(loc="lower left", fontsize=6, frameon=False, handletextpad=0.1, borderaxespad=0.1)
+    figure.colorbar(drawn, ax=ax, label=text, shrink=0.85)
     if radius is not None:
         from matplotlib.patches import Circle
 

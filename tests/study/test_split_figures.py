@@ -50,12 +50,29 @@ def test_a_site_that_sets_a_limit_has_an_arrow(compared):
         pytest.approx(ax.get_xlim()[0]),
         [t.get_text() for t in ax.get_yticklabels()].index("B00"),
     )
+    limit = float(np.quantile(next(s.draws for s in compared.sites if s.name == "B00"), 0.975))
+    assert any(line.get_marker() == "|" and line.get_xdata() == pytest.approx(limit) for line in ax.lines)
+
+
+def test_long_names_get_a_line_of_their_own_and_wide_ratios_a_logarithmic_axis():
+    rng = np.random.default_rng(3)
+    values = PRIOR.ppf((np.arange(20_000) + 0.5) / 20_000)
+    weight = np.exp(-0.5 * (values / 0.01) ** 2)
+    names = [f"{s}{w}" for s in "AB" for w in range(2)]
+    long = {"A": "a wet clean of sixty seconds", "B": "a plasma clean with oxygen"}
+    labels = {n: {"split": long[n[0]], "wafer": n} for n in names}
+    results = {n: rng.choice(values, 400, p=weight / weight.sum()) for n in names}
+    both = compare_splits(results, quantity=COMPLIANCE, labels=labels, prior=PRIOR, seed=1)
+    (ax,) = split_differences(both).axes
+    assert ax.get_title(loc="left").count("\n") == 1
+    assert ax.get_xscale() == "log"
 
 
 def test_differences_show_margin_and_interval(compared):
     (ax,) = split_differences(compared).axes
     band = ax.patches[0].get_extents().transformed(ax.transData.inverted())
     assert (band.x0, band.x1) == (pytest.approx(1 / 1.1), pytest.approx(1.1))
+    assert ax.get_xlabel() == "ratio of Al|Si.compliance; light band: within 10 %"
     assert ax.get_title(loc="left") == "B / A: P(lower) above 0.999, decided"
     ratio = compared.pair("B", "A").ratio
     top = ax.lines[1].get_xdata()[ax.lines[1].get_ydata().argmax()]

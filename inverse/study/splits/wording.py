@@ -12,7 +12,7 @@ from inverse.study.splits.data import SiteData
 if TYPE_CHECKING:
     from inverse.study.splits.gauge import ReferenceStudy
 
-__all__ = ["chance", "number", "stated", "verdict", "warnings_for"]
+__all__ = ["chance", "margin_text", "number", "stated", "verdict", "warnings_for"]
 
 
 def number(value: float) -> str:
@@ -103,10 +103,11 @@ def _amount(made: Comparison, pair: Pair) -> str:
 def _margin(made: Comparison, pair: Pair) -> str:
     if made.question.margin == 0:
         return ""
-    return f", {chance(pair.better_by_margin)} that it is by more than {_margin_text(made)}"
+    return f", {chance(pair.better_by_margin)} that it is by more than {margin_text(made)}"
 
 
-def _margin_text(made: Comparison) -> str:
+def margin_text(made: Comparison) -> str:
+    """Write the margin with its unit."""
     return (
         f"{100 * made.question.margin:g} %"
         if made.question.logarithmic
@@ -117,7 +118,7 @@ def _margin_text(made: Comparison) -> str:
 def _practically_same(made: Comparison, pair: Pair) -> str:
     inside = 1 - pair.better_by_margin - pair.worse_by_margin
     if made.question.margin > 0 and inside > 1 - made.question.level:
-        return f" They agree within {_margin_text(made)} with probability {chance(inside)}."
+        return f" They agree within {margin_text(made)} with probability {chance(inside)}."
     return ""
 
 
