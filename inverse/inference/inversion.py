@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from inverse.description.arguments import checked_seed
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import quantity
+from inverse.description.sample.optic_slots import eliminated_numbers
 from inverse.description.sample.stack import Stack
 from inverse.inference.mcmc.sampling import problem_hash, sample_posterior
 from inverse.inference.minima.least_squares import least_squares
@@ -59,7 +60,8 @@ class Inversion:
     Notes
     -----
     The strain- and thermo-optic coefficients (one complex pair per material), the scale of the trace and a
-    baseline per channel enter linearly and are eliminated in closed form with stated Gaussian priors.
+    baseline per channel enter linearly and are eliminated in closed form with stated Gaussian priors: numbers given
+    for ``dn_dstrain`` and ``dn_dT`` are for `simulate`; only a pair with a prior in it takes part in a fit.
     """
 
     def __init__(
@@ -246,6 +248,8 @@ class Inversion:
         if checks:
             values = self.posterior.parameters.to_values(run.chain.reshape(-1, len(self.names)))
             warnings = [*self.noise_warnings(values, seed=seed), *constant_warnings(self, fit)]
+            numbers = (text for part in self.parts for text in eliminated_numbers(part.stack))
+            warnings += dict.fromkeys(numbers)
         return result_tree(self, run, seed, {"minima": minima_record(fit), "warnings": warnings})
 
     def _checked(self, values: Any) -> Array:

@@ -1,5 +1,6 @@
 """What the public calls of a problem refuse, and what they say."""
 
+import json
 from dataclasses import replace
 
 import numpy as np
@@ -8,6 +9,7 @@ from problems import SETUP, bonded, noisy
 from scipy import stats
 
 import inverse as inv
+from inverse.description.sample.optic_slots import eliminated_numbers
 from inverse.description.sample.places import bind
 from inverse.inference.problem.parameters import parameters
 
@@ -172,3 +174,24 @@ def test_the_constants_say_who_gave_them():
     assert source["Al|Ti", "roughness"] == source["Al|Ti", "compliance"] == "the default"
     assert source["Ti|Si", "boundary_conductance"] == "welded: no Interface stands there"
     assert source["Si", "electron_phonon_coupling"] == source["Al", "attenuation_time"] == "the default"
+
+
+def test_a_coefficient_given_as_a_number_is_said_to_be_eliminated():
+    film = inv.Layer("Al", thickness=60.0, dn_dstrain=1.5 + 0.2j, dn_dT=(stats.norm(1e-4, 1e-5), 0.0))
+    said = eliminated_numbers(inv.Stack(film, film, inv.Substrate("Si", orientation="100")))
+    assert said == [
+        "Al.dn_dstrain = 1.5+0.2j was given as a number and is not used in a fit, which finds the coefficients by "
+        "itself; to hold it to what you know, give its parts as priors, dn_dstrain=(stats.norm(...), stats.norm(...))."
+    ]
+
+
+def test_the_result_warns_of_coefficients_that_a_fit_eliminates(problem):
+    film = inv.Layer("Al", thickness=stats.uniform(40, 40), dn_dT=1e-4)
+    parts = (film, inv.Interface(compliance=0.02, boundary_conductance=100.0))
+    stack = inv.Stack(*parts, inv.Substrate("Si", orientation="100"))
+    own = inv.Inversion(stack, SETUP, problem.trace, time_zero=stats.norm(0, 0.05), noise="white")
+    result = own.sample_posterior(seed=1, max_steps=10, ensembles=2, progress=False)
+    assert any(
+        "Al.dn_dT = 0.0001+0j was given as a number" in w
+        for w in json.loads(result.attrs["inverse"])["warnings"]
+    )

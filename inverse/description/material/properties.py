@@ -75,7 +75,8 @@ class Material:
     expansion, bulk_modulus : float
         Linear expansion in 1/K and bulk modulus in GPa: the other way to give the thermal stress coefficient.
     dn_dstrain, dn_dT : complex
-        Change of n with strain along the depth (dimensionless) and with temperature (1/K).
+        Change of n with strain along the depth (dimensionless) and with temperature (1/K). Numbers are for
+        `simulate`: a fit finds the coefficients by itself unless a part of the pair is a prior.
     electron_heat_capacity : float
         Volumetric heat capacity of the electrons, gamma_e T_0, in J/cm3/K.
     electron_phonon_coupling : float

@@ -4,10 +4,26 @@ from __future__ import annotations
 
 from inverse.description.material.properties import Material
 from inverse.description.sample.slots import GIVEN, Slots, slot_of
+from inverse.description.sample.stack import Stack
 
-__all__ = ["OPTIC", "optic_slots"]
+__all__ = ["OPTIC", "eliminated_numbers", "optic_slots"]
 
 OPTIC = ("dn_dstrain", "dn_dT")
+
+
+def eliminated_numbers(stack: Stack) -> list[str]:
+    """Say which coefficients were given as numbers, which `simulate` uses and a fit eliminates."""
+    given = {
+        (medium.material.name, field): value
+        for medium in stack.media
+        for field in OPTIC
+        if isinstance(value := getattr(medium.material, field), complex)
+    }
+    return [
+        f"{name}.{field} = {value:.4g} was given as a number and is not used in a fit, which finds the coefficients by "
+        f"itself; to hold it to what you know, give its parts as priors, {field}=(stats.norm(...), stats.norm(...))."
+        for (name, field), value in given.items()
+    ]
 
 
 def optic_slots(material: Material) -> Slots:
