@@ -13,7 +13,7 @@ __version__ = "0.1.0"
 _HOMES = {
     "Material": "description.material.properties",
     "material": "description.material.properties",
-    "film_prior": "description.material.properties",
+    "film_prior": "description.material.film",
     "read_index": "description.material.refractive_index",
     "Layer": "description.sample.stack",
     "Substrate": "description.sample.stack",

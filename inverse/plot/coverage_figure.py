@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from inverse.plot.style import COLUMN, new_figure, style
-from inverse.study.coverage.check import Coverage
+from inverse.study.coverage.outcome import Coverage
 from inverse.study.coverage.ranks import CELLS
 
 if TYPE_CHECKING:

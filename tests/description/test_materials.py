@@ -9,7 +9,8 @@ import re
 import pytest
 from scipy import stats
 
-from inverse.description.material.properties import Material, film_prior, material
+from inverse.description.material.film import film_prior
+from inverse.description.material.properties import Material, material
 from inverse.description.material.refractive_index import IndexTable
 from inverse.description.unknowns import Unknown
 

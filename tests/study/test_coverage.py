@@ -14,8 +14,9 @@ from inverse.inference.mcmc.executor import worker_pool
 from inverse.inference.problem.parameters import parameters
 from inverse.plot.coverage_figure import coverage as picture
 from inverse.study.coverage import check as coverage
-from inverse.study.coverage.check import Coverage, check_coverage, check_known
+from inverse.study.coverage.check import check_coverage, check_known
 from inverse.study.coverage.judgement import Replicate, Sampling
+from inverse.study.coverage.outcome import Coverage
 from inverse.study.coverage.ranks import DRAWS, rank_of
 from inverse.study.coverage.replicates import draw_traces, draw_truth, quantities, with_data
 from inverse.study.coverage.store import Store

@@ -38,7 +38,7 @@ _CANDIDATES = 512
 _ROUGH = 1e-8
 # Far below what the minimum's own width means, and above the rounding of the response.
 _FINE = 1e-10
-# White noise, over the rms of the signal, that lets a coarse search see past the narrow minima. Half of the starts each:
+# White noise, over the rms of the signal, that lets a coarse search see past narrow minima. Half of the starts each:
 # the wider sees the round trip from afar, the narrower the weak echo of a nearly perfect bond.
 _COARSE = (0.02, 0.005)
 # Rough minima nearer than this, in deviations of the later and sharper search, are one.
