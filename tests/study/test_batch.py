@@ -4,6 +4,7 @@ import json
 import os
 import subprocess
 import sys
+import time
 from concurrent.futures import BrokenExecutor, Executor, Future, ThreadPoolExecutor
 from pathlib import Path
 
@@ -18,6 +19,8 @@ from inverse.inference.mcmc.executor import worker_pool
 from inverse.study.batches.batch import batch
 from inverse.study.batches.store import SiteRecord, SiteStore
 from inverse.study.splits.compare import compare_splits
+
+FROM_HERE = {**os.environ, "PYTHONPATH": str(Path(__file__).parents[2])}
 
 
 def quiet(problem, traces, **options):
@@ -198,6 +201,65 @@ def test_a_killed_process_goes_on_to_the_identical_file(tmp_path):
     assert whole.read_bytes() == killed.read_bytes()
 
 
+LARGE = """
+import os, sys
+from multiprocessing import active_children
+sys.path.insert(0, sys.argv[2])
+from test_batch import large
+from toy import toy
+from inverse.study.batches.batch import batch
+def stop(news):
+    if news["done"] == 100:
+        print(*(child.pid for child in active_children()), flush=True)
+        os.kill(os.getpid(), 9)
+if __name__ == "__main__":
+    batch(toy, large(), seed=1, workers=2, method="mcmc", path=sys.argv[1], progress=stop)
+"""
+
+
+def large():
+    """200 sites, of which three are poisoned: NaN, a wrong unit, noise without signal."""
+    return {
+        **toy_traces(200),
+        **{f"bad-{s}": t for s, t in poisoned().items() if s in ("W0-1", "W0-2", "W0-3")},
+    }
+
+
+def ends(processes, seconds=30.0):
+    end = time.monotonic() + seconds
+    while any(is_alive(pid) for pid in processes):
+        if time.monotonic() > end:
+            return False
+        time.sleep(0.1)
+    return True
+
+
+def is_alive(pid):
+    try:
+        os.kill(pid, 0)
+    except ProcessLookupError:
+        return False
+    return True
+
+
+@pytest.mark.slow
+def test_two_hundred_sites_on_two_processes_killed_half_way_go_on_to_the_identical_file(tmp_path):
+    whole, killed, script = tmp_path / "whole.nc", tmp_path / "killed.nc", tmp_path / "script.py"
+    script.write_text(LARGE)
+    command = [sys.executable, str(script), str(killed), str(Path(__file__).parent)]
+    done = subprocess.run(command, env=FROM_HERE, check=False, stdout=subprocess.PIPE, text=True)
+    assert done.returncode == -9 and not killed.exists()
+    workers = [int(pid) for pid in done.stdout.split()]
+    assert len(workers) == 2 and ends(workers), "a killed batch leaves no worker behind"
+    told = []
+    found = quiet(toy, large(), path=killed, progress=told.append)
+    assert 90 <= len(told) <= 103
+    quiet(toy, large(), path=whole)
+    assert whole.read_bytes() == killed.read_bytes()
+    bad = {s: v for s, v in zip(found["site"].values, found["status"].values, strict=True) if v != "ok"}
+    assert bad == {"bad-W0-1": "failed", "bad-W0-2": "failed", "bad-W0-3": "nothing learnt"}
+
+
 UNGUARDED = """
 import sys
 sys.path.insert(0, {tests!r})
@@ -214,7 +276,7 @@ def test_a_script_without_a_guard_is_told_so(tmp_path):
     command = [sys.executable, str(script)]
     done = subprocess.run(
         command,
-        env={**os.environ, "PYTHONPATH": str(Path(__file__).parents[2])},
+        env=FROM_HERE,
         capture_output=True,
         text=True,
         check=False,

@@ -16,7 +16,9 @@ from collections import OrderedDict
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from concurrent.futures import FIRST_COMPLETED, BrokenExecutor, Executor, Future, ProcessPoolExecutor, wait
 from contextlib import contextmanager
-from multiprocessing import current_process, get_context
+from multiprocessing import current_process, get_context, parent_process
+from multiprocessing.process import BaseProcess
+from threading import Thread
 from types import TracebackType
 from typing import Any
 from uuid import uuid4
@@ -195,9 +197,18 @@ def _environment(values: Mapping[str, str]) -> Iterator[None]:
                 os.environ[name] = value
 
 
-def _ignore_interrupt() -> None:
-    """Leave Ctrl-C to the main process, which then stops its workers."""
+def _start_worker() -> None:
+    """Leave Ctrl-C to the main process, which then stops its workers; end with it if it is killed."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)
+    parent = parent_process()
+    if parent is not None:
+        Thread(target=_end_with, args=(parent,), daemon=True).start()
+
+
+def _end_with(parent: BaseProcess) -> None:
+    """Wait for the process that started this one: a killed one cannot tell its workers to stop."""
+    parent.join()
+    os._exit(1)
 
 
 class WorkerPool(ProcessPoolExecutor):
@@ -222,7 +233,7 @@ class WorkerPool(ProcessPoolExecutor):
         if count < 1:
             raise ValueError(f"workers must be at least 1, not {workers!r}; leave it out for all cores")
         self._unfinished: set[Future[Any]] = set()
-        super().__init__(count, mp_context=get_context("spawn"), initializer=_ignore_interrupt)
+        super().__init__(count, mp_context=get_context("spawn"), initializer=_start_worker)
         # The first task starts all processes, and they inherit the environment of this moment.
         with _environment(dict.fromkeys(THREAD_VARIABLES, "1")):
             self._first = super().submit(os.getpid)
