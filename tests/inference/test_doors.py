@@ -11,6 +11,8 @@ from scipy import stats
 import inverse as inv
 from inverse.description.sample.optic_slots import eliminated_numbers
 from inverse.description.sample.places import bind
+from inverse.inference.checks.interlayer import interlayers
+from inverse.inference.checks.posterior_draws import PosteriorDraws
 from inverse.inference.problem.parameters import parameters
 
 TRUTH = {"Al.thickness": 60.0, "Al.velocity": 6.42, "Al|Si.compliance": 0.02}
@@ -195,3 +197,13 @@ def test_the_result_warns_of_coefficients_that_a_fit_eliminates(problem):
         "Al.dn_dT = 0.0001+0j was given as a number" in w
         for w in json.loads(result.attrs["inverse"])["warnings"]
     )
+
+
+def test_a_bond_that_stands_in_several_places_is_compared_with_no_interlayer(problem):
+    """A layer in its place would be one in every period, and one more below them."""
+    bond = inv.Interface(compliance=stats.halfcauchy(scale=0.05), boundary_conductance=100.0)
+    period = (inv.Layer("Al", thickness=20.0), bond, inv.Layer("W", thickness=10.0))
+    stack = inv.Stack(inv.Repeat(2, *period), bond, inv.Substrate("Si", orientation="100"))
+    own = inv.Inversion(stack, SETUP, problem.trace, time_zero=stats.norm(0, 0.05), noise="white")
+    assert own.names[:2] == ("Al|W.compliance", "W|Si.compliance")
+    assert interlayers(PosteriorDraws(own, medians(own)[None], False), "SiO2") == ()

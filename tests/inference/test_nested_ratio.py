@@ -129,3 +129,12 @@ def test_wrong_arguments_are_refused() -> None:
         savage_dickey(tree, "Al.velocity")
     with pytest.raises(ValueError, match="takes the result of sample_posterior, not dict"):
         savage_dickey({}, NAME)
+
+
+def test_a_prior_with_two_edges_may_be_narrowed_away_from_all_draws() -> None:
+    """uniform(0, 0.2) narrowed to a tenth ends at 0.02, below every draw around 0.1: no ratio is finite there."""
+    prior = stats.uniform(0, 0.2)
+    found = savage_dickey(result(draws(0.1, prior, 2), prior), NAME, at=0.1)
+    assert abs(np.log(found.ratio / exact(0.1, prior, at=0.1))) < 3 * found.error
+    assert found.ratios[0] == np.inf and np.isnan(found.errors[0])
+    assert np.isfinite(found.ratios[-1]) and "to inf" not in str(found)

@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.unknowns import rebuild_prior
+from inverse.description.wording import percent, plus_minus
 from inverse.inference.checks.posterior_draws import sampled_values
 from inverse.inference.mcmc.convergence import effective_sample_size
 from inverse.inference.minima.least_squares import Fit
@@ -72,8 +73,8 @@ class BasinShares:
         """Write a line per minimum, then the warnings."""
         rows = [
             f"minimum {i + 1}: {_share(m.probability, m.error)} of the draws "
-            f"(ensembles {', '.join(f'{100 * p:.3g} %' for p in m.by_ensemble)}; "
-            f"least squares {100 * m.approximate:.3g} %) at {_at(m.values)}"
+            f"(ensembles {', '.join(percent(p, 3) for p in m.by_ensemble)}; "
+            f"least squares {percent(m.approximate, 3)}) at {_at(m.values)}"
             for i, m in enumerate(self.minima)
         ]
         return "\n".join([*rows, *self.warnings])
@@ -190,7 +191,7 @@ def _disagreement(shares: Sequence[BasinShare]) -> list[str]:
         if len(s.errors) > 1 and chdtrc(len(s.errors) - 1, chi_square) < 0.01:
             low, high = s.by_ensemble.min(), s.by_ensemble.max()
             out.append(
-                f"The ensembles disagree on minimum {i + 1}: from {100 * low:.2g} % to {100 * high:.2g} % of their "
+                f"The ensembles disagree on minimum {i + 1}: from {percent(low)} to {percent(high)} of their "
                 "draws; sample longer before trusting any share."
             )
     return out
@@ -218,7 +219,7 @@ def _hidden(minima: Sequence[Mapping[str, Any]], label: NDArray[np.int_], lp: Ar
             )
     if far > 0.01:
         out.append(
-            f"{100 * far:.2g} % of the draws lie more than {FAR:.0f} deviations from every minimum: another minimum, "
+            f"{percent(far)} of the draws lie more than {FAR:.0f} deviations from every minimum: another minimum, "
             "or a posterior far from normal."
         )
     return out
@@ -226,8 +227,8 @@ def _hidden(minima: Sequence[Mapping[str, Any]], label: NDArray[np.int_], lp: Ar
 
 def _share(probability: float, error: float) -> str:
     if probability == 0:
-        return f"under {100 * 3 * error:.1g} %"
-    return f"{100 * probability:.3g} ± {100 * error:.1g} %"
+        return f"under {percent(3 * error, 1)}"
+    return f"{plus_minus(100 * probability, 100 * error)} %"
 
 
 def _at(values: Mapping[str, float]) -> str:

@@ -8,9 +8,10 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.wording import percent, plain, plus_minus
 from inverse.inference.checks.identifiability import Local, Ridge
 
-__all__ = ["Combination", "combinations_of", "percent"]
+__all__ = ["Combination", "combinations_of"]
 
 Array = NDArray[np.float64]
 
@@ -60,8 +61,8 @@ class Combination:
             width = percent(self.width)
             alone = ", ".join(f"{n} alone {percent(a)}" for n, a in zip(self.names, self.alone, strict=True))
         else:
-            width = f"{self.value:.3g} ± {self.width:.2g} {self.unit}"
-            alone = ", ".join(f"{n} alone ± {a:.2g}" for n, a in zip(self.names, self.alone, strict=True))
+            width = f"{plus_minus(self.value, self.width)} {self.unit}"
+            alone = ", ".join(f"{n} alone ± {plain(a)}" for n, a in zip(self.names, self.alone, strict=True))
         near = " near the posterior's centre" if self.kind == "local sum" else ""
         return f"Only {self.text} is measured ({width}; {alone}){near}; the split comes from {priors}."
 
@@ -174,8 +175,3 @@ def _sum(names: tuple[str, ...], factors: Array) -> str:
     for name, factor in zip(names[1:], factors[1:], strict=True):
         terms.append(f"{'-' if factor < 0 else '+'} {abs(factor):.3g} {name}")
     return " ".join(terms)
-
-
-def percent(relative: float) -> str:
-    """Write a relative width: ``0.012 %``."""
-    return f"{100 * relative:.2g} %"

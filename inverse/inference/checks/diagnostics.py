@@ -11,7 +11,8 @@ from numpy.typing import NDArray
 from scipy.special import ndtr
 
 from inverse.description.quantities import quantity
-from inverse.inference.checks.combinations import Combination, combinations_of, percent
+from inverse.description.wording import percent
+from inverse.inference.checks.combinations import Combination, combinations_of
 from inverse.inference.checks.identifiability import Local, local_covariances, ridges
 from inverse.inference.checks.interlayer import Interlayer, interlayers
 from inverse.inference.checks.posterior_draws import PosteriorDraws, posterior_draws

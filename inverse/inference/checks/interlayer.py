@@ -20,6 +20,7 @@ from numpy.typing import NDArray
 
 from inverse.description.material.properties import material
 from inverse.description.sample.stack import Interface, Layer, Stack
+from inverse.description.wording import plus_minus
 from inverse.inference.checks.posterior_draws import PosteriorDraws
 from inverse.inference.inversion import Inversion
 from inverse.inference.minima.minimise import Minimum, minimise
@@ -68,7 +69,7 @@ class Interlayer:
     @property
     def sentence(self) -> str:
         """The finding in words."""
-        size = f"{self.thickness:.2g} ± {self.sd:.1g} nm of {self.material}"
+        size = f"{plus_minus(self.thickness, self.sd)} nm of {self.material}"
         differs = f"-2 log likelihood differs by {abs(self.difference):.3g}"
         said = {
             "inseparable": f"may as well be an interlayer of {size}: the trace does not separate the two",
@@ -80,6 +81,8 @@ class Interlayer:
 
 def interlayers(draws: PosteriorDraws, name: str) -> tuple[Interlayer, ...]:
     """Compare every unknown compliance of a problem of one trace with a thin layer in its place.
+
+    A bond inside a `Repeat`, or that stands in several places, is left out: it would be as many layers.
 
     Parameters
     ----------
@@ -106,8 +109,9 @@ def interlayers(draws: PosteriorDraws, name: str) -> tuple[Interlayer, ...]:
 
 
 def _stands_once(stack: Stack, position: int) -> bool:
-    """Tell whether an interface is a part of its own, not one of a repeated group."""
-    return sum(part is stack.interfaces[position] for part in stack.parts) == 1
+    """Tell whether an interface is written once and lies in the sample once, not in a repeated group."""
+    here = stack.interfaces[position]
+    return all(sum(part is here for part in parts) == 1 for parts in (stack.parts, stack.interfaces))
 
 
 def _stiffness(name: str) -> float:

@@ -214,6 +214,11 @@ def _reweighted(chains: Array, prior: Any, effective: float) -> tuple[Array, Arr
     mean, error = [], []
     for factor in _FACTORS:
         weight = prior.dist(*shapes, loc=loc, scale=factor * scale).pdf(chains) / old
+        if not weight.any():
+            # A narrower prior with an edge, beyond which all draws lie: with it the data are next to impossible.
+            mean.append(-np.inf)
+            error.append(np.nan)
+            continue
         mean.append(np.log(weight.mean()))
         error.append(weight.std() / weight.mean() / np.sqrt(effective))
     return scale * _FACTORS, np.array(mean), np.array(error)
