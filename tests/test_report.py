@@ -95,6 +95,29 @@ def test_derived_quantity_that_is_not_monotone_inherits_nothing(made):
     assert made["Al.round_trip"].prior_width is None
 
 
+def test_a_derived_quantity_that_ends_before_its_bound_keeps_both_sides():
+    """|R| of a perfect bond between unlike media is that of their impedances, not 0."""
+    values = draws()
+    floor = 0.2 + values["Al|Si.compliance"]
+    values["Al|Si.reflection"] = floor
+    row = table(tree(values))["Al|Si.reflection"]
+    assert row.limits == () and row.intervals[1][0] > 0.2
+    values["Al|Si.reflection"] = floor - 0.2
+    assert table(tree(values))["Al|Si.reflection"].limits[0].side == "<"
+
+
+def test_the_table_says_where_constants_outweigh_an_interval():
+    """The 68 % interval of the thickness is 0.12 nm to either side."""
+    shares = {"Al.thickness": 4.7, "Al.velocity": 0.01}
+    made = table(tree(draws(), information={**INFORMATION, "constant_shares": shares}))
+    assert "constants ± 4.7 nm" in made["Al.thickness"].flags
+    assert not any("constants" in flag for flag in made["Al.velocity"].flags)
+    assert any("what is not known of them would add more than the interval" in line for line in made.header)
+    plain = table(tree(draws()))
+    assert not any("constants" in flag for row in plain.rows for flag in row.flags)
+    assert not any("what is not known of them" in line for line in plain.header)
+
+
 def test_compliance_away_from_zero_has_two_sides():
     values = {"Al|Si.compliance": 0.05 + 0.01 * np.random.default_rng(1).standard_normal((4, 1000))}
     row = table(tree(values))["Al|Si.compliance"]

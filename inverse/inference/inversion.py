@@ -242,15 +242,18 @@ class Inversion:
         Warnings tell where the residuals are not the noise assumed, and which fixed constants outweigh an interval.
         """
         from inverse.inference.checks.basins import minima_record
-        from inverse.inference.checks.budget import constant_warnings
+        from inverse.inference.checks.budget import weigh_constants
 
         warnings: list[str] = []
+        shares: dict[str, float] = {}
         if checks:
             values = self.posterior.parameters.to_values(run.chain.reshape(-1, len(self.names)))
-            warnings = [*self.noise_warnings(values, seed=seed), *constant_warnings(self, fit)]
+            heavy, shares = weigh_constants(self, fit)
+            warnings = [*self.noise_warnings(values, seed=seed), *heavy]
             numbers = (text for part in self.parts for text in eliminated_numbers(part.stack))
             warnings += dict.fromkeys(numbers)
-        return result_tree(self, run, seed, {"minima": minima_record(fit), "warnings": warnings})
+        notes = {"minima": minima_record(fit), "warnings": warnings, "constant_shares": shares}
+        return result_tree(self, run, seed, notes)
 
     def _checked(self, values: Any) -> Array:
         array = np.atleast_2d(np.asarray(values, dtype=float))

@@ -15,8 +15,13 @@ from inverse.report.unit_text import unit_text
 __all__ = ["header_lines"]
 
 _POSTERIOR_NOTE = "Intervals are central (equal tails); narrowed = prior width / posterior width."
+_CONSTANTS_NOTE = (
+    "Intervals take the constants as known: where the flags say 'constants ±', what is not known of them would add "
+    "more than the interval holds (budget says which)."
+)
 _FIT_NOTE = (
-    "Intervals are normal, from the linearised covariance; sample the posterior before you publish them."
+    "Intervals are normal, from the linearised covariance; sample the posterior before you publish them. They take the "
+    "constants as known: budget says what each would add."
 )
 
 
@@ -44,7 +49,9 @@ def header_lines(result: Any, rows: Sequence[Row]) -> tuple[str, ...]:
     if "noise" in information:
         lines.append(f"Noise model: {information['noise']['model']}")
     lines.append(_sampling_line(result, information, rows))
-    return (*lines, *(f"Warning: {text}" for text in information.get("warnings", ())), _POSTERIOR_NOTE)
+    flagged = any(flag.startswith("constants ±") for row in rows for flag in row.flags)
+    notes = (_POSTERIOR_NOTE, _CONSTANTS_NOTE) if flagged else (_POSTERIOR_NOTE,)
+    return (*lines, *(f"Warning: {text}" for text in information.get("warnings", ())), *notes)
 
 
 def _minima_line(fit: Any) -> str:

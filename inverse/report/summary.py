@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import math
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
@@ -11,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.quantities import quantity
+from inverse.description.wording import plain
 from inverse.inference.checks.prior_view import (
     PriorView,
     quantiles,
@@ -20,6 +22,7 @@ from inverse.inference.checks.prior_view import (
 )
 from inverse.inference.mcmc.convergence import bulk_ess, split_rhat
 from inverse.report.rounding import decimal_place, format_limit, format_value
+from inverse.report.unit_text import unit_text
 
 __all__ = ["MOST_RHAT", "LEAST_ESS", "Limit", "Row", "least_squares_rows", "posterior_rows"]
 
@@ -61,7 +64,7 @@ class Row:
         Width of the prior's central interval of the first mass, and that over the posterior's.
     flags : tuple of str
         ``upper limit``, ``lower limit``, ``prior edge``, ``prior only``, ``far from prior``,
-        ``not converged``, ``few effective draws``, ...
+        ``not converged``, ``few effective draws``, ``constants ± 4.7 nm``, ...
     ess, rhat : float or None
         Bulk effective sample size and split R-hat; None for least squares.
     """
@@ -136,7 +139,25 @@ def posterior_rows(tree: Any, mass: Sequence[float]) -> tuple[Row, ...]:
         attrs = dataset[name].attrs
         known = view_of_variable(attrs, np.asarray(prior[name]) if name in prior else None)
         rows[name] = _posterior_row(name, attrs, values, known, tuple(mass))
-    return tuple(_inherit_limit(row, rows.values(), draws, tuple(mass)) for row in rows.values())
+    shares = json.loads(tree.attrs.get("inverse", "{}")).get("constant_shares", {})
+    bounds = {name: (a.get("low", -math.inf), a.get("high", math.inf)) for name, a in _attrs(dataset)}
+    limited = (
+        _inherit_limit(row, rows.values(), draws, bounds[row.name], tuple(mass)) for row in rows.values()
+    )
+    return tuple(_beside_constants(row, shares.get(row.name, 0.0)) for row in limited)
+
+
+def _attrs(dataset: Any) -> list[tuple[str, dict[str, Any]]]:
+    return [(str(name), variable.attrs) for name, variable in dataset.data_vars.items()]
+
+
+def _beside_constants(row: Row, share: float) -> Row:
+    """Flag a quantity to which the constants taken as known would add more than its interval is wide."""
+    low, high = row.intervals[0]
+    if not share > (high - low) / 2:
+        return row
+    unit = "" if row.unit == "1" else f" {unit_text(row.unit)}"
+    return replace(row, flags=_merge(row.flags, [f"constants ± {plain(share)}{unit}"]))
 
 
 def least_squares_rows(fit: Any, mass: Sequence[float]) -> tuple[Row, ...]:
@@ -227,8 +248,18 @@ def _limited(row: Row, draws: Array, side: str, mass: tuple[float, ...]) -> Row:
     return replace(row, limits=limits, flags=_merge([_SIDE_FLAG[side]], row.flags))
 
 
-def _inherit_limit(row: Row, rows: Iterable[Row], draws: dict[str, Array], mass: tuple[float, ...]) -> Row:
-    """Give a derived quantity the limit of an unknown of which it is a monotone function."""
+def _inherit_limit(
+    row: Row,
+    rows: Iterable[Row],
+    draws: dict[str, Array],
+    bounds: tuple[float, float],
+    mass: tuple[float, ...],
+) -> Row:
+    """Give a derived quantity the limit of an unknown of which it is a monotone function.
+
+    Not where it ends before its own bound, as a reflection coefficient does at that of a perfect bond: a limit on one
+    side would hide the other.
+    """
     if row.role != "derived" or row.limits:
         return row
     for other in rows:
@@ -236,8 +267,11 @@ def _inherit_limit(row: Row, rows: Iterable[Row], draws: dict[str, Array], mass:
             agreement = _rank_correlation(draws[row.name].ravel(), draws[other.name].ravel())
             if abs(agreement) > _MONOTONE:
                 side = other.limits[0].side
+                side = side if agreement > 0 else _FLIPPED[side]
                 known = draws[row.name][~np.isnan(draws[row.name])]
-                return _limited(row, known, side if agreement > 0 else _FLIPPED[side], mass)
+                bound = bounds[0] if side == "<" else bounds[1]
+                if math.isinf(bound) or touches(known, bound, side):
+                    return _limited(row, known, side, mass)
     return row
 
 

@@ -119,7 +119,10 @@ def table(
     ``prior edge``, it leans on a bound of the prior that nature does not set;
     ``far from prior``, its median lies in the outer 5 % of the prior, where the prior's density is low;
     ``not converged``, its split R-hat is above 1.01 (Vehtari et al. 2021);
-    ``few effective draws``, its bulk effective sample size is under 400 (the same, from memory).
+    ``few effective draws``, its bulk effective sample size is under 400 (the same, from memory);
+    ``constants ± 4.7 nm``, what is not known of the constants taken as known would add this, more than half of the
+    first interval, which does not hold it (`budget` says which constants; those without a stated spread count with
+    this project's default).
     """
     masses = _check_mass(mass)
     if format is not None and format not in _FORMATS:

@@ -7,7 +7,7 @@ from problems import BOND, FILM, SETUP, bonded, noisy
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.checks.budget import budget, constant_warnings, linearise
+from inverse.inference.checks.budget import budget, constant_warnings, linearise, weigh_constants
 from inverse.inference.checks.constants import DEFAULT_RELATIVE_SPREAD, fixed_constants, with_constant
 from inverse.inference.minima.least_squares import refine
 from inverse.inference.minima.minimise import minimise
@@ -178,7 +178,17 @@ def held(changed, problem):
 def test_constants_that_outweigh_an_interval_are_named_with_their_size(fitted):
     texts = constant_warnings(fitted.inversion, fitted)
     assert any("Al.electron_phonon_coupling" in t and "times its standard deviation" in t for t in texts)
+    assert not any("e+0" in t.partition(" moves ")[2] for t in texts)
     assert not any("Si.conductivity" in t for t in texts)
+
+
+def test_shares_of_the_constants_are_those_of_the_budget(fitted):
+    split = budget(fitted, refit=False)
+    shares = weigh_constants(fitted.inversion, fitted, refit=False)[1]
+    assert set(shares) == set(split)
+    for name, sources in split.items():
+        parts = [u for source, u in sources.items() if source.startswith("constant ")]
+        assert shares[name] == pytest.approx(np.linalg.norm(parts))
 
 
 def test_a_heavy_constant_is_taken_from_refits_one_spread_up_and_down(fitted):

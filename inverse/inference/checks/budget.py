@@ -21,6 +21,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.quantities import quantity
+from inverse.description.wording import plain
 from inverse.inference.checks.constants import (
     FixedConstant,
     fixed_constants,
@@ -37,7 +38,7 @@ if TYPE_CHECKING:
     from inverse.inference.inversion import Inversion
     from inverse.inference.minima.least_squares import Fit
 
-__all__ = ["Linearised", "budget", "constant_warnings", "linearise"]
+__all__ = ["Linearised", "budget", "constant_warnings", "linearise", "weigh_constants"]
 
 Array = NDArray[np.float64]
 
@@ -47,6 +48,8 @@ _STEP = 1e-4
 # In units of a constant's spread; derivatives, so that a spread wider than a pulse does no harm.
 _CONSTANT_STEP = 1e-3
 _BATCH = 16
+# Unknowns that a sentence names; those that a constant moves most.
+_NAMED = 3
 
 
 @dataclass(frozen=True)
@@ -140,19 +143,39 @@ def constant_warnings(inversion: Inversion, fit: Fit, *, refit: bool = True) -> 
     Returns
     -------
     list of str
-        One sentence for each such constant, about the unknown that it moves most; empty if there is none.
+        One sentence for each such constant, about the unknowns that it moves most; empty if there is none.
+    """
+    return weigh_constants(inversion, fit, refit=refit)[0]
+
+
+def weigh_constants(
+    inversion: Inversion, fit: Fit, *, refit: bool = True
+) -> tuple[list[str], dict[str, float]]:
+    """Say which fixed constants outweigh an interval, and what all of them would add to each quantity.
+
+    Parameters
+    ----------
+    inversion, fit, refit
+        As for `constant_warnings`.
+
+    Returns
+    -------
+    warnings : list of str
+    shares : dict
+        Quantity -> root sum of squares of the constants' contributions, in its unit, as in `budget`.
     """
     linear = linearise(inversion, fit.best.z, refit=refit)
-    own = np.sqrt(linear.covariance.diagonal())
-    ratios = np.abs(linear.shifts) / own[:, None]
+    ratios = np.abs(linear.shifts) / np.sqrt(linear.covariance.diagonal())[:, None]
     sd = dict(zip(fit.names, fit.sd, strict=True))
-    return [
-        _warning(
-            inversion, constant, linear.names[worst], float(ratios[worst, k]), float(sd[linear.names[worst]])
-        )
-        for k, constant in enumerate(linear.constants)
-        if ratios[worst := int(np.argmax(ratios[:, k])), k] > 1
-    ]
+    warnings = []
+    for constant, column in zip(linear.constants, ratios.T, strict=True):
+        heavy = [i for i in np.argsort(-column) if column[i] > 1]
+        moves = [(linear.names[i], float(column[i] * sd[linear.names[i]]), float(column[i])) for i in heavy]
+        if moves:
+            warnings.append(_warning(inversion, constant, moves))
+    gradients, direct = _gradients(inversion, linear)
+    shares = {name: float(np.linalg.norm(g @ linear.shifts + direct[name])) for name, g in gradients.items()}
+    return warnings, {name: share for name, share in shares.items() if np.isfinite(share)}
 
 
 def linearise(inversion: Inversion, z: Array, *, refit: bool = True) -> Linearised:
@@ -371,12 +394,16 @@ def _split(linear: Linearised, gradient: Array, direct: Array) -> dict[str, floa
     return out | {f"constant {c.name}": abs(float(m)) for c, m in zip(linear.constants, shifts, strict=True)}
 
 
-def _warning(inversion: Inversion, constant: FixedConstant, name: str, ratio: float, sd: float) -> str:
+def _warning(inversion: Inversion, constant: FixedConstant, moves: Sequence[tuple[str, float, float]]) -> str:
     origin = "stated" if constant.stated else "assumed, as none was given"
-    unit = "" if inversion.units[name] == "1" else f" {inversion.units[name]}"
     own = "" if constant.unit == "1" else f" {constant.unit}"
+    units = {name: f" {unit}" if (unit := inversion.units[name]) != "1" else "" for name, _, _ in moves}
+    (name, size, ratio), *others = moves[:_NAMED]
+    said = [f"{name} by {plain(size)}{units[name]}, {plain(ratio)} times its standard deviation"]
+    said += [f"{n} by {plain(s)}{units[n]} ({plain(r)} times)" for n, s, r in others]
+    if len(moves) > _NAMED:
+        said.append(f"{len(moves) - _NAMED} more by more than theirs")
     return (
         f"The fixed constant {constant.name} = {constant.value:.4g}{own} (standard uncertainty "
-        f"{constant.spread:.2g}, {origin}) moves {name} by {ratio * sd:.2g}{unit}, "
-        f"{ratio:.1f} times its standard deviation; give it a prior, or say how well it is known."
+        f"{constant.spread:.2g}, {origin}) moves {', '.join(said)}; give it a prior, or say how well it is known."
     )
