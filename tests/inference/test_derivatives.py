@@ -103,7 +103,11 @@ def test_derivative_by_time_zero_is_exact(problem, columns_of):
     moved = take(
         to_delays(model.grid, -model.grid.s * found, arrival(model.grid, zero)), "reflectance_change"
     )
-    change = np.zeros_like(functions(inversion, z)[0])
-    change[: moved.shape[1]] = moved[0] * model.widths[:, None]
+    rows = functions(inversion, z)[0]
+    change = np.zeros_like(rows)
+    change[: moved.shape[1]] = moved[0] * model.coefficient_scales(values)[0, :-1, None]
+    # The prior's widths go the other way as the size of what they predict.
+    busy = np.append(~model.idle, False)
+    change[:-1] -= rows[:-1] * (rows[busy] * change[busy]).sum() / (rows[busy] ** 2).sum()
     per_z = inversion.priors["time_zero"].std()
     agrees(columns_of["time_zero"], per_z * through_the_projection(inversion, z, change))

@@ -100,7 +100,7 @@ def test_functions_times_coefficients_over_widths_are_the_trace(problem, model):
     for group in model.layout.groups:
         p, q = next(v for k, v in COEFFICIENTS.items() if group.startswith(k))
         coefficients += [p.real, p.imag, q.real, q.imag]
-    weights = np.append(coefficients, 1.0) / model.widths
+    weights = np.append(coefficients, 1.0) / model.coefficient_scales(local)[0, :-2]
     for i, channel in enumerate(model.channels):
         functions = model.functions(local)[channel.name][0]
         expected = trace[channel.name].values[model.used]

@@ -21,7 +21,15 @@ from inverse.response.pulse_train import PulseTrain, residual
 from inverse.response.spread import under_the_spot
 from inverse.response.windows import Windows, delay_windows
 
-__all__ = ["Channel", "TraceModel"]
+__all__ = [
+    "CLEAR",
+    "DISPLACEMENT_WIDTH",
+    "HEAT_WIDTH",
+    "SCALE_WIDTH",
+    "STRAIN_WIDTH",
+    "Channel",
+    "TraceModel",
+]
 
 Array = NDArray[np.float64]
 
@@ -31,8 +39,18 @@ STRAIN_WIDTH = 5.0
 HEAT_WIDTH = 5e-4
 """Prior width of real and imaginary part of dn/dT, 1/K."""
 
+DISPLACEMENT_WIDTH = 10.0
+"""Prior width of the displacement's coefficient, which is the fluence itself, over that of a fluence that gives the
+trace its size with optical coefficients as large as their widths. They may be ten times smaller, and the fluence as
+much larger: a tight width here takes a trace that the displacement has part in for one of another film."""
+
 SCALE_WIDTH = 3.0
-"""Prior width of the trace's scale over the scale that these widths predict at the prior's centre."""
+"""Prior width of the trace's scale over the scale that these widths predict. It follows the unknowns: were it held, a
+film whose interference makes every function smaller would be likelier for that alone, by as much per coefficient."""
+
+CLEAR = 0.01
+"""Below this ratio n''/n' a medium counts as transparent, and the imaginary parts of its coefficients do not join in
+that prediction: they are about zero there, while a clear film shows them larger than anything else."""
 
 
 @dataclass(frozen=True)
@@ -85,13 +103,18 @@ class TraceModel:
         For the fitted delays.
     layout : Columns
     widths : array
-        Prior widths of the coefficients, in the order of ``layout.names``.
+        Prior widths of the coefficients at the prior's centre, in the order of ``layout.names``.
     pulse_rms : float
         ps.
     earliest : float
         Earliest time zero the grid admits, ps.
     train : PulseTrain, optional
         Where the trace is a lock-in's channel.
+    size : float, optional
+        Root of the mean square that the prior's widths shall predict, wherever the unknowns are: all widths are scaled
+        to it together. Without it they stay as they are.
+    idle : bool array, optional
+        Functions that do not count in that prediction.
     """
 
     bound: BoundStack
@@ -105,6 +128,8 @@ class TraceModel:
     pulse_rms: float
     earliest: float
     train: PulseTrain | None = None
+    size: float | None = None
+    idle: NDArray[np.bool_] | None = None
 
     @property
     def coefficient_names(self) -> tuple[str, ...]:
@@ -113,8 +138,15 @@ class TraceModel:
 
     @property
     def coefficient_widths(self) -> Array:
-        """Prior widths in the order of `coefficient_names`."""
+        """Prior widths at the prior's centre in the order of `coefficient_names`."""
         return np.concatenate([self.widths, [c.baseline for c in self.channels]])
+
+    def coefficient_scales(self, values: Mapping[str, Array]) -> Array:
+        """Return the prior widths where the unknowns have these values, shape (sets, coefficients)."""
+        blocks = [self.factor(block) for block, _ in self._blocks(values)]
+        out = np.repeat(self.coefficient_widths[None], sum(map(len, blocks)), axis=0)
+        out[:, : len(self.widths)] *= np.concatenate(blocks)[:, None]
+        return out
 
     @property
     def count(self) -> int:
@@ -151,20 +183,35 @@ class TraceModel:
         dict
             Channel name -> array of shape (sets, coefficients of all channels, delays).
         """
-        grid = grid or self.grid
+        rows = self._rows(values, grid or self.grid)
+        factor = self.factor(values, rows if grid is None else None)[:, None, None]
+        out = {}
+        for i, channel in enumerate(self.channels):
+            offsets = np.zeros((len(factor), len(self.channels), rows[channel.name].shape[2]))
+            offsets[:, i] = channel.baseline
+            out[channel.name] = np.concatenate([rows[channel.name] * factor, offsets], axis=1)
+        return out
+
+    def factor(self, values: Mapping[str, Array], rows: Mapping[str, Array] | None = None) -> Array:
+        """Return what the prior widths are multiplied by where the unknowns have these values, shape (sets,)."""
+        if self.size is None:
+            return np.ones(len(next(iter(values.values()))))
+        rows = self._rows(values, self.grid) if rows is None else rows
+        busy = [f if self.idle is None else f[:, ~self.idle] for f in rows.values()]
+        squares = [np.einsum("bcn,bcn->b", f, f) / f.shape[2] for f in busy]
+        return np.asarray(self.size / np.sqrt(np.sum(squares, axis=0)))
+
+    def _rows(self, values: Mapping[str, Array], grid: TimeGrid | Windows) -> dict[str, Array]:
+        """Return per channel the basis functions times their prior widths at the prior's centre."""
         sets = len(next(iter(values.values())))
         batches = under_the_spot(self.bound, values)
         ports = dict.fromkeys(PORTS[c.name] for c in self.channels)
         seen = {port: self._mean(port, batches, values, grid, sets) for port in ports}
         scale = self.widths[:, None]
-        out = {}
-        for i, channel in enumerate(self.channels):
-            parts = seen[PORTS[channel.name]]
-            offsets = np.zeros((sets, len(self.channels), parts.shape[2]))
-            offsets[:, i] = channel.baseline
-            rows = tie(take(parts, channel.name), self.layout, self.bound, values)
-            out[channel.name] = np.concatenate([rows * scale, offsets], axis=1)
-        return out
+        return {
+            c.name: tie(take(seen[PORTS[c.name]], c.name), self.layout, self.bound, values) * scale
+            for c in self.channels
+        }
 
     def _mean(
         self,

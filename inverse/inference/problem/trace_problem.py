@@ -14,14 +14,22 @@ from inverse.description.quantities import QUANTITIES
 from inverse.description.sample.places import BoundStack, bind
 from inverse.description.sample.stack import Stack
 from inverse.description.unknowns import Unknown, checked, is_distribution, validate_prior
-from inverse.inference.problem.likelihood import HEAT_WIDTH, SCALE_WIDTH, STRAIN_WIDTH, Channel, TraceModel
+from inverse.inference.problem.likelihood import (
+    CLEAR,
+    DISPLACEMENT_WIDTH,
+    HEAT_WIDTH,
+    SCALE_WIDTH,
+    STRAIN_WIDTH,
+    Channel,
+    TraceModel,
+)
 from inverse.inference.problem.noise import Noise, noise_priors
 from inverse.inference.problem.posterior import Member
 from inverse.inference.problem.reach import refuse_a_trace_before_the_pulse, refuse_what_no_trace_can_tell
 from inverse.inference.problem.scans import relative_noise
 from inverse.inference.problem.tied import tie
-from inverse.response.basis import CHANNELS, PORTS, basis, columns, take
-from inverse.response.media import sample
+from inverse.response.basis import CHANNELS, PORTS, Columns, basis, columns, take
+from inverse.response.media import Sample, sample
 from inverse.response.pulse_train import pulse_train
 from inverse.response.windows import delay_windows
 
@@ -188,11 +196,13 @@ def _trace_model(
     ports = dict.fromkeys(PORTS[channel.name] for channel in channels)
     parts = {port: basis(batch, setup.beams, grid, zero, layout, 1, port) for port in ports}
     predicted, measured = 0.0, 0.0
+    idle = _idle(layout, batch)
+    expected = np.where(idle, 0.0, widths)[:, None]
     for channel in channels:
         rows = tie(take(parts[PORTS[channel.name]], channel.name), layout, bound, middle)[0]
-        predicted += float(((rows * widths[:, None]) ** 2).sum(axis=0).mean())
+        predicted += float(((rows * expected) ** 2).sum(axis=0).mean())
         measured += float((channel.data[used] ** 2).mean())
-    scale = SCALE_WIDTH * np.sqrt(measured / predicted)
+    size = SCALE_WIDTH * float(np.sqrt(measured))
     return TraceModel(
         bound=bound,
         beams=setup.beams,
@@ -201,14 +211,28 @@ def _trace_model(
         used=used,
         grid=grid,
         layout=layout,
-        widths=widths * scale,
+        widths=widths * (size / np.sqrt(predicted)),
         pulse_rms=setup.pulse_rms,
         earliest=early,
         train=pulse_train(setup),
+        size=size,
+        idle=idle,
     )
+
+
+def _idle(layout: Columns, batch: Sample) -> NDArray[np.bool_]:
+    """Tell the imaginary parts of the coefficients of transparent media, in the order of ``layout.names``."""
+    liquid = [batch.ambient.n_probe] * batch.ambient.is_liquid
+    index = [*liquid, *(medium.n_probe for medium in batch.media)]
+    clear = {
+        layout.groups[group]
+        for n, group in zip(index, layout.of_medium, strict=False)
+        if np.all(n.imag < CLEAR * n.real)
+    }
+    return np.array([name.endswith(".imag") and name.rsplit(".", 2)[0] in clear for name in layout.names])
 
 
 def _width(name: str) -> float:
     if name == "displacement":
-        return 1.0
+        return DISPLACEMENT_WIDTH
     return STRAIN_WIDTH if ".P." in name else HEAT_WIDTH
