@@ -216,7 +216,9 @@ def _plain_ticks(ax: Axes) -> None:
     from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 
     low, high = ax.get_xlim()
-    ax.xaxis.set_major_locator(LogLocator(subs=(1, 2, 5) if high / low < 100 else (1,)))
+    wide = high / low
+    subs = (1, 1.5, 2, 3, 4, 5, 7) if wide < 6 else (1, 2, 5) if wide < 100 else (1,)
+    ax.xaxis.set_major_locator(LogLocator(subs=subs))
     ax.xaxis.set_major_formatter(FuncFormatter(lambda value, place: f"{value:g}"))
     ax.xaxis.set_minor_formatter(NullFormatter())
 

@@ -173,12 +173,13 @@ def comparison_power(
     places = comparison.names.index(first), comparison.names.index(second)
     centres = np.median(comparison.posterior.centre, axis=0)
     centres[places[0]] = centres[places[1]] + apart
-    grid = list(product(wafers, sites, noise))
+    # Every design meets the same experiments, so that designs differ by themselves and not by luck.
+    sequences = np.random.SeedSequence(seed).spawn(experiments)
     made = []
-    for design, sequence in zip(grid, np.random.SeedSequence(seed).spawn(len(grid)), strict=True):
-        rng = np.random.default_rng(sequence)
+    for design in product(wafers, sites, noise):
         hits = [
-            _is_decided(comparison, centres, places, design, own, scatter, rng) for _ in range(experiments)
+            _is_decided(comparison, centres, places, design, own, scatter, np.random.default_rng(sequence))
+            for sequence in sequences
         ]
         power = float(np.mean(hits))
         made.append(Design(*design, power, float(np.sqrt(max(power * (1 - power), 1e-4) / experiments))))
