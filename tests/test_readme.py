@@ -6,10 +6,14 @@ import shutil
 import subprocess
 import tomllib
 from pathlib import Path
+from typing import Any
 
+import numpy as np
 import pytest
 
 import inverse
+from inverse.description.sample.places import bind
+from inverse.description.sample.stack_file import read_stack
 
 FENCED = re.compile(r"^```(\w*)\n(.*?)^```$", re.MULTILINE | re.DOTALL)
 
@@ -107,3 +111,16 @@ def test_files_named_exist(readme: str, repository: Path) -> None:
     links = re.findall(r"\]\(([^)#:]+)\)", readme)
     assert links
     assert [link for link in links if not (repository / link).exists()] == []
+
+
+def test_the_example_runs_as_printed_and_is_the_bundled_one(readme, repository, monkeypatch):
+    """From the folder of the README, up to the fit; the priors are those of the stack file, to its two digits."""
+    monkeypatch.chdir(repository)
+    (source,) = (block for block in blocks(readme, "python") if "read_trace" in block)
+    printed: dict[str, Any] = {}
+    exec(source.partition("fit = ")[0], printed)
+    bundled = bind(*read_stack(repository / "inverse" / "example" / "stack.toml")).priors
+    ours = bind(printed["stack"], printed["setup"]).priors
+    assert printed["inversion"].names[: len(ours)] == tuple(ours) == tuple(bundled)
+    for name, prior in bundled.items():
+        np.testing.assert_allclose(ours[name].ppf([0.1, 0.5, 0.9]), prior.ppf([0.1, 0.5, 0.9]), rtol=0.01)
