@@ -245,6 +245,14 @@ def test_section_tells_materials_apart_by_hatching(section_figure):
     assert len({hatches["Al"], hatches["W"], hatches["Si"]}) == 3
 
 
+def test_section_lines_are_drawn_to_their_full_width(section_figure):
+    section_figure.canvas.draw()
+    ax = section_figure.axes[0]
+    left = min(ax.transData.transform((x, 0))[0] for line in ax.lines for x in line.get_xdata())
+    widest = max(line.get_linewidth() for line in ax.lines) * section_figure.dpi / 72
+    assert left - widest / 2 > ax.bbox.x0
+
+
 def test_section_text_stays_on_the_page(section_figure):
     section_figure.canvas.draw()
     page = section_figure.bbox

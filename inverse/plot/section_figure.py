@@ -59,7 +59,8 @@ def section(stack: Any) -> Figure:
         figure = new_figure(COLUMN, (14 + 15 * len(slabs)) * MILLIMETRE, layout=None)
         ax = figure.add_axes((0.02, 0.0, 0.96, 1.0))
         ax.set_axis_off()
-        ax.set_xlim(0, 1)
+        # The outermost line is drawn on both sides of 0.
+        ax.set_xlim(-0.01, 1)
         ax.set_ylim(len(slabs) + 0.45, -0.5)
         ax.text(_WIDTH / 2, -0.2, ambient, ha="center", va="center", style="italic")
         looks = _looks([slab.name for slab in slabs])
@@ -71,7 +72,7 @@ def section(stack: Any) -> Figure:
 
 def _slabs(stack: Any) -> list[_Slab]:
     if not hasattr(stack, "written"):
-        raise ValueError(f"plot.section got {stack!r}, which has no parts; give a Stack.")
+        raise ValueError(f"plot.section got a {type(stack).__name__}, which has no parts; give a Stack.")
     slabs: list[_Slab] = []
     for part, name, count in stack.written():
         if isinstance(part, Interface):

@@ -1,11 +1,12 @@
 import io
+from dataclasses import replace
 
 import pytest
 
 from inverse.inference.mcmc import progress
 from inverse.inference.mcmc.progress import Bar, Lines, Progress, Silent, reporter
 
-NEWS = Progress(200, 1000, 312.4, 1000, 1.0234, 1.01)
+NEWS = Progress(200, 1000, 312.4, 1000, 1.0234, 1.01, 200)
 
 
 def test_plain_lines_where_stderr_is_no_terminal(capsys, monkeypatch):
@@ -26,6 +27,11 @@ def test_lines_come_seldom_but_the_last_one_always(capsys):
     assert capsys.readouterr().err == ""
     display.close()
     assert capsys.readouterr().err.count("\n") == 1
+
+
+def test_numbers_of_an_earlier_step_say_so():
+    assert replace(NEWS, steps=240).numbers() == "ESS 312 of 1000, R-hat 1.023 (target 1.01), at step 200"
+    assert replace(NEWS, checked_at=0).numbers() == "not yet judged (target ESS 1000, R-hat 1.01)"
 
 
 class Terminal(io.StringIO):

@@ -161,7 +161,8 @@ class Sampling:
         self.shown = (ess, rhat)
         targets = self.targets
         steps = self.snapshot.history.steps
-        self.display.show(Progress(steps, targets.max_steps, ess, targets.ess, rhat, targets.rhat))
+        numbers = (ess, targets.ess, rhat, targets.rhat)
+        self.display.show(Progress(steps, targets.max_steps, *numbers, self.checked_at))
 
 
 def first_snapshot(states: tuple[EnsembleState, ...], budget: int) -> Snapshot:

@@ -26,6 +26,8 @@ class Progress:
         target), and the target.
     largest_rhat, target_rhat : float
         Largest R-hat of any name (NaN before the first check), and the target.
+    checked_at : int
+        Steps at which the two were computed, 0 before the first check.
     """
 
     steps: int
@@ -34,12 +36,16 @@ class Progress:
     target_ess: float
     largest_rhat: float
     target_rhat: float
+    checked_at: int
 
     def numbers(self) -> str:
-        """Say the smallest effective sample size and the largest R-hat beside their targets."""
+        """Say the smallest effective sample size and the largest R-hat beside their targets, and when they were so."""
+        if not self.checked_at:
+            return f"not yet judged (target ESS {self.target_ess:.0f}, R-hat {self.target_rhat:g})"
+        when = f", at step {self.checked_at}" if self.checked_at < self.steps else ""
         return (
             f"ESS {self.least_ess:.0f} of {self.target_ess:.0f}, R-hat {self.largest_rhat:.3f} (target "
-            f"{self.target_rhat:g})"
+            f"{self.target_rhat:g}){when}"
         )
 
 
