@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -17,6 +18,7 @@ __all__ = [
     "is_unknown",
     "prior_text",
     "rebuild_prior",
+    "shown",
     "validate_prior",
 ]
 
@@ -59,6 +61,10 @@ class Unknown:
                 "scipy.stats distribution, such as stats.norm(6.42, 0.10)."
             )
 
+    def __repr__(self) -> str:
+        """Write name and prior."""
+        return f"Unknown({self.name!r}, {prior_text(self.prior)})"
+
 
 def is_distribution(value: object) -> bool:
     """Tell whether `value` is a frozen continuous scipy.stats distribution."""
@@ -74,9 +80,24 @@ _PROBABILITIES = (0.01, 0.5, 0.99)
 
 
 def prior_text(prior: Any) -> str:
-    """Write a frozen distribution as it was called: ``norm(60, 1)``."""
-    keywords = (f"{name}={value}" for name, value in prior.kwds.items())
-    return f"{prior.dist.name}({', '.join([*map(str, prior.args), *keywords])})"
+    """Write a frozen distribution as it was called, to six digits: ``norm(60, 1)``."""
+    keywords = (f"{name}={_six(value)}" for name, value in prior.kwds.items())
+    return f"{prior.dist.name}({', '.join([*map(_six, prior.args), *keywords])})"
+
+
+def _six(value: Any) -> str:
+    return f"{value:.6g}" if isinstance(value, int | float | np.number) else str(value)
+
+
+def shown(value: Any) -> str:
+    """Write what may stand in a field: a prior as it was called, a table by its range, the rest as it is."""
+    if is_distribution(value):
+        return prior_text(value)
+    if isinstance(value, tuple):
+        return f"({', '.join(map(shown, value))})"
+    if isinstance(value, Mapping):
+        return f"{{{', '.join(f'{_six(key)}: {shown(v)}' for key, v in value.items())}}}"
+    return f"{value:.6g}" if isinstance(value, float) else repr(value)
 
 
 def validate_prior(name: str, prior: Any, where: str = "") -> None:

@@ -41,6 +41,9 @@ def plus_minus(value: float, spread: float) -> str:
     if not (math.isfinite(spread) and spread > 0):
         return f"{value:.4g} ± {spread:g}"
     place = math.floor(math.log10(float(f"{spread:.1e}"))) - 1
-    if not 1e-4 <= max(abs(value), spread) < 1e6:
-        return f"{value:.3g} ± {spread:.2g}"
+    size = max(abs(value), spread)
+    if not 1e-4 <= size < 1e6:
+        power = math.floor(math.log10(size))
+        digits = max(0, power - place)
+        return f"({value / 10.0**power:.{digits}f} ± {spread / 10.0**power:.{digits}f})e{power}"
     return f"{round(value, -place):.{max(0, -place)}f} ± {round(spread, -place):.{max(0, -place)}f}"

@@ -13,6 +13,7 @@ from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import quantity
 from inverse.description.sample.optic_slots import eliminated_numbers
 from inverse.description.sample.stack import Stack
+from inverse.description.unknowns import prior_text
 from inverse.inference.mcmc.sampling import problem_hash, sample_posterior
 from inverse.inference.minima.least_squares import least_squares
 from inverse.inference.problem.parameters import parameters
@@ -126,6 +127,15 @@ class Inversion:
             np.array([q.low for q in limits]),
             np.array([q.high for q in limits]),
         )
+
+    def __repr__(self) -> str:
+        """Say what is explained by what, and the priors."""
+        noise = len(self.noise_names)
+        head = f"Inversion of {' and '.join(map(_described, self.parts))}: {len(self.names)} unknowns, {noise} of noise"
+        width = max(map(len, self.names))
+        units = {name: "" if unit == "1" else f" {unit}" for name, unit in self.units.items()}
+        rows = (f"  {name:{width}}  {prior_text(p)}{units[name]}" for name, p in self.priors.items())
+        return "\n".join([head, *rows])
 
     @property
     def names(self) -> tuple[str, ...]:
@@ -278,6 +288,11 @@ class Inversion:
                 f"to {high:g} {self.units[name]}. Give values inside, or a wider prior."
             )
         return array
+
+
+def _described(part: Inversion) -> str:
+    channels = " and ".join(channel.name for channel in part.posterior.members[0].model.channels)
+    return f"{part.stack}, {part.trace.sizes['delay']} delays of {channels}"
 
 
 def _join(

@@ -1,6 +1,7 @@
 """What the public calls of a problem refuse, and what they say."""
 
 import json
+import re
 from dataclasses import replace
 
 import numpy as np
@@ -207,3 +208,22 @@ def test_a_bond_that_stands_in_several_places_is_compared_with_no_interlayer(pro
     own = inv.Inversion(stack, SETUP, problem.trace, time_zero=stats.norm(0, 0.05), noise="white")
     assert own.names[:2] == ("Al|W.compliance", "W|Si.compliance")
     assert interlayers(PosteriorDraws(own, medians(own)[None], False), "SiO2") == ()
+
+
+def test_a_problem_shows_its_unknowns_and_their_priors(problem):
+    lines = repr(problem).splitlines()
+    assert lines[0] == "Inversion of air / Al / Si, 130 delays of reflectance_change: 5 unknowns, 1 of noise"
+    assert lines[1].split() == ["Al.thickness", "uniform(40,", "40)", "nm"]
+    assert len(lines) == 6
+    joint = inv.Inversion.joint([problem, problem])
+    assert repr(joint).startswith(
+        "Inversion of air / Al / Si, 130 delays of reflectance_change and air / Al / Si, "
+    )
+
+
+def test_a_fit_shows_its_values_with_units(problem):
+    fit = problem.least_squares(seed=1, starts=2)
+    lines = repr(fit).splitlines()
+    assert lines[0].startswith("Fit of 5 unknowns, ")
+    assert re.fullmatch(r"  Al\.thickness +\d\d\.\d+ ± 0\.\d+ nm", lines[1])
+    assert len(repr(fit)) < 500

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import KW_ONLY, dataclass, field
+from dataclasses import KW_ONLY, dataclass, field, fields
 from typing import Any
 
 from inverse.description.material.reference_tables import Entry, find, index_table
@@ -11,7 +11,7 @@ from inverse.description.material.reference_values import DEFAULT_SPREAD, refere
 from inverse.description.material.refractive_index import IndexTable, check_index
 from inverse.description.material.stiffness_values import checked_stiffness
 from inverse.description.quantities import check
-from inverse.description.unknowns import Unknown, is_unknown, validate_prior
+from inverse.description.unknowns import Unknown, is_unknown, shown, validate_prior
 
 __all__ = ["Material", "material"]
 
@@ -176,6 +176,12 @@ class Material:
         self._set("thermal_stress_coefficient", _thermal_stress(self))
         self._set("sources", dict(self.sources))
         self._set("spread", dict(self.spread))
+
+    def __repr__(self) -> str:
+        """Write the name and the fields that hold something."""
+        held = {f.name: getattr(self, f.name) for f in fields(self) if f.repr and f.name != "name"}
+        said = (f"{name}={shown(value)}" for name, value in held.items() if value is not None)
+        return f"Material({', '.join([repr(self.name), *said])})"
 
     def _set(self, key: str, value: Any) -> None:
         object.__setattr__(self, key, value)

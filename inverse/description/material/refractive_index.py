@@ -59,6 +59,10 @@ class IndexTable:
     source: str = "given by the user"
     spread: tuple[complex, ...] = ()
 
+    def __repr__(self) -> str:
+        """Write the range."""
+        return f"IndexTable({len(self.n)} values, {self.wavelength[0]:g} to {self.wavelength[-1]:g} nm)"
+
     def __post_init__(self) -> None:
         wavelength = tuple(check("wavelength", w, "index table") for w in self.wavelength)
         if not wavelength or len(wavelength) != len(self.n) or len(self.spread) not in (0, len(self.n)):

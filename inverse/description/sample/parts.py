@@ -9,7 +9,7 @@ from typing import Any
 from inverse.description.arguments import refuse_unknown_names, whole_number
 from inverse.description.material.properties import Material, material
 from inverse.description.material.reference_tables import find
-from inverse.description.unknowns import checked
+from inverse.description.unknowns import checked, shown
 
 __all__ = [
     "EMPTY",
@@ -24,6 +24,8 @@ __all__ = [
     "Substrate",
     "unroll",
 ]
+
+_GIVEN = "given by the user"
 
 EMPTY = ("air", "vacuum")
 """What stands above or below a stack and carries neither sound nor heat."""
@@ -79,6 +81,10 @@ class Layer:
         object.__setattr__(self, "thickness_spread", thickness_spread)
         _fill_medium(self, material, orientation, overrides)
 
+    def __repr__(self) -> str:
+        """Write the material and what was given."""
+        return f"Layer({_said(self, 'thickness', 'thickness_spread', 'density_ratio')})"
+
 
 @dataclass(frozen=True, init=False, eq=False)
 class Substrate:
@@ -115,6 +121,10 @@ class Substrate:
                 "Substrate got density_ratio; densities are stated relative to it, so give 'density'."
             )
         _fill_medium(self, material, orientation, overrides)
+
+    def __repr__(self) -> str:
+        """Write the material and what was given."""
+        return f"Substrate({_said(self)})"
 
     @property
     def is_empty(self) -> bool:
@@ -156,6 +166,11 @@ class Interface:
             checked("tangential_compliance", self.tangential_compliance, "Interface")
         for name in ("compliance", "boundary_conductance", "roughness", "areal_mass"):
             checked(name, getattr(self, name), "Interface")
+
+    def __repr__(self) -> str:
+        """Write what is not the default."""
+        held = {f.name: getattr(self, f.name) for f in fields(self)}
+        return f"Interface({_fields_said({n: v for n, v in held.items() if not _is_left_out(v)})})"
 
 
 @dataclass(frozen=True, eq=False)
@@ -235,6 +250,11 @@ class Graded:
         ):
             object.__setattr__(self, field, value)
 
+    def __repr__(self) -> str:
+        """Write the names of the two faces and what was given."""
+        own = {"thickness": self.thickness, "slices": self.slices, "name": self.name}
+        return f"Graded({self.top.name!r}, {self.bottom.name!r}, {_fields_said(own)})"
+
     def cut(self) -> tuple[Slice, ...]:
         """Return the slices, top to bottom."""
         return tuple(Slice(self, (i + 0.5) / self.slices) for i in range(self.slices))
@@ -289,6 +309,10 @@ class Repeat:
         object.__setattr__(self, "count", count)
         object.__setattr__(self, "parts", tuple(parts))
 
+    def __repr__(self) -> str:
+        """Write the count and the parts of a period."""
+        return f"Repeat({', '.join([str(self.count), *map(repr, self.parts)])})"
+
 
 Part = Layer | Interface | Substrate | Graded | Repeat
 Medium = Layer | Substrate | Slice
@@ -312,6 +336,24 @@ def _between(top: Any, bottom: Any, fraction: float) -> Any:
     if not isinstance(top, complex) or not isinstance(bottom, complex):
         return None
     return (1 - fraction) * top + fraction * bottom
+
+
+def _fields_said(values: dict[str, Any]) -> str:
+    return ", ".join(f"{name}={shown(value)}" for name, value in values.items())
+
+
+def _said(part: Layer | Substrate, *own: str) -> str:
+    """Write a medium's name, its own fields and those of its material that the user gave."""
+    values = {name: getattr(part, name) for name in own}
+    given = {n: getattr(part.material, n) for n in MATERIAL_FIELDS if part.material.sources.get(n) == _GIVEN}
+    if part.material.orientation is not None:
+        given = {"orientation": part.material.orientation, **given}
+    said = {name: value for name, value in {**values, **given}.items() if not _is_left_out(value)}
+    return ", ".join(filter(None, [repr(part.material.name), _fields_said(said)]))
+
+
+def _is_left_out(value: Any) -> bool:
+    return value is None or (isinstance(value, float) and value == 0.0)
 
 
 def _name_of(given: str | Material) -> str:
@@ -364,7 +406,7 @@ def _override(base: Material, overrides: dict[str, Any]) -> Material:
                 f"{base.name} got both stiffness and velocity; the velocity follows from the constants, so give one."
             )
         overrides = {**overrides, "velocity": None}
-    sources = {**base.sources, **dict.fromkeys(overrides, "given by the user")}
+    sources = {**base.sources, **dict.fromkeys(overrides, _GIVEN)}
     spread = {k: v for k, v in base.spread.items() if k not in overrides}
     parts = {"expansion", "bulk_modulus"} & set(overrides)
     if parts and "thermal_stress_coefficient" not in overrides:

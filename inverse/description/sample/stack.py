@@ -82,6 +82,12 @@ class Stack:
         ):
             object.__setattr__(self, name, value)
 
+    def __repr__(self) -> str:
+        """Write the parts, one a line."""
+        ambient = [] if self.ambient is None else [f"ambient={self.ambient.name!r}"]
+        lines = "".join(f"    {text},\n" for text in [*map(repr, self.parts), *ambient])
+        return f"Stack(\n{lines})"
+
     def __str__(self) -> str:
         """Say the stack in one line, surface first."""
         above = "air" if self.ambient is None else self.ambient.name

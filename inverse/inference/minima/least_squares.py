@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from scipy import optimize
 
 from inverse.description.arguments import checked_seed, whole_number
+from inverse.description.wording import plus_minus
 from inverse.inference.minima.minimise import Minimum, covariance_of, jacobian, minimise
 from inverse.inference.minima.projection import Projected
 from inverse.inference.problem.parameters import Parameters
@@ -93,6 +94,16 @@ class Fit:
     names: tuple[str, ...]
     minima: tuple[Basin, ...]
     seed: int
+
+    def __repr__(self) -> str:
+        """Say how many minima there are, and the values at the best with their standard deviations."""
+        count = "1 minimum" if len(self.minima) == 1 else f"{len(self.minima)} minima, the best"
+        width = max(map(len, self.names))
+        rows = (
+            f"  {name:{width}}  {plus_minus(value, sd)}{'' if unit == '1' else f' {unit}'}"
+            for name, value, sd, unit in zip(self.names, self.values, self.sd, self.units, strict=True)
+        )
+        return "\n".join([f"Fit of {len(self.names)} unknowns, {count}:", *rows])
 
     @property
     def best(self) -> Basin:
