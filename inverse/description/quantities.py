@@ -209,6 +209,12 @@ QUANTITIES: dict[str, Quantity] = {
         Quantity("dn_dstrain_real", "1", r"\mathrm{Re}\,P", -1e4, 1e4, "real part of dn/d(strain)"),
         Quantity("dn_dstrain_imag", "1", r"\mathrm{Im}\,P", -1e4, 1e4, "imaginary part of dn/d(strain)"),
         Quantity("dn_dT_real", "1/K", r"\mathrm{Re}\,Q", -1.0, 1.0, "real part of dn/dT"),
+        Quantity(
+            "dn_dN_real", "nm3", r"\mathrm{Re}\,N", -1e4, 1e4, "real part of dn per carrier pair density"
+        ),
+        Quantity(
+            "dn_dN_imag", "nm3", r"\mathrm{Im}\,N", -1e4, 1e4, "imaginary part of dn per carrier pair density"
+        ),
         Quantity("dn_dT_imag", "1/K", r"\mathrm{Im}\,Q", -1.0, 1.0, "imaginary part of dn/dT"),
         Quantity(
             "tangential_compliance", "nm/GPa", "1/K_t", 0.0, _INF, "compliance of the bond along its plane"

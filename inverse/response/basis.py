@@ -1,9 +1,9 @@
-"""Basis functions of a trace: the trace is linear in fluence x P, fluence x Q and the fluence."""
+"""Basis functions of a trace: it is linear in fluence x P, x Q, x N where there are carriers, and in the fluence."""
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -65,19 +65,27 @@ class Columns:
     of_medium : tuple of int
         Group of each medium, top to bottom; the liquid above, if any, first.
     names : tuple of str
-        Per basis function: ``P.real``, ``P.imag``, ``Q.real``, ``Q.imag`` per group, then displacement.
+        Per basis function: ``P.real``, ``P.imag``, ``Q.real``, ``Q.imag`` per group, ``N.real``, ``N.imag`` per
+        group with carriers, then displacement.
+    pairs : mapping
+        Group with carriers -> its first function.
     """
 
     groups: tuple[str, ...]
     of_medium: tuple[int, ...]
     names: tuple[str, ...]
+    pairs: Mapping[int, int] = field(default_factory=dict)
 
 
-def columns(groups: Sequence[str]) -> Columns:
-    """Lay out the basis functions for media that carry these group keys, top to bottom."""
+def columns(groups: Sequence[str], dark: Sequence[str] = ()) -> Columns:
+    """Lay out the basis functions for media that carry these group keys, top to bottom; `dark` ones have carriers."""
     order = tuple(dict.fromkeys(groups))
-    names = tuple(f"{g}.{c}" for g in order for c in ("P.real", "P.imag", "Q.real", "Q.imag"))
-    return Columns(order, tuple(order.index(g) for g in groups), (*names, "displacement"))
+    names = [f"{g}.{c}" for g in order for c in ("P.real", "P.imag", "Q.real", "Q.imag")]
+    pairs = {}
+    for g in dict.fromkeys(dark):
+        pairs[order.index(g)] = len(names)
+        names += [f"{g}.N.real", f"{g}.N.imag"]
+    return Columns(order, tuple(order.index(g) for g in groups), (*names, "displacement"), pairs)
 
 
 @dataclass(frozen=True)
@@ -163,9 +171,9 @@ def basis(
 
     Returns
     -------
-    array, shape (sets, 4 x groups + 2, delays)
-        Per group Re and Im of d(delta r / r)/dP, Re and Im of d(delta r / r)/dQ; then Re and Im of the
-        displacement's, all for an incident fluence of 1 J/m2.
+    array, shape (sets, functions + 1, delays)
+        Per group Re and Im of d(delta r / r)/dP, Re and Im of d(delta r / r)/dQ; per group with carriers those of
+        d(delta r / r)/dN; then Re and Im of the displacement's, all for an incident fluence of 1 J/m2.
     """
     if isinstance(grid, Windows):
         return _in_two_windows(sample, beams, grid, time_zero, layout, sets, port)
@@ -197,7 +205,8 @@ def spectra(
 ) -> Complex:
     """Return the transforms of `basis`, heated in an instant at the origin, (sets, functions, frequencies)."""
     found = fields(sample, beams, grid, port=port)
-    out = np.empty((sets, 4 * len(layout.groups) + 2, grid.s.shape[1]), dtype=complex)
+    out = np.empty((sets, len(layout.names) + 1, grid.s.shape[1]), dtype=complex)
+    out[:, 4 * len(layout.groups) :] = 0
     for j, (part, group) in enumerate(zip(found.detected, layout.of_medium, strict=True)):
         rows = out[:, 4 * group : 4 * group + 4]
         if group in layout.of_medium[:j]:
@@ -205,7 +214,8 @@ def spectra(
             rows[:, 2:] += part.heat
         else:
             rows[:, :2], rows[:, 2:] = part.strain, part.heat
-    out[:, -2:] = 0
+        if part.pairs is not None and group in layout.pairs:
+            out[:, layout.pairs[group] : layout.pairs[group] + 2] += part.pairs
     for real, imag in zip(*displaced(found), strict=True):
         out[:, -2] += real
         out[:, -1] += imag

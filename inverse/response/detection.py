@@ -1,7 +1,7 @@
 """What the probe sees: first-order change of the reflection or transmission coefficient, split into basis functions.
 
-``delta c / c = sum over media of integral (P eta + Q T) w dz + sum over boundaries of step * u``, with the weights w
-and steps of `Port`; at normal incidence in reflection ``w = i k n E^2 / (n_0 r)`` and
+``delta c / c = sum over media of integral (P eta + Q T + N x pairs) w dz + sum over boundaries of step * u``, with the
+weights w and steps of `Port`; at normal incidence in reflection ``w = i k n E^2 / (n_0 r)`` and
 ``step = i k (eps_above - eps_below) E^2 / (2 n_0 r)``.
 A quantity h with complex optical factors has a real and an imaginary part in time. Their transforms are
 ``(H + H*) / 2`` and ``(H - H*) / 2i``, H* being H with every optical factor conjugated.
@@ -14,7 +14,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.response.carriers import Diffusing
+from inverse.response.carriers import Diffusing, Pairs
 from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient
@@ -33,16 +33,17 @@ _ALTERNATING = np.array([1.0, -1.0, 1.0, -1.0])
 
 @dataclass(frozen=True)
 class Detected:
-    """Transforms of d(delta r / r)/dP and d(delta r / r)/dQ of one medium.
+    """Transforms of d(delta r / r)/dP, d(delta r / r)/dQ and, with carriers, d(delta r / r)/dN of one medium.
 
     Attributes
     ----------
-    strain, heat : complex array, shape (sets, 2, frequencies)
+    strain, heat, pairs : complex array, shape (sets, 2, frequencies)
         Of the real and the imaginary part in time.
     """
 
     strain: Complex
     heat: Complex
+    pairs: Complex | None = None
 
     @property
     def strain_real(self) -> Complex:
@@ -109,7 +110,10 @@ def medium_response(
         second = overlap(probe, heat.second, heat.second.down, 0)
         strain = strain + sound.paired[:, None] * second
         temperature = temperature + heat.second_heat[:, None] * second
-    return Detected(strain, temperature)
+    if not isinstance(heat.second, Pairs):
+        return Detected(strain, temperature)
+    left = weighted_sum(light_left, (heat.second.steep, _ONE), (heat.second.beat, _ONE))
+    return Detected(strain, temperature, second + left)
 
 
 def ambient_response(

@@ -36,6 +36,9 @@ DEFAULT_STRAIN = 1.0 + 1.0j
 DEFAULT_HEAT = 1e-4 + 1e-4j
 """dn/dT in 1/K where the material gives none: the order of magnitude, nothing more."""
 
+DEFAULT_PAIRS = 0j
+"""dn per density of carrier pairs in nm3 where the material gives none."""
+
 
 def simulate(
     stack: Stack,
@@ -157,6 +160,10 @@ class _Run:
             names += [f"{owner} strain", f"{owner} heat"]
             weights += _coefficients(material)
             spectra += [part.strain_real, part.strain_imag, part.heat_real, part.heat_imag]
+            if part.pairs is not None:
+                names.append(f"{owner} carriers")
+                weights.append(_coefficient(material.dn_dN, DEFAULT_PAIRS))
+                spectra += [part.pairs[:, 0], part.pairs[:, 1]]
         for boundary, real, imag in zip(
             ("surface", *self.stack.interface_names), *displaced(found), strict=True
         ):
@@ -171,11 +178,13 @@ class _Run:
     def _earlier(self, train: PulseTrain, port: str) -> NDArray[np.complex128]:
         """Return what earlier pulses leave in the lock-in's channel, shape (1, delays)."""
         known = {m.name: m for m in _materials(self.stack)}
-        layout = columns([m.name for m in _materials(self.stack)])
+        dark = [name for name, m in known.items() if m.band_gap is not None]
+        layout = columns([m.name for m in _materials(self.stack)], dark)
         zero = np.full((1, 1), self.time_zero)
         left = residual(self.batch, self.setup.beams, self.grid.delay, train, zero, layout, 1, port)[0]
         rows = train.channel_of(left)
         weights = [c for group in layout.groups for c in _coefficients(known[group])]
+        weights += [_coefficient(known[group].dn_dN, DEFAULT_PAIRS) for group in dark]
         return np.array([*weights, 1.0])[None] @ (rows[0::2] + 1j * rows[1::2])
 
 
@@ -201,8 +210,8 @@ def _coefficients(material: Material) -> list[complex]:
 def _coefficient(given: Any, default: complex) -> complex:
     if isinstance(given, tuple):
         raise ValueError(
-            "simulate takes complex numbers for dn_dstrain and dn_dT, and one of them has a part that is unknown; give "
-            "the stack to be simulated a number there."
+            "simulate takes complex numbers for dn_dstrain and dn_dT (dn_dN too), and one of them has a part that is "
+            "unknown; give the stack to be simulated a number there."
         )
     return default if given is None else complex(given)
 
@@ -211,7 +220,10 @@ def _said(stack: Stack) -> str:
     """Say for every material which coefficients were used."""
     lines = []
     for name, material in {m.name: m for m in _materials(stack)}.items():
-        for field, default in (("dn_dstrain", DEFAULT_STRAIN), ("dn_dT", DEFAULT_HEAT)):
+        defaults = {"dn_dstrain": DEFAULT_STRAIN, "dn_dT": DEFAULT_HEAT}
+        if material.band_gap is not None:
+            defaults["dn_dN"] = DEFAULT_PAIRS
+        for field, default in defaults.items():
             value = getattr(material, field)
             origin = "default" if value is None else "given"
             lines.append(f"{name}.{field} = {default if value is None else value} ({origin})")

@@ -37,4 +37,4 @@ def three_response(
     """
     parts = [medium_response(port, medium, thickness, profile, heat, mode) for mode in sound.modes]
     strain = sum(w[..., None] * part.strain for w, part in zip(sound.seen(), parts, strict=True))
-    return Detected(np.asarray(strain), parts[0].heat)
+    return Detected(np.asarray(strain), parts[0].heat, parts[0].pairs)

@@ -61,6 +61,8 @@ PAIRS = {
     "dn_dstrain_real": ({"dn_dstrain": (stats.norm(5, 5), 3.0)}, 12.0),
     "dn_dstrain_imag": ({"dn_dstrain": (5.0, stats.norm(0, 5))}, 8.0),
     "dn_dT_real": ({"dn_dT": (stats.norm(0, 3e-4), 1e-4)}, 5e-4),
+    "dn_dN_real": ({**CARRIERS, "dn_dN": (stats.norm(0, 5), 0.0)}, 3.0),
+    "dn_dN_imag": ({**CARRIERS, "dn_dN": (0.0, stats.norm(0, 5))}, 3.0),
     "dn_dT_imag": ({"dn_dT": (1e-4, stats.norm(0, 3e-4))}, 5e-4),
 }
 CASES = {

@@ -44,6 +44,7 @@ class Medium:
     thermal_stress: float
     dn_dstrain: complex = 0j
     dn_dT: complex = 0j
+    dn_dN: complex = 0j
     electron_heat_capacity: float = 0.0
     electron_phonon_coupling: float = np.inf
     lattice_conductivity: float = 0.0

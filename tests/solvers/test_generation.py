@@ -90,6 +90,25 @@ def test_carriers_under_a_metal(dark, al):
     agree(sample, trace(sample, {1: CARRIERS}), trace(sample))
 
 
+@pytest.mark.parametrize("thickness", [60.0, np.inf])
+def test_carriers_change_the_index(dark, si, thickness):
+    # A tenth of what free carriers make: as much as everything else together, at 1 J/m2
+    seen = -0.03 + 0.02j
+    medium = replace(dark, thickness=thickness, **PAIRS)
+    below, joints = ((replace(si, velocity=6.0),), (Joint(compliance=0.02, conductance=1e-4),))
+    rest = (below, joints) if thickness < 100 else ((), ())
+    sample = Sample((replace(medium, dn_dN=seen), *rest[0]), rest[1])
+    more = {0: {**CARRIERS, "dn_dN": seen}}
+    agree(sample, trace(sample, more), trace(sample, {0: CARRIERS}))
+
+
+def test_an_index_that_pairs_do_not_change_is_the_default(dark):
+    sample = Sample((replace(dark, **PAIRS),))
+    zero, plain = trace(sample, {0: {**CARRIERS, "dn_dN": 0j}}), trace(sample, {0: CARRIERS})
+    np.testing.assert_array_equal(zero.reflectance_change, plain.reflectance_change)
+    assert "m0.dn_dN = 0j (default)" in plain.coefficients
+
+
 def test_a_vanishing_lifetime_is_plain_heating(dark):
     # Pairs that recombine where they were made, at once, leave all their energy there
     sample = Sample((dark,))
@@ -216,6 +235,7 @@ def test_the_stretch_of_pairs_is_in_the_map(dark):
     [
         ({"band_gap": 1.4}, "has a band_gap but no carrier_diffusivity"),
         ({"carrier_lifetime": 10.0}, "m0 has carrier_lifetime but no band_gap"),
+        ({"dn_dN": 1 + 0j}, "m0 has dn_dN but no band_gap"),
         (
             {"band_gap": 5.0, "carrier_diffusivity": 1.0},
             r"band_gap = 5 eV, more than a photon of 400 nm \(3\.1 eV\)",

@@ -61,11 +61,11 @@ def _boundary_weights(
     return weights
 
 
-def detector_weights(sample: Sample, mesh: Mesh, sound: Sound, probe: Beam) -> tuple[Real, Real]:
-    """Rows (Re ln r, Im ln r, Re ln t) by node displacement and by cell temperature, exact to first order."""
+def detector_weights(sample: Sample, mesh: Mesh, sound: Sound, probe: Beam) -> tuple[Real, Real, Real]:
+    """Rows (Re ln r, Im ln r, Re ln t) by node displacement, cell temperature and pair density, to first order."""
     light = optics(sample, mesh, probe, "n_probe")
-    p, q = (per_cell(sample, mesh, name) for name in ("dn_dstrain", "dn_dT"))
-    by_displacement, by_temperature = [], []
+    p, q, n = (per_cell(sample, mesh, name) for name in ("dn_dstrain", "dn_dT", "dn_dN"))
+    by_displacement, by_temperature, by_pairs = [], [], []
     for dn, dd, shifts in (
         (light.dlog_r_dn, light.dlog_r_dd, (light.ambient_shift[0], light.exit_shift[0])),
         (light.dlog_t_dn, light.dlog_t_dd, (light.ambient_shift[1], light.exit_shift[1])),
@@ -75,13 +75,16 @@ def detector_weights(sample: Sample, mesh: Mesh, sound: Sound, probe: Beam) -> t
         weights[sound.cell + 1] += dn * p / mesh.width
         by_displacement.append(weights)
         by_temperature.append(dn * q)
-    rows_u, rows_t = (np.stack([w[0].real, w[0].imag, w[1].real]) for w in (by_displacement, by_temperature))
-    return rows_u, rows_t
+        by_pairs.append(dn * n)
+    rows_u, rows_t, rows_n = (
+        np.stack([w[0].real, w[0].imag, w[1].real]) for w in (by_displacement, by_temperature, by_pairs)
+    )
+    return rows_u, rows_t, rows_n
 
 
 @dataclass(frozen=True)
 class State:
-    """The sample at one time (ps): node displacement (nm), temperature unknowns (K), and where they stand."""
+    """The sample at one time (ps): displacement (nm) of nodes, temperatures (K), and pairs (1/nm^3) of cells."""
 
     time: float
     mesh: Mesh
@@ -89,6 +92,7 @@ class State:
     heat: Heat
     displacement: Real
     temperature: Real
+    pairs: Real
 
     @property
     def depth(self) -> Real:
@@ -117,7 +121,7 @@ def states(sample: Sample, experiment: Experiment, last_delay: float, step: floa
     temperature, density = np.zeros(len(heat.capacity)), np.zeros(len(mesh.width))
     power, stress = np.zeros(len(heat.capacity)), np.zeros(len(sound.stiffness))
     motion = at_rest(sound)
-    yield State(time[0], mesh, sound, heat, motion.displacement, temperature)
+    yield State(time[0], mesh, sound, heat, motion.displacement, temperature, density)
     for i in range(steps):
         power[heat.hot] = pulse[i] * absorbed
         if carriers is not None:
@@ -132,7 +136,7 @@ def states(sample: Sample, experiment: Experiment, last_delay: float, step: floa
             stress[sound.cell] += by_pairs * pairs
             power[:] = 0.0
         motion = advance(sound, motion, stress)
-        yield State(time[i + 1], mesh, sound, heat, motion.displacement, temperature)
+        yield State(time[i + 1], mesh, sound, heat, motion.displacement, temperature, density)
 
 
 def run(sample: Sample, experiment: Experiment, last_delay: float, step: float) -> tuple[Real, Real]:
@@ -142,7 +146,8 @@ def run(sample: Sample, experiment: Experiment, last_delay: float, step: float) 
         if rows is None:
             rows = detector_weights(sample, state.mesh, state.sound, experiment.probe)
         time.append(state.time)
-        out.append(rows[0] @ state.displacement + rows[1] @ state.temperature[state.heat.lattice])
+        seen = rows[0] @ state.displacement + rows[1] @ state.temperature[state.heat.lattice]
+        out.append(seen + rows[2] @ state.pairs)
     return np.array(time), np.array(out)
 
 

@@ -43,7 +43,7 @@ _REAL = (
     "photoelastic_xz",
     "photoelastic_yz",
 )
-_COMPLEX = ("dn_dstrain", "dn_dT")
+_COMPLEX = ("dn_dstrain", "dn_dT", "dn_dN")
 
 
 @dataclass(frozen=True, eq=False)
@@ -75,6 +75,9 @@ class Material:
     dn_dstrain, dn_dT : complex
         Change of n with strain along the depth (dimensionless) and with temperature (1/K). Numbers are for
         `simulate`: a fit finds the coefficients by itself unless a part of the pair is a prior.
+    dn_dN : complex
+        Change of n per density of photo-carrier pairs in nm3 (1e-21 cm3), of a semiconductor with a band_gap;
+        `simulate` takes 0 where it is left out.
     electron_heat_capacity : float
         Volumetric heat capacity of the electrons, gamma_e T_0, in J/cm3/K.
     electron_phonon_coupling : float
@@ -140,6 +143,7 @@ class Material:
     bulk_modulus: Any = None
     dn_dstrain: Any = None
     dn_dT: Any = None
+    dn_dN: Any = None
     electron_heat_capacity: Any = None
     electron_phonon_coupling: Any = None
     electron_gruneisen: Any = None

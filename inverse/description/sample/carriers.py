@@ -34,7 +34,7 @@ def carrier_slots(place: str, material: Material, setup: PumpProbe) -> Slots:
         If the diffusivity is missing, or a photon of the pump has less energy than the gap.
     """
     if material.band_gap is None:
-        given = [field for field in CARRIERS if getattr(material, field) is not None]
+        given = [field for field in (*CARRIERS, "dn_dN") if getattr(material, field) is not None]
         if given:
             raise ValueError(f"{place} has {', '.join(given)} but no band_gap; carriers need it, in eV.")
         return {}

@@ -8,7 +8,7 @@ from inverse.description.sample.stack import Stack
 
 __all__ = ["OPTIC", "eliminated_numbers", "optic_slots"]
 
-OPTIC = ("dn_dstrain", "dn_dT")
+OPTIC = ("dn_dstrain", "dn_dT", "dn_dN")
 
 
 def eliminated_numbers(stack: Stack) -> list[str]:

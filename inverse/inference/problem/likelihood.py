@@ -25,6 +25,7 @@ __all__ = [
     "CLEAR",
     "DISPLACEMENT_WIDTH",
     "HEAT_WIDTH",
+    "PAIR_WIDTH",
     "SCALE_WIDTH",
     "STRAIN_WIDTH",
     "Channel",
@@ -38,6 +39,10 @@ STRAIN_WIDTH = 5.0
 
 HEAT_WIDTH = 5e-4
 """Prior width of real and imaginary part of dn/dT, 1/K."""
+
+PAIR_WIDTH = 5.0
+"""Prior width of real and imaginary part of dn per density of photo-carrier pairs, nm3. Free carriers of a tenth of the
+electron's mass make 0.8 nm3 at 800 nm in n = 3.7, r_e lambda^2 / (2 pi n m); filled bands make more near the gap."""
 
 DISPLACEMENT_WIDTH = 10.0
 """Prior width of the displacement's coefficient, which is the fluence itself, over that of a fluence that gives the

@@ -20,7 +20,7 @@ __all__ = ["tie"]
 
 Array = NDArray[np.float64]
 
-_LETTERS = dict(zip(OPTIC, "PQ", strict=True))
+_LETTERS = dict(zip(OPTIC, "PQN", strict=True))
 
 
 def tie(rows: Array, layout: Columns, bound: BoundStack, values: Mapping[str, Array]) -> Array:

@@ -18,6 +18,7 @@ from inverse.inference.problem.likelihood import (
     CLEAR,
     DISPLACEMENT_WIDTH,
     HEAT_WIDTH,
+    PAIR_WIDTH,
     SCALE_WIDTH,
     STRAIN_WIDTH,
     Channel,
@@ -186,7 +187,8 @@ def _trace_model(
 ) -> TraceModel:
     grid = delay_windows(delay[used], setup.pulse_rms, early)
     groups = [m for m in bound.materials] if not bound.ambient else ["ambient", *bound.materials]
-    layout = columns(groups)
+    dark = [m for m, slots in zip(bound.materials, bound.media, strict=False) if "band_gap" in slots]
+    layout = columns(groups, dark)
     middle = {
         slot.name: np.array([float(slot.prior.median())]) for slot in bound.slots if slot.prior is not None
     }
@@ -235,4 +237,4 @@ def _idle(layout: Columns, batch: Sample) -> NDArray[np.bool_]:
 def _width(name: str) -> float:
     if name == "displacement":
         return DISPLACEMENT_WIDTH
-    return STRAIN_WIDTH if ".P." in name else HEAT_WIDTH
+    return {"P": STRAIN_WIDTH, "Q": HEAT_WIDTH, "N": PAIR_WIDTH}[name.rsplit(".", 2)[1]]
