@@ -90,7 +90,7 @@ def test_equal_seeds_give_equal_studies(compared):
         ({"difference": 0.0}, r"difference=0.0; give a ratio above zero"),
         ({"wafers": (0,)}, r"wafers=\(0,\).*give one wafer or more"),
         ({"target": 1.0}, "target=1.0; give a probability"),
-        ({"experiments": 3}, "experiments=3; give 20 or more"),
+        ({"experiments": 3}, "experiments must be a whole number, 20 or more, not 3"),
         ({"second": "D"}, "there is no split 'D'"),
     ],
 )

@@ -12,6 +12,7 @@ from contextlib import ExitStack
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from inverse.description.arguments import checked_seed, whole_number
 from inverse.inference.mcmc.executor import UNGUARDED, Shared, checked_executor, completed, worker_pool
 from inverse.study.batches.recipe import Recipe
 from inverse.study.batches.results import results_dataset
@@ -106,6 +107,9 @@ def batch(
     RuntimeError
         If no worker process can start, as in a script whose calls do not stand under ``if __name__ == "__main__":``.
     """
+    seed = checked_seed(seed)
+    if workers is not None:
+        whole_number("workers", workers, 0)
     jobs, rows = _jobs(traces, table, seed)
     effort = _checked(Effort(draws, ess, max_steps, ensembles, starts, timeout, method))
     identity = _identity(problem, seed, effort, neighbours)
@@ -157,6 +161,8 @@ def _source(trace: Any) -> Any:
 
 
 def _checked(effort: Effort) -> Effort:
+    for name, least in (("draws", 1), ("max_steps", 1), ("ensembles", 2), ("starts", 1)):
+        whole_number(name, getattr(effort, name), least)
     if effort.draws < 50:
         raise ValueError(f"draws={effort.draws}; keep 50 or more of each site, or its shape is lost.")
     if effort.ess < effort.draws:

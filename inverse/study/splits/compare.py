@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_seed, whole_number
 from inverse.inference.derived import SILICA
 from inverse.study.splits.comparison import (
     Comparison,
@@ -101,6 +102,7 @@ def compare_splits(
     median. Pairs are decided by a step-down rule, see `decisions.levels`.
     """
     _check(level, margin, better, draws)
+    seed = checked_seed(seed)
     priors = SplitPriors() if priors is None else priors
     data = collect(results, quantity, labels, scale, prior, ("split", "wafer"))
     names = tuple(dict.fromkeys(site.split for site in data.sites))
@@ -131,8 +133,7 @@ def _check(level: float, margin: float, better: str | None, draws: int) -> None:
         )
     if better not in (None, "higher", "lower"):
         raise ValueError(f"better={better!r}; give 'higher' or 'lower'.")
-    if draws < 1000:
-        raise ValueError(f"draws={draws!r}; give 1000 or more, or tail probabilities cannot be told.")
+    whole_number("draws", draws, 1000)  # fewer cannot tell tail probabilities
 
 
 def _wafers(sites: tuple[Site, ...], split: str) -> list[Wafer]:

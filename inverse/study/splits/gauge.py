@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_seed, whole_number
 from inverse.study.splits.comparison import Interval, interval
 from inverse.study.splits.data import Site, collect
 from inverse.study.splits.hierarchy import HierarchyDraws, Wafer, sample_hierarchy
@@ -158,6 +159,7 @@ def reference_wafer(
     JCGM 100:2008, B.2.15 and B.2.16 (repeatability, reproducibility), and clause 6 on recognised systematic effects, to
     be corrected with the correction's uncertainty carried (from memory).
     """
+    seed, draws = checked_seed(seed), whole_number("draws", draws, 1000)
     given = _single_tool(results) if labels is None else labels
     data = collect(results, quantity, given, scale, prior, ("tool",))
     if len(data.sites) < 2:

@@ -9,6 +9,7 @@ from itertools import product
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_seed, whole_number
 from inverse.study.splits.comparison import Comparison
 from inverse.study.splits.decisions import decided, pairs_of, tail_probability
 from inverse.study.splits.hierarchy import sample_normal_hierarchy
@@ -160,7 +161,7 @@ def comparison_power(
     The other splits stand where the comparison found them; pairs are decided by the comparison's own rule and priors,
     site likelihoods being normal.
     """
-    found = comparison.pair(first, second)
+    seed, found = checked_seed(seed), comparison.pair(first, second)
     logarithmic = comparison.question.logarithmic
     if difference is None:
         chosen = found.difference if found.ratio is None else found.ratio
@@ -206,8 +207,7 @@ def _check(
         )
     if not 0 < target < 1:
         raise ValueError(f"target={target!r}; give a probability between 0 and 1, such as 0.8.")
-    if count < 20:
-        raise ValueError(f"experiments={count}; give 20 or more.")
+    whole_number("experiments", count, 20)
 
 
 def _own_uncertainty(comparison: Comparison) -> float:
