@@ -70,7 +70,8 @@ def batch(
         ``.nc`` file of the results. Every finished site is at once written to a store beside it (``<path>.sites``),
         from which a killed batch goes on.
     executor : concurrent.futures.Executor, optional
-        Anything with `submit`. By default a pool of worker processes with one linear-algebra thread each.
+        Anything with `submit`: dask's ``Client.get_executor()``, mpi4py's ``MPIPoolExecutor``. By default a pool of
+        worker processes with one linear-algebra thread each.
     workers : int, optional
         Size of the default pool; 0 works in this process.
     neighbours : str, optional
