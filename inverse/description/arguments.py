@@ -2,13 +2,48 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Iterable
 from difflib import get_close_matches
+from pathlib import Path
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
-__all__ = ["checked_seed", "nearest", "refuse_unknown_names", "whole_number"]
+__all__ = ["checked_delay", "checked_path", "checked_seed", "nearest", "refuse_unknown_names", "whole_number"]
+
+
+def checked_delay(given: Any) -> NDArray[np.float64]:
+    """Return delays as an array of one dimension.
+
+    Raises
+    ------
+    ValueError
+        If they are not numbers, or of more dimensions.
+    """
+    try:
+        delay = np.atleast_1d(np.asarray(given, dtype=float))
+    except (TypeError, ValueError):
+        raise ValueError(
+            f"delay is a {type(given).__name__} that is not numbers; give an array in ps."
+        ) from None
+    if delay.ndim > 1:
+        raise ValueError(f"delay has shape {delay.shape}; give an array of one dimension, in ps.")
+    return delay
+
+
+def checked_path(given: Any) -> Path:
+    """Return a path.
+
+    Raises
+    ------
+    ValueError
+        If it is neither a text nor a path.
+    """
+    if not isinstance(given, str | os.PathLike):
+        raise ValueError(f"Got a {type(given).__name__} in place of a path; give a text or a pathlib.Path.")
+    return Path(given)
 
 
 def whole_number(name: str, value: Any, least: int) -> int:

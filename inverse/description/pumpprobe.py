@@ -110,7 +110,8 @@ class PumpProbe:
         ):
             value = getattr(self, field)
             if value is not None:
-                object.__setattr__(self, field, check(name, value, f"PumpProbe.{field}"))
+                where = "PumpProbe" if field == name else f"PumpProbe.{field}"
+                object.__setattr__(self, field, check(name, value, where))
         for name in ("pump_polarisation", "probe_polarisation"):
             if getattr(self, name) not in ("s", "p"):
                 raise ValueError(f"PumpProbe.{name} = {getattr(self, name)!r}; give 's' or 'p'.")

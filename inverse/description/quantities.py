@@ -342,9 +342,7 @@ def check(name: str, value: float, where: str = "") -> float:
     try:
         number = float(_plain(value))
     except (TypeError, ValueError):
-        raise ValueError(
-            f"{label} = {_shown(value)}; give a number in {q.unit} or a frozen continuous scipy.stats distribution."
-        ) from None
+        raise ValueError(f"{label} = {_shown(value)}; give a number in {q.unit}{_or_prior(value)}.") from None
     if np.isnan(number) or not q.low <= number <= q.high:
         hint = f" It looks like {q.suspect}; convert it to {q.unit}." if q.suspect else ""
         raise ValueError(
@@ -360,9 +358,19 @@ def _plain(value: Any) -> Any:
     return value
 
 
-def _shown(value: object) -> str:
+def _or_prior(value: object) -> str:
+    return "" if _is_prior(value) else " or a frozen continuous scipy.stats distribution"
+
+
+def _is_prior(value: object) -> bool:
+    return hasattr(value, "dist") and hasattr(value, "logpdf")
+
+
+def _shown(value: Any) -> str:
     """Say what was given in place of a number."""
     family = getattr(value, "name", None) if callable(value) and hasattr(value, "ppf") else None
     if family is not None:
         return f"stats.{family} is a family of distributions, not yet one of them: call it with its numbers"
+    if _is_prior(value):
+        return f"a prior, {value.dist.name}, where only a number can stand"
     return f"{value!r} is not a number"

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.description.arguments import checked_seed
+from inverse.description.arguments import checked_delay, checked_seed
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import quantity
 from inverse.description.sample.optic_slots import eliminated_numbers
@@ -97,6 +97,8 @@ class Inversion:
         ValueError
             If there is nothing to join, labels repeat, or one name has two priors.
         """
+        if isinstance(inversions, Inversion):
+            raise ValueError("joint takes a sequence of Inversion, such as [a, b], and got one alone.")
         inversions = list(inversions)
         for given in inversions:
             if not isinstance(given, Inversion):
@@ -213,7 +215,7 @@ class Inversion:
         named = member.local(self.posterior.parameters.named(self._possible(values)))
         found = member.model.eliminated(named)
         weights = found.mean if seed is None else found.draw(np.random.default_rng(checked_seed(seed)))
-        delay = member.model.delay if delay is None else np.atleast_1d(np.asarray(delay, dtype=float))
+        delay = member.model.delay if delay is None else checked_delay(delay)
         traces = member.model.predict(named, weights, delay)
         units = {c.name: c.unit for c in member.model.channels}
         return xr.Dataset(
@@ -266,7 +268,13 @@ class Inversion:
         return result_tree(self, run, seed, notes)
 
     def _checked(self, values: Any) -> Array:
-        array = np.atleast_2d(np.asarray(values, dtype=float))
+        try:
+            array = np.atleast_2d(np.asarray(values, dtype=float))
+        except (TypeError, ValueError):
+            raise ValueError(
+                f"values is a {type(values).__name__} that is not an array of numbers; give one of shape "
+                f"(n, {len(self.names)}) in the order {', '.join(self.names)}."
+            ) from None
         if array.ndim != 2 or array.shape[1] != len(self.names):
             raise ValueError(
                 f"values has shape {np.shape(values)}; give (n, {len(self.names)}) in the order "

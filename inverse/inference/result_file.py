@@ -10,6 +10,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from inverse.description.arguments import checked_path
+
 if TYPE_CHECKING:
     import xarray as xr
 
@@ -34,7 +36,7 @@ def save(result: xr.DataTree, path: str | os.PathLike[str]) -> Path:
     ValueError
         If the path does not end in .nc, its folder does not exist, or `result` is not a sampling result.
     """
-    target = Path(path)
+    target = checked_path(path)
     if not hasattr(result, "to_netcdf") or "inverse" not in getattr(result, "attrs", {}):
         raise ValueError(f"save takes the result of sample_posterior, not {type(result).__name__}.")
     if target.suffix != ".nc":
@@ -63,7 +65,7 @@ def load(path: str | os.PathLike[str]) -> xr.DataTree:
     import h5py
     import xarray as xr
 
-    source = Path(path)
+    source = checked_path(path)
     if not source.is_file():
         raise ValueError(f"There is no file '{source}'.")
     try:

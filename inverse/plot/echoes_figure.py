@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_delay
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.sample.stack import Stack
 from inverse.plot.style import COLUMN, MILLIMETRE, decade, new_figure, power_label, style
@@ -65,7 +66,7 @@ def echoes(
     ValueError
         If a constant is missing, or `values` names no unknown.
     """
-    delay = np.atleast_1d(np.asarray(delay, dtype=float))
+    delay = checked_delay(delay)
     first, last = float(delay.min()), float(delay.max())
     tops = _interfaces(stack, setup, values)
     deepest = depth if depth is not None else 1.5 * tops[-1] if tops.size > 1 else 8.0 * last

@@ -197,10 +197,10 @@ def constants_table(result: Any) -> ConstantsTable:
     ValueError
         If the result carries no list of constants.
     """
-    listed = json.loads(result.attrs.get("inverse", "{}")).get("constants")
+    listed = json.loads(getattr(result, "attrs", {}).get("inverse", "{}")).get("constants")
     if listed is None:
         raise ValueError(
-            "The result carries no list of constants; give one made by sample_posterior or load."
+            f"The {type(result).__name__} carries no list of constants; give what sample_posterior or load returned."
         )
     return ConstantsTable(tuple(Constant(**entry) for entry in listed))
 
@@ -281,6 +281,13 @@ def budget_table(
     ValueError
         If a budget is empty or a standard uncertainty is negative or not a number.
     """
+    if not isinstance(budget, Mapping) or not all(
+        isinstance(sources, Mapping) for sources in budget.values()
+    ):
+        raise ValueError(
+            f"budget_table got a {type(budget).__name__}; give a mapping of quantities to mappings of sources, as "
+            "budget returns it."
+        )
     for name, sources in budget.items():
         if not sources:
             raise ValueError(f"The budget of '{name}' is empty; give at least one source.")
@@ -316,7 +323,7 @@ def _fit_rows(result: Any, mass: tuple[float, ...]) -> tuple[Row, ...]:
 
 
 def _check_mass(mass: Sequence[float]) -> tuple[float, ...]:
-    masses = tuple(float(m) for m in mass)
+    masses = tuple(map(float, mass)) if isinstance(mass, Sequence) else ()
     if not masses or not all(0 < m < 1 for m in masses):
         raise ValueError(f"mass = {mass!r}; expected probabilities between 0 and 1, such as (0.68, 0.95).")
     return masses

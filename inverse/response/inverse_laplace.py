@@ -27,6 +27,8 @@ _CUTOFF = 6.0
 _DEGREE = 7
 # Points of the uniform grid per frequency; 2 would be the least.
 _OVERSAMPLING = 2.1
+# A hundredth of a second at a time, a gigabyte together, and no measurement that was ever made.
+_MOST = 1_000_000
 # Functions of delay whose transforms stay in a core's cache together.
 _ROWS = 64
 
@@ -122,6 +124,11 @@ def window_grid(delay: Array, pulse_rms: float, origin: float, window: float, hi
         Angular frequency beyond which there is nothing, rad/ps.
     """
     count = _RADIX * int(np.ceil(highest / (2 * np.pi / window) / _RADIX))
+    if count > _MOST:
+        raise ValueError(
+            f"Delays over {window:.3g} ps with a pulse that needs {highest / (2 * np.pi):.3g} THz are {count} "
+            f"frequencies, more than {_MOST}; are the delays in ps? Cut the trace, or give a longer pulse_rms."
+        )
     size = int(fft.next_fast_len(int(np.ceil(_OVERSAMPLING * count)), real=True))
     step = window / size
     gamma = np.log(_DAMPING) / window

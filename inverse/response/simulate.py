@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_delay
 from inverse.description.limits import warn_if_not_plane
 from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
@@ -67,7 +68,7 @@ def simulate(
     shares : bool
         Add ``<channel>_share`` on (part, delay): strain and heat of every place, displacement of every boundary.
         They add up to the channel.
-    channels : sequence of str
+    channels : str or sequence of str
         Of ``reflectance_change``, ``optical_phase`` and ``transmission_change``; the last needs a stack that light
         gets through.
 
@@ -85,15 +86,16 @@ def simulate(
     """
     from inverse.description.trace.reading import make_trace
 
-    delay = np.atleast_1d(np.asarray(delay, dtype=float))
+    delay = checked_delay(delay)
     bound, time_zero = bind(stack, setup), check("time_zero", time_zero)
     known = _known(bound, values or {})
     grid = time_grid(delay, setup.pulse_rms, earliest=time_zero)
     batches = under_the_spot(bound, known)
     warn_if_not_plane(stack, setup, float(delay.max()) - time_zero)
+    channels = (channels,) if isinstance(channels, str) else tuple(channels)
     strange = sorted(set(channels) - set(CHANNELS))
     if strange or not channels:
-        raise ValueError(f"simulate got channels={tuple(channels)!r}; give some of {', '.join(CHANNELS)}.")
+        raise ValueError(f"simulate got channels={channels!r}; give some of {', '.join(CHANNELS)}.")
     runs = [(weight, _Run(stack, setup, bound, batch, grid, time_zero)) for weight, batch in batches]
     signals = {}
     for port in dict.fromkeys(PORTS[channel] for channel in channels):
@@ -115,6 +117,8 @@ def simulate(
 
 
 def _known(bound: BoundStack, values: Mapping[str, float]) -> dict[str, Array]:
+    if not isinstance(values, Mapping):
+        raise ValueError(f"values is a {type(values).__name__}; give a mapping of unknowns to numbers.")
     strange = sorted(set(values) - set(bound.priors))
     if strange:
         raise ValueError(

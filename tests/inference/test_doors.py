@@ -12,8 +12,11 @@ from scipy import stats
 import inverse as inv
 from inverse.description.sample.optic_slots import eliminated_numbers
 from inverse.description.sample.places import bind
+from inverse.description.sample.stack_file import read_stack
 from inverse.inference.checks.interlayer import interlayers
 from inverse.inference.checks.posterior_draws import PosteriorDraws
+from inverse.inference.mcmc.checkpoint import Checkpoint, Identity
+from inverse.inference.minima.least_squares import Fit
 from inverse.inference.problem.parameters import parameters
 
 TRUTH = {"Al.thickness": 60.0, "Al.velocity": 6.42, "Al|Si.compliance": 0.02}
@@ -227,3 +230,85 @@ def test_a_fit_shows_its_values_with_units(problem):
     assert lines[0].startswith("Fit of 5 unknowns, ")
     assert re.fullmatch(r"  Al\.thickness +\d\d\.\d+ ± 0\.\d+ nm", lines[1])
     assert len(repr(fit)) < 500
+
+
+@pytest.mark.parametrize("name", ["time_zero", "noise.white"])
+def test_an_unknown_must_not_bear_the_name_of_another(problem, name):
+    """Two quantities under one name would be one unknown, with the prior of the second."""
+    thickness = inv.Unknown(name, stats.uniform(40, 40))
+    with pytest.raises(
+        ValueError, match=f"An Unknown is called '{name}', which is the name of another unknown"
+    ):
+        inv.Inversion(bonded(thickness=thickness), SETUP, problem.trace)
+    with pytest.raises(ValueError, match="'d', which is the name of another unknown"):
+        time = inv.Unknown("d", stats.norm(0, 0.05))
+        own = inv.Unknown("d", stats.uniform(40, 40))
+        inv.Inversion(bonded(thickness=own), SETUP, problem.trace, time_zero=time)
+
+
+@pytest.mark.parametrize("values", ["a", {"Al.thickness": 60.0}])
+def test_log_prob_takes_arrays_of_numbers(problem, values):
+    with pytest.raises(
+        ValueError, match=r"values is a \w+ that is not an array of numbers; give .* \(n, 5\)"
+    ):
+        problem.log_prob(values)
+
+
+def test_a_fit_must_be_one_of_this_problem(problem):
+    with pytest.raises(ValueError, match="fit is a str; give what least_squares returned"):
+        problem.sample_posterior(seed=1, fit="best")
+    other = Fit(problem, ("Al.thickness",), (), 1)
+    with pytest.raises(
+        ValueError, match=r"fit is one of Al\.thickness, but the unknowns here are Al\.thickness, "
+    ):
+        problem.sample_posterior(seed=1, fit=other)
+
+
+def test_a_starting_point_holds_numbers(problem):
+    point = dict.fromkeys(problem.names, np.nan)
+    with pytest.raises(ValueError, match="A starting point holds NaN"):
+        problem.least_squares(seed=1, starts=1, points=[point])
+
+
+def test_a_checkpoint_needs_a_folder(tmp_path):
+    identity = Identity("", "1", ("x",), 1, 2, "")
+    with pytest.raises(ValueError, match=r"The folder '.*nowhere' of the checkpoint does not exist"):
+        Checkpoint(tmp_path / "nowhere" / "run.h5", identity, np.zeros((1, 2, 1)), None, 10)
+
+
+def test_functions_of_results_say_what_they_take(problem, tmp_path):
+    with pytest.raises(ValueError, match="joint takes a sequence of Inversion, such as"):
+        inv.Inversion.joint(problem)
+    with pytest.raises(ValueError, match="profile takes an Inversion first, not a NoneType"):
+        inv.profile(None, "Al.thickness")
+    with pytest.raises(ValueError, match="The NoneType carries no list of constants"):
+        inv.constants_table(None)
+    with pytest.raises(ValueError, match="budget_table got a int; give a mapping of quantities"):
+        inv.budget_table(3)
+    for call in (inv.load, inv.read_trace, inv.read_index, read_stack):
+        with pytest.raises(ValueError, match="Got a NoneType in place of a path; give a text or"):
+            call(None)
+
+
+def test_delays_that_no_pulse_resolves_are_refused_before_they_fill_the_memory():
+    with pytest.raises(ValueError, match=r"are \d+ frequencies, more than 1000000; are the delays in ps\?"):
+        inv.simulate(bonded(), SETUP, [1.0, 1e7])
+    with pytest.raises(ValueError, match=r"delay has shape \(2, 3\); give an array of one dimension"):
+        inv.simulate(bonded(), SETUP, np.ones((2, 3)))
+    with pytest.raises(ValueError, match="delay is a str that is not numbers"):
+        inv.simulate(bonded(), SETUP, "abc")
+    with pytest.raises(ValueError, match="values is a list; give a mapping of unknowns to numbers"):
+        inv.simulate(bonded(), SETUP, [1.0, 2.0], values=[60.0])
+
+
+def test_one_channel_may_be_named_without_a_sequence():
+    assert list(inv.simulate(bonded(), SETUP, [1.0, 2.0], channels="optical_phase").data_vars) == [
+        "optical_phase"
+    ]
+
+
+def test_what_cannot_be_unknown_says_so():
+    with pytest.raises(
+        ValueError, match=r"PumpProbe\.pulse_rms = a prior, norm, where only a number can stand"
+    ):
+        inv.PumpProbe(pump=400, probe=800, pulse_rms=stats.norm(0.3, 0.01))

@@ -11,6 +11,7 @@ from pathlib import Path
 
 import numpy as np
 
+from inverse.description.arguments import checked_path
 from inverse.description.quantities import check
 
 __all__ = ["CoarseIndexWarning", "IndexTable", "read_index"]
@@ -223,7 +224,8 @@ def read_index(
     """
     if decimal not in (".", ","):
         raise ValueError(f"decimal = {decimal!r}; give '.' or ','.")
-    lines = _content_lines(Path(path))
+    path = checked_path(path)
+    lines = _content_lines(path)
     separator = _delimiter(lines[0][1], delimiter, decimal)
     names = list(columns) if columns is not None else _names(lines.pop(0)[1], separator)
     places = _find_columns(names, path)
@@ -234,7 +236,7 @@ def read_index(
     return IndexTable(
         tuple(wavelength for wavelength, _, _ in rows),
         tuple(complex(n, k) for _, n, k in rows),
-        source=f"read from {Path(path).name}",
+        source=f"read from {path.name}",
     )
 
 

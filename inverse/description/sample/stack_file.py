@@ -7,10 +7,9 @@ import os
 import re
 import tomllib
 from dataclasses import fields
-from pathlib import Path
 from typing import Any
 
-from inverse.description.arguments import nearest, refuse_unknown_names
+from inverse.description.arguments import checked_path, nearest, refuse_unknown_names
 from inverse.description.pumpprobe import INSTRUMENT, PumpProbe
 from inverse.description.sample.parts import (
     MATERIAL_FIELDS,
@@ -55,7 +54,7 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
         If the file does not exist, is not TOML, or holds a name, a field or a prior that makes no sense; the message
         tells the part and the nearest name there is.
     """
-    source = Path(path)
+    source = checked_path(path)
     if not source.is_file():
         raise ValueError(f"There is no stack file '{source}'.")
     try:

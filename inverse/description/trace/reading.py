@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from inverse.description.arguments import checked_path
 from inverse.description.trace.checks import (
     CHANNELS,
     TraceError,
@@ -174,7 +175,8 @@ def read_trace(
         If a column cannot be told, or the numbers need a repair that was not asked for.
     """
     allowed = _checked_repairs(repair)
-    name = Path(path).name
+    path = checked_path(path)
+    name = path.name
     table = read_table(path, header_lines=header_lines, decimal=decimal, separator=separator)
     chosen = find_columns(table, columns, name)
     unit, assumptions = _delay_unit(delay_unit, chosen["delay"][0], table)

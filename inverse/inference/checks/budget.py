@@ -120,6 +120,8 @@ def budget(
     """
     inversion, z = _point(result)
     known = [name for name, v in _quantities(inversion, z[None]).items() if np.isfinite(v).all()]
+    if isinstance(quantities, str):
+        raise ValueError(f"quantities = {quantities!r}; give a list of names, such as [{quantities!r}].")
     asked = known if quantities is None else list(quantities)
     strange = [name for name in asked if name not in known]
     if strange:

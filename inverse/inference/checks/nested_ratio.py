@@ -105,6 +105,8 @@ def savage_dickey(result: Any, name: str, *, at: float = 0.0) -> SavageDickey:
         If there are no draws of such an unknown, or the prior's density at the value is zero or infinite.
     """
     prior, unit = _prior(result, name)
+    if not isinstance(at, int | float | np.number):
+        raise ValueError(f"at = {at!r}; give a number, in the unit of {name}.")
     density = float(prior.pdf(at))
     if not (np.isfinite(density) and density > 0):
         raise ValueError(

@@ -20,6 +20,8 @@ from typing import Any
 
 import numpy as np
 
+from inverse.description.arguments import checked_path
+
 FORMAT = "inverse checkpoint 1"
 TWISTER_WORDS = 624
 STARTS_TOLERANCE = 1e-6
@@ -267,7 +269,11 @@ class Checkpoint:
         commit: Commit,
         capacity: int,
     ) -> None:
-        self.path = Path(path)
+        self.path = checked_path(path)
+        if not self.path.parent.is_dir():
+            raise ValueError(
+                f"The folder '{self.path.parent}' of the checkpoint does not exist; create it first."
+            )
         if self.path.exists():
             self._check_same_run(identity, starts)
         else:

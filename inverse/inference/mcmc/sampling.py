@@ -115,7 +115,7 @@ def sample_posterior(
     Targets(ess, rhat, max_steps, _CHUNK)  # What will not do is said before the search, not after it.
     size = len(inversion.names)
     count = max(24, 3 * size + size % 2) if walkers is None else whole_number("walkers", walkers, 2 * size)
-    fit = inversion.least_squares(seed=seed) if fit is None else fit
+    fit = inversion.least_squares(seed=seed) if fit is None else _checked_fit(fit, inversion.names)
     starts, mixture = prepare(inversion.posterior, fit.minima, ensembles, count + count % 2, seed)
     run = run_ensembles(
         inversion.posterior,
@@ -133,6 +133,17 @@ def sample_posterior(
         executor=executor,
     )
     return inversion.result(run, seed, fit, checks=checks)
+
+
+def _checked_fit(fit: Any, names: tuple[str, ...]) -> Fit:
+    if not isinstance(fit, Fit):
+        raise ValueError(f"fit is a {type(fit).__name__}; give what least_squares returned, or leave it out.")
+    if fit.names != names:
+        raise ValueError(
+            f"fit is one of {', '.join(fit.names)}, but the unknowns here are {', '.join(names)}; give a fit of this "
+            "problem."
+        )
+    return fit
 
 
 def prepare(

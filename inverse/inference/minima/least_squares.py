@@ -249,7 +249,9 @@ def _given_point(inversion: Inversion, point: Mapping[str, float]) -> Array:
     missing = [name for name in inversion.names if name not in point]
     if missing:
         raise ValueError(f"A starting point lacks {', '.join(missing)}; it gives {', '.join(point)}.")
-    values = np.array([[point[name] for name in inversion.names]])
+    values = np.array([[point[name] for name in inversion.names]], dtype=float)
+    if np.isnan(values).any():
+        raise ValueError("A starting point holds NaN; give a number for every unknown.")
     return np.clip(inversion.posterior.parameters.to_z(values)[0], -5, 5)
 
 

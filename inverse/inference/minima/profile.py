@@ -78,6 +78,8 @@ def profile(
     """
     import xarray as xr
 
+    if not hasattr(inversion, "least_squares"):
+        raise ValueError(f"profile takes an Inversion first, not a {type(inversion).__name__}.")
     if name not in inversion.names:
         raise ValueError(f"There is no unknown '{name}'; there are {', '.join(inversion.names)}.")
     points = whole_number("points", points, 7)

@@ -62,7 +62,7 @@ def trace_member(
     if isinstance(time_zero, Unknown):
         shared.add(name)
     if zero is not None:
-        priors[name], fields[name] = zero, "time_zero"
+        _add_unknown(name, zero, "time_zero", priors, fields)
     names = {inner: inner for inner in slots}
     if zero is not None:
         names["time_zero"] = name
@@ -82,13 +82,19 @@ def trace_member(
         built, own = _channel(trace, channel, used, noise, look.noise[channel], prefix)
         channels.append(built)
         for key, prior in own.items():
-            priors[prefix + key], fields[prefix + key], names[prefix + key] = (
-                prior,
-                f"noise.{key}",
-                prefix + key,
-            )
+            _add_unknown(prefix + key, prior, f"noise.{key}", priors, fields)
+            names[prefix + key] = prefix + key
     model = _trace_model(bound, setup, tuple(channels), delay, used, centre, early)
     return Member(model, "", names, fixed), priors, fields, frozenset(shared)
+
+
+def _add_unknown(name: str, prior: Any, field: str, priors: dict[str, Any], fields: dict[str, str]) -> None:
+    """Add an unknown to those of the stack, whose shared ones bear names of the user's choice."""
+    if name in priors and (priors[name] is not prior or fields[name] != field):
+        raise ValueError(
+            f"An Unknown is called '{name}', which is the name of another unknown of this problem; name it otherwise."
+        )
+    priors[name], fields[name] = prior, field
 
 
 def _time_zero(given: Any, trace: xr.Dataset) -> tuple[str, Any, dict[str, float]]:
