@@ -56,7 +56,11 @@ def encode(value: Any) -> Any:
 
 def _encode_fields(value: Any) -> dict[str, Any]:
     if isinstance(value, Stack):
-        return {"parts": encode(value.parts), "ambient": encode(value.ambient)}
+        return {
+            "parts": encode(value.parts),
+            "ambient": encode(value.ambient),
+            "surface_roughness": encode(value.surface_roughness),
+        }
     if isinstance(value, Repeat):
         return {"count": value.count, "parts": encode(value.parts)}
     if type(value).__name__ in (*_PLAIN, *_MEDIA):
@@ -94,7 +98,8 @@ def decode(data: Any, shared: dict[str, Unknown] | None = None) -> Any:
 
 def _rebuild(name: str, parts: dict[str, Any]) -> Any:
     if name == "Stack":
-        return Stack(*parts["parts"], ambient="air" if parts["ambient"] is None else parts["ambient"])
+        above = "air" if parts["ambient"] is None else parts["ambient"]
+        return Stack(*parts["parts"], ambient=above, surface_roughness=parts.get("surface_roughness", 0.0))
     if name == "Repeat":
         return Repeat(parts["count"], *parts["parts"])
     if name in _MEDIA:

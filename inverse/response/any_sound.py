@@ -47,6 +47,7 @@ def any_sound(
             powers,
             sample.imperfections,
             source,
+            sample.surface_roughness,
         )
     joints = [
         interface_compliance(normal, tangential)

@@ -27,6 +27,7 @@ _MEDIUM = {
     "density": -2,
     "velocity": 1,
     "conductivity": 1,
+    "lattice_conductivity": 1,
     "inverse_coupling": -1,
     "loss_time": -1,
     "quality_frequency": 1,

@@ -121,6 +121,7 @@ class Sample:
     tangential: tuple[Array, ...] = ()
     backing: Ambient | None = None
     imperfections: tuple[Imperfection, ...] = ()
+    surface_roughness: Array | None = None
 
     def light(self, beam: str) -> tuple[list[Complex], list[Array]]:
         """Return the index of every medium to ``"pump"`` or ``"probe"``, what is below last, and the thicknesses."""
@@ -157,6 +158,9 @@ def sample(bound: BoundStack, values: Mapping[str, Array]) -> Sample:
         ambient=_ambient(bound, values),
         backing=None if "velocity" in bound.media[-1] else _EMPTY,
         imperfections=_imperfections(bound, values),
+        surface_roughness=_coherent("roughness", bound.fill(bound.surface, values)["roughness"])
+        if bound.surface
+        else None,
         **_three_components(bound, values),
     )
 

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.response.carriers import Diffusing, Pairs
-from inverse.response.flaws import Imperfection, flaw
+from inverse.response.flaws import Imperfection, flaw, under_a_rough_surface
 from inverse.response.heat import HeatField
 from inverse.response.light import Absorption
 from inverse.response.media import Ambient, Medium, anchored, layers
@@ -97,6 +97,7 @@ def sound_field(
     powers: Callable[[Array], Complex],
     imperfections: Sequence[Imperfection] = (),
     source: Complex = _NONE,
+    surface_roughness: Array | None = None,
 ) -> list[SoundField]:
     """Solve for the displacement of every medium.
 
@@ -114,6 +115,8 @@ def sound_field(
         Of each interface.
     source : complex array, optional
         Transform of the pulse, where it sets up a stress of its own.
+    surface_roughness : array, optional
+        Rms, nm.
     """
     c = [off_resonance(m, modulus(m, s), f, h.q, s) for m, f, h in zip(media, profiles, heat, strict=True)]
     lossless = [cj.shape[1] == 1 for cj in c]
@@ -134,7 +137,8 @@ def sound_field(
     load: Complex | float = 0.0
     if ambient.density is not None and ambient.velocity is not None:
         load = s * (ambient.density * ambient.velocity)
-    down, up = descend(surface_amplitude(y[0], below, ends[0], load), decay, below)
+    seen = under_a_rough_surface(below, q[0], surface_roughness)
+    down, up = descend(surface_amplitude(y[0], seen, ends[0], load), decay, below)
     return [
         SoundField(
             *(qj, e, a, b),

@@ -211,8 +211,10 @@ def test_files_keep_the_bench_and_what_interfaces_and_layers_have():
     assert again.probe_angle == 30.0 and again.stage_scale.std() == pytest.approx(1e-3)
     bond = Interface(boundary_conductance=100.0, roughness=1.5, areal_mass=stats.uniform(0, 3))
     film = Layer("Al", thickness=20.0, thickness_spread=0.4, initial_stress=0.1)
-    stack = decode(json.loads(json.dumps(encode(Stack(film, bond, BASE)))))
-    assert list(bind(stack, SETUP).priors) == ["Al|Si.areal_mass"]
+    drawn = Stack(film, bond, BASE, surface_roughness=stats.halfnorm(scale=1.0))
+    stack = decode(json.loads(json.dumps(encode(drawn))))
+    assert list(bind(stack, SETUP).priors) == ["surface.roughness", "Al|Si.areal_mass"]
+    assert "surface_roughness" in repr(stack) and "surface_roughness" not in repr(Stack(film, BASE))
     assert stack.media[0].thickness_spread == 0.4 and stack.media[0].material.initial_stress == 0.1
 
 
@@ -220,6 +222,7 @@ def test_a_stack_file_takes_periods_graded_layers_and_vacuum(tmp_path):
     path = tmp_path / "stack.toml"
     path.write_text(
         """
+        surface_roughness = "uniform(0, 2)"
         [setup]
         pump = 400
         probe = 800
@@ -247,7 +250,7 @@ def test_a_stack_file_takes_periods_graded_layers_and_vacuum(tmp_path):
     stack, setup = read_stack(path)
     assert setup.stage_scale.mean() == 0.0 and setup.beams[1].polarisation == "p"
     assert str(stack) == "air / 4 x [Al / W] / Al-W / vacuum"
-    assert list(bind(stack, SETUP).priors) == ["Al.thickness"]
+    assert list(bind(stack, SETUP).priors) == ["surface.roughness", "Al.thickness"]
 
 
 def test_a_stack_file_says_which_parts_there_are(tmp_path):

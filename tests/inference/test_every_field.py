@@ -137,11 +137,12 @@ def test_expansion_and_bulk_modulus_act_through_their_product(trace):
 
 
 def test_a_known_coefficient_ratio_makes_one_function_whose_weights_are_those_of_simulate(trace):
-    # With P and Q of both media as unknowns at what simulate takes, the trace is that function times the fluence.
+    # With P, Q and N of both media as unknowns at what simulate takes, the trace is that function times the fluence.
     film = {"dn_dstrain": (stats.norm(4, 5), 2.0), "dn_dT": (stats.norm(1e-4, 3e-4), 2e-4)}
+    film |= {**CARRIERS, "dn_dN": (stats.norm(0, 5), 0.5)}
     silicon = {"dn_dstrain": (stats.norm(-3, 5), 0.5), "dn_dT": (stats.norm(2e-4, 3e-4), 1e-5)}
     numbers = [
-        {"dn_dstrain": 6 + 2j, "dn_dT": 3e-4 + 2e-4j},
+        {"dn_dstrain": 6 + 2j, "dn_dT": 3e-4 + 2e-4j, "dn_dN": 4 + 0.5j, **CARRIERS},
         {"dn_dstrain": -2 + 0.5j, "dn_dT": 1e-4 + 1e-5j},
     ]
 
@@ -156,6 +157,7 @@ def test_a_known_coefficient_ratio_makes_one_function_whose_weights_are_those_of
     chosen = {
         "Al.dn_dstrain_real": 6.0,
         "Al.dn_dT_real": 3e-4,
+        "Al.dn_dN_real": 4.0,
         "Si.dn_dstrain_real": -2.0,
         "Si.dn_dT_real": 1e-4,
     }

@@ -75,6 +75,9 @@ def test_flaws_that_three_components_do_not_know_are_refused(flaw: str) -> None:
         ValueError, match=rf"Cu\|Si has {flaw}, which the response of an oblique cut does not know"
     ):
         trace(cut([0.0, 1.0, 2.0]), **{flaw: 1.0})
+    stack = inv.Stack(cut([0.0, 1.0, 2.0]), SUBSTRATE, surface_roughness=1.0)
+    with pytest.raises(ValueError, match="surface has roughness, which the response of an oblique cut"):
+        inv.simulate(stack, SETUP, DELAY)
 
 
 def test_an_oblique_cut_shows_a_shear_echo_that_no_scalar_layer_has() -> None:

@@ -26,7 +26,7 @@ def trace(sample, delay, rms=0.3):
 def test_a_stage_of_another_scale_reads_the_trace_at_other_times(factor):
     # Every mechanism there is: two temperatures, both losses, a bond, a liquid; the pulse is measured with the stage
     sample = stacked(
-        metal(43.0, **HOT, **LOSSY),
+        metal(43.0, **HOT, **LOSSY, lattice_conductivity=0.06),
         crystal(25.0, **LOSSY),
         crystal(),
         compliance=[0.05, 0.0],

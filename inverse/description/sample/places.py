@@ -62,6 +62,8 @@ class BoundStack:
         Material (with orientation) of each medium but vacuum: the key by which P and Q are shared.
     instrument : dict
         What the bench adds, field -> `Slot`: ``stage_scale`` and ``overlap_drift`` where they are not zero.
+    surface : dict
+        ``roughness`` of the free surface where it is not zero.
     """
 
     media: tuple[Slots, ...]
@@ -70,11 +72,12 @@ class BoundStack:
     names: tuple[str, ...]
     materials: tuple[str, ...]
     instrument: Slots = dataclasses.field(default_factory=dict)
+    surface: Slots = dataclasses.field(default_factory=dict)
 
     @property
     def slots(self) -> tuple[Slot, ...]:
         """All places that hold a number or an unknown, top to bottom; what repeats is given once."""
-        groups = (self.ambient, *self.media, *self.interfaces, self.instrument)
+        groups = (self.ambient, self.surface, *self.media, *self.interfaces, self.instrument)
         leaves = (leaf for group in groups for slot in group.values() for leaf in slot.leaves())
         return tuple({id(leaf): leaf for leaf in leaves}.values())
 
@@ -134,6 +137,7 @@ def bind(stack: Stack, setup: PumpProbe) -> BoundStack:
         names=stack.names,
         materials=tuple(part.material.name for part in stack.media if not _is_empty(part)),
         instrument=instrument_slots(setup),
+        surface=_surface_slots(stack, oblique),
     )
     _refuse_two_priors(bound)
     return bound
@@ -185,13 +189,27 @@ def _sheared(stack: Stack, media: list[Slots]) -> list[Slots]:
     return [known[id(slots)] for slots in media]
 
 
-def _interface_slots(place: str, part: Interface, oblique: bool) -> Slots:
-    slots = {f: slot_of(f, getattr(part, f), place, _bond_source(part, f), 0.0) for f in _INTERFACE}
-    if oblique and (flaws := [f for f in ("roughness", "areal_mass") if slots[f].value != 0.0]):
+def _surface_slots(stack: Stack, oblique: bool) -> Slots:
+    slot = slot_of("roughness", stack.surface_roughness, "surface", GIVEN, 0.0)
+    if slot.value == 0.0:
+        return {}
+    if oblique:
+        _refuse_flaws("surface", ["roughness"])
+    return {"roughness": slot}
+
+
+def _refuse_flaws(place: str, flaws: list[str]) -> None:
+    if flaws:
         raise ValueError(
             f"{place} has {' and '.join(flaws)}, which the response of an oblique cut does not know; leave it out, or "
             "give the layers velocities in place of their stiffness and orientation."
         )
+
+
+def _interface_slots(place: str, part: Interface, oblique: bool) -> Slots:
+    slots = {f: slot_of(f, getattr(part, f), place, _bond_source(part, f), 0.0) for f in _INTERFACE}
+    if oblique:
+        _refuse_flaws(place, [f for f in ("roughness", "areal_mass") if slots[f].value != 0.0])
     if part.tangential_compliance is None:
         return slots
     field = "tangential_compliance"

@@ -19,6 +19,7 @@ from inverse.description.sample.parts import (
     Substrate,
     unroll,
 )
+from inverse.description.unknowns import checked
 
 __all__ = ["Graded", "Interface", "Layer", "Repeat", "Slice", "Stack", "Substrate"]
 
@@ -36,11 +37,14 @@ class Stack:
         Two parts in a row without one are welded and thermally ideal. ``Substrate("vacuum")`` is none.
     ambient : str or Material
         ``"air"``, ``"vacuum"``, or a liquid by reference name or `Material`.
+    surface_roughness : float, frozen scipy.stats distribution or Unknown
+        Rms roughness of the free surface in nm, ``surface.roughness`` as an unknown: it spreads the phase of the
+        sound that comes back from there. (That of an `Interface` is its own.)
 
     Raises
     ------
     ValueError
-        If the order makes no sense.
+        If the order makes no sense, or the roughness is out of range.
 
     Examples
     --------
@@ -64,12 +68,13 @@ class Stack:
 
     parts: tuple[Part, ...]
     ambient: Material | None
+    surface_roughness: Any
     media: tuple[Medium, ...] = field(repr=False)
     interfaces: tuple[Interface, ...] = field(repr=False)
     names: tuple[str, ...] = field(repr=False)
     interface_names: tuple[str, ...] = field(repr=False)
 
-    def __init__(self, *parts: Part, ambient: str | Material = "air") -> None:
+    def __init__(self, *parts: Part, ambient: str | Material = "air", surface_roughness: Any = 0.0) -> None:
         media, bonds = _split(parts)
         names = _place_names(media)
         for name, value in (
@@ -77,14 +82,22 @@ class Stack:
             ("media", tuple(part for part, _ in media)),
             ("interfaces", tuple(bond for bond, _ in bonds)),
             ("ambient", _ambient(ambient)),
+            ("surface_roughness", checked("roughness", surface_roughness, "surface")),
             ("names", names),
             ("interface_names", _bond_names(names, bonds)),
         ):
             object.__setattr__(self, name, value)
 
+    def of(self, *parts: Part) -> Stack:
+        """Return a stack of other parts under the same surface and ambient."""
+        above = "air" if self.ambient is None else self.ambient
+        return Stack(*parts, ambient=above, surface_roughness=self.surface_roughness)
+
     def __repr__(self) -> str:
         """Write the parts, one a line."""
         ambient = [] if self.ambient is None else [f"ambient={self.ambient.name!r}"]
+        if not isinstance(self.surface_roughness, float | int) or self.surface_roughness:
+            ambient.append(f"surface_roughness={self.surface_roughness!r}")
         lines = "".join(f"    {text},\n" for text in [*map(repr, self.parts), *ambient])
         return f"Stack(\n{lines})"
 

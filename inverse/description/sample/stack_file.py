@@ -36,8 +36,8 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
     Parameters
     ----------
     path : path
-        A TOML file with a table ``[setup]`` (fields of `PumpProbe`), an optional ``ambient`` and one ``[[part]]``
-        per part, top to bottom, holding ``layer``, ``interface`` (any value), ``substrate``, ``graded`` (the two
+        A TOML file with a table ``[setup]`` (fields of `PumpProbe`), an optional ``ambient`` and
+        ``surface_roughness``, and one ``[[part]]`` per part, top to bottom, holding ``layer``, ``interface`` (any value), ``substrate``, ``graded`` (the two
         materials) or ``repeat`` (a number, with the parts of a period as ``[[part.part]]``). A prior is written as
         text, ``velocity = "norm(6.42, 0.10)"``, by the name of a scipy.stats family; the same shared unknown in
         several places as ``"v_film: norm(6.42, 0.10)"``; elastic constants as
@@ -61,7 +61,7 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
         content = tomllib.loads(source.read_text(encoding="utf-8"))
     except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
         raise ValueError(f"'{source.name}' is not a TOML file: {error}") from None
-    refuse_unknown_names(f"'{source.name}'", content, ("setup", "part", "ambient"))
+    refuse_unknown_names(f"'{source.name}'", content, ("setup", "part", "ambient", "surface_roughness"))
     for key in ("setup", "part"):
         if key not in content:
             raise ValueError(
@@ -74,7 +74,9 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
             )
     shared: dict[str, Unknown] = {}
     parts = [_part(dict(entry), str(number), shared) for number, entry in enumerate(content["part"], 1)]
-    return Stack(*parts, ambient=content.get("ambient", "air")), _setup(content["setup"], shared)
+    rough = _value("surface_roughness", content.get("surface_roughness", 0.0), shared)
+    stack = Stack(*parts, ambient=content.get("ambient", "air"), surface_roughness=rough)
+    return stack, _setup(content["setup"], shared)
 
 
 def _setup(entry: dict[str, Any], shared: dict[str, Unknown]) -> PumpProbe:

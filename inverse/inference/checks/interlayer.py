@@ -197,5 +197,5 @@ def _with_layer(inversion: Inversion, spring: Interface, name: str, thickness: f
     layer = Layer(name, thickness=stats.loguniform(_THINNEST, 1e4 * thickness))
     stack = inversion.stack
     parts = [p for part in stack.parts for p in ((bond, layer) if part is spring else (part,))]
-    changed = Stack(*parts, ambient="air" if stack.ambient is None else stack.ambient)
+    changed = stack.of(*parts)
     return Inversion(changed, inversion.setup, inversion.trace, **inversion.arguments)

@@ -84,7 +84,7 @@ def _with(stack: Stack, column: str, value: Any) -> Stack:
         )
     at = names.index(place)
     parts[at] = _replaced(parts[at], field, value, column)
-    return Stack(*parts, ambient="air" if stack.ambient is None else stack.ambient)
+    return stack.of(*parts)
 
 
 def _part_names(stack: Stack) -> list[str]:
