@@ -5,6 +5,7 @@ import pytest
 from scipy import stats
 
 import inverse as inv
+from inverse.study.coverage.check import check_coverage
 
 DELAY = np.arange(-4.0, 45.0, 0.2)
 FILM = {
@@ -76,3 +77,12 @@ def test_each_wavelength_has_optics_of_its_own(problems):
     assert index[0] != index[1]
     joint = inv.Inversion.joint(problems[:2], labels=["red", "green"])
     assert list(joint.names) == ["d", "v", "compliance", "red:noise.white", "green:noise.white"]
+
+
+@pytest.mark.slow
+def test_joint_intervals_of_two_wavelengths_and_two_channels_are_calibrated(problems):
+    joint = inv.Inversion.joint(problems, labels=["red", "green", "through"])
+    found = check_coverage(joint, seed=1, replicates=20, method="importance", progress=False)
+    assert found.passed, found.verdict
+    # the three shared unknowns together: three binomial errors
+    assert abs(found.share(0.9, TRUE) - 0.9) < 3 * np.sqrt(0.09 / (20 * 3))
