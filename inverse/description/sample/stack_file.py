@@ -37,11 +37,11 @@ def read_stack(path: str | os.PathLike[str]) -> tuple[Stack, PumpProbe]:
     ----------
     path : path
         A TOML file with a table ``[setup]`` (fields of `PumpProbe`), an optional ``ambient`` and
-        ``surface_roughness``, and one ``[[part]]`` per part, top to bottom, holding ``layer``, ``interface`` (any value), ``substrate``, ``graded`` (the two
-        materials) or ``repeat`` (a number, with the parts of a period as ``[[part.part]]``). A prior is written as
-        text, ``velocity = "norm(6.42, 0.10)"``, by the name of a scipy.stats family; the same shared unknown in
-        several places as ``"v_film: norm(6.42, 0.10)"``; elastic constants as
-        ``stiffness = {symmetry = "cubic", c11 = "norm(107, 5)", c12 = 60.4, c44 = 28.3}``.
+        ``surface_roughness``, and one ``[[part]]`` per part, top to bottom, holding ``layer``, ``interface`` (any
+        value), ``substrate``, ``graded`` (the two materials) or ``repeat`` (a number, with the parts of a period as
+        ``[[part.part]]``). A prior is written as text, ``velocity = "norm(6.42, 0.10)"``, by the name of a
+        scipy.stats family; the same shared unknown in several places as ``"v_film: norm(6.42, 0.10)"``; elastic
+        constants as ``stiffness = {symmetry = "cubic", c11 = "norm(107, 5)", c12 = 60.4, c44 = 28.3}``.
 
     Returns
     -------
