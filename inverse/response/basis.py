@@ -187,7 +187,7 @@ def _in_two_windows(
     found, arrived = spectra(sample, beams, grid.near, layout, sets, port), arrival(grid.near, time_zero)
     out = np.empty((sets, found.shape[1], grid.delay.size))
     out[..., grid.early] = to_delays(grid.near, found, arrived)
-    loud = rings_on(grid, sample, found, arrived)
+    loud = rings_on(grid, sample, found, arrived, len(layout.groups))
     for chosen, part, delays in (
         (~loud, grid.far, ~grid.early),
         (loud, grid.whole, np.full_like(grid.early, True)),

@@ -105,7 +105,7 @@ def _passed(w: Array, joint: float) -> Array:
     return np.asarray(0.5 * special.erfc((w - _BAND - _EDGE * width) / (np.sqrt(2) * width)))
 
 
-def rings_on(windows: Windows, sample: Sample, spectra: Complex, arrival: Complex) -> Mask:
+def rings_on(windows: Windows, sample: Sample, spectra: Complex, arrival: Complex, groups: int) -> Mask:
     """Tell which sets the far window would not do justice to, shape (sets,).
 
     Parameters
@@ -113,9 +113,11 @@ def rings_on(windows: Windows, sample: Sample, spectra: Complex, arrival: Comple
     windows : Windows
     sample : Sample
     spectra : complex array, shape (sets, functions, frequencies)
-        Of the near window: four functions per group and two of the displacement.
+        Of the near window: four functions per group, two per group with carriers, and two of the displacement.
     arrival : complex array, shape (sets, frequencies)
         A factor of all functions.
+    groups : int
+        Number of groups.
     """
     near = windows.near
     gamma, step = near.s[0, 0].real, 2 * np.pi / near.s[0, 1].imag / near.size
@@ -125,7 +127,7 @@ def rings_on(windows: Windows, sample: Sample, spectra: Complex, arrival: Comple
     loud = np.empty(len(spectra), dtype=bool)
     for i, functions in enumerate(spectra * arrival[:, None]):
         signal, above = (
-            _peaks(fft.irfft(part, n=near.size, axis=-1)[:, where] * growth[where])
+            _peaks(fft.irfft(part, n=near.size, axis=-1)[:, where] * growth[where], groups)
             for part, where in ((functions, counted), (functions * windows.left_out, late))
         )
         loud[i] = np.any(above > _QUIET * signal)
@@ -133,11 +135,11 @@ def rings_on(windows: Windows, sample: Sample, spectra: Complex, arrival: Comple
     return loud | (_flight_time(sample) > watched)
 
 
-def _peaks(signals: Array) -> Array:
-    """Largest strain, heat and displacement signal over all groups: what shares a prior width shares a scale."""
+def _peaks(signals: Array, groups: int) -> Array:
+    """Largest strain, heat, carriers' and displacement signal over all groups: what shares a width shares a scale."""
     size = np.abs(signals).max(axis=-1)
-    groups = size[:-2].reshape(-1, 2, 2).max(axis=(0, 2))
-    return np.array([*groups, size[-2:].max()])
+    strain, heat = size[: 4 * groups].reshape(-1, 2, 2).max(axis=(0, 2))
+    return np.array([strain, heat, size[4 * groups : -2].max(initial=0.0), size[-2:].max()])
 
 
 def _flight_time(sample: Sample) -> Array:

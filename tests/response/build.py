@@ -51,7 +51,7 @@ _PLAIN = {
 
 def _medium(values: dict, changes: dict) -> Medium:
     merged = {**_PLAIN, **values, **changes}
-    return Medium(**{k: v if isinstance(v, np.ndarray) else one(v) for k, v in merged.items()})
+    return Medium(**{k: one(v) if isinstance(v, float | int | complex) else v for k, v in merged.items()})
 
 
 def metal(thickness: float = np.inf, **changes) -> Medium:
