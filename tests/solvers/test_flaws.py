@@ -140,9 +140,12 @@ def test_a_rough_surface_is_a_rough_interface_with_what_lies_above(compliance):
     is_open = compliance == np.inf
     bond = {"compliance": compliance, "boundary_conductance": 0.0 if is_open else np.inf}
 
+    metal, bottom, base = film(BASE, 50.0).parts
+    deep = inv.Layer(metal.material, thickness=30.0, initial_stress=0.2)  # sound that comes up from within
+
     def strain(roughness, ambient="air", *top):
         surface = 0.0 if top else roughness
-        stack = inv.Stack(*top, *film(BASE).parts, ambient=ambient, surface_roughness=surface)
+        stack = inv.Stack(*top, metal, deep, bottom, base, ambient=ambient, surface_roughness=surface)
         shares = inv.simulate(stack, SHARP, delay, shares=True).reflectance_change_share
         return shares.sel(part="metal strain").values
 
