@@ -78,7 +78,7 @@ def profile(
     """
     import xarray as xr
 
-    if not hasattr(inversion, "least_squares"):
+    if not hasattr(inversion, "posterior"):
         raise ValueError(f"profile takes an Inversion first, not a {type(inversion).__name__}.")
     if name not in inversion.names:
         raise ValueError(f"There is no unknown '{name}'; there are {', '.join(inversion.names)}.")
