@@ -5,6 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
+
 from inverse.description.quantities import check
 from inverse.description.unknowns import checked
 
@@ -49,6 +51,8 @@ class PumpProbe:
     spot_radius, probe_spot_radius : float, optional
         Radii of the pump and the probe at 1/e2 of their peak intensity in um. With them the library warns where the
         one-dimensional picture ends; without the probe's it is taken as the pump's.
+    probe_offset : float, optional
+        Distance of the probe's centre from the pump's in um, for the channel ``beam_deflection``; see `deflection`.
     repetition_rate : float, optional
         Pulses per time in MHz.
     modulation_frequency : float, optional
@@ -85,6 +89,7 @@ class PumpProbe:
     fluence: float = 1.0
     spot_radius: float | None = None
     probe_spot_radius: float | None = None
+    probe_offset: float | None = None
     repetition_rate: float | None = None
     modulation_frequency: float | None = None
     pump_angle: float = 0.0
@@ -103,6 +108,7 @@ class PumpProbe:
             ("fluence", "fluence"),
             ("spot_radius", "spot_radius"),
             ("probe_spot_radius", "spot_radius"),
+            ("probe_offset", "probe_offset"),
             ("repetition_rate", "repetition_rate"),
             ("modulation_frequency", "modulation_frequency"),
             ("pump_angle", "angle"),
@@ -127,6 +133,29 @@ class PumpProbe:
             Beam(self.pump, self.pump_angle, self.pump_polarisation),
             Beam(self.probe, self.probe_angle, self.probe_polarisation),
         )
+
+    @property
+    def deflection(self) -> float:
+        """Angle by which the reflected beam turns away from the pump, over the phase that the probe sees, rad/rad.
+
+        A phase ``phi(x)`` turns a beam by ``-(lambda / 2 pi) d phi / dx``. Under a Gaussian pump of radius w (1/e2 of
+        the intensity) seen by a Gaussian probe of radius w', both means over the probe go as
+        ``exp(-2 x^2 / (w^2 + w'^2))``, so that at the offset x the angle is
+
+            (lambda / 2 pi) 4 x / (w^2 + w'^2)    times the mean phase.
+
+        Raises
+        ------
+        ValueError
+            If spot_radius or probe_offset is missing.
+        """
+        if self.spot_radius is None or not self.probe_offset:
+            raise ValueError(
+                "beam_deflection needs the spot_radius and the probe_offset of PumpProbe, in um; got "
+                f"{self.spot_radius} and {self.probe_offset}."
+            )
+        width2 = self.spot_radius**2 + (self.probe_spot_radius or self.spot_radius) ** 2
+        return float(1e-3 * self.probe / (2 * np.pi) * 4 * self.probe_offset / width2)
 
     def _check_train(self) -> None:
         if self.lockin_channel not in LOCKIN_CHANNELS:

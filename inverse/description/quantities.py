@@ -240,6 +240,9 @@ QUANTITIES: dict[str, Quantity] = {
         Quantity(
             "spot_radius", "um", "w", 0.1, 1e4, "radius at 1/e2 of the peak intensity", suspect="m or mm"
         ),
+        Quantity(
+            "probe_offset", "um", "x", 0.0, 1e4, "distance of the probe from the pump", suspect="m or mm"
+        ),
         Quantity("power", "mW", "P", 1e-6, 1e5, "average power on the sample", suspect="W"),
         Quantity("repetition_rate", "MHz", "f_r", 1e-6, 1e5, "pulses per time", suspect="Hz or kHz"),
         Quantity(

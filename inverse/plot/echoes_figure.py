@@ -26,7 +26,11 @@ __all__ = ["echoes", "shares"]
 Array = NDArray[np.float64]
 
 _ROWS, _COLUMNS = 260, 420
-_LABELS = {"reflectance_change": ("ΔR/R", ""), "optical_phase": ("optical phase", "rad")}
+_LABELS = {
+    "reflectance_change": ("ΔR/R", ""),
+    "optical_phase": ("optical phase", "rad"),
+    "beam_deflection": ("beam deflection", "rad"),
+}
 
 
 def echoes(

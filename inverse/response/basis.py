@@ -39,7 +39,7 @@ Complex = NDArray[np.complex128]
 
 Beams = tuple[Beam | float, Beam | float]
 
-CHANNELS = ("reflectance_change", "optical_phase", "transmission_change")
+CHANNELS = ("reflectance_change", "optical_phase", "transmission_change", "beam_deflection")
 
 # The GNU C library maps every large block anew, and clears it, until one as large has been freed once. This one
 # is never touched, so it costs microseconds; it halves the time of a likelihood. Elsewhere it does nothing.
@@ -50,6 +50,7 @@ PORTS = {
     "reflectance_change": "reflection",
     "optical_phase": "reflection",
     "transmission_change": "transmission",
+    "beam_deflection": "reflection",
 }
 """The light in which each channel is measured."""
 
@@ -227,7 +228,7 @@ def take(parts: Array, channel: str) -> Array:
 
     Reflectance change 2 Re(delta r / r): ``[2 Re h, -2 Im h]`` for the real and imaginary part of a coefficient,
     ``2 Re h`` for the displacement; transmission change likewise, from its own port. Optical phase
-    Im(delta r / r): ``[Im h, Re h]`` and ``Im h``.
+    Im(delta r / r): ``[Im h, Re h]`` and ``Im h``; beam deflection likewise, per rad of phase (`PumpProbe.deflection`).
     """
     out = np.empty((parts.shape[0], parts.shape[1] - 1, parts.shape[2]))
     real, imag = parts[:, 0:-2:2], parts[:, 1:-2:2]

@@ -69,8 +69,8 @@ def simulate(
         Add ``<channel>_share`` on (part, delay): strain and heat of every place, displacement of every boundary.
         They add up to the channel.
     channels : str or sequence of str
-        Of ``reflectance_change``, ``optical_phase`` and ``transmission_change``; the last needs a stack that light
-        gets through.
+        Of ``reflectance_change``, ``optical_phase``, ``transmission_change``, which needs a stack that light gets
+        through, and ``beam_deflection``, which needs the spots (see `PumpProbe.deflection`).
 
     Returns
     -------
@@ -105,7 +105,7 @@ def simulate(
         found *= setup.fluence * drift(bound, known, delay[None] - time_zero)[0]
         for channel in channels:
             if PORTS[channel] == port:
-                signals[channel] = found.imag if channel == "optical_phase" else 2 * found.real
+                signals[channel] = _as_channel(found, channel, setup)
     sums = {channel: rows.sum(axis=0) for channel, rows in signals.items()}
     trace = make_trace(delay, **sums, measured=False)
     if shares:
@@ -114,6 +114,12 @@ def simulate(
             trace[f"{channel}_share"] = (("part", "delay"), rows, dict(trace[channel].attrs))
     trace.attrs["coefficients"] = _said(stack)
     return trace
+
+
+def _as_channel(found: NDArray[np.complex128], channel: str, setup: PumpProbe) -> Array:
+    if channel in ("reflectance_change", "transmission_change"):
+        return 2 * found.real
+    return found.imag if channel == "optical_phase" else setup.deflection * found.imag
 
 
 def _known(bound: BoundStack, values: Mapping[str, float]) -> dict[str, Array]:

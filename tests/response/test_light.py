@@ -6,6 +6,7 @@ import tmm
 from records import one
 
 from inverse.description.material.properties import material
+from inverse.description.pumpprobe import Beam
 from inverse.response.light import absorption, light_field
 
 
@@ -37,6 +38,20 @@ def test_random_stacks_agree_with_tmm(layers, n0):
     for number in range(n.shape[1]):
         theirs = by_tmm(n, d, 633.0, n0, number)
         assert abs(field.r[number, 0] - theirs["r"]) < 1e-9
+        assert abs(field.reflectance[number, 0] - theirs["R"]) < 1e-9
+        assert abs(field.transmittance[number, 0] - theirs["T"]) < 1e-9
+        np.testing.assert_allclose(shares[:, number], tmm.absorp_in_each_layer(theirs)[1:-1], atol=1e-9)
+
+
+@pytest.mark.parametrize("polarisation", ["s", "p"])
+@pytest.mark.parametrize("n0", [1.0, 1.33])
+def test_random_stacks_at_an_angle_agree_with_tmm(polarisation, n0):
+    n, d = random_stacks(20, 3, sets=25)
+    field = solved(n, d, Beam(633.0, 52.0, polarisation), n0)
+    shares = np.stack([absorption(field, j).fraction()[:, 0] for j in range(3)])
+    for number in range(n.shape[1]):
+        indices, thicknesses = [n0, *n[:, number]], [np.inf, *d[:, number], np.inf]
+        theirs = tmm.coh_tmm(polarisation, indices, thicknesses, np.deg2rad(52.0), 633.0)
         assert abs(field.reflectance[number, 0] - theirs["R"]) < 1e-9
         assert abs(field.transmittance[number, 0] - theirs["T"]) < 1e-9
         np.testing.assert_allclose(shares[:, number], tmm.absorp_in_each_layer(theirs)[1:-1], atol=1e-9)

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 if TYPE_CHECKING:
     import xarray as xr
 
-CHANNELS = ("reflectance_change", "optical_phase", "transmission_change")
+CHANNELS = ("reflectance_change", "optical_phase", "transmission_change", "beam_deflection")
 MINIMUM_POINTS = 20
 _LONGEST_STEP = 10.0  # ps: no echo survives a coarser sampling
 

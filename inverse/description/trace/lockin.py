@@ -10,7 +10,12 @@ from numpy.typing import NDArray
 from inverse.description.trace.checks import CHANNELS, TraceError
 from inverse.description.trace.columns import Column
 
-USUAL_UNITS = {"reflectance_change": "1", "optical_phase": "rad", "transmission_change": "1"}
+USUAL_UNITS = {
+    "reflectance_change": "1",
+    "optical_phase": "rad",
+    "transmission_change": "1",
+    "beam_deflection": "rad",
+}
 _Floats = NDArray[np.float64]
 
 

@@ -38,6 +38,7 @@ _LONG_NAMES = {
     "reflectance_change": "reflectance change dR/R",
     "optical_phase": "change of the phase of the reflected light",
     "transmission_change": "transmission change dT/T",
+    "beam_deflection": "deflection of the reflected beam",
 }
 _TO_PICOSECONDS = {"fs": 1e-3, "ps": 1.0, "ns": 1e3, "us": 1e6, "s": 1e12}
 _TO_MILLIMETRES = {"mm": 1.0, "um": 1e-3}
@@ -50,6 +51,7 @@ def make_trace(
     reflectance_change: ArrayLike | None = None,
     optical_phase: ArrayLike | None = None,
     transmission_change: ArrayLike | None = None,
+    beam_deflection: ArrayLike | None = None,
     units: Mapping[str, str] | None = None,
     attrs: Mapping[str, str | int | float] | None = None,
     measured: bool = True,
@@ -60,8 +62,8 @@ def make_trace(
     ----------
     delay : array_like, shape (n,)
         Delay of the probe after the pump, ps, strictly increasing.
-    reflectance_change, optical_phase, transmission_change : array_like, shape (n,), optional
-        The channels, at least one. Dimensionless, rad and dimensionless unless `units` says otherwise.
+    reflectance_change, optical_phase, transmission_change, beam_deflection : array_like, shape (n,), optional
+        The channels, at least one. Dimensionless, rad, dimensionless and rad unless `units` says otherwise.
     units : mapping of channel name to str, optional
         Units where they are not the usual ones, such as ``{"reflectance_change": "uV"}``.
     attrs : mapping, optional
@@ -86,7 +88,8 @@ def make_trace(
     >>> make_trace(delay, reflectance_change=1e-5 * (delay > 0)).sizes["delay"]
     276
     """
-    given = dict(zip(CHANNELS, (reflectance_change, optical_phase, transmission_change), strict=True))
+    signals_given = (reflectance_change, optical_phase, transmission_change, beam_deflection)
+    given = dict(zip(CHANNELS, signals_given, strict=True))
     times = _as_vector("delay", delay)
     signals = {name: _as_vector(name, values) for name, values in given.items() if values is not None}
     for name, values in signals.items():

@@ -153,9 +153,8 @@ def _edge(name: str, delay: _Floats, signal: _Floats) -> Edge:
     step = float(delay[index] - delay[index - 1])
     slope = 0.8 * abs(height) / (high - low)
     shape = 0.12 * (high - low)
-    if (
-        name == "optical_phase"
-    ):  # a slow rise is the surface moving, and half of it comes long after time zero
+    # A slow rise is the surface moving, and half of it comes long after time zero.
+    if name in ("optical_phase", "beam_deflection"):
         shape += 0.35 * max(0.0, high - low - 1.0)
     parts = (_FLOOR, shape, 0.2 * step, noise / slope)
     return Edge(name, half, float(np.sqrt(np.sum(np.square(parts)))), high - low, baseline, height)

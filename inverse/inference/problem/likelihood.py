@@ -75,6 +75,8 @@ class Channel:
         Of the noise unknowns, ``noise.`` or ``noise.optical_phase.``.
     baseline : float
         Prior width of the constant offset.
+    scale : float
+        Factor of its functions: of a beam's deflection over the phase.
     """
 
     name: str
@@ -83,6 +85,7 @@ class Channel:
     noise: Noise
     prefix: str
     baseline: float
+    scale: float = 1.0
 
     def noise_values(self, values: Mapping[str, Array]) -> dict[str, Array]:
         """Pick this channel's noise values out of all values."""
@@ -214,7 +217,8 @@ class TraceModel:
         seen = {port: self._mean(port, batches, values, grid, sets) for port in ports}
         scale = self.widths[:, None]
         return {
-            c.name: tie(take(seen[PORTS[c.name]], c.name), self.layout, self.bound, values) * scale
+            c.name: tie(take(seen[PORTS[c.name]], c.name), self.layout, self.bound, values)
+            * (scale * c.scale)
             for c in self.channels
         }
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -80,6 +81,8 @@ def trace_member(
     for channel in present:
         prefix = "noise." if len(present) == 1 else f"noise.{channel}."
         built, own = _channel(trace, channel, used, noise, look.noise[channel], prefix)
+        if channel == "beam_deflection":
+            built = replace(built, scale=setup.deflection)
         channels.append(built)
         for key, prior in own.items():
             _add_unknown(prefix + key, prior, f"noise.{key}", priors, fields)
@@ -208,7 +211,7 @@ def _trace_model(
     expected = np.where(idle, 0.0, widths)[:, None]
     for channel in channels:
         rows = tie(take(parts[PORTS[channel.name]], channel.name), layout, bound, middle)[0]
-        predicted += float(((rows * expected) ** 2).sum(axis=0).mean())
+        predicted += float(((rows * expected * channel.scale) ** 2).sum(axis=0).mean())
         measured += float((channel.data[used] ** 2).mean())
     size = SCALE_WIDTH * float(np.sqrt(measured))
     return TraceModel(
