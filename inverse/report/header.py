@@ -82,7 +82,7 @@ def _sampling_line(tree: Any, information: Mapping[str, Any], rows: Sequence[Row
     verdict = _verdict(information.get("convergence"), ess, rhat)
     return (
         f"Sampling: {sizes['chain']} ensembles, {sizes['draw']} draws each; "
-        f"smallest effective sample size {ess:.0f}, largest R-hat {rhat:.3f}: {verdict}"
+        f"smallest bulk effective sample size {ess:.0f}, largest R-hat {rhat:.3f}: {verdict}"
     )
 
 

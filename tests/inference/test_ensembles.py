@@ -12,9 +12,10 @@ from densities import (
 )
 
 from inverse.inference.mcmc import advance, loop
-from inverse.inference.mcmc.convergence import effective_sample_size, walker_major
+from inverse.inference.mcmc.convergence import Convergence, effective_sample_size, walker_major
 from inverse.inference.mcmc.ensembles import run_ensembles
 from inverse.inference.mcmc.executor import worker_pool
+from inverse.inference.mcmc.verdict import Ending, Targets
 
 
 def starts(ensembles=4, walkers=16, dimension=3, seed=0):
@@ -142,6 +143,31 @@ def test_steps_used_up_say_how_many_more():
         gaussian, starts(), seed=1, names=names(), ess=4000, max_steps=int(400 + 1.5 * more), progress=False
     )
     assert longer.converged, (short.message, longer.message)
+
+
+def test_a_run_too_short_to_be_judged_asks_for_enough_to_judge_it():
+    """Once it said that fewer than 100 steps cannot be judged and that about 10 more were needed, at 60."""
+    ones = np.ones(2)
+    found = Convergence(10, True, ones, 1200 * ones, np.array([873.0, 950.0]), ones, 0 * ones, 0.0)
+    ending = Ending(
+        found,
+        Targets(1000, 1.01, 60, 50),
+        ("a", "b"),
+        np.zeros((4, 2)),
+        np.ones(4),
+        60,
+        50,
+        1,
+        1,
+        0,
+        "",
+        False,
+    )
+    said = ending.remarks()
+    assert (
+        "Fewer than 100 steps cannot be judged. Smallest tail effective sample size 873 of 1000 (a)." in said
+    )
+    assert "About 40 more steps are needed." in said
 
 
 def test_few_steps_are_not_judged():

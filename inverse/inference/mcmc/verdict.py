@@ -130,8 +130,10 @@ class Ending:
             yield "burn-in has not ended within half of the steps"
         smaller = np.minimum(found.ess, found.ess_tail)
         if not found.least_ess >= targets.ess:
-            worst = self.names[int(np.argmin(smaller))]
-            yield f"smallest effective sample size {found.least_ess:.0f} of {targets.ess:.0f} ({worst})"
+            i = int(np.argmin(smaller))
+            part = "tail" if found.ess_tail[i] < found.ess[i] else "bulk"
+            said = f"smallest {part} effective sample size {found.least_ess:.0f} of {targets.ess:.0f}"
+            yield f"{said} ({self.names[i]})"
         if not found.largest_rhat <= targets.rhat:
             yield f"largest R-hat {found.largest_rhat:.3f} above {targets.rhat:g} ({self._worst_name()})"
         if found.largest_drift > MOST_DRIFT:
@@ -150,7 +152,8 @@ class Ending:
         )
         longest = float(np.nanmax(found.autocorrelation_time)) * self.thin
         settling = 0.0 if found.settled else 2.0 * BURN_IN_TIMES * longest - self.steps
-        more = max((factor - 1.0) * self.kept * self.thin, settling, self.steps / 8)
+        judged = FEWEST_STEPS - self.steps
+        more = max((factor - 1.0) * self.kept * self.thin, settling, judged, self.steps / 8)
         return float(10.0 * np.ceil(more / 10.0))
 
     def _disagreement(self) -> Iterator[str]:
