@@ -115,6 +115,31 @@ def test_a_brillouin_oscillation_slows_down_with_the_angle(clear, al):
     assert frequencies[1] / frequencies[0] == pytest.approx(np.sqrt(1.46**2 - 0.75) / 1.46, rel=2e-3)
 
 
+def test_a_pulse_changes_its_note_where_it_crosses_an_interface(al):
+    # Through 1.5 um of glass the oscillation has 2 n v / lambda of the glass, 21.9 GHz; after 1500 / 5.97 = 251 ps
+    # below it that of the crystal, 2 x 2.4 x 8.1 / 800 nm = 48.6 GHz
+    clear = {"heat_capacity": 1.8, "conductivity": 1.5, "thermal_stress_coefficient": 1e-5, "dn_dT": 0j}
+    glass = inv.Material("glass", density=2.2, velocity=5.97, n=1.466, dn_dstrain=-0.3 + 0j, **clear)
+    crystal = inv.Material("crystal", density=4.0, velocity=8.1, n=2.4, dn_dstrain=-0.5 + 0j, **clear)
+    metal = face.material(al, "metal")
+    film = inv.Layer(glass, thickness=1500.0)
+    stack = inv.Stack(inv.Layer(metal, thickness=10.0), film, inv.Substrate(crystal))
+    delay = np.arange(20.0, 520.0, 0.25)
+    setup = inv.PumpProbe(pump=400, probe=800, pulse_rms=1.0)
+    shares = inv.simulate(stack, setup, delay, shares=True).reflectance_change_share
+    crossing = 1500.0 / 5.97 + 10.0 / al.velocity
+    for name, inside, note in (
+        ("glass", delay < crossing - 8, 2 * 1.466 * 5.97 / 800),
+        ("crystal", delay > crossing + 8, 2 * 2.4 * 8.1 / 800),
+    ):
+        ringing = np.diff(shares.sel(part=f"{name} strain").values[inside]) * np.hanning(inside.sum() - 1)
+        spectrum = np.abs(np.fft.rfft(ringing, 1 << 16))
+        assert np.fft.rfftfreq(1 << 16, 0.25)[np.argmax(spectrum)] == pytest.approx(note, rel=5e-3)
+    # the crystal is silent until the pulse is there
+    silent = np.abs(shares.sel(part="crystal strain").values)
+    assert silent[delay < crossing - 8].max() < 1e-2 * silent.max()
+
+
 def test_nonsense_is_refused():
     with pytest.raises(ValueError, match=r"probe_angle\.angle = 95 is outside"):
         inv.PumpProbe(pump=400, probe=800, pulse_rms=0.3, probe_angle=95)

@@ -81,9 +81,9 @@ def response(sample, experiment, loss=LOSSLESS):
     return [np.append(coefficients, 1.0) @ take(parts, c)[0] for c in ("reflectance_change", "optical_phase")]
 
 
-def check(found, sample, experiment, without, at_pulse=1e-4, late=3e-5):
+def check(found, sample, experiment, without, at_pulse=1e-4, late=3e-5, step=0.015):
     """`found` agrees with the solver on `sample`; `without`, the trace of the plain case, is far from it."""
-    solved = simulate(sample, experiment, DELAY, 0.015)
+    solved = simulate(sample, experiment, DELAY, step)
     for got, expected, plain in zip(found, (solved.reflectance_change, solved.phase), without, strict=True):
         error = np.abs(got - expected) / np.abs(expected).max()
         assert error.max() < at_pulse
@@ -151,6 +151,26 @@ def test_liquid_above(weak, plain):
     )
     wet = Sample((water, *sample.media), (Joint(), *sample.joints))
     check(response(wet, experiment), wet, experiment, plain)
+
+
+def test_transparent_solid_above(weak, plain):
+    # A window of glass pressed on: most of the sound leaves upwards, with the light's oscillation in it
+    sample, experiment = weak
+    window = replace(
+        sample.media[1],
+        thickness=np.inf,
+        density=2.2,
+        velocity=5.97,
+        n_probe=1.45,
+        n_pump=1.47,
+        heat_capacity=1.65e-3,
+        conductivity=1.4e-3,
+        thermal_stress=0.0,
+        dn_dstrain=-0.4,
+        dn_dT=1e-5,
+    )
+    covered = Sample((window, *sample.media), (Joint(), *sample.joints))
+    check(response(covered, experiment), covered, experiment, plain, step=0.01)
 
 
 def test_nearly_open_interface(weak, plain):
