@@ -251,17 +251,23 @@ class Inversion:
     def result(self, run: EnsembleRun, seed: int, fit: Fit, *, checks: bool = True) -> xr.DataTree:
         """Put a finished run into a DataTree, with its minima and, if there are to be checks, warnings.
 
-        Warnings tell where the residuals are not the noise assumed, and which fixed constants outweigh an interval.
+        Warnings tell where the residuals are not the noise assumed, which eliminated coefficients lie far out in their
+        priors, and which fixed constants outweigh an interval.
         """
         from inverse.inference.checks.basins import minima_record
         from inverse.inference.checks.budget import weigh_constants
+        from inverse.inference.checks.coefficients import coefficient_warnings
 
         warnings: list[str] = []
         shares: dict[str, float] = {}
         if checks:
             values = self.posterior.parameters.to_values(run.chain.reshape(-1, len(self.names)))
             heavy, shares = weigh_constants(self, fit)
-            warnings = [*self.noise_warnings(values, seed=seed), *heavy]
+            warnings = [
+                *self.noise_warnings(values, seed=seed),
+                *coefficient_warnings(self, fit.values),
+                *heavy,
+            ]
             numbers = (text for part in self.parts for text in eliminated_numbers(part.stack))
             warnings += dict.fromkeys(numbers)
         notes = {"minima": minima_record(fit), "warnings": warnings, "constant_shares": shares}

@@ -13,6 +13,7 @@ from problems import SETUP
 from scipy import stats
 
 import inverse as inv
+from inverse.inference.checks.coefficients import coefficient_warnings
 
 DELAY = np.arange(-4, 60, 0.2)
 
@@ -75,6 +76,20 @@ def test_no_coefficient_of_the_truth_is_far_out_in_its_prior():
     (member,) = found.posterior.members
     named = member.local({name: np.array([truth[name]]) for name in found.names})
     assert np.abs(member.model.eliminated(named).mean).max() < 3
+
+
+def test_a_coefficient_far_out_in_its_prior_is_told():
+    found, truth = problem(1)
+    values = np.array([truth[name] for name in found.names])
+    assert coefficient_warnings(found, values) == []
+    (member,) = found.posterior.members
+    widths = member.model.widths * np.where(np.array(member.model.layout.names) == "Al.P.real", 0.02, 1.0)
+    widths[-1] *= 0.01
+    narrow = replace(member, model=replace(member.model, widths=widths))
+    found.posterior = replace(found.posterior, members=(narrow,))
+    metal, fluence = coefficient_warnings(found, values)
+    assert "the coefficient Al.P.real lies" in metal and "give dn_dstrain of Al as a pair of priors" in metal
+    assert "displacement lies" in fluence and "check the indices" in fluence
 
 
 def test_a_thickness_of_another_fringe_order_is_no_likelier_for_smaller_functions():
