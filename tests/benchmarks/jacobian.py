@@ -11,12 +11,12 @@ Run ``python tests/benchmarks/jacobian.py`` for the figures.
 from collections.abc import Callable
 from importlib.resources import files
 
+import cases
 import numpy as np
 import timing
 from scipy import optimize
 
 import inverse as inv
-from inverse.description.sample.stack_file import read_stack
 from inverse.inference.minima.minimise import jacobian, minimise
 from inverse.inference.minima.projection import Projected
 
@@ -25,9 +25,9 @@ TOLERANCE = 1e-10
 
 
 def example() -> inv.Inversion:
-    folder = files("inverse") / "example"
-    stack, setup = read_stack(folder / "stack.toml")
-    return inv.Inversion(stack, setup, inv.read_trace(folder / "wafer07.csv"))
+    """The bundled trace, explained by aluminium on silicon with nine unknowns."""
+    trace = inv.read_trace(files("inverse") / "example" / "wafer07.csv")
+    return inv.Inversion(cases.aluminium_on_silicon(), cases.SETUP, trace)
 
 
 def problem() -> tuple[Projected, np.ndarray]:
