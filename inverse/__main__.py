@@ -38,7 +38,12 @@ def main(arguments: Sequence[str] | None = None) -> int:
 def run(trace_file: Path, stack_file: Path, out: Path, *, seed: int, noise: str, ess: float) -> None:
     """Read, fit, sample, print the table and write figures and result into `out`."""
     started = time.perf_counter()
-    out.mkdir(parents=True, exist_ok=True)
+    try:
+        out.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise ValueError(
+            f"The folder '{out}' for the results cannot be made ({error.strerror}); give another by --out."
+        ) from None
     trace = inv.read_trace(trace_file)
     stack, setup = read_stack(stack_file)
     print(f"Trace {trace_file}\nStack {stack} from {stack_file}\n")
