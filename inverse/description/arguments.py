@@ -20,7 +20,7 @@ def checked_delay(given: Any) -> NDArray[np.float64]:
     Raises
     ------
     ValueError
-        If they are not numbers, or of more dimensions.
+        If there is none, they are not numbers, or of more dimensions.
     """
     try:
         delay = np.atleast_1d(np.asarray(given, dtype=float))
@@ -28,6 +28,8 @@ def checked_delay(given: Any) -> NDArray[np.float64]:
         raise ValueError(
             f"delay is a {type(given).__name__} that is not numbers; give an array in ps."
         ) from None
+    if delay.size == 0:
+        raise ValueError("There is no delay; give one or more, in ps.")
     if delay.ndim > 1:
         raise ValueError(f"delay has shape {delay.shape}; give an array of one dimension, in ps.")
     return delay

@@ -108,6 +108,10 @@ def heating(stack: Stack, setup: PumpProbe, *, power: float) -> Heating:
         membrane away is its frame.
     """
     power = check("power", power, "heating")
+    if not isinstance(setup, PumpProbe):
+        raise ValueError(
+            f"heating takes a Stack first, then a PumpProbe, and got a {type(setup).__name__} second."
+        )
     if setup.spot_radius is None or setup.repetition_rate is None:
         raise ValueError("heating needs PumpProbe(spot_radius=..., repetition_rate=...), in um and MHz.")
     batch = _sample(stack, setup)

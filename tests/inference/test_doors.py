@@ -312,3 +312,26 @@ def test_what_cannot_be_unknown_says_so():
         ValueError, match=r"PumpProbe\.pulse_rms = a prior, norm, where only a number can stand"
     ):
         inv.PumpProbe(pump=400, probe=800, pulse_rms=stats.norm(0.3, 0.01))
+
+
+def test_more_functions_say_what_they_take():
+    with pytest.raises(
+        ValueError, match="heating takes a Stack first, then a PumpProbe, and got a Stack second"
+    ):
+        inv.heating(SETUP, bonded(), power=10.0)
+    with pytest.raises(ValueError, match="check_coverage takes an Inversion first, not a NoneType"):
+        inv.check_coverage(None, seed=1)
+    with pytest.raises(ValueError, match="There is no delay; give one or more"):
+        inv.plot.echoes(bonded(), SETUP, [])
+    with pytest.raises(ValueError, match="Repeat got True as its count"):
+        inv.Repeat(True, inv.Layer("Al", thickness=5.0))
+
+
+def test_a_prior_that_no_file_could_rebuild_is_refused_before_the_search(problem, monkeypatch):
+    drawn = np.histogram(np.random.default_rng(1).normal(60, 3, 1000))
+    own = inv.Inversion(bonded(thickness=stats.rv_histogram(drawn)()), SETUP, problem.trace)
+    monkeypatch.setattr(inv.Inversion, "least_squares", lambda *_, **__: pytest.fail("searched"))
+    with pytest.raises(
+        ValueError, match=r"is not a named scipy\.stats family.*use a named family such as stats\.norm"
+    ):
+        own.sample_posterior(seed=1)

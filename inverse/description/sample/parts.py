@@ -295,7 +295,7 @@ class Repeat:
     parts: tuple[Any, ...]
 
     def __init__(self, count: int, *parts: Any) -> None:
-        if not isinstance(count, int) or count < 1:
+        if isinstance(count, bool) or not isinstance(count, int) or count < 1:
             raise ValueError(
                 f"Repeat got {count!r} as its count; give the number of periods first, then their parts."
             )

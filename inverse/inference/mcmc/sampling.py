@@ -112,9 +112,11 @@ def sample_posterior(
     seed, ensembles = checked_seed(seed), whole_number("ensembles", ensembles, 1)
     if ensembles < 2:
         raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
-    Targets(ess, rhat, max_steps, _CHUNK)  # What will not do is said before the search, not after it.
+    # What will not do is said before the search, not after it: targets, and priors that no file could rebuild.
+    Targets(ess, rhat, max_steps, _CHUNK)
     size = len(inversion.names)
     count = max(24, 3 * size + size % 2) if walkers is None else whole_number("walkers", walkers, 2 * size)
+    fingerprint = inversion.fingerprint()
     fit = inversion.least_squares(seed=seed) if fit is None else _checked_fit(fit, inversion.names)
     starts, mixture = prepare(inversion.posterior, fit.minima, ensembles, count + count % 2, seed)
     run = run_ensembles(
@@ -128,7 +130,7 @@ def sample_posterior(
         chunk=_CHUNK,
         moves=_moves(mixture) if moves is None else moves,
         checkpoint=checkpoint,
-        problem_hash=inversion.fingerprint(),
+        problem_hash=fingerprint,
         progress=progress,
         executor=executor,
     )

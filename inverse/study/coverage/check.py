@@ -94,6 +94,8 @@ def check_coverage(
     ValueError
         For arguments that will not do, or a store of another check.
     """
+    if not hasattr(inversion, "posterior"):
+        raise ValueError(f"check_coverage takes an Inversion first, not a {type(inversion).__name__}.")
     levels, sampling, seed = checked_levels(levels), Sampling(method, ess, max_steps), checked_seed(seed)
     _check_numbers(replicates, budget)
     if simulate_trace is not None and len(inversion.parts) > 1:
