@@ -71,6 +71,16 @@ def test_intervals_hold_the_truth(thickness):
     assert inv.check_model(fit).describes
 
 
+def test_a_search_finds_the_film_behind_its_fringes():
+    # Every fringe of the light in the film holds a minimum; 512 draws of seven unknowns seldom fall near the right one
+    found, _ = problem(1, SiO2__thickness=260.0)
+    fit = found.least_squares(seed=1)
+    thickness = np.array([basin.values[0] for basin in fit.minima])
+    weight = np.array([basin.weight for basin in fit.minima])
+    assert weight[np.abs(thickness - 260.0) < 5.0].sum() > 0.2
+    assert len(thickness) > 1
+
+
 def test_no_coefficient_of_the_truth_is_far_out_in_its_prior():
     found, truth = problem(1)
     (member,) = found.posterior.members

@@ -53,6 +53,17 @@ def test_a_stress_of_short_life_leaves_nothing_behind():
     assert abs(found.strain[0, 0]) < 1e-4 * 3.0 * 0.02 / 100.0
 
 
+def test_a_stress_that_dies_is_a_sum_of_steps():
+    # A step less the steps that end it: h_tau = h - (1 / tau) integral of exp(-t' / tau) h(t - t') dt'
+    delay = np.arange(-4.0, 70.0, 0.02)
+    lasting = inv.simulate(buried(initial_stress=0.02), SETUP, delay).reflectance_change.values
+    found = inv.simulate(buried(initial_stress=0.02, initial_stress_lifetime=5.0), SETUP, delay)
+    kept = np.exp(-np.arange(0.0, 74.0, 0.02) / 5.0)
+    kept[0] /= 2  # trapezoids
+    ended = np.convolve(lasting, kept)[: delay.size] * 0.02 / 5.0
+    np.testing.assert_allclose(found.reflectance_change, lasting - ended, atol=2e-5 * np.abs(lasting).max())
+
+
 def test_slices_of_equal_stress_are_one_layer():
     delay = np.arange(-2.0, 80.0, 0.2)
     whole = inv.simulate(buried(initial_stress=0.02), SETUP, delay).reflectance_change

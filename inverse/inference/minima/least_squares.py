@@ -14,6 +14,7 @@ from inverse.description.arguments import checked_seed, whole_number
 from inverse.description.wording import plus_minus
 from inverse.inference.minima.minimise import Minimum, covariance_of, jacobian, minimise
 from inverse.inference.minima.projection import Projected
+from inverse.inference.minima.starts import best, candidates, coarse_noise, given_point, joined, parts_of
 from inverse.inference.problem.parameters import Parameters
 from inverse.inference.problem.posterior import Posterior
 
@@ -34,7 +35,6 @@ class Density(Protocol):
     def __call__(self, z: Array) -> Array: ...
 
 
-_CANDIDATES = 512
 # Ends the search from a starting point: it is refined once the distinct minima are known.
 _ROUGH = 1e-8
 # Far below what the minimum's own width means, and above the rounding of the response.
@@ -164,12 +164,13 @@ def least_squares(
     posterior = inversion.posterior
     physical = np.array([n not in inversion.noise_names for n in inversion.names])
     centre = np.zeros(len(inversion.names))
-    candidates = _candidates(inversion, physical, seed)
-    near = [_given_point(inversion, point) for point in points]
+    drawn = candidates(inversion, physical, seed)
+    near = [given_point(inversion, point) for point in points]
     roughs: list[Minimum] = []
     for fraction, count in zip(_COARSE, (-(-starts // 2), starts // 2), strict=True):
-        coarse = _coarse_noise(inversion, centre, fraction)
-        for start in [*near, *_best(posterior, _joined(coarse, physical, candidates), count)]:
+        coarse = coarse_noise(inversion, centre, fraction)
+        parts = parts_of(inversion, physical, drawn, count)
+        for start in [*near, *best(posterior, joined(coarse, physical, drawn), count, parts)]:
             projected = Projected(posterior, physical, coarse)
             rough = minimise(
                 projected,
@@ -181,7 +182,7 @@ def least_squares(
             if all(_apart(rough, other) > _DISTINCT for other in roughs):
                 roughs.append(rough)
         near = []
-    found = [_joined(centre, physical, rough.x) for rough in roughs]
+    found = [joined(centre, physical, rough.x) for rough in roughs]
     found = sorted(found, key=lambda z: -float(posterior(z[None])[0]))[: max(4, starts // 2)]
     basins: list[Basin] = []
     for z in found:
@@ -198,88 +199,6 @@ def _apart(rough: Minimum, other: Minimum) -> float:
     return float(np.sqrt(delta @ np.linalg.pinv(covariance) @ delta / delta.size))
 
 
-def _joined(z: Array, physical: NDArray[np.bool_], x: Array) -> Array:
-    """Return the noise of z with the physical unknowns x, shape (..., physical unknowns)."""
-    out = np.broadcast_to(z, (*x.shape[:-1], z.size)).copy()
-    out[..., physical] = x
-    return out
-
-
-def _coarse_noise(inversion: Inversion, z: Array, fraction: float) -> Array:
-    """Return standard normal variables with white noise at a fraction of the signal and little discrepancy."""
-    named = inversion.posterior.parameters.named(inversion.posterior.parameters.to_values(z[None]))
-    values = {name: float(v[0]) for name, v in named.items()}
-    for member in inversion.posterior.members:
-        for channel in member.model.channels:
-            signal = float(np.std(channel.data[member.model.used]))
-            white = member.names[channel.prefix + "white"]
-            values[white] = max(values[white], fraction * signal)
-    array = np.array([[values[name] for name in inversion.names]])
-    return np.clip(inversion.posterior.parameters.to_z(array)[0], -30, 30)
-
-
-def _candidates(inversion: Inversion, physical: NDArray[np.bool_], seed: int) -> Array:
-    """Draw physical unknowns from the priors, half of them moved to the echoes; the first is the priors' middle."""
-    from scipy.special import ndtri
-    from scipy.stats import qmc
-
-    sampler = qmc.Sobol(int(physical.sum()), rng=np.random.default_rng(seed))
-    unit = np.clip(sampler.random(_CANDIDATES), 1e-3, 1 - 1e-3)
-    z = _joined(np.zeros(len(inversion.names)), physical, ndtri(unit))
-    _move_to_echo(inversion, z[::2])
-    z[0, physical] = 0.0
-    return z[:, physical]
-
-
-def _best(posterior: Posterior, z: Array, count: int) -> list[Array]:
-    """Return the points with the highest density, distinct ones only."""
-    score = posterior(z)
-    if not np.isfinite(score).any():
-        raise ValueError(
-            "No draw from the priors has a finite likelihood; check the priors and the constants."
-        )
-    chosen: list[Array] = []
-    for i in np.argsort(-np.nan_to_num(score, neginf=-1e300)):
-        if len(chosen) < count and np.isfinite(score[i]):
-            _add_distinct(chosen, z[i], 0.5)
-    return chosen
-
-
-def _given_point(inversion: Inversion, point: Mapping[str, float]) -> Array:
-    missing = [name for name in inversion.names if name not in point]
-    if missing:
-        raise ValueError(f"A starting point lacks {', '.join(missing)}; it gives {', '.join(point)}.")
-    values = np.array([[point[name] for name in inversion.names]], dtype=float)
-    if np.isnan(values).any():
-        raise ValueError("A starting point holds NaN; give a number for every unknown.")
-    return np.clip(inversion.posterior.parameters.to_z(values)[0], -5, 5)
-
-
-def _add_distinct(points: list[Array], z: Array, distance: float) -> None:
-    if all(np.linalg.norm(z - p) > distance for p in points):
-        points.append(z)
-
-
-def _move_to_echo(inversion: Inversion, z: Array) -> None:
-    """Move the top layer's thickness to the round-trip time that the echoes show (in place)."""
-    from inverse.description.trace.look import first_look
-
-    for member, part in zip(inversion.posterior.members, inversion.parts, strict=True):
-        slots = member.model.bound.media[0]
-        if "thickness" not in slots or slots["thickness"].prior is None:
-            continue
-        time = first_look(part.trace).round_trip
-        if time is None:
-            continue
-        values = inversion.posterior.parameters.to_values(z)
-        named = member.local(inversion.posterior.parameters.named(values))
-        column = inversion.names.index(member.names[slots["thickness"].name])
-        velocity = slots["velocity"].fill(named)
-        values[:, column] = np.asarray(velocity) * time.value / 2
-        moved = np.clip(inversion.posterior.parameters.to_z(values)[:, column], -3, 3)
-        z[:, column] = np.where(np.isfinite(moved), moved, z[:, column])
-
-
 def refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds: int = 3) -> Basin:
     """Alternate between the physical unknowns (least squares) and the noise (marginal likelihood)."""
     minimum: Minimum | None = None
@@ -293,7 +212,7 @@ def refine(posterior: Posterior, physical: NDArray[np.bool_], z: Array, rounds: 
             tolerance=_FINE,
             max_evaluations=100,
         )
-        z = _joined(z, physical, minimum.x)
+        z = joined(z, physical, minimum.x)
     assert minimum is not None
     if any(member.model.has_outliers for member in posterior.members):
         minimum = _with_own_curvature(posterior, physical, z, minimum)

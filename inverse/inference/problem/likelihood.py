@@ -123,6 +123,8 @@ class TraceModel:
         to it together. Without it they stay as they are.
     idle : bool array, optional
         Functions that do not count in that prediction.
+    clear : tuple of bool
+        Which media are transparent to the probe, top to bottom.
     """
 
     bound: BoundStack
@@ -138,6 +140,7 @@ class TraceModel:
     train: PulseTrain | None = None
     size: float | None = None
     idle: NDArray[np.bool_] | None = None
+    clear: tuple[bool, ...] = ()
 
     @property
     def coefficient_names(self) -> tuple[str, ...]:
@@ -217,8 +220,7 @@ class TraceModel:
         seen = {port: self._mean(port, batches, values, grid, sets) for port in ports}
         scale = self.widths[:, None]
         return {
-            c.name: tie(take(seen[PORTS[c.name]], c.name), self.layout, self.bound, values)
-            * (scale * c.scale)
+            c.name: scale * c.scale * tie(take(seen[PORTS[c.name]], c.name), self.layout, self.bound, values)
             for c in self.channels
         }
 

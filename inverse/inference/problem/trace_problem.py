@@ -228,6 +228,7 @@ def _trace_model(
         train=pulse_train(setup),
         size=size,
         idle=idle,
+        clear=tuple(_is_clear(medium.n_probe) for medium in batch.media),
     )
 
 
@@ -235,12 +236,12 @@ def _idle(layout: Columns, batch: Sample) -> NDArray[np.bool_]:
     """Tell the imaginary parts of the coefficients of transparent media, in the order of ``layout.names``."""
     liquid = [batch.ambient.n_probe] * batch.ambient.is_liquid
     index = [*liquid, *(medium.n_probe for medium in batch.media)]
-    clear = {
-        layout.groups[group]
-        for n, group in zip(index, layout.of_medium, strict=False)
-        if np.all(n.imag < CLEAR * n.real)
-    }
+    clear = {layout.groups[group] for n, group in zip(index, layout.of_medium, strict=False) if _is_clear(n)}
     return np.array([name.endswith(".imag") and name.rsplit(".", 2)[0] in clear for name in layout.names])
+
+
+def _is_clear(n: NDArray[np.complex128]) -> bool:
+    return bool(np.all(n.imag < CLEAR * n.real))
 
 
 def _width(name: str) -> float:
