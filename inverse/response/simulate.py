@@ -14,6 +14,7 @@ from inverse.description.limits import warn_if_not_plane
 from inverse.description.material.properties import Material
 from inverse.description.pumpprobe import PumpProbe
 from inverse.description.quantities import check
+from inverse.description.sample.known import known_values
 from inverse.description.sample.parts import Substrate
 from inverse.description.sample.places import BoundStack, bind
 from inverse.description.sample.stack import Stack
@@ -88,7 +89,7 @@ def simulate(
 
     delay = checked_delay(delay)
     bound, time_zero = bind(stack, setup), check("time_zero", time_zero)
-    known = _known(bound, values or {})
+    known = known_values(bound, values or {})
     grid = time_grid(delay, setup.pulse_rms, earliest=time_zero)
     batches = under_the_spot(bound, known)
     warn_if_not_plane(stack, setup, float(delay.max()) - time_zero)
@@ -120,24 +121,6 @@ def _as_channel(found: NDArray[np.complex128], channel: str, setup: PumpProbe) -
     if channel in ("reflectance_change", "transmission_change"):
         return 2 * found.real
     return found.imag if channel == "optical_phase" else setup.deflection * found.imag
-
-
-def _known(bound: BoundStack, values: Mapping[str, float]) -> dict[str, Array]:
-    if not isinstance(values, Mapping):
-        raise ValueError(f"values is a {type(values).__name__}; give a mapping of unknowns to numbers.")
-    strange = sorted(set(values) - set(bound.priors))
-    if strange:
-        raise ValueError(
-            f"values names {', '.join(strange)}; the stack's unknowns are {', '.join(bound.priors) or 'none'}."
-        )
-    fields = {slot.name: slot.field for slot in bound.slots}
-    wanted = {
-        name: values[name] if name in values else prior.median() for name, prior in bound.priors.items()
-    }
-    return {
-        name: np.array([check(fields[name], value, name.removesuffix(f".{fields[name]}"))])
-        for name, value in wanted.items()
-    }
 
 
 @dataclass(frozen=True)

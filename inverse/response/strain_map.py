@@ -13,7 +13,9 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.description.arguments import checked_delay
 from inverse.description.pumpprobe import PumpProbe
+from inverse.description.sample.known import known_values
 from inverse.description.sample.places import bind
 from inverse.description.sample.stack import Stack
 from inverse.response.basis import Beams, arrival, fields
@@ -66,12 +68,12 @@ def strain_map(
     Raises
     ------
     ValueError
-        If a depth is negative, not finite or below a free back; a constant is missing; or `values`
-        names no unknown.
+        If a depth is negative, not finite or below a free back; there is no delay; a constant is missing; or `values`
+        names no unknown or is out of range.
     """
     import xarray as xr
 
-    delay, depth = (np.atleast_1d(np.asarray(a, dtype=float)) for a in (delay, depth))
+    delay, depth = checked_delay(delay), np.atleast_1d(np.asarray(depth, dtype=float))
     batch = known_sample(stack, setup, values or {})
     number, below_top = _locate(batch, depth)
     grid = time_grid(delay, setup.pulse_rms, earliest=0.0)
@@ -110,16 +112,10 @@ def known_sample(stack: Stack, setup: PumpProbe, values: Mapping[str, float]) ->
     Raises
     ------
     ValueError
-        If `values` names no unknown of the stack, or a constant is missing.
+        If `values` names no unknown of the stack or is out of range, or a constant is missing.
     """
     bound = bind(stack, setup)
-    strange = sorted(set(values) - set(bound.priors))
-    if strange:
-        raise ValueError(
-            f"values names {', '.join(strange)}; the stack's unknowns are {', '.join(bound.priors) or 'none'}."
-        )
-    known = {n: np.array([float(values[n] if n in values else p.median())]) for n, p in bound.priors.items()}
-    return sample(bound, known)
+    return sample(bound, known_values(bound, values))
 
 
 def temperatures(

@@ -335,3 +335,10 @@ def test_a_prior_that_no_file_could_rebuild_is_refused_before_the_search(problem
         ValueError, match=r"is not a named scipy\.stats family.*use a named family such as stats\.norm"
     ):
         own.sample_posterior(seed=1)
+
+
+def test_a_strain_map_takes_the_same_values_as_a_trace():
+    with pytest.raises(ValueError, match=r"Al\.thickness = -3 is outside 0\.1 to"):
+        inv.strain_map(bonded(), SETUP, [1.0, 2.0], [5.0], values={"Al.thickness": -3.0})
+    with pytest.raises(ValueError, match="delay is a str that is not numbers"):
+        inv.strain_map(bonded(), SETUP, "a", [5.0])
