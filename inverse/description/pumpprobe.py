@@ -63,7 +63,9 @@ class PumpProbe:
         Electric field across (s) or in (p) the plane of incidence.
     lockin_channel : {"in-phase", "out-of-phase"}, optional
         The trace is this output of a lock-in, with the heat that earlier pulses of the train leave: it needs
-        `repetition_rate` and `modulation_frequency`. By default the trace is that of single pulses.
+        `repetition_rate` and `modulation_frequency`. By default the trace is that of single pulses. The ratio of the
+        two (`read_trace` with ``ratio=True``) is the in-phase channel over a constant: out of phase, a film on silicon
+        changes by 3e-4 to 5e-3 of itself over 100 ps, at 0.5 to 10 MHz.
     stage_scale : float, frozen scipy.stats distribution or Unknown
         Scale error of the delay stage: the sample ages by ``(1 + stage_scale) (delay - time_zero)``. As an unknown,
         such as ``stats.norm(0, 1e-3)``, it goes into the interval of every time and thickness.

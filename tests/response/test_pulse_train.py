@@ -99,6 +99,20 @@ def test_channels_of_a_trace():
         assert np.abs(np.diff(smooth, 2)).max() < 1e-4 * np.abs(plain).max()
 
 
+@pytest.mark.parametrize(("frequency", "change"), [(0.5, 5e-4), (10.0, 8e-3)])
+def test_a_ratio_is_the_in_phase_channel_over_a_constant(frequency, change):
+    # What divides the laser's drift out adds nothing of its own to the trace: a fit of the ratio is one of the channel
+    delay = np.arange(-5.0, 100.0, 0.5)
+    train = {"repetition_rate": 80.0, "modulation_frequency": frequency}
+    x, y = (
+        inv.simulate(STACK, setup(**train, lockin_channel=c), delay).reflectance_change.values
+        for c in ("in-phase", "out-of-phase")
+    )
+    assert 1e-5 < np.ptp(y) / np.abs(y).mean() < change
+    constant = x / y.mean()
+    assert np.abs(x / y - constant).max() < change * np.ptp(constant)
+
+
 def test_shares_still_add_up():
     found = inv.simulate(
         STACK, setup(**TRAIN, lockin_channel="in-phase"), np.arange(-5.0, 60.0, 0.5), shares=True
