@@ -11,7 +11,7 @@ pytestmark = [pytest.mark.slow, pytest.mark.benchmark]
 )
 def test_the_library_is_near_what_the_arithmetic_costs(stack, response, likelihood):
     """The aim is 5 and 8; RESULTS.md says where the rest goes."""
-    seconds = floor.measure(stack, rounds=5)
+    seconds = floor.measure(stack, rounds=9)
     print(f"\n{stack}: {seconds}")
     assert seconds["response"] < response * seconds["floor"]
     assert seconds["likelihood"] < likelihood * seconds["floor"]
