@@ -14,6 +14,7 @@ from scipy import stats
 
 import inverse as inv
 from inverse.inference.checks.coefficients import coefficient_warnings
+from inverse.inference.minima.starts import candidates, joined
 
 DELAY = np.arange(-4, 60, 0.2)
 
@@ -79,6 +80,17 @@ def test_a_search_finds_the_film_behind_its_fringes():
     weight = np.array([basin.weight for basin in fit.minima])
     assert weight[np.abs(thickness - 260.0) < 5.0].sum() > 0.2
     assert len(thickness) > 1
+
+
+def test_echoes_are_taken_for_those_of_the_film_that_makes_them():
+    # Light is absorbed in the metal: the echo at 2 x 60 / 6.42 = 18.7 ps is its own, not that of the glass above
+    found, _ = problem(1)
+    physical = np.array([name not in found.noise_names for name in found.names])
+    z = joined(np.zeros(len(found.names)), physical, candidates(found, physical, seed=1))
+    values = dict(zip(found.names, found.posterior.parameters.to_values(z[2::2]).T, strict=True))
+    metal, glass = (2 * values[f"{n}.thickness"] / values[f"{n}.velocity"] for n in ("Al", "SiO2"))
+    assert metal.std() < 0.5 and metal.mean() == pytest.approx(2 * 60 / 6.42, abs=0.7)
+    assert glass.std() > 10
 
 
 def test_no_coefficient_of_the_truth_is_far_out_in_its_prior():
