@@ -7,8 +7,9 @@ from problems import BOND, FILM, SETUP, bonded, noisy
 from scipy import stats
 
 import inverse as inv
-from inverse.inference.checks.budget import budget, constant_warnings, linearise, weigh_constants
+from inverse.inference.checks.budget import budget, constant_warnings, weigh_constants
 from inverse.inference.checks.constants import DEFAULT_RELATIVE_SPREAD, fixed_constants, with_constant
+from inverse.inference.checks.linearised import linearise
 from inverse.inference.minima.least_squares import refine
 from inverse.inference.minima.minimise import minimise
 from inverse.inference.minima.projection import Projected

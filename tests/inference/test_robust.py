@@ -8,7 +8,7 @@ from problems import SETUP, bonded, noisy
 from scipy import integrate, optimize, stats
 
 import inverse as inv
-from inverse.inference.checks.budget import linearise
+from inverse.inference.checks.linearised import linearise
 from inverse.inference.problem.noise import FREEDOM, Noise
 from inverse.inference.problem.robust import eliminate_student, gaussian_noise, student_residuals
 

@@ -3,17 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass, fields, replace
+from dataclasses import dataclass, fields
 from typing import Any
 
-from inverse.description.arguments import refuse_unknown_names, whole_number
+from inverse.description.arguments import whole_number
 from inverse.description.material.properties import Material, material
-from inverse.description.material.reference_tables import find
+from inverse.description.sample.overrides import GIVEN, MATERIAL_FIELDS, fill_medium
 from inverse.description.unknowns import checked, shown
 
 __all__ = [
     "EMPTY",
-    "MATERIAL_FIELDS",
     "Graded",
     "Interface",
     "Layer",
@@ -24,8 +23,6 @@ __all__ = [
     "Substrate",
     "unroll",
 ]
-
-_GIVEN = "given by the user"
 
 EMPTY = ("air", "vacuum")
 """What stands above or below a stack and carries neither sound nor heat."""
@@ -79,7 +76,7 @@ class Layer:
         checked("thickness_spread", thickness_spread, _name_of(material))
         object.__setattr__(self, "thickness", thickness)
         object.__setattr__(self, "thickness_spread", thickness_spread)
-        _fill_medium(self, material, orientation, overrides)
+        fill_medium(self, material, orientation, overrides)
 
     def __repr__(self) -> str:
         """Write the material and what was given."""
@@ -120,7 +117,7 @@ class Substrate:
             raise ValueError(
                 "Substrate got density_ratio; densities are stated relative to it, so give 'density'."
             )
-        _fill_medium(self, material, orientation, overrides)
+        fill_medium(self, material, orientation, overrides)
 
     def __repr__(self) -> str:
         """Write the material and what was given."""
@@ -345,7 +342,7 @@ def _fields_said(values: dict[str, Any]) -> str:
 def _said(part: Layer | Substrate, *own: str) -> str:
     """Write a medium's name, its own fields and those of its material that the user gave."""
     values = {name: getattr(part, name) for name in own}
-    given = {n: getattr(part.material, n) for n in MATERIAL_FIELDS if part.material.sources.get(n) == _GIVEN}
+    given = {n: getattr(part.material, n) for n in MATERIAL_FIELDS if part.material.sources.get(n) == GIVEN}
     if part.material.orientation is not None:
         given = {"orientation": part.material.orientation, **given}
     said = {name: value for name, value in {**values, **given}.items() if not _is_left_out(value)}
@@ -358,59 +355,3 @@ def _is_left_out(value: Any) -> bool:
 
 def _name_of(given: str | Material) -> str:
     return given.name if isinstance(given, Material) else str(given)
-
-
-MATERIAL_FIELDS = tuple(f.name for f in fields(Material) if f.name not in ("name", "sources", "spread"))
-
-
-def _fill_medium(
-    part: Layer | Substrate, given: str | Material, orientation: Any, overrides: dict[str, Any]
-) -> None:
-    """Resolve a material with its overrides into the attributes shared by layers and the substrate."""
-    base = _base(given, orientation, overrides)
-    ratio = overrides.pop("density_ratio", None)
-    refuse_unknown_names(base.name, overrides, (*MATERIAL_FIELDS, "density_ratio"))
-    if ratio is not None:
-        if "density" in overrides:
-            raise ValueError(f"{base.name} got both density and density_ratio; give one of them.")
-        checked("density_ratio", ratio, base.name)
-    object.__setattr__(part, "material", _override(base, overrides))
-    object.__setattr__(part, "density_ratio", ratio)
-
-
-def _base(given: str | Material, orientation: Any, overrides: dict[str, Any]) -> Material:
-    """Find the material to start from; with constants of its own a layer may be cut in any direction."""
-    if isinstance(given, Material):
-        return given if orientation is None else replace(given, orientation=orientation)
-    if "stiffness" not in overrides:
-        return material(given, orientation)
-    listed = find(given).orientations
-    if orientation is None or (isinstance(orientation, str) and orientation in listed):
-        return material(given, orientation)
-    start = material(given, listed[0] if listed else None)
-    return replace(start, orientation=orientation, thermal_stress_coefficient=_stress_of_any_cut(start))
-
-
-def _stress_of_any_cut(start: Material) -> Any:
-    """Return the thermal stress along the depth if it is the same for every cut, as in cubic crystals."""
-    cubic = start.stiffness is not None and start.stiffness["symmetry"] == "cubic"
-    return start.thermal_stress_coefficient if cubic else None
-
-
-def _override(base: Material, overrides: dict[str, Any]) -> Material:
-    if not overrides:
-        return base
-    if overrides.get("stiffness") is not None:
-        if overrides.get("velocity") is not None:
-            raise ValueError(
-                f"{base.name} got both stiffness and velocity; the velocity follows from the constants, so give one."
-            )
-        overrides = {**overrides, "velocity": None}
-    sources = {**base.sources, **dict.fromkeys(overrides, _GIVEN)}
-    spread = {k: v for k, v in base.spread.items() if k not in overrides}
-    parts = {"expansion", "bulk_modulus"} & set(overrides)
-    if parts and "thermal_stress_coefficient" not in overrides:
-        overrides = {**overrides, "thermal_stress_coefficient": None}
-    elif "thermal_stress_coefficient" in overrides and not parts:
-        overrides = {**overrides, "expansion": None, "bulk_modulus": None}
-    return replace(base, **overrides, sources=sources, spread=spread)

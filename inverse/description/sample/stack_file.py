@@ -11,8 +11,8 @@ from typing import Any
 
 from inverse.description.arguments import checked_path, nearest, refuse_unknown_names
 from inverse.description.pumpprobe import INSTRUMENT, PumpProbe
+from inverse.description.sample.overrides import MATERIAL_FIELDS
 from inverse.description.sample.parts import (
-    MATERIAL_FIELDS,
     Graded,
     Interface,
     Layer,
