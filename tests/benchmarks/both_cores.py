@@ -1,7 +1,8 @@
 """Four independent ensembles of the bundled example in one process, and on two worker processes.
 
 Both make the same steps; the workers are started, and have met the problem, before the clock runs. Times are by the
-clock and need an idle machine; the CPU time of the main process while the workers work tells what no core can share.
+clock; plain counting in turn with them tells what the machine gives two processes at the moment, and the CPU time of
+the main process while the workers work what no core can share.
 Run ``python tests/benchmarks/both_cores.py`` for the figures.
 """
 
@@ -13,6 +14,7 @@ from statistics import median
 
 import jacobian
 import numpy as np
+from counting import counts_per_second
 
 from inverse.inference.mcmc.ensembles import EnsembleRun, run_ensembles
 from inverse.inference.mcmc.executor import worker_pool
@@ -23,12 +25,16 @@ ENSEMBLES, WALKERS = 4, 28
 
 @dataclass(frozen=True)
 class Timing:
-    """Seconds by the clock of each repeat; CPU seconds of the main process, alone and beside the workers."""
+    """Seconds by the clock of each repeat; CPU seconds of the main process, alone and beside the workers.
+
+    `counted` is the gain of plain counting.
+    """
 
     alone: list[float]
     pooled: list[float]
     main_alone: float
     main_pooled: float
+    counted: float
     same_draws: bool
 
     @property
@@ -52,15 +58,20 @@ def measure(steps: int = 100, repeats: int = 3) -> Timing:
         options = {"ess": 1e9, "max_steps": count, "chunk": 50, "progress": False, "executor": executor}
         return run_ensembles(inversion.posterior, starts, seed=1, names=inversion.names, **options)
 
-    with worker_pool(2) as pool:
+    turns, counted = [], []
+    with worker_pool(1) as single, worker_pool(2) as pool:
         run(pool, 50)
-        turns = [(_timed(lambda: run(None, steps)), _timed(lambda: run(pool, steps))) for _ in range(repeats)]
+        counts_per_second(1, single)
+        for _ in range(repeats):
+            turns.append((_timed(lambda: run(None, steps)), _timed(lambda: run(pool, steps))))
+            counted.append(counts_per_second(8, pool) / counts_per_second(4, single))
     same = all(np.array_equal(one.chain, two.chain) for (one, *_), (two, *_) in turns)
     return Timing(
         [t for (_, t, _), _ in turns],
         [t for _, (_, t, _) in turns],
         min(cpu for (_, _, cpu), _ in turns),
         min(cpu for _, (_, _, cpu) in turns),
+        median(counted),
         same,
     )
 
@@ -75,5 +86,6 @@ if __name__ == "__main__":
     found = measure(repeats=7)
     print(found)
     print(
-        f"{found.speed_up:.2f} times by the clock, {found.bound:.2f} possible beside the main process's own work"
+        f"{found.speed_up:.2f} times by the clock, {found.bound:.2f} possible beside the main process's own work; "
+        f"plain counting gains {found.counted:.2f}"
     )

@@ -12,6 +12,7 @@ import time
 
 import numpy as np
 import pytest
+from counting import counts_per_second
 from scipy import stats
 
 import inverse as inv
@@ -50,20 +51,6 @@ def sites_per_second(recipe, traces, pool):
     taken = time.perf_counter() - started
     assert (found["status"] == "ok").all() and (found["method"] == "importance").all()
     return len(traces) / taken
-
-
-def count(number):
-    """Keep a core busy for some tenths of a second."""
-    total = 0
-    for k in range(5_000_000):
-        total += k ^ number
-    return total
-
-
-def counts_per_second(times, pool):
-    started = time.perf_counter()
-    list(pool.map(count, range(times)))
-    return times / (time.perf_counter() - started)
 
 
 def gain(rates):
