@@ -21,13 +21,14 @@ def percent(share: float, digits: int = 2) -> str:
 
 
 def plain(value: float, digits: int = 2) -> str:
-    """Write a number to some significant digits: ``230`` and ``0.012``, with an exponent only beyond 1e6 or 1e-4."""
+    """Write a number to some significant digits: ``230`` and ``0.012``, ``2.5e17`` only beyond 1e6 or 1e-4."""
     if not math.isfinite(value) or value == 0:
         return f"{value:g}"
     size = abs(value)
     place = math.floor(math.log10(float(f"{size:.{digits - 1}e}"))) - digits + 1
     if not 1e-4 <= size < 1e6:
-        return f"{value:.{digits - 1}e}"
+        mantissa, power = f"{value:.{digits - 1}e}".split("e")
+        return f"{mantissa}e{int(power)}"
     return f"{round(value, -place):.{max(0, -place)}f}"
 
 

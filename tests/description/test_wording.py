@@ -41,6 +41,6 @@ def test_plain_keeps_an_exponent_for_what_is_huge_or_tiny():
         "230",
         "0.012",
         "-4.7",
-        "2.5e+17",
-        "1.8e-08",
+        "2.5e17",
+        "1.8e-8",
     ]
