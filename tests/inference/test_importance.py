@@ -4,7 +4,13 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from inverse.inference.mcmc.importance import LARGEST_SHAPE, importance_draws, pareto_shape, smoothed_weights
+from inverse.inference.mcmc.importance import (
+    LARGEST_SHAPE,
+    LEAST_SPREAD,
+    importance_draws,
+    pareto_shape,
+    smoothed_weights,
+)
 from inverse.inference.mcmc.independence import StudentMixture
 
 MEAN = np.array([1.0, -2.0, 0.5])
@@ -98,3 +104,22 @@ def test_smoothed_weights_agree_with_arviz(degrees, scale):
 def test_density_without_a_possible_point_is_an_error():
     with pytest.raises(ValueError, match="is possible; check the priors"):
         importance_draws(lambda p: np.full(len(p), -np.inf), mixture(), np.random.default_rng(1), 100)
+
+
+def test_a_bent_ridge_that_the_weights_do_not_tell_of_is_found_out_by_its_spread():
+    """x normal, y = x^2 to a thousandth: a normal mixture at the mode reaches |x| of some hundredths only."""
+
+    def bent(points):
+        x, y = points.T
+        return -0.5 * x**2 - 0.5 * ((y - x**2) / 1e-3) ** 2
+
+    at_the_mode = StudentMixture(np.ones(1), np.zeros((1, 2)), np.diag([1.0, 1e-3])[None])
+    found = importance_draws(bent, at_the_mode, np.random.default_rng(6), 50)
+    sd = np.sqrt(found.weights @ (found.points[:, 0] - found.weights @ found.points[:, 0]) ** 2)
+    assert sd < 0.2 and found.spread == pytest.approx(sd, rel=0.5)
+    assert found.spread < LEAST_SPREAD and not found.suffice(1.0)
+
+
+def test_spread_is_one_where_the_mixture_holds():
+    found = importance_draws(log_normal, mixture(), np.random.default_rng(8), 500)
+    assert found.spread == pytest.approx(1.0, abs=5 / np.sqrt(2 * found.ess))

@@ -68,16 +68,17 @@ def test_both_methods_give_one_posterior():
 
 def test_points_are_taken_as_often_as_their_weight_says():
     weights = np.array([0.5, 0.25, 0.125, 0.125])
-    found = ImportanceDraws(np.arange(4.0)[:, None], weights, 3.0, 0.1)
+    found = ImportanceDraws(np.arange(4.0)[:, None], weights, 3.0, 0.1, 1.0)
     taken = found.resample_evenly(16, np.random.default_rng(1))[:, 0]
     assert list(np.bincount(taken.astype(int))) == [8, 4, 2, 2]
 
 
-def test_weights_suffice_by_shape_and_size():
+def test_weights_suffice_by_shape_size_and_spread():
     made = [
-        ImportanceDraws(np.zeros((1, 1)), np.ones(1), e, k) for e, k in ((500, 0.7), (499, 0.2), (900, 0.71))
+        ImportanceDraws(np.zeros((1, 1)), np.ones(1), ess, shape, spread)
+        for ess, shape, spread in ((500, 0.7, 0.7), (499, 0.2, 1.0), (900, 0.71, 1.0), (900, 0.2, 0.69))
     ]
-    assert [m.suffice(500) for m in made] == [True, False, False]
+    assert [m.suffice(500) for m in made] == [True, False, False, False]
 
 
 def test_a_deadline_is_looked_at_between_rounds(recipe):

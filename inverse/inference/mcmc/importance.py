@@ -17,12 +17,26 @@ from scipy.special import logsumexp
 
 from inverse.inference.mcmc.independence import EXTRA, StudentMixture, refit
 
-__all__ = ["LARGEST_SHAPE", "ImportanceDraws", "importance_draws", "pareto_shape", "smoothed_weights"]
+__all__ = [
+    "LARGEST_SHAPE",
+    "LEAST_SPREAD",
+    "ImportanceDraws",
+    "importance_draws",
+    "pareto_shape",
+    "smoothed_weights",
+]
 
 Array = NDArray[np.float64]
 
 LARGEST_SHAPE = 0.7
 """Pareto shape above which weighted draws are not to be used."""
+
+LEAST_SPREAD = 0.7
+"""Spread over that of the first mixture below which weighted draws are not to be used.
+
+A narrow ridge that bends leaves a straight mixture where it ends: the draws there have no weight, those that are left
+look even, and only their spread, too small, tells. A normal approximation that holds comes out at 0.9 to 1.6.
+"""
 
 _DRAWS_PER_UNKNOWN = 200
 _LEAST_DRAWS = 1000
@@ -41,16 +55,19 @@ class ImportanceDraws:
         Effective sample size, one over the sum of squared weights.
     shape : float
         Pareto k of the largest weights.
+    spread : float
+        Least standard deviation of an unknown over the least of it among the components of the first mixture.
     """
 
     points: Array
     weights: Array
     ess: float
     shape: float
+    spread: float
 
     def suffice(self, ess: float) -> bool:
         """Tell whether the weights can be trusted and are even enough for an effective sample size."""
-        return self.shape <= LARGEST_SHAPE and self.ess >= ess
+        return self.shape <= LARGEST_SHAPE and self.ess >= ess and self.spread >= LEAST_SPREAD
 
     def resample(self, count: int, rng: np.random.Generator) -> Array:
         """Draw points in proportion to their weights, with replacement."""
@@ -67,8 +84,8 @@ def importance_draws(
 ) -> ImportanceDraws:
     """Draw from a mixture and weight by a density; refit the mixture until the weights are even enough.
 
-    Each round's draws are independent of those its mixture was fitted to. The first round whose effective sample size
-    and Pareto shape suffice is returned, or the last of five.
+    Each round's draws are independent of those its mixture was fitted to. The first round whose effective sample
+    size, Pareto shape and spread suffice is returned, or the last of five.
 
     Parameters
     ----------
@@ -86,6 +103,7 @@ def importance_draws(
         If no draw of a round has a finite density.
     """
     mixture = first
+    own = np.linalg.norm(first.roots, axis=2).min(axis=0)
     count = max(_LEAST_DRAWS, _DRAWS_PER_UNKNOWN * first.means.shape[1])
     for extra in (*EXTRA, None):
         points = mixture.draw(rng, count)
@@ -95,11 +113,16 @@ def importance_draws(
             raise ValueError(f"None of {count} draws from the approximation is possible; check the priors.")
         points, log_weights = points[good], log_weights[good]
         weights, shape = smoothed_weights(log_weights)
-        found = ImportanceDraws(points, weights, float(1 / (weights @ weights)), shape)
+        spread = float((_deviations(points, weights) / own).min())
+        found = ImportanceDraws(points, weights, float(1 / (weights @ weights)), shape, spread)
         if extra is None or found.suffice(ess):
             break
         mixture = refit(points, log_weights, first.means, extra, rng)
     return found
+
+
+def _deviations(points: Array, weights: Array) -> Array:
+    return np.asarray(np.sqrt(weights @ (points - weights @ points) ** 2))
 
 
 def smoothed_weights(log_weights: Array) -> tuple[Array, float]:

@@ -85,8 +85,9 @@ def batch(
         As for `least_squares`.
     method : {"importance", "mcmc"}
         ``"importance"`` weights draws from an approximation of the posterior, in a tenth of the time of Markov chains;
-        at a site where its Pareto k is above 0.7 or its effective sample size stays below `ess`, chains are run
-        instead. The results say by site which it was.
+        at a site where its Pareto k is above 0.7, its effective sample size stays below `ess`, or the draws spread
+        much less than the normal approximation (a bent ridge, as at a prior's edge), chains are run instead. The
+        results say by site which it was.
     timeout : float, optional
         Seconds after which a site is given up.
     retry : bool
