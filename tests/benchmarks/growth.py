@@ -84,7 +84,7 @@ def memory(counts: tuple[int, ...] = SETS) -> dict[int, float]:
     return {n: peak_megabytes(inversion, n) for n in counts}
 
 
-def late_delays(compliance: float, rounds: int = 3, sets: int = 6) -> dict[str, float]:
+def late_delays(compliance: float, rounds: int = 9, sets: int = 6) -> dict[str, float]:
     """Seconds per parameter set of 400 delays: even to 95 ps, log-spaced to 4 ns, and these on one uniform grid.
 
     The median compliance of the bond, in nm/GPa, decides for how long echoes of high frequency ring on.
