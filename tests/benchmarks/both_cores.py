@@ -16,9 +16,10 @@ import jacobian
 import numpy as np
 from counting import counts_per_second
 
+from inverse.inference.mcmc.approximation import prepare
+from inverse.inference.mcmc.coordinates import straightened
 from inverse.inference.mcmc.ensembles import EnsembleRun, run_ensembles
 from inverse.inference.mcmc.executor import worker_pool
-from inverse.inference.mcmc.sampling import prepare
 
 ENSEMBLES, WALKERS = 4, 28
 
@@ -52,11 +53,12 @@ def measure(steps: int = 100, repeats: int = 3) -> Timing:
     """Run both ways in turn."""
     inversion = jacobian.example()
     fit = inversion.least_squares(starts=2, seed=1)
-    starts, _ = prepare(inversion.posterior, fit.minima, ENSEMBLES, WALKERS, 1)
+    density = straightened(inversion.posterior)
+    starts, _ = prepare(density, fit.minima, ENSEMBLES, WALKERS, 1)
 
     def run(executor: Executor | None, count: int) -> EnsembleRun:
         options = {"ess": 1e9, "max_steps": count, "chunk": 50, "progress": False, "executor": executor}
-        return run_ensembles(inversion.posterior, starts, seed=1, names=inversion.names, **options)
+        return run_ensembles(density, starts, seed=1, names=inversion.names, **options)
 
     turns, counted = [], []
     with worker_pool(1) as single, worker_pool(2) as pool:

@@ -43,7 +43,7 @@ def test_weighted_draws_have_the_moments_of_a_correlated_normal_density():
 def test_resampled_points_follow_the_weights():
     rng = np.random.default_rng(3)
     found = importance_draws(log_normal, mixture(1.5), rng, 400)
-    points = found.resample(4000, rng)
+    points = found.resample_evenly(4000, rng)
     for i in range(3):
         scaled = (points[:, i] - MEAN[i]) / np.sqrt((ROOT @ ROOT.T)[i, i])
         assert abs(scaled.mean()) < 5 * np.sqrt(1 / 4000 + 1 / found.ess)

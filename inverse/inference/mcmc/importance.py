@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import logsumexp
 
-from inverse.inference.mcmc.independence import EXTRA, StudentMixture, refit
+from inverse.inference.mcmc.independence import DEGREES, EXTRA, StudentMixture, refit
 
 __all__ = [
     "LARGEST_SHAPE",
@@ -35,7 +35,7 @@ LEAST_SPREAD = 0.7
 """Spread over that of the first mixture below which weighted draws are not to be used.
 
 A narrow ridge that bends leaves a straight mixture where it ends: the draws there have no weight, those that are left
-look even, and only their spread, too small, tells. A normal approximation that holds comes out at 0.9 to 1.6.
+look even, and only their spread, too small, tells. A normal approximation that holds comes out near 1.
 """
 
 _DRAWS_PER_UNKNOWN = 200
@@ -56,7 +56,8 @@ class ImportanceDraws:
     shape : float
         Pareto k of the largest weights.
     spread : float
-        Least standard deviation of an unknown over the least of it among the components of the first mixture.
+        Least standard deviation of an unknown over the least of it among the components of the first mixture, of
+        their possible draws.
     """
 
     points: Array
@@ -68,10 +69,6 @@ class ImportanceDraws:
     def suffice(self, ess: float) -> bool:
         """Tell whether the weights can be trusted and are even enough for an effective sample size."""
         return self.shape <= LARGEST_SHAPE and self.ess >= ess and self.spread >= LEAST_SPREAD
-
-    def resample(self, count: int, rng: np.random.Generator) -> Array:
-        """Draw points in proportion to their weights, with replacement."""
-        return self.points[rng.choice(len(self.points), size=count, p=self.weights)]
 
     def resample_evenly(self, count: int, rng: np.random.Generator) -> Array:
         """Take each point as often as its share of `count`, rounded up or down at random (systematic resampling)."""
@@ -102,23 +99,31 @@ def importance_draws(
     ValueError
         If no draw of a round has a finite density.
     """
-    mixture = first
-    own = np.linalg.norm(first.roots, axis=2).min(axis=0)
+    mixture, own = first, None
     count = max(_LEAST_DRAWS, _DRAWS_PER_UNKNOWN * first.means.shape[1])
     for extra in (*EXTRA, None):
-        points = mixture.draw(rng, count)
+        points, component = mixture.labelled(rng, count)
         log_weights = log_density(points) - mixture.log_density(points)
         good = np.isfinite(log_weights)
         if not good.any():
             raise ValueError(f"None of {count} draws from the approximation is possible; check the priors.")
         points, log_weights = points[good], log_weights[good]
         weights, shape = smoothed_weights(log_weights)
+        own = _least_deviations(points, component[good]) if own is None else own
         spread = float((_deviations(points, weights) / own).min())
         found = ImportanceDraws(points, weights, float(1 / (weights @ weights)), shape, spread)
         if extra is None or found.suffice(ess):
             break
         mixture = refit(points, log_weights, first.means, extra, rng)
     return found
+
+
+def _least_deviations(points: Array, component: NDArray[np.intp]) -> Array:
+    """Least standard deviation of each unknown among components, of the possible draws; infinite if all are few."""
+    of_each = (points[component == c] for c in np.unique(component))
+    found = [_deviations(p, np.full(len(p), 1 / len(p))) for p in of_each if len(p) > 2 * points.shape[1]]
+    stretch = np.sqrt(DEGREES / (DEGREES - 2))
+    return np.asarray(np.min(found, axis=0) / stretch if found else np.full(points.shape[1], np.inf))
 
 
 def _deviations(points: Array, weights: Array) -> Array:

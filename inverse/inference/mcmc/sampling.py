@@ -5,8 +5,9 @@ from __future__ import annotations
 import hashlib
 import json
 import os
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from concurrent.futures import Executor
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
@@ -14,10 +15,12 @@ from numpy.typing import NDArray
 
 from inverse.description.arguments import checked_seed, whole_number
 from inverse.description.unknowns import describe_prior
+from inverse.inference.mcmc.approximation import prepare
+from inverse.inference.mcmc.coordinates import straightened
 from inverse.inference.mcmc.ensembles import EnsembleRun, run_ensembles
-from inverse.inference.mcmc.independence import IndependenceMove, StudentMixture, adapt
+from inverse.inference.mcmc.independence import IndependenceMove, StudentMixture
 from inverse.inference.mcmc.verdict import Targets
-from inverse.inference.minima.least_squares import Basin, Density, Fit
+from inverse.inference.minima.least_squares import Density, Fit
 from inverse.inference.result import problem_record
 
 if TYPE_CHECKING:
@@ -25,14 +28,11 @@ if TYPE_CHECKING:
 
     from inverse.inference.inversion import Inversion
 
-__all__ = ["first_mixture", "prepare", "problem_hash", "sample_posterior"]
+__all__ = ["problem_hash", "sample_posterior", "walk"]
 
 Array = NDArray[np.float64]
 
 _CHUNK = 50
-
-_LEAST_WEIGHT = 1e-3
-"""A minimum with less probability than this in the normal approximation gets no walkers."""
 
 
 class Problem(Protocol):
@@ -92,7 +92,8 @@ def sample_posterior(
         Runs the ensembles side by side.
     moves : emcee moves, optional
         By default seven steps in ten offer fresh draws from an approximation of the posterior that was fixed before
-        the run, the others are differential evolution and stretch moves.
+        the run, the others are differential evolution and stretch moves. They move in the coordinates of
+        `inverse.inference.mcmc.coordinates`.
     checks : bool
         Look for what speaks against the model and write it into the result as warnings; takes some seconds.
     progress : bool or callable
@@ -109,7 +110,41 @@ def sample_posterior(
     ValueError
         For arguments that will not do or a checkpoint of another problem.
     """
-    seed, ensembles = checked_seed(seed), whole_number("ensembles", ensembles, 1)
+    seed = checked_seed(seed)
+    run, fit = walk(
+        inversion,
+        seed=seed,
+        fit=fit,
+        ess=ess,
+        rhat=rhat,
+        ensembles=ensembles,
+        walkers=walkers,
+        max_steps=max_steps,
+        checkpoint=checkpoint,
+        executor=executor,
+        moves=moves,
+        progress=progress,
+    )
+    return inversion.result(run, seed, fit, checks=checks)
+
+
+def walk(
+    inversion: Problem,
+    *,
+    seed: int,
+    fit: Fit | None = None,
+    ess: float = 1000,
+    rhat: float = 1.01,
+    ensembles: int = 4,
+    walkers: int | None = None,
+    max_steps: int = 20000,
+    checkpoint: str | os.PathLike[str] | None = None,
+    executor: Executor | None = None,
+    moves: Any = None,
+    progress: bool | Callable[[dict[str, Any]], object] = True,
+) -> tuple[EnsembleRun, Fit]:
+    """Run the chains of `sample_posterior`, whose arguments it takes; they are of standard normal variables."""
+    ensembles = whole_number("ensembles", ensembles, 1)
     if ensembles < 2:
         raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
     # What will not do is said before the search, not after it: targets, and priors that no file could rebuild.
@@ -118,9 +153,10 @@ def sample_posterior(
     count = max(24, 3 * size + size % 2) if walkers is None else whole_number("walkers", walkers, 2 * size)
     fingerprint = inversion.fingerprint()
     fit = inversion.least_squares(seed=seed) if fit is None else _checked_fit(fit, inversion.names)
-    starts, mixture = prepare(inversion.posterior, fit.minima, ensembles, count + count % 2, seed)
+    density = straightened(inversion.posterior)
+    starts, mixture = prepare(density, fit.minima, ensembles, count + count % 2, seed)
     run = run_ensembles(
-        inversion.posterior,
+        density,
         starts,
         seed=seed,
         names=inversion.names,
@@ -134,7 +170,8 @@ def sample_posterior(
         progress=progress,
         executor=executor,
     )
-    return inversion.result(run, seed, fit, checks=checks)
+    z, stretch = density.to_z(run.chain)
+    return replace(run, chain=z, log_prob=run.log_prob - stretch), fit
 
 
 def _checked_fit(fit: Any, names: tuple[str, ...]) -> Fit:
@@ -146,40 +183,6 @@ def _checked_fit(fit: Any, names: tuple[str, ...]) -> Fit:
             "problem."
         )
     return fit
-
-
-def prepare(
-    posterior: Density, minima: Sequence[Basin], ensembles: int, walkers: int, seed: int
-) -> tuple[Array, StudentMixture]:
-    """Approximate the posterior from its minima and draw starting points from the approximation.
-
-    Returns
-    -------
-    starts : array, shape (ensembles, walkers, unknowns)
-        Importance-resampled without replacement: no two ensembles share a point.
-    mixture : StudentMixture
-    """
-    rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(2)[1])
-    mixture, points, log_weights = adapt(posterior, first_mixture(minima), rng)
-    count = ensembles * walkers
-    if len(points) < count:
-        raise ValueError(
-            f"Only {len(points)} of the points drawn around the minima are possible; {count} walkers are asked for. "
-            "Check the priors against the allowed ranges."
-        )
-    # Gumbel's trick: sampling without replacement in proportion to the weights.
-    order = np.argsort(-(log_weights + rng.gumbel(size=len(points))))[:count]
-    return points[rng.permutation(order)].reshape(ensembles, walkers, -1), mixture
-
-
-def first_mixture(minima: Sequence[Basin]) -> StudentMixture:
-    """Give every minimum that matters a component of its normal approximation, with equal weights."""
-    kept = [b for b in minima if b.weight >= _LEAST_WEIGHT]
-    return StudentMixture(
-        np.full(len(kept), 1 / len(kept)),
-        np.array([b.z for b in kept]),
-        np.array([np.linalg.cholesky(_positive(b.covariance_z)) for b in kept]),
-    )
 
 
 def _moves(mixture: StudentMixture) -> list[tuple[Any, float]]:
@@ -215,8 +218,3 @@ def _rounded(value: Any) -> Any:
     if isinstance(value, list):
         return [_rounded(v) for v in value]
     return float(f"{value:.8e}") if isinstance(value, float) else value
-
-
-def _positive(covariance: Array) -> Array:
-    size, vectors = np.linalg.eigh(covariance)
-    return np.asarray((vectors * np.clip(size, 1e-12, 1.0)) @ vectors.T)

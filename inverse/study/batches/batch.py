@@ -13,11 +13,11 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from inverse.description.arguments import checked_seed, whole_number
+from inverse.inference.mcmc.draws import METHODS
 from inverse.inference.mcmc.executor import UNGUARDED, Shared, checked_executor, completed, worker_pool
 from inverse.study.batches.recipe import Recipe
 from inverse.study.batches.results import results_dataset
 from inverse.study.batches.site import Effort, SiteTask, fingerprint, fit_site
-from inverse.study.batches.site_draws import METHODS
 from inverse.study.batches.site_table import site_rows
 from inverse.study.batches.store import SiteRecord, SiteStore
 
@@ -86,7 +86,7 @@ def batch(
     method : {"importance", "mcmc"}
         ``"importance"`` weights draws from an approximation of the posterior, in a tenth of the time of Markov chains;
         at a site where its Pareto k is above 0.7, its effective sample size stays below `ess`, or the draws spread
-        much less than the normal approximation (a bent ridge, as at a prior's edge), chains are run instead. The
+        much less than the normal approximation (a bent ridge), chains are run instead. The
         results say by site which it was.
     timeout : float, optional
         Seconds after which a site is given up.

@@ -1,4 +1,4 @@
-"""Draws of one site's posterior: by importance where the weights can be trusted, else by Markov chains."""
+"""Draws of one site's posterior, and of what follows from them."""
 
 from __future__ import annotations
 
@@ -11,8 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.unknowns import describe_prior
-from inverse.inference.mcmc.importance import importance_draws
-from inverse.inference.mcmc.sampling import first_mixture
+from inverse.inference.mcmc.draws import draw_posterior
 from inverse.inference.result import named_variables, prior_draws
 from inverse.study.splits.data import prior_of_derived
 
@@ -21,12 +20,10 @@ if TYPE_CHECKING:
     from inverse.inference.minima.least_squares import Fit
     from inverse.study.batches.site import Effort
 
-__all__ = ["METHODS", "SiteDraws", "site_draws"]
+__all__ = ["SiteDraws", "site_draws"]
 
 Array = NDArray[np.float64]
 
-METHODS = ("importance", "mcmc")
-_POOL = 4000
 _ATTRIBUTES = ("units", "long_name", "symbol", "role")
 
 
@@ -72,54 +69,22 @@ def site_draws(
     check : callable
         Called now and then; may raise to end the work.
     """
-    weighted = _weighted(inversion, fit, effort, seed, check) if effort.method == "importance" else None
-    return weighted or _walked(inversion, fit, effort, seed, check)
-
-
-def _weighted(
-    inversion: Inversion, fit: Fit, effort: Effort, seed: int, check: Callable[[], None]
-) -> SiteDraws | None:
-    """Draw by importance; None where the weights cannot be trusted or are too uneven."""
-    rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(3)[2])
-    posterior = inversion.posterior
-
-    def density(points: Array) -> Array:
-        check()
-        return posterior(points)
-
-    found = importance_draws(density, first_mixture(fit.minima), rng, effort.ess)
-    if not found.suffice(effort.ess):
-        return None
-    values = posterior.parameters.to_values(found.resample_evenly(_POOL, rng))
-    made = named_variables(inversion, values, ("draw",))
-    fresh = named_variables(inversion, prior_draws(posterior.parameters, rng, None), ("draw",))
-    variables = {name: _described(attrs, fresh[name][1]) for name, (_, _, attrs) in made.items()}
-    message = f"effective sample size {found.ess:.0f}, Pareto k {found.shape:.2f}"
-    return SiteDraws(
-        variables, np.stack([array for _, array, _ in made.values()]), "importance", True, message
-    )
-
-
-def _walked(
-    inversion: Inversion, fit: Fit, effort: Effort, seed: int, check: Callable[[], None]
-) -> SiteDraws:
-    tree: Any = inversion.sample_posterior(
+    found = draw_posterior(
+        inversion,
+        fit,
         seed=seed,
-        fit=fit,
         ess=effort.ess,
+        method=effort.method,
         ensembles=effort.ensembles,
         max_steps=effort.max_steps,
-        checks=False,
-        progress=lambda news: check(),
+        check=check,
     )
-    posterior, prior = tree["posterior"], tree["prior"]
-    convergence = json.loads(tree.attrs["inverse"])["convergence"]
-    variables = {
-        str(name): _described(posterior[name].attrs, prior[name].values.ravel())
-        for name in posterior.data_vars
-    }
-    values = np.stack([posterior[name].values.ravel() for name in variables])
-    return SiteDraws(variables, values, "mcmc", bool(convergence["converged"]), str(convergence["message"]))
+    made = named_variables(inversion, found.values, ("draw",))
+    rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(1)[0])
+    prior = named_variables(inversion, prior_draws(inversion.posterior.parameters, rng, None), ("draw",))
+    variables = {name: _described(attrs, prior[name][1]) for name, (_, _, attrs) in made.items()}
+    values = np.stack([array for _, array, _ in made.values()])
+    return SiteDraws(variables, values, found.method, found.converged, found.message)
 
 
 def _described(attrs: Mapping[str, Any], prior: Array) -> dict[str, str]:

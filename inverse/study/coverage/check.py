@@ -65,7 +65,8 @@ def check_coverage(
         Effective sample size of each posterior, 100 or more.
     method : {"mcmc", "importance"}
         ``"mcmc"`` runs what `Inversion.sample_posterior` runs. ``"importance"`` weights draws from an approximation,
-        several times faster; where its Pareto k is above 0.7 or the weights are too uneven it falls back on MCMC.
+        several times faster; where its Pareto k is above 0.7, the weights are too uneven or the draws spread much
+        less than the normal approximation it falls back on MCMC.
         Each replicate says what it used.
     simulate_trace : callable, optional
         ``simulate_trace(rng, values)`` makes the data instead of the model: for traces that the model does not

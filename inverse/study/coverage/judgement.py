@@ -2,31 +2,24 @@
 
 from __future__ import annotations
 
-import json
 import time
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.inference.mcmc.importance import importance_draws
-from inverse.inference.mcmc.sampling import first_mixture, sample_posterior
+from inverse.inference.mcmc.draws import METHODS, draw_posterior
 from inverse.study.coverage.ranks import DRAWS, rank_of
 from inverse.study.coverage.replicates import quantities
 
 if TYPE_CHECKING:
     from inverse.inference.inversion import Inversion
 
-__all__ = ["METHODS", "Replicate", "Sampling", "judge"]
+__all__ = ["Replicate", "Sampling", "judge"]
 
 Array = NDArray[np.float64]
-
-METHODS = ("mcmc", "importance")
-
-_POOL = 4000
-"""Draws taken from weighted points; enough that medians and standard deviations do not feel the resampling."""
 
 
 @dataclass(frozen=True)
@@ -90,16 +83,6 @@ class Replicate:
     seconds: float
 
 
-@dataclass(frozen=True)
-class _Draws:
-    """Posterior draws of shape (n, unknowns), and how they came about."""
-
-    values: Array
-    method: str
-    converged: bool
-    message: str
-
-
 def judge(
     inversion: Inversion,
     truth: Mapping[str, float],
@@ -120,7 +103,15 @@ def judge(
     """
     start = time.process_time()
     try:
-        found = _draws(inversion, sampling, sequence)
+        seed = int(sequence.generate_state(1)[0])
+        found = draw_posterior(
+            inversion,
+            inversion.least_squares(seed=seed),
+            seed=seed,
+            ess=sampling.ess,
+            method=sampling.method,
+            max_steps=sampling.max_steps,
+        )
         named = quantities(inversion, found.values)
     except Exception as error:
         message = f"{type(error).__name__}: {error}"
@@ -145,31 +136,3 @@ def _sd(draws: Array) -> float:
     """Half the width of the central 68.27 % interval: finite where a stiffness has no mean."""
     low, high = np.quantile(draws, [0.15865, 0.84135])
     return float(high - low) / 2
-
-
-def _draws(inversion: Inversion, sampling: Sampling, sequence: np.random.SeedSequence) -> _Draws:
-    seed = int(sequence.generate_state(1)[0])
-    fit = inversion.least_squares(seed=seed)
-    weighted = _weighted(inversion, fit, sampling, seed) if sampling.method == "importance" else None
-    return weighted or _walked(inversion, fit, sampling, seed)
-
-
-def _walked(inversion: Inversion, fit: Any, sampling: Sampling, seed: int) -> _Draws:
-    tree = sample_posterior(
-        inversion, seed=seed, fit=fit, ess=sampling.ess, max_steps=sampling.max_steps, progress=False
-    )
-    convergence = json.loads(tree.attrs["inverse"])["convergence"]
-    columns = [np.asarray(tree["posterior"][name], dtype=float).ravel() for name in inversion.names]
-    return _Draws(np.stack(columns, axis=1), "mcmc", convergence["converged"], convergence["message"])
-
-
-def _weighted(inversion: Inversion, fit: Any, sampling: Sampling, seed: int) -> _Draws | None:
-    """Draw by importance; None where the weights cannot be trusted or are too uneven."""
-    rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(3)[2])
-    found = importance_draws(inversion.posterior, first_mixture(fit.minima), rng, sampling.ess)
-    if not found.suffice(sampling.ess):
-        return None
-    values = inversion.posterior.parameters.to_values(found.resample(_POOL, rng))
-    return _Draws(
-        values, "importance", True, f"effective sample size {found.ess:.0f}, Pareto k {found.shape:.2f}"
-    )
