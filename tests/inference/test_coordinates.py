@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 from scipy import integrate, stats
 
-from inverse.inference.mcmc.approximation import first_mixture, prepare
+from inverse.inference.mcmc.approximation import approximate, prepare
 from inverse.inference.mcmc.coordinates import straightened
 from inverse.inference.mcmc.importance import importance_draws
 from inverse.inference.mcmc.sampling import walk
@@ -122,7 +122,7 @@ def exact(problem):
 def test_the_first_approximation_has_the_whole_length_of_a_ridge_near_an_end():
     """But for the end the velocity is as its prior says; the normal variables' approximation is narrower."""
     problem, basin = ridge(12.5, 0.01)
-    mixture = first_mixture(straightened(problem), [basin])
+    mixture = approximate(straightened(problem), [basin], np.random.default_rng(1)).mixture
     assert np.linalg.norm(mixture.roots[0], axis=1)[1] == pytest.approx(1.0, rel=0.03)
     assert np.sqrt(basin.covariance_z[1, 1]) < 0.9
 
@@ -131,7 +131,7 @@ def test_the_first_approximation_has_the_whole_length_of_a_ridge_near_an_end():
 def test_an_approximation_at_the_very_end_of_a_prior_can_be_drawn_from(z):
     problem, basin = ridge(12.4, 1e-5)
     density = straightened(problem)
-    mixture = first_mixture(density, [replace(basin, z=np.array([z, 0.0]))])
+    mixture = approximate(density, [replace(basin, z=np.array([z, 0.0]))], np.random.default_rng(1)).mixture
     assert np.isfinite(density(mixture.draw(np.random.default_rng(2), 1000))).mean() > 0.05
 
 
@@ -140,7 +140,8 @@ def test_a_ridge_that_ends_at_its_prior_keeps_its_length(ratio):
     """The posterior of the velocity is that by quadrature, far from the prior's edge, at it and cut by it."""
     problem, basin = ridge(ratio, 0.01)
     density = straightened(problem)
-    found = importance_draws(density, first_mixture(density, [basin]), np.random.default_rng(3), 400)
+    rng = np.random.default_rng(3)
+    found = importance_draws(density, approximate(density, [basin], rng), rng, 400)
     assert found.suffice(400)
     velocity = problem.parameters.to_values(density.to_z(found.points)[0])[:, 1]
     mean = found.weights @ velocity
@@ -192,5 +193,5 @@ def test_the_middle_of_a_cut_ridge_is_where_the_density_is_high():
     """The minimum of normal variables is held back from the end; the approximation's middle is not."""
     problem, basin = ridge(12.5, 0.01)
     density = straightened(problem)
-    mixture = first_mixture(density, [basin])
+    mixture = approximate(density, [basin], np.random.default_rng(1)).mixture
     assert density(mixture.means)[0] > density(density.of_z(basin.z)[None])[0]

@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
+from inverse.inference.mcmc.approximation import Approximation
 from inverse.inference.mcmc.importance import (
     LARGEST_SHAPE,
     LEAST_SPREAD,
@@ -22,8 +23,14 @@ def log_normal(points):
     return -0.5 * (white * white).sum(axis=0)
 
 
+def normal(mean, root):
+    """One component, and its deviations."""
+    mixture = StudentMixture(np.ones(1), np.asarray(mean)[None], np.asarray(root)[None])
+    return Approximation(mixture, np.linalg.norm(root, axis=1))
+
+
 def mixture(scale=1.0, shift=0.0):
-    return StudentMixture(np.ones(1), (MEAN + shift)[None], scale * ROOT[None])
+    return normal(MEAN + shift, scale * ROOT)
 
 
 def test_weighted_draws_have_the_moments_of_a_correlated_normal_density():
@@ -59,7 +66,7 @@ def test_proposal_far_too_narrow_is_found_out():
 
 
 def test_poor_first_guess_is_mended_by_refitting():
-    narrow = StudentMixture(np.ones(1), (MEAN + 1.0)[None], 0.4 * ROOT[None])
+    narrow = normal(MEAN + 1.0, 0.4 * ROOT)
     found = importance_draws(log_normal, narrow, np.random.default_rng(4), 500)
     assert found.ess >= 500 and found.shape <= LARGEST_SHAPE
     assert (
@@ -113,7 +120,7 @@ def test_a_bent_ridge_that_the_weights_do_not_tell_of_is_found_out_by_its_spread
         x, y = points.T
         return -0.5 * x**2 - 0.5 * ((y - x**2) / 1e-3) ** 2
 
-    at_the_mode = StudentMixture(np.ones(1), np.zeros((1, 2)), np.diag([1.0, 1e-3])[None])
+    at_the_mode = normal(np.zeros(2), np.diag([1.0, 1e-3]))
     found = importance_draws(bent, at_the_mode, np.random.default_rng(6), 50)
     sd = np.sqrt(found.weights @ (found.points[:, 0] - found.weights @ found.points[:, 0]) ** 2)
     assert sd < 0.2 and found.spread == pytest.approx(sd, rel=0.5)

@@ -1,17 +1,20 @@
-"""The first approximation of a posterior: the normal one around each minimum, in straight coordinates."""
+"""The first approximation of a posterior, from its minima, in straight coordinates."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from inverse.inference.mcmc.coordinates import Straight
-from inverse.inference.mcmc.independence import StudentMixture, adapt
+from inverse.inference.mcmc.independence import StudentMixture, adapt, fit_mixture
+from inverse.inference.mcmc.linear_problem import EDGED_PRECISION, LinearProblem
 from inverse.inference.minima.least_squares import Basin
+from inverse.inference.problem.posterior import Posterior
 
-__all__ = ["first_mixture", "prepare"]
+__all__ = ["Approximation", "approximate", "prepare"]
 
 Array = NDArray[np.float64]
 
@@ -21,11 +24,27 @@ _LEAST_WEIGHT = 1e-3
 _WITHIN = 0.95
 """How far towards an end, of the way there, the middle of an approximation may be moved."""
 
-_EDGED_PRECISION = 0.25
-"""Of an unknown between ends that the data leave open: twice the deviation of its uniform prior."""
-
+_COMPONENTS = 6
+_DRAWS = 2000
+_LEAST_WITHIN = 20  # draws per unknown
+_WALKERS, _BURN_IN, _KEPT = 32, 40, 40
 _HALVINGS = 4
 _ROUNDING = 1e-13
+
+
+@dataclass(frozen=True)
+class Approximation:
+    """An approximation of a posterior.
+
+    Attributes
+    ----------
+    mixture : StudentMixture
+    spread : array, shape (unknowns,)
+        Standard deviations of its draws about the minimum about which they are least.
+    """
+
+    mixture: StudentMixture
+    spread: Array
 
 
 def prepare(
@@ -40,7 +59,7 @@ def prepare(
     mixture : StudentMixture
     """
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(2)[1])
-    mixture, points, log_weights = adapt(density, first_mixture(density, minima), rng)
+    mixture, points, log_weights = adapt(density, approximate(density, minima, rng).mixture, rng)
     count = ensembles * walkers
     if len(points) < count:
         raise ValueError(
@@ -52,12 +71,59 @@ def prepare(
     return points[rng.permutation(order)].reshape(ensembles, walkers, -1), mixture
 
 
-def first_mixture(density: Straight, minima: Sequence[Basin]) -> StudentMixture:
-    """Give every minimum that matters a component of its normal approximation, with equal weights."""
-    kept = [_normal(density, b) for b in minima if b.weight >= _LEAST_WEIGHT]
-    return StudentMixture(
-        np.full(len(kept), 1 / len(kept)), np.array([m for m, _ in kept]), np.array([r for _, r in kept])
+def approximate(density: Straight, minima: Sequence[Basin], rng: np.random.Generator) -> Approximation:
+    """Approximate a posterior about every minimum that matters, all minima with equal weights."""
+    parts = [_part(density, b, rng) for b in minima if b.weight >= _LEAST_WEIGHT]
+    weights = np.concatenate([p.mixture.weights for p in parts]) / len(parts)
+    means = np.concatenate([p.mixture.means for p in parts])
+    roots = np.concatenate([p.mixture.roots for p in parts])
+    return Approximation(StudentMixture(weights, means, roots), np.min([p.spread for p in parts], axis=0))
+
+
+def _part(density: Straight, basin: Basin, rng: np.random.Generator) -> Approximation:
+    """Approximate about one minimum: a mixture fitted to draws of the linear problem, else one normal component."""
+    middle, root = _normal(density, basin)
+    draws = middle + rng.standard_normal((_DRAWS, middle.size)) @ root.T
+    least = _LEAST_WITHIN * middle.size
+    cloud = _linear_draws(density, middle, draws, rng)
+    if len(cloud) >= least:
+        centres = cloud[rng.choice(len(cloud), _COMPONENTS, replace=False)]
+        mixture = fit_mixture(cloud, np.full(len(cloud), 1 / len(cloud)), centres)
+        return Approximation(mixture, cloud.std(axis=0))
+    within = draws[density.within(draws)]
+    spread = (within if len(within) >= least else draws).std(axis=0)
+    return Approximation(StudentMixture(np.ones(1), middle[None], root[None]), spread)
+
+
+def _linear_draws(density: Straight, middle: Array, starts: Array, rng: np.random.Generator) -> Array:
+    """Draw points within all ends, everything but the noise linear; none if there is no Gaussian noise to draw."""
+    posterior = density.posterior
+    if not isinstance(posterior, Posterior) or any(m.model.has_outliers for m in posterior.members):
+        return starts[:0]
+    problem = LinearProblem(density, posterior, middle)
+    if not problem.noise.any():
+        return starts[:0]
+    theta = _noise_draws(problem, starts[:, problem.noise], rng)
+    points = problem.draw(np.repeat(theta, 2, axis=0), rng)
+    return points[density.within(points)]
+
+
+def _noise_draws(problem: LinearProblem, starts: Array, rng: np.random.Generator) -> Array:
+    """Draw the noise, everything else linear, by a short chain; shape (draws, noise unknowns)."""
+    import emcee
+    from emcee.moves import DEMove, StretchMove
+
+    size = starts.shape[1]
+    walkers = max(_WALKERS, 4 * size)
+    starts = starts[: 10 * walkers]
+    order = np.argsort(-(problem(starts) + rng.gumbel(size=len(starts))))
+    sampler = emcee.EnsembleSampler(
+        walkers, size, problem, vectorize=True, moves=[(DEMove(), 0.6), (StretchMove(), 0.4)]
     )
+    stream = np.random.RandomState(np.random.MT19937(rng.integers(2**63))).get_state(legacy=True)
+    state = emcee.State(starts[order[:walkers]], random_state=stream)
+    sampler.run_mcmc(state, _BURN_IN + _KEPT, skip_initial_state_check=True)
+    return np.asarray(sampler.get_chain(discard=_BURN_IN, flat=True))
 
 
 def _normal(density: Straight, basin: Basin) -> tuple[Array, Array]:
@@ -77,7 +143,7 @@ def _normal(density: Straight, basin: Basin) -> tuple[Array, Array]:
         slope[axis.column] = np.exp(axis.to_z(middle[[axis.column]])[1][0])
     edged = np.isin(np.arange(basin.z.size), columns)
     # With the slopes, some very large, outside, and a floor under what rounding leaves of the curvatures.
-    precision = np.linalg.inv(covariance) + np.diag(np.where(edged, _EDGED_PRECISION / slope**2 - 1.0, 0.0))
+    precision = np.linalg.inv(covariance) + np.diag(np.where(edged, EDGED_PRECISION / slope**2 - 1.0, 0.0))
     size, vectors = np.linalg.eigh((precision + precision.T) / 2)
     scaled = (vectors / np.maximum(size, _ROUNDING * size[-1])) @ vectors.T
     step = scaled @ np.where(edged, basin.z, 0.0) / slope

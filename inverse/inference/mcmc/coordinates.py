@@ -99,6 +99,13 @@ class Straight:
             slope = slope + own
         return z, slope
 
+    def within(self, y: Array) -> NDArray[np.bool_]:
+        """Tell which points of shape (n, unknowns) no end cuts off."""
+        inside = np.isfinite(y).all(axis=1)
+        for axis in self.edged:
+            inside &= (y[:, axis.column] > axis.ends[0]) & (y[:, axis.column] < axis.ends[1])
+        return np.asarray(inside)
+
     def of_z(self, z: Array) -> Array:
         """Return the coordinates of standard normal variables of shape (..., unknowns)."""
         y = np.array(z, dtype=float)

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from inverse.inference.mcmc.approximation import first_mixture
+from inverse.inference.mcmc.approximation import approximate
 from inverse.inference.mcmc.coordinates import straightened
 from inverse.inference.mcmc.importance import importance_draws
 from inverse.inference.mcmc.sampling import Problem, walk
@@ -87,7 +87,7 @@ def _weighted(
             check()
         return straight(points)
 
-    found = importance_draws(density, first_mixture(straight, fit.minima), rng, ess)
+    found = importance_draws(density, approximate(straight, fit.minima, rng), rng, ess)
     if not found.suffice(ess):
         return None
     z, _ = straight.to_z(found.resample_evenly(_POOL, rng))

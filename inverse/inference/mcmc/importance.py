@@ -15,7 +15,8 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import logsumexp
 
-from inverse.inference.mcmc.independence import DEGREES, EXTRA, StudentMixture, refit
+from inverse.inference.mcmc.approximation import Approximation
+from inverse.inference.mcmc.independence import EXTRA, refit
 
 __all__ = [
     "LARGEST_SHAPE",
@@ -32,10 +33,10 @@ LARGEST_SHAPE = 0.7
 """Pareto shape above which weighted draws are not to be used."""
 
 LEAST_SPREAD = 0.7
-"""Spread over that of the first mixture below which weighted draws are not to be used.
+"""Spread over that of the first approximation below which weighted draws are not to be used.
 
 A narrow ridge that bends leaves a straight mixture where it ends: the draws there have no weight, those that are left
-look even, and only their spread, too small, tells. A normal approximation that holds comes out near 1.
+look even, and only their spread, too small, tells. An approximation that holds comes out near 1.
 """
 
 _DRAWS_PER_UNKNOWN = 200
@@ -56,8 +57,7 @@ class ImportanceDraws:
     shape : float
         Pareto k of the largest weights.
     spread : float
-        Least standard deviation of an unknown over the least of it among the components of the first mixture, of
-        their possible draws.
+        Least standard deviation of an unknown over that of the first approximation.
     """
 
     points: Array
@@ -77,7 +77,7 @@ class ImportanceDraws:
 
 
 def importance_draws(
-    log_density: Callable[[Array], Array], first: StudentMixture, rng: np.random.Generator, ess: float
+    log_density: Callable[[Array], Array], first: Approximation, rng: np.random.Generator, ess: float
 ) -> ImportanceDraws:
     """Draw from a mixture and weight by a density; refit the mixture until the weights are even enough.
 
@@ -88,8 +88,7 @@ def importance_draws(
     ----------
     log_density : callable
         Points (n, unknowns) to log densities (n,), not necessarily normalised.
-    first : StudentMixture
-        One component per mode.
+    first : Approximation
     rng : Generator
     ess : float
         Wanted; less may be returned.
@@ -99,31 +98,22 @@ def importance_draws(
     ValueError
         If no draw of a round has a finite density.
     """
-    mixture, own = first, None
-    count = max(_LEAST_DRAWS, _DRAWS_PER_UNKNOWN * first.means.shape[1])
+    mixture = first.mixture
+    count = max(_LEAST_DRAWS, _DRAWS_PER_UNKNOWN * mixture.means.shape[1])
     for extra in (*EXTRA, None):
-        points, component = mixture.labelled(rng, count)
+        points = mixture.draw(rng, count)
         log_weights = log_density(points) - mixture.log_density(points)
         good = np.isfinite(log_weights)
         if not good.any():
             raise ValueError(f"None of {count} draws from the approximation is possible; check the priors.")
         points, log_weights = points[good], log_weights[good]
         weights, shape = smoothed_weights(log_weights)
-        own = _least_deviations(points, component[good]) if own is None else own
-        spread = float((_deviations(points, weights) / own).min())
+        spread = float((_deviations(points, weights) / first.spread).min())
         found = ImportanceDraws(points, weights, float(1 / (weights @ weights)), shape, spread)
         if extra is None or found.suffice(ess):
             break
-        mixture = refit(points, log_weights, first.means, extra, rng)
+        mixture = refit(points, log_weights, first.mixture.means, extra, rng)
     return found
-
-
-def _least_deviations(points: Array, component: NDArray[np.intp]) -> Array:
-    """Least standard deviation of each unknown among components, of the possible draws; infinite if all are few."""
-    of_each = (points[component == c] for c in np.unique(component))
-    found = [_deviations(p, np.full(len(p), 1 / len(p))) for p in of_each if len(p) > 2 * points.shape[1]]
-    stretch = np.sqrt(DEGREES / (DEGREES - 2))
-    return np.asarray(np.min(found, axis=0) / stretch if found else np.full(points.shape[1], np.inf))
 
 
 def _deviations(points: Array, weights: Array) -> Array:

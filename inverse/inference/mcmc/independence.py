@@ -48,15 +48,11 @@ class StudentMixture:
 
     def draw(self, rng: Any, count: int) -> Array:
         """Draw points of shape (count, unknowns); `rng` is a legacy RandomState or a Generator."""
-        return self.labelled(rng, count)[0]
-
-    def labelled(self, rng: Any, count: int) -> tuple[Array, NDArray[np.intp]]:
-        """Draw points as `draw` does, and tell of which component each is, shape (count,)."""
         which = rng.choice(len(self.weights), size=count, p=self.weights)
         normal = rng.normal(size=(count, self.means.shape[1]))
         stretch = np.sqrt(DEGREES / rng.chisquare(DEGREES, size=count))
         kick = np.einsum("nij,nj->ni", self.roots[which], normal)
-        return np.asarray(self.means[which] + stretch[:, None] * kick), which
+        return np.asarray(self.means[which] + stretch[:, None] * kick)
 
     def log_density(self, points: Array) -> Array:
         """Return the log density at points of shape (n, unknowns)."""
