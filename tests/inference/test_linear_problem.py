@@ -8,7 +8,7 @@ from scipy import stats
 from inverse.inference.mcmc.approximation import approximate
 from inverse.inference.mcmc.coordinates import straightened
 from inverse.inference.mcmc.draws import draw_posterior
-from inverse.inference.mcmc.importance import importance_draws
+from inverse.inference.mcmc.importance import importance_draws, smoothed_weights
 from inverse.inference.mcmc.linear_problem import LinearProblem, noise_columns
 from inverse.inference.minima.least_squares import Fit, refine
 
@@ -33,21 +33,28 @@ def covariance(white, size, time):
     return white**2 * np.eye(DELAY.size) + size**2 * np.exp(-np.abs(np.subtract.outer(DELAY, DELAY)) / time)
 
 
-def made(seed=5):
-    rng = np.random.default_rng(seed)
+def made(model):
+    rng = np.random.default_rng(5)
     noise = rng.multivariate_normal(np.zeros(DELAY.size), covariance(0.02, 0.04, 25.0))
-    return linear_problem(DELAY, SHAPES, START + TRUTH @ SHAPES[1:3] + noise, PRIORS, width=WIDTH)
+    data = START + TRUTH @ SHAPES[1:3] + noise
+    if model == "student":
+        data[[7, 31, 50]] += [0.3, -0.2, 0.25]
+    return linear_problem(DELAY, SHAPES, data, PRIORS, width=WIDTH, model=model)
+
+
+def minimum(problem):
+    physical = np.array([True, True, False, False, False])
+    return refine(problem.posterior, physical, np.array([*TRUTH, 0.0, 0.0, 0.0]))
 
 
 @pytest.fixture(scope="module")
 def problem():
-    return made()
+    return made("correlated")
 
 
 @pytest.fixture(scope="module")
 def basin(problem):
-    physical = np.array([True, True, False, False, False])
-    return refine(problem.posterior, physical, np.array([*TRUTH, 0.0, 0.0, 0.0]))
+    return minimum(problem)
 
 
 def dense(problem, z):
@@ -154,9 +161,11 @@ def test_weighted_draws_reach_the_long_tail_of_a_slow_discrepancy(problem, basin
         assert (np.abs(below - probabilities) < allowed).all(), (axis, below)
 
 
-def test_both_ways_of_drawing_agree(problem, basin):
-    problem.fingerprint = lambda: "linear"
-    fit = Fit(problem, problem.names, (basin,), 1)
+@pytest.mark.parametrize("model", ["correlated", "student"])
+def test_both_ways_of_drawing_agree(model):
+    problem = made(model)
+    problem.fingerprint = lambda: model
+    fit = Fit(problem, problem.names, (minimum(problem),), 1)
     weighted, walked = (
         draw_posterior(problem, fit, seed=2, ess=400, method=method) for method in ("importance", "mcmc")
     )
@@ -166,3 +175,15 @@ def test_both_ways_of_drawing_agree(problem, basin):
         edges = np.quantile(walked.values[:, column], [0.1, 0.5, 0.9])
         share = (weighted.values[:, [column]] < edges).mean(axis=0)
         assert (np.abs(share - [0.1, 0.5, 0.9]) < 4 * np.sqrt(2 * 0.25 / 400)).all()
+
+
+def test_the_first_mixture_is_near_enough_with_outliers_too():
+    """At once, without refitting: a third of the draws count."""
+    problem = made("student")
+    density = straightened(problem.posterior)
+    rng = np.random.default_rng(6)
+    mixture = approximate(density, [minimum(problem)], rng).mixture
+    points = mixture.draw(rng, 1000)
+    log_weights = density(points) - mixture.log_density(points)
+    weights, shape = smoothed_weights(log_weights[np.isfinite(log_weights)])
+    assert shape < 0.7 and 1 / (weights @ weights) > 300

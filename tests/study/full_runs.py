@@ -38,6 +38,12 @@ def calibration_by_mcmc(pool, store):
     return check_coverage(problem, seed=1, replicates=200, executor=pool, store=store, method="mcmc")
 
 
+def calibration_student(pool, store):
+    """Simulation-based calibration, noise with outliers: white noise of Student's t distribution."""
+    problem = split_problem("A11", "student")
+    return check_coverage(problem, seed=4, replicates=100, executor=pool, store=store, **RUN)
+
+
 def white_on_drifting(pool, store):
     """Negative control: white noise on traces whose drift is a third of their white noise."""
     problem = split_problem("A11", "white")

@@ -96,9 +96,9 @@ def _part(density: Straight, basin: Basin, rng: np.random.Generator) -> Approxim
 
 
 def _linear_draws(density: Straight, middle: Array, starts: Array, rng: np.random.Generator) -> Array:
-    """Draw points within all ends, everything but the noise linear; none if there is no Gaussian noise to draw."""
+    """Draw points within all ends, everything but the noise linear; none if no noise is unknown."""
     posterior = density.posterior
-    if not isinstance(posterior, Posterior) or any(m.model.has_outliers for m in posterior.members):
+    if not isinstance(posterior, Posterior):
         return starts[:0]
     problem = LinearProblem(density, posterior, middle)
     if not problem.noise.any():

@@ -45,7 +45,7 @@ class LinearProblem:
     ----------
     density : Straight
     posterior : Posterior
-        The density's, without outliers.
+        The density's. Noise with outliers keeps its likelihood at the point; around it, Gaussian noise stands for it.
     point : array, shape (unknowns,)
         In straight coordinates, between all ends.
     """
@@ -57,7 +57,8 @@ class LinearProblem:
         x = point[~self.noise]
         self.precision = np.where(edged, EDGED_PRECISION, 1.0)
         self.pull = np.where(edged, 0.0, x)
-        self.rows = [self._rows_of(member) for member in posterior.members]
+        gaussian = posterior.as_gaussian(density.to_z(point[None])[0][0]).members
+        self.members = list(zip(posterior.members, gaussian, map(self._rows_of, gaussian), strict=True))
 
     def __call__(self, theta: Array) -> Array:
         """Return the log posterior up to a constant, shape (n,); -inf beyond an end."""
@@ -118,8 +119,11 @@ class LinearProblem:
         value = np.zeros(len(z))
         matrix = np.repeat(np.diag(self.precision)[None], len(z), axis=0)
         right = np.repeat(-(self.precision * self.pull)[None], len(z), axis=0)
-        for member, rows in zip(self.posterior.members, self.rows, strict=True):
-            own, own_matrix, own_right = _without_coefficients(member, rows, self._local(member, z), size)
+        for member, gaussian, rows in self.members:
+            values = self._local(member, z)
+            own, own_matrix, own_right = _without_coefficients(gaussian, rows, values, size)
+            if member.model.has_outliers:
+                own = _log_likelihood(member, rows, values, size)
             value, matrix, right = value + own, matrix + own_matrix, right + own_right
         factor = _roots(matrix)
         half = np.linalg.solve(factor, right[..., None])
@@ -146,6 +150,15 @@ def _without_coefficients(
     volume = np.log(np.diagonal(factor, axis1=1, axis2=2)).sum(axis=1)
     value = -0.5 * (rest[:, -1, -1] + log_det) - volume
     return value, rest[:, :-1, :-1], rest[:, :-1, -1]
+
+
+def _log_likelihood(
+    member: Member, rows: Mapping[str, Array], values: Mapping[str, Array], size: int
+) -> Array:
+    """Return the log likelihood at no move, shape (sets,)."""
+    sets = len(next(iter(values.values())))
+    functions = {name: np.repeat(r[None, : -size - 1], sets, axis=0) for name, r in rows.items()}
+    return member.model.marginal(functions, values).log_likelihood
 
 
 def _roots(matrices: Array) -> Array:
