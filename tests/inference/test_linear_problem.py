@@ -120,6 +120,15 @@ def test_noise_beyond_the_end_of_a_prior_is_impossible(problem, basin):
     assert np.isneginf(line(np.array([[0.0, 0.0, end + 0.01], [np.nan, 0.0, 0.0]]))).all()
 
 
+def test_noise_so_small_that_rounding_wins_spoils_no_other(problem, basin):
+    density = straightened(problem.posterior)
+    line = LinearProblem(density, problem.posterior, density.of_z(basin.z))
+    theta = np.array([[0.0, 0.0, 0.0], [-60.0, -30.0, 0.0], [0.2, 0.1, 0.3]])
+    found = line(theta)
+    np.testing.assert_allclose(found[[0, 2]], line(theta[[0, 2]]), rtol=1e-12)
+    assert not found[1] > found[0]
+
+
 def grid_quantiles(problem, basin, probabilities):
     """Quantiles of the noise's values on a grid, the others integrated densely about the minimum."""
     basis, slopes, data = linear_pieces(problem, basin.z)

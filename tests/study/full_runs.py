@@ -33,9 +33,9 @@ def calibration(pool, store):
 
 
 def calibration_by_mcmc(pool, store):
-    """Simulation-based calibration of the path that users take."""
+    """Simulation-based calibration of the path that users take, other truths."""
     problem = split_problem("A11")
-    return check_coverage(problem, seed=1, replicates=200, executor=pool, store=store, method="mcmc")
+    return check_coverage(problem, seed=12, replicates=200, executor=pool, store=store, method="mcmc")
 
 
 def calibration_student(pool, store):
