@@ -35,13 +35,13 @@ def calibration(pool, store):
 def calibration_by_mcmc(pool, store):
     """Simulation-based calibration of the path that users take, other truths."""
     problem = split_problem("A11")
-    return check_coverage(problem, seed=12, replicates=200, executor=pool, store=store, method="mcmc")
+    return check_coverage(problem, seed=12, replicates=100, executor=pool, store=store, method="mcmc")
 
 
 def calibration_student(pool, store):
     """Simulation-based calibration, noise with outliers: white noise of Student's t distribution."""
     problem = split_problem("A11", "student")
-    return check_coverage(problem, seed=4, replicates=100, executor=pool, store=store, **RUN)
+    return check_coverage(problem, seed=4, replicates=60, executor=pool, store=store, **RUN)
 
 
 def white_on_drifting(pool, store):
@@ -60,7 +60,7 @@ def one_temperature(pool, store):
     hot = FromModel(inv.Inversion(stack(AL_HOT, inv.Substrate(SI)), SETUP, split_trace("A11")))
     problem = split_problem("A11")
     return check_coverage(
-        problem, seed=3, replicates=100, simulate_trace=hot, executor=pool, store=store, **RUN
+        problem, seed=3, replicates=30, simulate_trace=hot, executor=pool, store=store, **RUN
     )
 
 
