@@ -4,13 +4,14 @@
 runs a few tests. A change that they do not notice is a coefficient that nothing protects.
 """
 
+import json
 import os
 import subprocess
 import sys
 import tomllib
 from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
-from contextlib import contextmanager
+from contextlib import ExitStack, contextmanager
 from itertools import count
 from pathlib import Path
 from queue import Queue
@@ -61,46 +62,95 @@ def broken(scratch: Path, mutant: dict) -> Iterator[None]:
         write(path, whole)
 
 
-def run_tests(scratch: Path, tests: list[str]) -> tuple[int, str]:
-    """Run tests in a copy until the first fails; the exit status and what was said."""
-    options = ["-x", "-q", "-p", "no:cacheprovider", "-p", "no:nbmake", "-o", "addopts=-m 'not slow'"]
-    command = [sys.executable, "-m", "pytest", *options, *tests]
-    environment = {**os.environ, "PYTHONPATH": str(scratch)}
-    try:
-        run = subprocess.run(
-            command, cwd=scratch, env=environment, capture_output=True, text=True, timeout=SECONDS
+# Imports what takes longest once and forks for every run; the package itself is imported afresh each time.
+SERVER = """
+import json, os, signal, sys, time
+import numpy, pytest, scipy.integrate, scipy.linalg, scipy.optimize, scipy.stats, xarray
+
+for line in sys.stdin:
+    arguments, log, seconds = json.loads(line)
+    child = os.fork()
+    if child == 0:
+        os.setsid()
+        file = os.open(log, os.O_WRONLY | os.O_CREAT | os.O_TRUNC)
+        os.dup2(file, 1)
+        os.dup2(file, 2)
+        status = 70
+        try:
+            status = int(pytest.main(arguments))
+            sys.stdout.flush()
+        finally:
+            os._exit(status)
+    end, done = time.monotonic() + seconds, 0
+    while not done:
+        done, status = os.waitpid(child, os.WNOHANG)
+        time.sleep(0.02)
+        if not done and time.monotonic() > end:
+            os.killpg(child, signal.SIGKILL)
+            end += 1e9
+    print(os.waitstatus_to_exitcode(status), flush=True)
+"""
+
+
+class Copy:
+    """A scratch copy of the repository and a process that runs its tests."""
+
+    def __init__(self, scratch: Path) -> None:
+        self.scratch = scratch
+        environment = {**os.environ, "PYTHONPATH": str(scratch), "OPENBLAS_NUM_THREADS": "1"}
+        self.process = subprocess.Popen(
+            [sys.executable, "-c", SERVER],
+            cwd=scratch,
+            env=environment,
+            stdin=subprocess.PIPE,
+            stdout=subprocess.PIPE,
+            text=True,
         )
-    except subprocess.TimeoutExpired:
-        return FAILED, f"stopped after {SECONDS} s"
-    return run.returncode, run.stdout[-1500:] + run.stderr[-500:]
+
+    def run(self, tests: list[str], seconds: int = SECONDS) -> tuple[int, str]:
+        """Run tests until the first fails; the exit status and what was said. A run that is stopped has failed."""
+        options = ["-x", "-q", "-p", "no:cacheprovider", "-p", "no:nbmake", "-o", "addopts=-m 'not slow'"]
+        log = self.scratch / "said.txt"
+        self.process.stdin.write(json.dumps([[*options, *tests], str(log), seconds]) + "\n")
+        self.process.stdin.flush()
+        status = int(self.process.stdout.readline())
+        return (FAILED if status < 0 else status), log.read_text(errors="replace")[-2000:]
+
+    def close(self) -> None:
+        self.process.stdin.close()
+        self.process.stdout.close()
+        self.process.wait()
 
 
 def judge(mutant: dict, copies: Queue) -> str:
     """What is wrong with a mutant; empty if the tests noticed it."""
-    scratch = copies.get()
+    copy = copies.get()
     try:
-        with broken(scratch, mutant):
-            status, said = run_tests(scratch, mutant["tests"])
+        with broken(copy.scratch, mutant):
+            status, said = copy.run(mutant["tests"])
     except ValueError as error:
         return str(error)
     finally:
-        copies.put(scratch)
+        copies.put(copy)
     if status == FAILED:
         return ""
     return f"survived: {label(mutant)}" if status == PASSED else f"{label(mutant)}: pytest broke off\n{said}"
 
 
 @pytest.mark.slow
-@pytest.mark.unproven
+@pytest.mark.skipif(not hasattr(os, "fork"), reason="runs are forked")
 def test_no_mutant_survives(repository, tmp_path):
     copies: Queue = Queue()
-    for number in range(PROCESSES):
-        copies.put(copy_tree(repository, tmp_path / str(number)))
-    everything = sorted({test for mutant in LIST for test in mutant["tests"]})
-    status, said = run_tests(copies.queue[0], everything)
-    assert status == PASSED, f"the tests fail without any change, so they can tell nothing:\n{said}"
-    with ThreadPoolExecutor(PROCESSES) as pool:
-        verdicts = list(pool.map(lambda mutant: judge(mutant, copies), LIST))
+    with ExitStack() as stack:
+        for number in range(PROCESSES):
+            copy = Copy(copy_tree(repository, tmp_path / str(number)))
+            stack.callback(copy.close)
+            copies.put(copy)
+        everything = sorted({test for mutant in LIST for test in mutant["tests"]})
+        status, said = copies.queue[0].run(everything, seconds=10 * SECONDS)
+        assert status == PASSED, f"the tests fail without any change, so they can tell nothing:\n{said}"
+        with ThreadPoolExecutor(PROCESSES) as pool:
+            verdicts = list(pool.map(lambda mutant: judge(mutant, copies), LIST))
     trouble = [verdict for verdict in verdicts if verdict]
     assert not trouble, f"{len(trouble)} of {len(LIST)}:\n" + "\n".join(trouble)
 

@@ -123,7 +123,9 @@ def test_the_first_approximation_has_the_whole_length_of_a_ridge_near_an_end():
     """But for the end the velocity is as its prior says; the normal variables' approximation is narrower."""
     problem, basin = ridge(12.5, 0.01)
     mixture = approximate(straightened(problem), [basin], np.random.default_rng(1)).mixture
-    assert np.linalg.norm(mixture.roots[0], axis=1)[1] == pytest.approx(1.0, rel=0.03)
+    thickness, velocity = np.linalg.norm(mixture.roots[0], axis=1)
+    assert velocity == pytest.approx(1.0, rel=0.03)
+    assert thickness == pytest.approx(12.5 * 0.1 / (40 / np.sqrt(12)), rel=0.03)
     assert np.sqrt(basin.covariance_z[1, 1]) < 0.9
 
 

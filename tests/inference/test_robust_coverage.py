@@ -60,7 +60,6 @@ def held(levels, mass):
 
 
 @pytest.mark.slow
-@pytest.mark.unproven
 @pytest.mark.parametrize("outliers", [False, True], ids=["clean", "outliers"])
 def test_intervals_hold_the_truth_as_often_as_they_say(outliers):
     levels, deviations = study("student", outliers)
