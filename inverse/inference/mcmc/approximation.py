@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.inference.mcmc.advance import GuardedLogProb
 from inverse.inference.mcmc.coordinates import Straight
 from inverse.inference.mcmc.independence import StudentMixture, adapt, fit_mixture
 from inverse.inference.mcmc.linear_problem import EDGED_PRECISION, LinearProblem
@@ -59,7 +60,9 @@ def prepare(
     mixture : StudentMixture
     """
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(2)[1])
-    mixture, points, log_weights = adapt(density, approximate(density, minima, rng).mixture, rng)
+    mixture, points, log_weights = adapt(
+        GuardedLogProb(density), approximate(density, minima, rng).mixture, rng
+    )
     count = ensembles * walkers
     if len(points) < count:
         raise ValueError(

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from inverse.inference.mcmc.advance import GuardedLogProb
 from inverse.inference.mcmc.approximation import approximate
 from inverse.inference.mcmc.coordinates import straightened
 from inverse.inference.mcmc.importance import importance_draws
@@ -81,11 +82,12 @@ def _weighted(
 ) -> PosteriorSample | None:
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(3)[2])
     straight = straightened(inversion.posterior)
+    guarded = GuardedLogProb(straight)
 
     def density(points: Array) -> Array:
         if check is not None:
             check()
-        return straight(points)
+        return guarded(points)
 
     found = importance_draws(density, approximate(straight, fit.minima, rng), rng, ess)
     if not found.suffice(ess):

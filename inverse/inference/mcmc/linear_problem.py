@@ -45,7 +45,8 @@ class LinearProblem:
     ----------
     density : Straight
     posterior : Posterior
-        The density's. Noise with outliers keeps its likelihood at the point; around it, Gaussian noise stands for it.
+        The density's. Noise with outliers keeps its likelihood at the point, without what a move would gain; Gaussian
+        noise stands for it in the others' covariance.
     point : array, shape (unknowns,)
         In straight coordinates, between all ends.
     """
@@ -58,6 +59,7 @@ class LinearProblem:
         self.precision = np.where(edged, EDGED_PRECISION, 1.0)
         self.pull = np.where(edged, 0.0, x)
         gaussian = posterior.as_gaussian(density.to_z(point[None])[0][0]).members
+        self.outliers = any(member.model.has_outliers for member in posterior.members)
         self.members = list(zip(posterior.members, gaussian, map(self._rows_of, gaussian), strict=True))
 
     def __call__(self, theta: Array) -> Array:
@@ -122,14 +124,15 @@ class LinearProblem:
         for member, gaussian, rows in self.members:
             values = self._local(member, z)
             own, own_matrix, own_right = _without_coefficients(gaussian, rows, values, size)
-            if member.model.has_outliers:
+            if self.outliers:
                 own = _log_likelihood(member, rows, values, size)
             value, matrix, right = value + own, matrix + own_matrix, right + own_right
         factor = _roots(matrix)
         half = np.linalg.solve(factor, right[..., None])
         mean = np.asarray(np.linalg.solve(factor.swapaxes(1, 2), half)[..., 0])
         volume = np.log(np.diagonal(factor, axis1=1, axis2=2)).sum(axis=1)
-        return value + 0.5 * (half[..., 0] ** 2).sum(axis=1) - volume, mean, factor
+        gain = 0.0 if self.outliers else 0.5 * (half[..., 0] ** 2).sum(axis=1)
+        return value + gain - volume, mean, factor
 
 
 def _without_coefficients(
