@@ -36,6 +36,7 @@ def mixture(scale=1.0, shift=0.0):
 def test_weighted_draws_have_the_moments_of_a_correlated_normal_density():
     found = importance_draws(log_normal, mixture(1.2, 0.3), np.random.default_rng(2), 500)
     assert found.shape < LARGEST_SHAPE and found.ess >= 500
+    assert found.ess == pytest.approx(1 / np.sum(found.weights**2))
     mean = found.weights @ found.points
     centred = found.points - mean
     covariance = (centred.T * found.weights) @ centred
