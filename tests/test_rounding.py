@@ -106,6 +106,21 @@ def test_limits_stay_true(limit, side, text):
     assert format_limit(limit, side, unit="GPa/nm") == text
 
 
+@pytest.mark.parametrize(
+    ("limit", "side", "width", "text"),
+    [
+        (60.5372, "<", 0.012, "< 60.538 nm (95 %)"),
+        (59.47216, ">", 0.009, "> 59.4721 nm (95 %)"),
+        (0.00264, "<", 0.0008, "< 0.0027 nm (95 %)"),
+        (14.73, ">", 30.0, "> 14 nm (95 %)"),
+        (14.73, ">", math.inf, "> 14 nm (95 %)"),
+        (14.73, ">", math.nan, "> 14 nm (95 %)"),
+    ],
+)
+def test_limits_keep_the_digits_that_the_interval_beside_them_has(limit, side, width, text):
+    assert format_limit(limit, side, unit="nm", width=width) == text
+
+
 def test_limit_styles():
     assert (
         format_limit(14.73, ">", mass=0.9, style="latex", unit="GPa/nm")

@@ -251,12 +251,14 @@ class Inversion:
     def result(self, run: EnsembleRun, seed: int, fit: Fit, *, checks: bool = True) -> xr.DataTree:
         """Put a finished run into a DataTree, with its minima and, if there are to be checks, warnings.
 
-        Warnings tell where the residuals are not the noise assumed, which eliminated coefficients lie far out in their
+        Warnings tell which unknowns the data press against an end of their prior, where the residuals are not the noise
+        assumed, which eliminated coefficients lie far out in their
         priors, and which fixed constants outweigh an interval.
         """
         from inverse.inference.checks.basins import minima_record
         from inverse.inference.checks.budget import weigh_constants
         from inverse.inference.checks.coefficients import coefficient_warnings
+        from inverse.inference.checks.edges import edge_warnings
 
         warnings: list[str] = []
         shares: dict[str, float] = {}
@@ -264,6 +266,7 @@ class Inversion:
             values = self.posterior.parameters.to_values(run.chain.reshape(-1, len(self.names)))
             heavy, shares = weigh_constants(self, fit)
             warnings = [
+                *edge_warnings(self, values),
                 *self.noise_warnings(values, seed=seed),
                 *coefficient_warnings(self, fit.values),
                 *heavy,

@@ -82,7 +82,14 @@ def format_value(
 
 
 def format_limit(
-    limit: float, side: str, *, mass: float = 0.95, digits: int = 2, style: str = "plain", unit: str = ""
+    limit: float,
+    side: str,
+    *,
+    mass: float = 0.95,
+    digits: int = 2,
+    style: str = "plain",
+    unit: str = "",
+    width: float = math.inf,
 ) -> str:
     r"""Write a one-sided limit, rounded so that the statement stays true.
 
@@ -96,6 +103,9 @@ def format_limit(
         Probability of the statement.
     digits, style, unit
         As in `format_value`; the digits are those of the limit itself.
+    width : float
+        Half the width of the interval beside the limit: where rounding would move the limit by a quarter of it or
+        more, it gets the digits of that width.
 
     Returns
     -------
@@ -117,10 +127,10 @@ def format_limit(
     if side not in ("<", ">"):
         raise ValueError(f"side = {side!r}; give '<' for an upper limit or '>' for a lower limit.")
     if math.isfinite(limit) and limit != 0:
-        exact = _decimal(limit)
-        rounded = exact.quantize(
-            Decimal(1).scaleb(exact.adjusted() - digits + 1), ROUND_CEILING if side == "<" else ROUND_FLOOR
-        )
+        exact, mode = _decimal(limit), ROUND_CEILING if side == "<" else ROUND_FLOOR
+        rounded = exact.quantize(Decimal(1).scaleb(exact.adjusted() - digits + 1), mode)
+        if 0 < width <= 4 * abs(float(rounded - exact)):
+            rounded = exact.quantize(Decimal(1).scaleb(decimal_place(width, digits)), mode)
         text = _written(rounded)
     else:
         text = _not_finite(limit) if limit != 0 else "0"

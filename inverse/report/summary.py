@@ -82,9 +82,14 @@ class Row:
     rhat: float | None = None
 
     @property
+    def half_width(self) -> float:
+        """Half the width of the first interval."""
+        return (self.intervals[0][1] - self.intervals[0][0]) / 2
+
+    @property
     def place(self) -> int:
         """Power of ten to which the numbers of this row are rounded."""
-        half = (self.intervals[0][1] - self.intervals[0][0]) / 2
+        half = self.half_width
         if math.isfinite(half) and half > 0:
             return decimal_place(half)
         size = abs(self.median)
@@ -107,7 +112,9 @@ class Row:
         """
         if self.limits:
             last = self.limits[-1]
-            return format_limit(last.value, last.side, mass=last.mass, style=style, unit=self.unit)
+            return format_limit(
+                last.value, last.side, mass=last.mass, style=style, unit=self.unit, width=self.half_width
+            )
         low, high = self.intervals[0]
         above, below = high - self.median, self.median - low
         lopsided = abs(above - below) > 0.1 * (above + below) / 2
@@ -184,8 +191,9 @@ def least_squares_rows(fit: Any, mass: Sequence[float]) -> tuple[Row, ...]:
         prior = view_of_distribution(fit.inversion.priors[name], (known.low, known.high))
         role = "noise" if known.name.startswith("noise.") else "unknown"
         row = _normal_row(Row(name, unit, role, float(value), ()), float(spread), prior.natural, tuple(mass))
-        said = [*filter(None, flag.split("; ")), *_against_prior(row, prior, mass[0]).flags]
-        rows.append(replace(_against_prior(row, prior, mass[0]), flags=_merge(said)))
+        row = _within_ends(_against_prior(row, prior, mass[0]), prior, float(spread))
+        own = [f for f in flag.split("; ") if f and not (f == "prior only" and "prior edge" in row.flags)]
+        rows.append(replace(row, flags=_merge(own, row.flags)))
     return tuple(rows)
 
 
@@ -302,6 +310,14 @@ def _normal_row(row: Row, spread: float, allowed: tuple[float, float], mass: tup
     cut = view_of_distribution(normal, allowed).quantiles
     limits = tuple(Limit(side, float(cut([m if side == "<" else 1 - m])[0]), m) for m in mass)
     return replace(row, limits=limits, flags=(_SIDE_FLAG[side],))
+
+
+def _within_ends(row: Row, prior: PriorView, spread: float) -> Row:
+    """Cut normal intervals at the prior's ends, and flag an end that nature does not set and that is near."""
+    ends = ((prior.low, prior.natural[0]), (prior.high, prior.natural[1]))
+    near = any(end != natural and abs(row.median - end) < 1.96 * spread for end, natural in ends)
+    cut = tuple((max(low, prior.low), min(high, prior.high)) for low, high in row.intervals)
+    return replace(row, intervals=cut, flags=_merge(row.flags, ["prior edge"] * near))
 
 
 def _merge(*groups: Iterable[str]) -> tuple[str, ...]:

@@ -362,7 +362,9 @@ def _percent(mass: float) -> str:
 def _cells(row: Row) -> tuple[str, ...]:
     place = row.place
     if row.limits:
-        intervals = tuple(format_limit(limit.value, limit.side, mass=limit.mass) for limit in row.limits)
+        intervals = tuple(
+            format_limit(x.value, x.side, mass=x.mass, width=row.half_width) for x in row.limits
+        )
     else:
         intervals = tuple(_interval(low, high, place) for low, high in row.intervals)
     prior = "" if row.prior_width is None else format_width(row.prior_width)

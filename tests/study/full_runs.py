@@ -41,7 +41,7 @@ def calibration_by_mcmc(pool, store):
 def calibration_student(pool, store):
     """Simulation-based calibration, noise with outliers: white noise of Student's t distribution."""
     problem = split_problem("A11", "student")
-    return check_coverage(problem, seed=4, replicates=60, executor=pool, store=store, **RUN)
+    return check_coverage(problem, seed=4, replicates=20, executor=pool, store=store, **RUN)
 
 
 def white_on_drifting(pool, store):

@@ -108,7 +108,7 @@ class ChannelCheck:
         if self.excess > 1:
             return [
                 f"{found}; the discrepancy term carries them and the intervals allow for it, but the stack or its "
-                "constants are not right"
+                "constants are not right, or the instrument drifts that much"
             ]
         return []
 
@@ -116,9 +116,11 @@ class ChannelCheck:
         if not self.p_largest < _TAIL:
             return []
         at = ", ".join(f"{d:.4g}" for d in self.outliers[:5]) or "none singled out"
+        at += ", ..." * (self.outliers.size > 5)
         return [
             f"the largest residual is too large for normal noise (p {_p(self.p_largest)}): "
-            f"{self.outliers.size} beyond {FAR:.0f} deviations (delays in ps: {at})"
+            f"{self.outliers.size} beyond {FAR:.0f} deviations (delays in ps: {at}); they pull the "
+            'intervals off: use noise="student", or mask them if their cause is known'
         ]
 
 

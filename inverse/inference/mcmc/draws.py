@@ -15,7 +15,7 @@ from inverse.inference.mcmc.importance import importance_draws
 from inverse.inference.mcmc.sampling import Problem, walk
 from inverse.inference.minima.least_squares import Fit
 
-__all__ = ["METHODS", "PosteriorSample", "draw_posterior"]
+__all__ = ["METHODS", "PosteriorSample", "draw_posterior", "weighted_sample"]
 
 Array = NDArray[np.float64]
 
@@ -52,9 +52,7 @@ def draw_posterior(
     seed: int,
     ess: float,
     method: str = "importance",
-    ensembles: int = 4,
     max_steps: int = 20000,
-    check: Callable[[], None] | None = None,
 ) -> PosteriorSample:
     """Sample a posterior from its minima.
 
@@ -68,18 +66,20 @@ def draw_posterior(
         Effective sample size that every unknown must reach.
     method : {"importance", "mcmc"}
         The first falls back on the second where the weights cannot be trusted or are too uneven.
-    ensembles, max_steps : int
+    max_steps : int
         Of the chains.
-    check : callable, optional
-        Called now and then; may raise to end the work.
     """
-    found = _weighted(inversion, fit, seed, ess, check) if method == "importance" else None
-    return found or _walked(inversion, fit, seed, ess, ensembles, max_steps, check)
+    found = weighted_sample(inversion, fit, seed=seed, ess=ess) if method == "importance" else None
+    return found or _walked(inversion, fit, seed, ess, max_steps)
 
 
-def _weighted(
-    inversion: Problem, fit: Fit, seed: int, ess: float, check: Callable[[], None] | None
+def weighted_sample(
+    inversion: Problem, fit: Fit, *, seed: int, ess: float, check: Callable[[], None] | None = None
 ) -> PosteriorSample | None:
+    """Sample a posterior by importance; None where the weights cannot be trusted or are too uneven.
+
+    Arguments as for `draw_posterior`; `check` is called now and then and may raise to end the work.
+    """
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(3)[2])
     straight = straightened(inversion.posterior)
     guarded = GuardedLogProb(straight)
@@ -97,23 +97,7 @@ def _weighted(
     return PosteriorSample(inversion.posterior.parameters.to_values(z), "importance", True, message)
 
 
-def _walked(
-    inversion: Problem,
-    fit: Fit,
-    seed: int,
-    ess: float,
-    ensembles: int,
-    max_steps: int,
-    check: Callable[[], None] | None,
-) -> PosteriorSample:
-    run, _ = walk(
-        inversion,
-        seed=seed,
-        fit=fit,
-        ess=ess,
-        ensembles=ensembles,
-        max_steps=max_steps,
-        progress=False if check is None else lambda news: check(),
-    )
+def _walked(inversion: Problem, fit: Fit, seed: int, ess: float, max_steps: int) -> PosteriorSample:
+    run, _ = walk(inversion, seed=seed, fit=fit, ess=ess, max_steps=max_steps, progress=False)
     values = inversion.posterior.parameters.to_values(run.chain.reshape(-1, len(inversion.names)))
     return PosteriorSample(values, "mcmc", run.converged, run.message)

@@ -146,12 +146,10 @@ def _used(mask: Any, delay: Array, centre: float, pulse_rms: float) -> NDArray[n
 def _channel(
     trace: xr.Dataset, name: str, used: NDArray[np.bool_], noise: Any, level: float, prefix: str
 ) -> tuple[Channel, dict[str, Any]]:
-    model, replaced = (noise, {}) if isinstance(noise, str) else ("correlated", _noise_given(noise))
+    model = noise if isinstance(noise, str) else "correlated"
     delay = trace["delay"].values.astype(float)[used]
     priors = noise_priors(model, level, delay)
-    strange = sorted(set(replaced) - set(priors))
-    if strange:
-        raise ValueError(f"noise names {', '.join(strange)}; it may give priors for {', '.join(priors)}.")
+    replaced = {} if isinstance(noise, str) else _noise_given(noise, priors)
     data = trace[name].values.astype(float)
     scatter, scans = trace.get(f"{name}_scatter"), trace.get(f"{name}_scans")
     relative = np.ones(delay.size)
@@ -168,17 +166,21 @@ def _channel(
     return channel, {**priors, **replaced}
 
 
-def _noise_given(noise: Any) -> dict[str, Any]:
+def _noise_given(noise: Any, known: Mapping[str, Any]) -> dict[str, Any]:
     """Check priors given in place of the noise's own."""
     if not isinstance(noise, Mapping):
         raise ValueError(
             f"noise = {noise!r}; give 'correlated', 'white', 'student' or a mapping of names to priors."
         )
+    strange = sorted(set(noise) - set(known))
+    if strange:
+        raise ValueError(f"noise names {', '.join(strange)}; it may give priors for {', '.join(known)}.")
     for name, prior in noise.items():
         if not is_distribution(prior):
+            scale = f"{prior:g}" if isinstance(prior, int | float) and prior > 0 else "1e-6"
             raise ValueError(
                 f"noise.{name} = {prior!r}; it is always sought: give a frozen scipy.stats distribution, such as "
-                "stats.lognorm(0.1, scale=1e-6)."
+                f"stats.lognorm(0.1, scale={scale}), a tenth about that number."
             )
         if f"noise.{name}" in QUANTITIES:
             validate_prior(f"noise.{name}", prior)

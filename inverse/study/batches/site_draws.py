@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from inverse.description.unknowns import describe_prior
-from inverse.inference.mcmc.draws import draw_posterior
+from inverse.inference.mcmc.draws import PosteriorSample, weighted_sample
 from inverse.inference.result import named_variables, prior_draws
 from inverse.study.splits.data import prior_of_derived
 
@@ -69,22 +69,42 @@ def site_draws(
     check : callable
         Called now and then; may raise to end the work.
     """
-    found = draw_posterior(
-        inversion,
-        fit,
-        seed=seed,
-        ess=effort.ess,
-        method=effort.method,
-        ensembles=effort.ensembles,
-        max_steps=effort.max_steps,
-        check=check,
-    )
-    made = named_variables(inversion, found.values, ("draw",))
+    if effort.method == "importance":
+        found = weighted_sample(inversion, fit, seed=seed, ess=effort.ess, check=check)
+        if found is not None:
+            return _named(inversion, found, seed)
+    return _walked(inversion, fit, effort, seed, check)
+
+
+def _named(inversion: Inversion, found: PosteriorSample, seed: int) -> SiteDraws:
     rng = np.random.default_rng(np.random.SeedSequence(seed).spawn(1)[0])
     prior = named_variables(inversion, prior_draws(inversion.posterior.parameters, rng, None), ("draw",))
+    made = named_variables(inversion, found.values, ("draw",))
     variables = {name: _described(attrs, prior[name][1]) for name, (_, _, attrs) in made.items()}
     values = np.stack([array for _, array, _ in made.values()])
     return SiteDraws(variables, values, found.method, found.converged, found.message)
+
+
+def _walked(
+    inversion: Inversion, fit: Fit, effort: Effort, seed: int, check: Callable[[], None]
+) -> SiteDraws:
+    tree: Any = inversion.sample_posterior(
+        seed=seed,
+        fit=fit,
+        ess=effort.ess,
+        ensembles=effort.ensembles,
+        max_steps=effort.max_steps,
+        checks=False,
+        progress=lambda news: check(),
+    )
+    posterior, prior = tree["posterior"], tree["prior"]
+    convergence = json.loads(tree.attrs["inverse"])["convergence"]
+    variables = {
+        str(name): _described(posterior[name].attrs, prior[name].values.ravel())
+        for name in posterior.data_vars
+    }
+    values = np.stack([posterior[name].values.ravel() for name in variables])
+    return SiteDraws(variables, values, "mcmc", bool(convergence["converged"]), str(convergence["message"]))
 
 
 def _described(attrs: Mapping[str, Any], prior: Array) -> dict[str, str]:
