@@ -52,6 +52,12 @@ def short():
     return inv.Inversion(film(stats.norm(50, 3)), SETUP, trace, time_zero=0.0, noise="white")
 
 
+def test_passing_with_a_handful_of_replicates_is_said_to_mean_little():
+    few, many = (Coverage(normal_rows(count, 1), LEVELS, 0.01) for count in (4, 300))
+    assert few.passed and "with so few replicates intervals that hold" in few.verdict
+    assert "so few replicates" not in many.verdict
+
+
 def test_exact_posterior_passes():
     found = Coverage(normal_rows(300, 1), LEVELS, 0.01)
     assert found.passed and found.verdict.startswith("Passed: in 300 replicates")

@@ -14,6 +14,9 @@ from inverse.study.coverage.ranks import CELLS, Bands, counts, simultaneous_band
 
 __all__ = ["Coverage"]
 
+_TELLS = 0.7
+"""Share of a level that must be admitted at least, or passing means little."""
+
 
 @dataclass(frozen=True)
 class Coverage:
@@ -132,6 +135,11 @@ class Coverage:
         column, count = self.levels.index(level), len(self.ranked)
         name = min(self.names, key=lambda n: self.held[n][column])
         low, high = 100 * self.bands.inside[column] / count
+        if self.passed and low < _TELLS * 100 * level:
+            yield (
+                f"That is little: with so few replicates intervals that hold {low:.0f} % in place of {100 * level:.0f} % "
+                "would pass too. Ask for 50 or more."
+            )
         yield (
             f"The {100 * level:.0f} % intervals hold {100 * self.share(level):.1f} % of the truths, those of {name} "
             f"least ({100 * self.held[name][column] / count:.1f} %); {low:.1f} to {high:.1f} % is admitted for each."
