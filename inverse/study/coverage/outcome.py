@@ -137,7 +137,7 @@ class Coverage:
         low, high = 100 * self.bands.inside[column] / count
         if self.passed and low < _TELLS * 100 * level:
             yield (
-                f"That is little: with so few replicates intervals that hold {low:.0f} % in place of {100 * level:.0f} % "
+                f"That is little: with so few replicates intervals that hold {low:.0f} %, not {100 * level:.0f}, "
                 "would pass too. Ask for 50 or more."
             )
         yield (
