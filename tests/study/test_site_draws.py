@@ -91,3 +91,13 @@ def test_a_deadline_is_looked_at_between_rounds(recipe):
     fit = inversion.least_squares(seed=1, starts=1)
     with pytest.raises(TimeoutError):
         site_draws(inversion, fit, Effort(), 1, late)
+
+
+def test_a_thickness_beyond_the_end_of_its_prior_is_said_in_the_sites_row():
+    film = inv.Layer(AL, thickness=stats.uniform(20, 35), velocity=6.42)
+    bond = inv.Interface(compliance=stats.halfcauchy(scale=0.05), boundary_conductance=100.0)
+    recipe = inv.Recipe(inv.Stack(film, bond, inv.Substrate(SI)), SETUP, time_zero=0.0, noise="white")
+    found = inv.batch(recipe, SITE, seed=1, starts=3, max_steps=100, workers=0, progress=False)
+    assert "Al.thickness is pressed against the upper end of its prior, 55 nm" in str(
+        found["warning"].values[0]
+    )

@@ -24,6 +24,7 @@ class ToyInversion:
 
     names = (NAME,)
     noise_names = ()
+    fields, units, priors = {NAME: "compliance"}, {NAME: "nm/GPa"}, {NAME: PRIOR}
 
     def __init__(self, trace: xr.Dataset, row: dict) -> None:
         self.start = time.time()

@@ -19,6 +19,7 @@ from numpy.typing import NDArray
 
 from inverse.description.records import encode
 from inverse.description.trace.reading import read_trace
+from inverse.inference.checks.edges import edge_warnings
 from inverse.inference.inversion import Inversion
 from inverse.study.batches.site_draws import SiteDraws, site_draws
 from inverse.study.batches.store import SiteRecord
@@ -171,7 +172,8 @@ def _sampled(
     fit = inversion.least_squares(starts=starts, seed=own, points=known)
     found = site_draws(inversion, fit, effort, own, check)
     status, reason = _status(inversion, found)
-    warnings = inversion.noise_warnings(found.of(tuple(inversion.names)), seed=own)
+    values = found.of(tuple(inversion.names))
+    warnings = [*edge_warnings(inversion, values), *inversion.noise_warnings(values, seed=own)]
     return SiteRecord(
         site,
         mark,
