@@ -173,8 +173,9 @@ class Problem:
 
 def test_chains_of_a_cut_ridge_are_of_normal_variables_again():
     problem, basin = ridge(12.5, 0.01)
-    run, fit = walk(Problem(problem, basin), seed=1, ess=1000, progress=False)
-    assert run.converged and fit.minima == (basin,)
+    made = Problem(problem, basin)
+    run = walk(made, made.least_squares(seed=1), 1, ess=1000, progress=False)
+    assert run.converged
     z = run.chain.reshape(-1, 2)
     np.testing.assert_allclose(run.log_prob.ravel(), problem(z), rtol=1e-9, atol=1e-6)
     velocity = problem.parameters.to_values(z)[:, 1]

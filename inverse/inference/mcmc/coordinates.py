@@ -12,7 +12,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import special
+
+from inverse.inference.problem.parameters import normal_of
 
 if TYPE_CHECKING:
     from inverse.inference.minima.least_squares import Density
@@ -51,18 +52,15 @@ class Edged:
         """Return the coordinate of values."""
         return np.asarray(((np.log(value) if self.logarithmic else value) - self.middle) / self.scale)
 
-    def of_z(self, z: Array) -> Array:
-        """Return the coordinate of standard normal variables."""
-        value = np.where(z < 0, self.prior.ppf(special.ndtr(z)), self.prior.isf(special.ndtr(-z)))
-        return self.of_value(value)
+    def within(self, y: Array) -> NDArray[np.bool_]:
+        """Tell which coordinates neither end cuts off."""
+        return np.asarray((y > self.ends[0]) & (y < self.ends[1]))
 
     def to_z(self, y: Array) -> tuple[Array, Array]:
         """Return standard normal variables and log dz/dy; not a number beyond the ends."""
-        inside = (y > self.ends[0]) & (y < self.ends[1])
-        scaled = self.middle + self.scale * np.where(inside, y, np.nan)
+        scaled = self.middle + self.scale * np.where(self.within(y), y, np.nan)
         value = np.exp(scaled) if self.logarithmic else scaled
-        below, above = self.prior.cdf(value), self.prior.sf(value)
-        z = np.where(below < 0.5, special.ndtri(below), -special.ndtri(above))
+        z = normal_of(self.prior, value)
         slope = self.prior.logpdf(value) + np.log(self.scale) + (scaled if self.logarithmic else 0.0)
         return z, slope + 0.5 * z * z + _LOG_NORM
 
@@ -103,14 +101,15 @@ class Straight:
         """Tell which points of shape (n, unknowns) no end cuts off."""
         inside = np.isfinite(y).all(axis=1)
         for axis in self.edged:
-            inside &= (y[:, axis.column] > axis.ends[0]) & (y[:, axis.column] < axis.ends[1])
+            inside &= axis.within(y[:, axis.column])
         return np.asarray(inside)
 
     def of_z(self, z: Array) -> Array:
         """Return the coordinates of standard normal variables of shape (..., unknowns)."""
         y = np.array(z, dtype=float)
         for axis in self.edged:
-            y[..., axis.column] = axis.of_z(z[..., axis.column])
+            to_value = self.posterior.parameters.maps[axis.column]
+            y[..., axis.column] = axis.of_value(to_value(z[..., axis.column]))
         return y
 
 

@@ -98,6 +98,6 @@ def weighted_sample(
 
 
 def _walked(inversion: Problem, fit: Fit, seed: int, ess: float, max_steps: int) -> PosteriorSample:
-    run, _ = walk(inversion, seed=seed, fit=fit, ess=ess, max_steps=max_steps, progress=False)
+    run = walk(inversion, fit, seed, ess=ess, max_steps=max_steps, progress=False)
     values = inversion.posterior.parameters.to_values(run.chain.reshape(-1, len(inversion.names)))
     return PosteriorSample(values, "mcmc", run.converged, run.message)

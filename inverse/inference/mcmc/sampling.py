@@ -110,68 +110,57 @@ def sample_posterior(
     ValueError
         For arguments that will not do or a checkpoint of another problem.
     """
-    seed = checked_seed(seed)
-    run, fit = walk(
+    seed, ensembles = checked_seed(seed), whole_number("ensembles", ensembles, 1)
+    if ensembles < 2:
+        raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
+    # What will not do is said before the search, not after it: targets, and priors that no file could rebuild.
+    Targets(ess, rhat, max_steps, _CHUNK)
+    if walkers is not None:
+        walkers = whole_number("walkers", walkers, 2 * len(inversion.names))
+    fingerprint = inversion.fingerprint()
+    fit = inversion.least_squares(seed=seed) if fit is None else _checked_fit(fit, inversion.names)
+    run = walk(
         inversion,
-        seed=seed,
-        fit=fit,
+        fit,
+        seed,
+        ensembles,
+        walkers,
         ess=ess,
         rhat=rhat,
-        ensembles=ensembles,
-        walkers=walkers,
         max_steps=max_steps,
-        checkpoint=checkpoint,
-        executor=executor,
         moves=moves,
+        checkpoint=checkpoint,
+        problem_hash=fingerprint,
         progress=progress,
+        executor=executor,
     )
     return inversion.result(run, seed, fit, checks=checks)
 
 
 def walk(
     inversion: Problem,
-    *,
+    fit: Fit,
     seed: int,
-    fit: Fit | None = None,
-    ess: float = 1000,
-    rhat: float = 1.01,
     ensembles: int = 4,
     walkers: int | None = None,
-    max_steps: int = 20000,
-    checkpoint: str | os.PathLike[str] | None = None,
-    executor: Executor | None = None,
+    *,
     moves: Any = None,
-    progress: bool | Callable[[dict[str, Any]], object] = True,
-) -> tuple[EnsembleRun, Fit]:
-    """Run the chains of `sample_posterior`, whose arguments it takes; they are of standard normal variables."""
-    ensembles = whole_number("ensembles", ensembles, 1)
-    if ensembles < 2:
-        raise ValueError(f"ensembles={ensembles}; two or more are needed to see whether they agree.")
-    # What will not do is said before the search, not after it: targets, and priors that no file could rebuild.
-    Targets(ess, rhat, max_steps, _CHUNK)
+    **settings: Any,
+) -> EnsembleRun:
+    """Run chains from the minima of a fit; they are of standard normal variables.
+
+    Arguments as for `sample_posterior`, whose checks are not repeated; `settings` go to `run_ensembles`.
+    """
     size = len(inversion.names)
-    count = max(24, 3 * size + size % 2) if walkers is None else whole_number("walkers", walkers, 2 * size)
-    fingerprint = inversion.fingerprint()
-    fit = inversion.least_squares(seed=seed) if fit is None else _checked_fit(fit, inversion.names)
+    count = max(24, 3 * size) if walkers is None else walkers
     density = straightened(inversion.posterior)
     starts, mixture = prepare(density, fit.minima, ensembles, count + count % 2, seed)
+    moves = _moves(mixture) if moves is None else moves
     run = run_ensembles(
-        density,
-        starts,
-        seed=seed,
-        names=inversion.names,
-        ess=ess,
-        rhat=rhat,
-        max_steps=max_steps,
-        chunk=_CHUNK,
-        moves=_moves(mixture) if moves is None else moves,
-        checkpoint=checkpoint,
-        problem_hash=fingerprint,
-        progress=progress,
-        executor=executor,
+        density, starts, seed=seed, names=inversion.names, chunk=_CHUNK, moves=moves, **settings
     )
     z, stretch = density.to_z(run.chain)
-    return replace(run, chain=z, log_prob=run.log_prob - stretch), fit
+    return replace(run, chain=z, log_prob=run.log_prob - stretch)
 
 
 def _checked_fit(fit: Any, names: tuple[str, ...]) -> Fit:

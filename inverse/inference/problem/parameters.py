@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import special
 
-__all__ = ["Parameters", "parameters"]
+__all__ = ["Parameters", "normal_of", "parameters"]
 
 Array = NDArray[np.float64]
 
@@ -39,12 +39,7 @@ class Parameters:
 
     def to_z(self, values: Array) -> Array:
         """Map values to standard normal variables; a value outside its prior's support gives +-inf."""
-        columns = []
-        for i, prior in enumerate(self.priors):
-            v = values[:, i]
-            below = prior.cdf(v)
-            columns.append(np.where(below < 0.5, special.ndtri(below), -special.ndtri(prior.sf(v))))
-        return np.stack(columns, axis=1)
+        return np.stack([normal_of(prior, values[:, i]) for i, prior in enumerate(self.priors)], axis=1)
 
     def log_prior(self, values: Array) -> Array:
         """Return the log prior density of values, shape (n,)."""
@@ -53,6 +48,12 @@ class Parameters:
     def named(self, values: Array) -> dict[str, Array]:
         """Return values of shape (n, unknowns) as a mapping name -> (n,)."""
         return {name: values[:, i] for i, name in enumerate(self.names)}
+
+
+def normal_of(prior: Any, value: Array) -> Array:
+    """Return the standard normal variable of values of one unknown."""
+    below = prior.cdf(value)
+    return np.where(below < 0.5, special.ndtri(below), -special.ndtri(prior.sf(value)))
 
 
 def parameters(priors: Mapping[str, Any]) -> Parameters:
