@@ -36,16 +36,19 @@ def checked_delay(given: Any) -> NDArray[np.float64]:
 
 
 def checked_path(given: Any) -> Path:
-    """Return a path.
+    """Return the path of a file, there or yet to be written.
 
     Raises
     ------
     ValueError
-        If it is neither a text nor a path.
+        If it is neither a text nor a path, or a folder's.
     """
     if not isinstance(given, str | os.PathLike):
         raise ValueError(f"Got a {type(given).__name__} in place of a path; give a text or a pathlib.Path.")
-    return Path(given)
+    path = Path(given)
+    if path.is_dir():
+        raise ValueError(f"'{path}' is a folder; give the name of a file in it.")
+    return path
 
 
 def whole_number(name: str, value: Any, least: int) -> int:

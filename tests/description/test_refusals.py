@@ -138,3 +138,21 @@ def test_a_stack_file_names_the_place_and_the_nearest_name(tmp_path, right, wron
     assert wrong in path.read_text(encoding="utf-8") != GOOD
     with pytest.raises(ValueError, match=said):
         read_stack(path)
+
+
+def test_truth_values_are_no_measurement():
+    with pytest.raises(ValueError, match="reflectance_change is True or False; give the numbers"):
+        inv.make_trace(np.arange(50.0), reflectance_change=np.arange(50) > 20)
+
+
+def test_an_index_in_quotes_is_refused():
+    with pytest.raises(ValueError, match=r"n = '3\+4j' is not a complex number; write it like 2.77"):
+        inv.Material("X", density=2.0, velocity=5.0, n="3+4j")
+    with pytest.raises(ValueError, match=r"dn_dT = '1e-4j' is not a complex number"):
+        inv.Material("X", density=2.0, velocity=5.0, n=3 + 4j, dn_dT="1e-4j")
+
+
+def test_a_folder_is_no_file(tmp_path):
+    for take in (inv.read_trace, inv.load, inv.read_index):
+        with pytest.raises(ValueError, match="is a folder; give the name of a file in it"):
+            take(tmp_path)

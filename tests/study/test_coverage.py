@@ -251,6 +251,15 @@ def test_store_of_another_check_is_refused(short, quick, tmp_path):
         check_coverage(short, seed=1, replicates=1, method="importance", store=path, progress=False)
 
 
+def test_a_store_is_a_file_in_a_folder_that_is_there(short, tmp_path):
+    with pytest.raises(ValueError, match="is a folder; give the name of a file in it"):
+        check_coverage(short, seed=1, replicates=1, store=tmp_path)
+    with pytest.raises(
+        ValueError, match=r"The folder '.*nowhere' of the store does not exist; create it first"
+    ):
+        check_coverage(short, seed=1, replicates=1, store=tmp_path / "nowhere" / "check.jsonl")
+
+
 def test_file_of_something_else_is_refused(tmp_path):
     path = tmp_path / "notes.txt"
     path.write_text("thickness 60 nm\n")

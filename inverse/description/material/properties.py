@@ -266,6 +266,8 @@ def _complex(key: str, value: Any, where: str) -> Any:
         )
         return parts if any(is_unknown(p) for p in parts) else complex(*parts)
     try:
+        if isinstance(value, str):
+            raise TypeError
         number = complex(value)
     except (TypeError, ValueError):
         raise ValueError(

@@ -59,7 +59,7 @@ def check_trace(trace: xr.Dataset, *, measured: bool = True) -> xr.Dataset:
             raise TraceError(
                 f"{name} has dimensions {trace[name].dims}; expected ('delay',): one trace per Dataset"
             )
-        refuse_complex(name, trace[name].values)
+        refuse_unreal(name, trace[name].values)
         signals[name] = np.asarray(trace[name].values, dtype=float)
     for name, values in {"delay": delay, **signals}.items():
         refuse_non_finite(name, values)
@@ -88,8 +88,10 @@ def channels_of(trace: xr.Dataset) -> tuple[str, ...]:
     return found
 
 
-def refuse_complex(name: str, values: Any) -> None:
-    """Refuse complex numbers, whose imaginary part a cast to float would drop."""
+def refuse_unreal(name: str, values: Any) -> None:
+    """Refuse truth values, and complex numbers, whose imaginary part a cast to float would drop."""
+    if np.asarray(values).dtype == bool:
+        raise TraceError(f"{name} is True or False; give the numbers that were measured")
     if np.iscomplexobj(values):
         raise TraceError(
             f"{name} is complex; give real numbers: of a complex dr/r, 2 x its real part is reflectance_change and its "

@@ -17,9 +17,9 @@ from inverse.description.trace.checks import (
     TraceError,
     channels_of,
     check_trace,
-    refuse_complex,
     refuse_disorder,
     refuse_non_finite,
+    refuse_unreal,
 )
 from inverse.description.trace.columns import Column, ColumnChoice, find_columns
 from inverse.description.trace.lockin import USUAL_UNITS, to_channels
@@ -368,7 +368,7 @@ def _dataset(
 
 def _as_vector(name: str, values: ArrayLike) -> _Floats:
     """Copy a one-dimensional array of floats."""
-    refuse_complex(name, values)
+    refuse_unreal(name, values)
     try:
         vector = np.array(values, dtype=float)
     except (TypeError, ValueError) as error:

@@ -67,7 +67,7 @@ def prepare(
     if len(points) < count:
         raise ValueError(
             f"Only {len(points)} of the points drawn around the minima are possible; {count} walkers are asked for. "
-            "Check the priors against the allowed ranges."
+            "Ask for fewer, or check the priors against the allowed ranges."
         )
     # Gumbel's trick: sampling without replacement in proportion to the weights.
     order = np.argsort(-(log_weights + rng.gumbel(size=len(points))))[:count]

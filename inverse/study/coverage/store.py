@@ -8,6 +8,7 @@ from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
+from inverse.description.arguments import checked_path
 from inverse.study.coverage.judgement import Replicate
 
 __all__ = ["Store"]
@@ -30,7 +31,9 @@ class Store:
     """
 
     def __init__(self, path: str | os.PathLike[str] | None, header: dict[str, Any]) -> None:
-        self.path = None if path is None else Path(path)
+        self.path = None if path is None else checked_path(path)
+        if self.path is not None and not self.path.parent.is_dir():
+            raise ValueError(f"The folder '{self.path.parent}' of the store does not exist; create it first.")
         self.rows: dict[int, Replicate] = {}
         if self.path is None:
             return
