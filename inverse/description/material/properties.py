@@ -266,9 +266,7 @@ def _complex(key: str, value: Any, where: str) -> Any:
         )
         return parts if any(is_unknown(p) for p in parts) else complex(*parts)
     try:
-        if isinstance(value, str):
-            raise TypeError
-        number = complex(value)
+        number = complex(0 + value)  # a text would be parsed, but cannot be added to
     except (TypeError, ValueError):
         raise ValueError(
             f"{where}.{key} = {value!r} is not a complex number; write it like 1.5+0.2j."

@@ -162,9 +162,7 @@ def check_index(value: complex, where: str) -> complex:
         If it is not a number, the real part is out of range, or the imaginary part is negative.
     """
     try:
-        if isinstance(value, str):
-            raise TypeError
-        number = complex(value)
+        number = complex(0 + value)  # a text would be parsed, but cannot be added to
     except (TypeError, ValueError):
         raise ValueError(f"{where} = {value!r} is not a complex number; write it like 2.77+8.35j.") from None
     if number.imag < 0:
